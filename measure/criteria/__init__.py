@@ -1,0 +1,1 @@
+"""Published definitions, one file per family, each clause with its evidence."""
