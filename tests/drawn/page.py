@@ -1,0 +1,163 @@
+"""A recording drawn on paper and captured: pixels together with the whole truth about them.
+
+The sheet is drawn once on a fine millimetre raster as amounts of ink, turned into light (inks
+multiply what the paper reflects), blurred by the optics and the pixel's own aperture, and sampled
+once through the exact map of the scanner or camera. Light is linear until the end, where it is
+coded as sRGB, noise is added, and the picture is made grey or black and white where asked.
+"""
+
+from dataclasses import dataclass
+
+import cv2
+import numpy as np
+
+from digitize.sheet import Raster
+from tests.drawn.capture import MM_PER_INCH, CaptureMap, resample, scan_map
+from tests.drawn.composition import Composition, PanelTruth, compose
+from tests.drawn.heart import HeartTruth, Recording
+from tests.drawn.lettering import draw_word
+from tests.drawn.paper import draw_grid
+from tests.drawn.pen import draw_stroke
+from tests.drawn.spec import CaptureSpec, Colour, PageSpec
+
+_FINEST_PX_PER_MM = 24.0
+_COARSEST_PX_PER_MM = 14.0
+_LID: Colour = (250, 250, 250)  # what a scanner sees beside the sheet
+
+
+@dataclass(frozen=True, eq=False)
+class PageTruth:
+    """What is on a drawn page, and where."""
+
+    panels: tuple[PanelTruth, ...]
+    marks: tuple[tuple[float, float, float, float], ...]
+    layout: str
+    timing: str
+    speed_mm_s: float
+    gain_mm_mv: float
+    page_map: CaptureMap
+    heart: HeartTruth | None
+    recording: str
+
+
+@dataclass(frozen=True, eq=False)
+class DrawnPage:
+    """Pixels of a page, uint8, (rows, cols) or (rows, cols, 3) RGB, and the truth."""
+
+    pixels: np.ndarray
+    truth: PageTruth
+    spec: PageSpec
+
+    @property
+    def bilevel(self) -> bool:
+        """True where the pixels are 0 and 255 alone."""
+        return self.spec.capture.mode in ("bilevel", "dither")
+
+
+def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
+    """Return the page of a recording under a specification; the same pixels every time."""
+    rng = np.random.default_rng([spec.seed, 2])
+    composition = compose(recording, spec)
+    page_map = scan_map(spec.capture, spec.paper)
+    raster, shape = _raster(spec)
+    inks = _inks(composition, spec, raster, shape, rng)
+    grey = spec.capture.mode != "colour"
+    channels = [
+        _channel(k, inks, spec, raster, shape, page_map) for k in ((1,) if grey else (0, 1, 2))
+    ]
+    pixels = _coded(np.stack(channels, axis=-1), spec.capture, rng)
+    layout = spec.layout
+    truth = PageTruth(
+        panels=composition.panels,
+        marks=composition.marks,
+        layout=layout.name,
+        timing=layout.timing,
+        speed_mm_s=layout.speed_mm_s,
+        gain_mm_mv=layout.gain_mm_mv,
+        page_map=page_map,
+        heart=recording.truth,
+        recording=recording.name,
+    )
+    return DrawnPage(pixels, truth, spec)
+
+
+def _raster(spec: PageSpec) -> tuple[Raster, tuple[int, int]]:
+    """The fine raster of the sheet: twice the picture's resolution where that is affordable."""
+    wanted = 2 * max(spec.capture.dpi) / MM_PER_INCH
+    px_per_mm = float(np.clip(wanted, _COARSEST_PX_PER_MM, _FINEST_PX_PER_MM))
+    offset, size = spec.paper.offset_mm, spec.paper.size_mm
+    half_mm = 0.5 / px_per_mm
+    raster = Raster(-offset[0] + half_mm, -offset[1] + half_mm, px_per_mm)
+    return raster, (round(size[1] * px_per_mm), round(size[0] * px_per_mm))
+
+
+def _inks(
+    composition: Composition,
+    spec: PageSpec,
+    raster: Raster,
+    shape: tuple[int, int],
+    rng: np.random.Generator,
+) -> list[tuple[np.ndarray, Colour]]:
+    """Amount of each ink on the sheet with its colour: grid, pen, letters."""
+    pen = np.zeros(shape, np.float32)
+    for stroke in composition.strokes:
+        amount = 1 - spec.pen.uneven * _slow(len(stroke.x_mm), rng) if stroke.trace else 1.0
+        draw_stroke(pen, raster, stroke.x_mm, stroke.y_mm, pen_mm=stroke.width_mm, amount=amount)
+    letters = pen if spec.letters.colour == spec.pen.colour else np.zeros(shape, np.float32)
+    for word in composition.words:
+        draw_word(
+            letters,
+            raster,
+            word.text,
+            word.x_mm,
+            word.y_mm,
+            font=word.font,
+            height_mm=word.height_mm,
+        )
+    inks = [(draw_grid(spec.paper, raster, shape), spec.paper.grid_colour), (pen, spec.pen.colour)]
+    return inks if letters is pen else [*inks, (letters, spec.letters.colour)]
+
+
+def _slow(n: int, rng: np.random.Generator) -> np.ndarray:
+    """A slow random variation between 0 and 1 along a stroke of n points."""
+    knots = rng.uniform(0, 1, max(n // 60, 2))
+    return np.interp(np.arange(n), np.linspace(0, n - 1, len(knots)), knots)
+
+
+def _channel(
+    k: int,
+    inks: list[tuple[np.ndarray, Colour]],
+    spec: PageSpec,
+    raster: Raster,
+    shape: tuple[int, int],
+    page_map: CaptureMap,
+) -> np.ndarray:
+    """Linear light of one colour channel at every pixel of the picture."""
+    light = np.full(shape, _linear(spec.paper.colour[k]), np.float32)
+    for amount, colour in inks:
+        passing = _linear(colour[k]) / _linear(spec.paper.colour[k])
+        # Partly covered: light is shared by area. Covered twice: densities add.
+        light *= np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)
+    pixel_mm = MM_PER_INCH / np.array(spec.capture.dpi)
+    if spec.capture.turn_deg % 180:
+        pixel_mm = pixel_mm[::-1]
+    # A square aperture of width a has variance a^2/12; bilinear sampling adds none to speak of.
+    sigma_px = np.hypot(spec.capture.blur_mm, pixel_mm / np.sqrt(12)) * raster.px_per_mm
+    light = cv2.GaussianBlur(light, (0, 0), sigmaX=sigma_px[0], sigmaY=sigma_px[1])
+    return resample(light, raster, page_map, _linear(_LID[k]))
+
+
+def _linear(code: float) -> float:
+    """Linear light of an sRGB code value (IEC 61966-2-1, as a plain power of 2.2)."""
+    return float((code / 255) ** 2.2)
+
+
+def _coded(light: np.ndarray, capture: CaptureSpec, rng: np.random.Generator) -> np.ndarray:
+    """Code values of linear light, with the sensor's noise, in the asked mode."""
+    code = 255 * np.clip(light, 0, 1) ** np.float32(1 / 2.2)
+    if capture.noise:
+        code += capture.noise * rng.standard_normal(code.shape, np.float32)
+    code = code if code.shape[-1] == 3 else code[..., 0]
+    if capture.mode == "bilevel":
+        return np.where(code < 128, 0, 255).astype(np.uint8)
+    return np.clip(np.round(code), 0, 255).astype(np.uint8)
