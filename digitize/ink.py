@@ -1,23 +1,171 @@
-"""What was printed over the grid: optical density of trace, text and marks."""
+"""What was printed over the grid: how much of each pixel the pen covers.
+
+A pen covers paper and grid; optics then blur the light that comes back. So coverage is linear in
+reflected light, not in its logarithm: coverage = (ground - light) / (ground - ink), where the
+ground is the paper with its grid. The channels of a colour page are first mixed into the one
+light in which the grid is faintest; what is left of the grid is periodic in millimetres, and its
+robust mean cell, region by region, is taken as ground.
+"""
 
 from dataclasses import dataclass
 
+import cv2
 import numpy as np
 
-from digitize.sheet import Raster
+from digitize.sheet import Raster, Sheet
+
+CELL_MM = 5  # grids repeat after 5 mm
+REGION_CELLS = 7  # the mean cell is taken over so many cells each way
 
 
 @dataclass(frozen=True, eq=False)
 class Ink:
     """Ink on the sheet, the grid taken away.
 
-    `density` is float32, (rows, cols): 0 on bare or ruled paper, about 1 in the middle of a full
-    stroke of the pen (scaled so), noise may be negative. `hidden` is True where the paper cannot be
-    seen (outside the page, punch hole, finger). `noise` is the standard deviation of `density` on
-    bare paper.
+    `density` is float32, (rows, cols): the share of each pixel that ink covers, 0 on bare or ruled
+    paper, about 1 in the middle of a full stroke, noise may be negative. `hidden` is True where
+    the paper cannot be seen. `noise` is the standard deviation of `density` on bare paper.
     """
 
     density: np.ndarray
     hidden: np.ndarray
     raster: Raster
     noise: float
+    ruled_mm: tuple[float, float, float, float]
+    source_px_per_mm: tuple[float, float]
+
+
+def find_ink(sheet: Sheet) -> Ink:
+    """Return the coverage of the sheet by ink.
+
+    Parameters
+    ----------
+    sheet : Sheet
+        Colour, grey or 1-bit, flattened so that the grid's period is whole pixels.
+    """
+    light = _even_light(sheet)
+    absorbed = _mix(light, sheet) if light.ndim == 3 else 1 - light
+    absorbed -= _ground(absorbed, sheet.raster)
+    quiet = absorbed[::3, ::3]
+    noise = 1.4826 * float(np.median(np.abs(quiet - np.median(quiet))))
+    full = _full_stroke(absorbed, noise)
+    return Ink(
+        density=(absorbed / full).astype(np.float32),
+        hidden=~sheet.inside,
+        raster=sheet.raster,
+        noise=max(noise / full, 0.004),
+        ruled_mm=sheet.ruled_mm,
+        source_px_per_mm=sheet.source_px_per_mm,
+    )
+
+
+def _even_light(sheet: Sheet) -> np.ndarray:
+    """Light relative to the local paper, float32: shade and vignetting divided out.
+
+    The local paper level is the mean of each millimetre cell, closed over 5 mm so that traces do
+    not lower it, then smoothed.
+    """
+    step = int(sheet.raster.px_per_mm)
+    pixels = sheet.pixels
+    rows, cols = pixels.shape[0] // step, pixels.shape[1] // step
+    cells = cv2.resize(
+        pixels[: rows * step, : cols * step], (cols, rows), interpolation=cv2.INTER_AREA
+    ).astype(np.float32)
+    level = cv2.morphologyEx(cells, cv2.MORPH_CLOSE, np.ones((5, 5), np.uint8))
+    level = cv2.GaussianBlur(level, (0, 0), 1.5)
+    level = cv2.resize(level, pixels.shape[1::-1], interpolation=cv2.INTER_LINEAR)
+    return pixels.astype(np.float32) / np.maximum(level, 8.0)
+
+
+def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:
+    """Absorbed light in the mixture of channels where ink is strong and the grid faint.
+
+    Weights w minimise w'(noise + grid grid')w under w'ink = 1: the matched filter that knows the
+    grid's colour. The ink's colour is read from the darkest strokes.
+    """
+    absorbed = 1 - light
+    step = sheet.raster.px_per_mm
+    sample = absorbed[1::3, 1::3].reshape(-1, 3)
+    row = np.arange(1, absorbed.shape[0], 3)
+    col = np.arange(1, absorbed.shape[1], 3)
+    y, x = sheet.raster.y_mm(row), sheet.raster.x_mm(col)
+    off_y, off_x = np.abs(y - np.round(y)), np.abs(x - np.round(x))
+    reach = 1.2 / step
+    on_line = ((off_y < reach)[:, None] | (off_x < reach)[None, :]).ravel()
+    between = ((off_y > 0.3)[:, None] & (off_x > 0.3)[None, :]).ravel()
+    usual = sample.mean(axis=1) < 0.4
+    grid = np.median(sample[on_line & usual], axis=0) - np.median(sample[between & usual], axis=0)
+    ink = np.ones(3)
+    for _ in range(2):
+        weights = _matched(ink, grid)
+        strength = sample @ weights
+        dark = strength > max(0.5 * np.quantile(strength, 0.9995), 0.1)
+        if np.count_nonzero(dark) < 50:
+            break
+        ink = np.median(sample[dark], axis=0)
+        ink = np.maximum(ink, 0.02) / np.max(ink)
+    return absorbed @ _matched(ink, grid).astype(np.float32)
+
+
+def _matched(ink: np.ndarray, grid: np.ndarray) -> np.ndarray:
+    noise = 0.02**2 * np.eye(3) + np.outer(grid, grid)
+    weights = np.linalg.solve(noise, ink)
+    return weights / (weights @ ink)
+
+
+def _ground(absorbed: np.ndarray, raster: Raster) -> np.ndarray:
+    """The periodic ground: the median 5 mm cell of each region, blended between regions."""
+    cell = round(CELL_MM * raster.px_per_mm)
+    rows, cols = (int(np.ceil(n / cell)) for n in absorbed.shape)
+    padded = np.pad(
+        absorbed,
+        ((0, rows * cell - absorbed.shape[0]), (0, cols * cell - absorbed.shape[1])),
+        mode="reflect",
+    )
+    cells = padded.reshape(rows, cell, cols, cell).swapaxes(1, 2)
+    tops, lefts = _region_starts(rows), _region_starts(cols)
+    size_y, size_x = min(REGION_CELLS, rows), min(REGION_CELLS, cols)
+    grounds = np.stack(
+        [
+            np.stack(
+                [
+                    _median_cell(cells[t : t + size_y, s : s + size_x].reshape(-1, cell, cell))
+                    for s in lefts
+                ]
+            )
+            for t in tops
+        ]
+    )
+    blend_y = _blend(np.array(tops) + (size_y - 1) / 2, rows)
+    blend_x = _blend(np.array(lefts) + (size_x - 1) / 2, cols)
+    flat = grounds.reshape(len(tops), -1)
+    down = (blend_y @ flat).reshape(rows, len(lefts), cell * cell)
+    full = np.einsum("xl,rlc->rxc", blend_x, down, optimize=True)
+    full = full.reshape(rows, cols, cell, cell).swapaxes(1, 2).reshape(rows * cell, cols * cell)
+    return full[: absorbed.shape[0], : absorbed.shape[1]]
+
+
+def _region_starts(count: int) -> list[int]:
+    regions = max(1, round(count / REGION_CELLS * 1.5))
+    return [round(s) for s in np.linspace(0, max(count - REGION_CELLS, 0), regions)]
+
+
+def _median_cell(cells: np.ndarray) -> np.ndarray:
+    return np.median(cells, axis=0)
+
+
+def _blend(centres: np.ndarray, count: int) -> np.ndarray:
+    """Linear weights (count, regions) of the regions at each cell."""
+    at = np.arange(count)
+    return np.stack(
+        [np.interp(at, centres, np.eye(len(centres))[k]) for k in range(len(centres))], axis=1
+    ).astype(np.float32)
+
+
+def _full_stroke(absorbed: np.ndarray, noise: float) -> float:
+    """Absorption in the middle of a stroke: what the darker half of clear ink reaches."""
+    ridge = absorbed[1::2, 1::2]
+    clear = ridge[ridge > max(8 * noise, 0.12)]
+    if clear.size < 100:
+        return 1.0
+    return max(float(np.quantile(clear, 0.85)), 0.1)
