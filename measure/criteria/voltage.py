@@ -17,6 +17,7 @@ CORNELL = "Casale et al. (Cornell), J Am Coll Cardiol 1985"
 def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
     """The two voltage sums, each with the clause that withholds it."""
     allowed = clause("(precondition) no left bundle branch block", _allowed(lbbb))
+    judged = allowed.result == "met"
     sum_limit = Limit(">=", 3.5, "mV")
     sokolow = some(
         look_at(_sum(case, "V1", "S", lateral, "R"), sum_limit, lead=f"V1, {lateral}", what="S + R")
@@ -31,7 +32,11 @@ def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
             "voltage_sokolow_lyon",
             "left ventricular voltage (Sokolow-Lyon)",
             SOKOLOW,
-            [allowed, clause("S in V1 + R in V5 or V6 >= 3.5 mV", sokolow)],
+            [
+                allowed,
+                # Withheld means undecided, also where the sum is small.
+                clause("S in V1 + R in V5 or V6 >= 3.5 mV", sokolow, required=judged),
+            ],
         ),
         finding(
             "voltage_cornell",
@@ -42,6 +47,7 @@ def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
                 clause(
                     "R in aVL + S in V3 > 2.8 mV in men, > 2.0 mV in women",
                     by_sex(case.person.sex, male=compare(2.8), female=compare(2.0)),
+                    required=judged,
                 ),
             ],
         ),
