@@ -5,12 +5,28 @@
     ├── NoGrid                  the scale of the paper cannot be found
     ├── NoTrace                 no ECG on this page
     ├── PoorResolution          too few pixels per millimetre to measure
-    └── OutputExists            a result is there already and --replace was not given
+    ├── OutputExists            a result is there already and --replace was not given
+    └── CannotWrite             a result cannot be written where it was asked for
+
+A stage says what happened and what to do; which file and page it was is added afterwards, by
+`at`, so that no stage has to know.
 """
+
+# ruff: noqa: N818 - each name says what happened
+
+from pathlib import Path
+from typing import TypeVar
 
 
 class InputError(Exception):
-    """One file or page cannot be used. The text says what happened and what to do."""
+    """One file or page cannot be used. The text says where, what happened and what to do."""
+
+    place: str = ""  # file and page in words, once they are known
+
+    def __str__(self) -> str:
+        """Place and message on one line."""
+        message = super().__str__()
+        return f"{self.place}: {message}" if self.place else message
 
 
 class UnreadableFile(InputError):
@@ -31,3 +47,23 @@ class PoorResolution(InputError):
 
 class OutputExists(InputError):
     """A result of that name exists and may not be replaced."""
+
+
+class CannotWrite(InputError):
+    """A result cannot be written where it was asked for."""
+
+
+Error = TypeVar("Error", bound=InputError)
+
+
+def at(error: Error, file_name: str, page: int | None = None) -> Error:
+    """The error, told where it happened; a place that it knows already is kept."""
+    if not error.place:
+        error.place = shown(file_name) if page is None else f"{shown(file_name)}, page {page}"
+    return error
+
+
+def shown(path: str | Path) -> str:
+    """A path that is safe to print on one line: control and undecodable characters escaped."""
+    text = str(path).encode("utf-8", "backslashreplace").decode("utf-8")
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)
