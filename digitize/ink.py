@@ -14,6 +14,11 @@ import numpy as np
 
 from digitize.sheet import Raster, Sheet
 
+_CODE = np.arange(256) / 255
+# IEC 61966-2-1 (sRGB): light from pixel values; optics blur light, not code values.
+_LINEAR_LIGHT = np.where(
+    _CODE <= 0.04045, _CODE / 12.92, ((_CODE + 0.055) / 1.055) ** 2.4
+).astype(np.float32)
 CELL_MM = 5  # grids repeat after 5 mm
 REGION_CELLS = 7  # the mean cell is taken over so many cells each way
 
@@ -74,7 +79,10 @@ def _even_light(sheet: Sheet) -> np.ndarray:
     level = cv2.morphologyEx(cells, cv2.MORPH_CLOSE, np.ones((5, 5), np.uint8))
     level = cv2.GaussianBlur(level, (0, 0), 1.5)
     level = cv2.resize(level, pixels.shape[1::-1], interpolation=cv2.INTER_LINEAR)
-    return pixels.astype(np.float32) / np.maximum(level, 8.0)
+    linear = _LINEAR_LIGHT[pixels]
+    return linear / np.interp(np.maximum(level, 8.0), np.arange(256), _LINEAR_LIGHT).astype(
+        np.float32
+    )
 
 
 def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:

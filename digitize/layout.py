@@ -2,17 +2,8 @@
 
 from dataclasses import dataclass
 
+from digitize.sheet import Box
 from digitize.tracing import Known, Origin
-
-
-@dataclass(frozen=True)
-class Box:
-    """A rectangle on the paper, in millimetres, y downward."""
-
-    left_mm: float
-    top_mm: float
-    right_mm: float
-    bottom_mm: float
 
 
 @dataclass(frozen=True)

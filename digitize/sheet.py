@@ -43,6 +43,16 @@ class Raster:
         return self.top_mm + row / self.px_per_mm
 
 
+@dataclass(frozen=True)
+class Box:
+    """A rectangle on the paper, in millimetres, y downward."""
+
+    left_mm: float
+    top_mm: float
+    right_mm: float
+    bottom_mm: float
+
+
 @dataclass(frozen=True, eq=False)
 class Sheet:
     """The page on a millimetre raster.
