@@ -10,10 +10,10 @@ from collections.abc import Iterator
 from contextlib import closing
 from typing import BinaryIO
 
+import cv2
 import numpy as np
 import pypdfium2 as pdfium
 import pypdfium2.raw as pdfium_c
-import skimage as ski
 
 from digitize.errors import UnreadableFile
 from digitize.pictures import Loader, Picture, check_size, credible_dpi, plain_pixels
@@ -148,10 +148,8 @@ def _same(one: np.ndarray, other: np.ndarray) -> bool:
     if min(*one.shape[:2], *other.shape[:2]) < 2:
         return False
     small = [
-        ski.transform.resize_local_mean(
-            ski.color.rgb2gray(picture) if picture.ndim == 3 else picture / 255.0,
-            (_PROBE_PX // 2, _PROBE_PX // 2),
-        )
+        cv2.resize(picture, (_PROBE_PX // 2, _PROBE_PX // 2), interpolation=cv2.INTER_AREA)
         for picture in (one, other)
     ]
-    return float(np.abs(small[0] - small[1]).mean()) * 255 < _PROBE_LEVELS
+    grey = [p.mean(axis=2) if p.ndim == 3 else p.astype(float) for p in small]
+    return float(np.abs(grey[0] - grey[1]).mean()) < _PROBE_LEVELS
