@@ -11,7 +11,7 @@ from tests.drawn.lettering import width_mm
 from tests.drawn.spec import LayoutSpec, LetterSpec, PageSpec
 
 CABRERA = ("aVL", "I", "-aVR", "II", "aVF", "III", *LEADS[6:])
-MARK_MM_S = 0.2  # the calibration pulse lasts 200 ms
+MARK_S = 0.2  # the calibration pulse is 1 mV for 200 ms
 MARK_ROOM_MM = 1.5  # between calibration mark and trace
 
 
@@ -156,27 +156,23 @@ def _panel(
 def _marks(
     layout: LayoutSpec, panels: tuple[PanelTruth, ...]
 ) -> Iterator[tuple[np.ndarray, np.ndarray]]:
-    """Calibration pulse of each row (of each gain where a row holds two)."""
-    if layout.mark == "none":
-        return
-    wide_mm = MARK_MM_S * layout.speed_mm_s
-    tail_mm = layout.mark_tail_mm
+    """Calibration pulse of each row (at either end where it holds two gains)."""
+    tail_mm, pulse_mm = layout.mark_tail_mm, MARK_S * layout.speed_mm_s
+    long_mm = pulse_mm + 2 * tail_mm
+    steps_mm = np.array([0, tail_mm, tail_mm, long_mm - tail_mm, long_mm - tail_mm, long_mm])
     for row in sorted({panel.row for panel in panels}):
         inside = [panel for panel in panels if panel.row == row]
-        if layout.mark == "left":
-            right_mm, panel = inside[0].left_mm - MARK_ROOM_MM, inside[0]
-        elif layout.mark == "right":
-            panel = inside[-1]
-            right_mm = panel.box_mm[2] + MARK_ROOM_MM + wide_mm + 2 * tail_mm
-        else:  # in the gap before the middle column
+        starts = []
+        if layout.mark in ("left", "both"):
+            starts.append((inside[0], inside[0].left_mm - MARK_ROOM_MM - long_mm))
+        if layout.mark in ("right", "both"):
+            starts.append((inside[-1], inside[-1].box_mm[2] + MARK_ROOM_MM))
+        if layout.mark == "middle":  # in the gap before the middle column
             panel = inside[len(inside) // 2]
-            right_mm = panel.left_mm - 0.5
-        start_mm = right_mm - wide_mm - 2 * tail_mm
-        steps = np.array(
-            [0, tail_mm, tail_mm, tail_mm + wide_mm, tail_mm + wide_mm, right_mm - start_mm]
-        )
-        height_mm = np.array([0, 0, 1, 1, 0, 0]) * panel.gain_mm_mv
-        yield start_mm + steps, panel.baseline_mm - height_mm
+            starts.append((panel, panel.left_mm - 0.5 - long_mm))
+        for panel, start_mm in starts:
+            height_mm = np.array([0, 0, 1, 1, 0, 0]) * panel.gain_mm_mv
+            yield start_mm + steps_mm, panel.baseline_mm - height_mm
 
 
 def _separators(layout: LayoutSpec, panels: tuple[PanelTruth, ...], pen_mm: float) -> list[Stroke]:
@@ -223,7 +219,7 @@ def _labels(
             "start": (panel.left_mm + 0.5, panel.baseline_mm - 1.2),
         }[letters.label_place]
         if letters.label_place == "left" and layout.mark == "left" and panel.column == 0:
-            x_mm -= MARK_MM_S * layout.speed_mm_s + 2 * layout.mark_tail_mm + MARK_ROOM_MM
+            x_mm -= MARK_S * layout.speed_mm_s + 2 * layout.mark_tail_mm + MARK_ROOM_MM
         yield Word(panel.lead, x_mm, y_mm, high_mm, letters.font)
 
 

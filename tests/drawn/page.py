@@ -10,6 +10,7 @@ from dataclasses import dataclass
 
 import cv2
 import numpy as np
+from PIL import Image
 
 from digitize.sheet import Raster
 from tests.drawn.capture import MM_PER_INCH, CaptureMap, resample, scan_map
@@ -22,6 +23,8 @@ from tests.drawn.spec import CaptureSpec, Colour, PageSpec
 
 _FINEST_PX_PER_MM = 24.0
 _COARSEST_PX_PER_MM = 14.0
+_INK_STEPS, _MOST_INK = 500, 6  # inks are tabled in steps of 1/500, up to six layers
+_LIGHT_STEPS = 65535
 _LID: Colour = (250, 250, 250)  # what a scanner sees beside the sheet
 
 
@@ -51,7 +54,7 @@ class DrawnPage:
     @property
     def bilevel(self) -> bool:
         """True where the pixels are 0 and 255 alone."""
-        return self.spec.capture.mode in ("bilevel", "dither")
+        return self.spec.capture.mode in ("bilevel", "diffused")
 
 
 def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
@@ -62,9 +65,7 @@ def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
     raster, shape = _raster(spec)
     inks = _inks(composition, spec, raster, shape, rng)
     grey = spec.capture.mode != "colour"
-    channels = [
-        _channel(k, inks, spec, raster, shape, page_map) for k in ((1,) if grey else (0, 1, 2))
-    ]
+    channels = [_channel(k, inks, spec, raster, page_map) for k in ((1,) if grey else (0, 1, 2))]
     pixels = _coded(np.stack(channels, axis=-1), spec.capture, rng)
     layout = spec.layout
     truth = PageTruth(
@@ -115,7 +116,14 @@ def _inks(
             height_mm=word.height_mm,
         )
     inks = [(draw_grid(spec.paper, raster, shape), spec.paper.grid_colour), (pen, spec.pen.colour)]
-    return inks if letters is pen else [*inks, (letters, spec.letters.colour)]
+    if letters is not pen:
+        inks.append((letters, spec.letters.colour))
+    return [(_in_steps(amount), colour) for amount, colour in inks]
+
+
+def _in_steps(amount: np.ndarray) -> np.ndarray:
+    """Amounts of ink as whole steps for the tables of light."""
+    return np.clip(amount * _INK_STEPS, 0, _MOST_INK * _INK_STEPS).astype(np.uint16)
 
 
 def _slow(n: int, rng: np.random.Generator) -> np.ndarray:
@@ -129,15 +137,16 @@ def _channel(
     inks: list[tuple[np.ndarray, Colour]],
     spec: PageSpec,
     raster: Raster,
-    shape: tuple[int, int],
     page_map: CaptureMap,
 ) -> np.ndarray:
     """Linear light of one colour channel at every pixel of the picture."""
-    light = np.full(shape, _linear(spec.paper.colour[k]), np.float32)
-    for amount, colour in inks:
-        passing = _linear(colour[k]) / _linear(spec.paper.colour[k])
-        # Partly covered: light is shared by area. Covered twice: densities add.
-        light *= np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)
+    paper_light = _linear(spec.paper.colour[k])
+    light = np.float32(paper_light)
+    for steps, colour in inks:
+        passing = max(_linear(colour[k]) / paper_light, 1e-3)
+        amount = np.arange(_MOST_INK * _INK_STEPS + 1, dtype=np.float32) / _INK_STEPS
+        # Partly covered: light is shared by area. Covered more than once: densities add.
+        light = light * np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)[steps]
     pixel_mm = MM_PER_INCH / np.array(spec.capture.dpi)
     if spec.capture.turn_deg % 180:
         pixel_mm = pixel_mm[::-1]
@@ -154,10 +163,14 @@ def _linear(code: float) -> float:
 
 def _coded(light: np.ndarray, capture: CaptureSpec, rng: np.random.Generator) -> np.ndarray:
     """Code values of linear light, with the sensor's noise, in the asked mode."""
-    code = 255 * np.clip(light, 0, 1) ** np.float32(1 / 2.2)
+    table = 255 * (np.arange(_LIGHT_STEPS + 1, dtype=np.float32) / _LIGHT_STEPS) ** (1 / 2.2)
+    code = table[(np.clip(light, 0, 1) * _LIGHT_STEPS).astype(np.uint16)]
     if capture.noise:
-        code += capture.noise * rng.standard_normal(code.shape, np.float32)
+        code += np.float32(capture.noise) * rng.standard_normal(code.shape, np.float32)
     code = code if code.shape[-1] == 3 else code[..., 0]
     if capture.mode == "bilevel":
-        return np.where(code < 128, 0, 255).astype(np.uint8)
-    return np.clip(np.round(code), 0, 255).astype(np.uint8)
+        return np.where(code < capture.threshold, 0, 255).astype(np.uint8)
+    grey = np.clip(np.round(code), 0, 255).astype(np.uint8)
+    if capture.mode == "diffused":  # Floyd and Steinberg's error diffusion
+        return np.asarray(Image.fromarray(grey).convert("1")).astype(np.uint8) * np.uint8(255)
+    return grey

@@ -65,7 +65,7 @@ class LayoutSpec:
     top_mm: float = 45.0  # zero line of the first row
     pitch_mm: float = 35.0  # from row to row
     gap_mm: float = 0.0  # between columns; time runs on through it
-    mark: str = "left"  # "left", "right", "middle", "none"
+    mark: str = "left"  # "left", "right", "both", "middle", "none"
     mark_tail_mm: float = 1.5  # zero line on either side of the calibration pulse
     separator: str = "none"  # "none", "ticks", "dashes", "line", "notch"
 
@@ -118,7 +118,8 @@ class CaptureSpec:
     turn_deg: int = 0  # clockwise: 0, 90, 180, 270
     blur_mm: float = 0.04
     noise: float = 1.5  # grey levels
-    mode: str = "colour"  # "colour", "grey", "bilevel", "dither"
+    mode: str = "colour"  # "colour", "grey", "bilevel", "diffused"
+    threshold: float = 128.0  # code value that divides black from white
     jpeg_quality: int | None = None
     dpi_tag: str = "right"  # "right", "absent", "wrong"
     photo: PhotoSpec | None = None
