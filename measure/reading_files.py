@@ -8,8 +8,6 @@ bytes.
 import dataclasses
 import json
 import math
-import os
-import tempfile
 from collections.abc import Mapping
 from importlib import metadata
 from pathlib import Path
@@ -17,7 +15,7 @@ from typing import Any
 
 import numpy as np
 
-from digitize.errors import OutputExists, UnreadableFile
+from digitize.errors import UnreadableFile
 from measure.quantity import Quantity
 from measure.reading import Reading
 from measure.wording import NOTICE, ONE_SE
@@ -56,16 +54,10 @@ def document(reading: Reading) -> dict[str, Any]:
     )
 
 
-def save_reading(reading: Reading, path: Path, *, replace: bool = False) -> None:
-    """Write NAME.reading.json in one step.
-
-    Raises
-    ------
-    OutputExists
-        There is a file of that name and `replace` is not given.
-    """
+def to_json(reading: Reading) -> bytes:
+    """The content of NAME.reading.json."""
     text = json.dumps(document(reading), ensure_ascii=False, indent=1, allow_nan=False)
-    write_whole(path, text + "\n", replace=replace)
+    return (text + "\n").encode()
 
 
 def load_document(path: Path) -> dict[str, Any]:
@@ -93,23 +85,6 @@ def quantity_of(entry: Mapping[str, Any]) -> Quantity:
     value, se = (math.nan if entry[k] is None else float(entry[k]) for k in ("value", "se"))
     leads = tuple(entry["leads"])
     return Quantity(value, se, entry["unit"], leads, entry["beats"], entry.get("reason"))
-
-
-def write_whole(path: Path, text: str, *, replace: bool) -> None:
-    """Write a text file beside and rename it, so that it is there whole or not at all."""
-    if path.exists() and not replace:
-        raise OutputExists(f"{path}: exists already; give --replace to write it anew.")
-    handle, beside = tempfile.mkstemp(dir=path.parent, prefix=".", suffix=".part")
-    try:
-        with os.fdopen(handle, "w", encoding="utf-8") as file:
-            file.write(text)
-            file.flush()
-            os.fsync(file.fileno())
-        Path(beside).chmod(0o644)
-        Path(beside).replace(path)
-    except OSError:
-        Path(beside).unlink(missing_ok=True)
-        raise
 
 
 def version() -> str:

@@ -11,7 +11,7 @@ NOTICE = (
 )
 ONE_SE = "± is one standard error."
 SIGNS = {"met": "■", "undecided": "◪", "not met": "□"}  # told apart without colour
-_DECIMALS = {"mV": 2, "1/min": 0, "mV ms": 1, "": 2}
+_DECIMALS = {"mV": 2, "1/min": 1, "mV ms": 1, "": 2}
 _SHOWN_UNIT = {"deg": "°", "1/min": "/min"}
 
 
@@ -25,10 +25,17 @@ def number(quantity: Quantity) -> str:
 def value_text(value: float, se: float, unit: str) -> str:
     """Value, error and unit, rounded as far as the unit makes sense."""
     places = _DECIMALS.get(unit, 0)
+    if 0 < se < 0.5 * 10.0**-places:  # an error that would be shown as 0
+        places += 1
     shown_unit = _SHOWN_UNIT.get(unit, unit)
     glue = "" if unit == "deg" else " "
     error = "" if math.isnan(se) else f" ± {_fixed(se, places)}"
     return f"{_fixed(value, places)}{error}{glue}{shown_unit}".rstrip()
+
+
+def signed(quantity: Quantity) -> str:
+    """A value alone, with its sign; a dash where there is none."""
+    return f"{quantity.value:+.2f}" if quantity.known else "\N{EN DASH}"
 
 
 def origin(quantity: Quantity) -> str:
@@ -42,22 +49,35 @@ def origin(quantity: Quantity) -> str:
     return "; ".join(part for part in (leads, beats) if part)
 
 
-def evidence_text(seen: Evidence) -> str:
-    """One piece of evidence, as in "V6: R peak time 72 ± 3 ms (> 60 ms)"."""
-    value = "" if math.isnan(seen.value) else " " + value_text(seen.value, seen.se, seen.unit)
-    at = ""
-    if seen.time_ms is not None and math.isfinite(seen.time_ms) and seen.unit != "ms":
-        at = f" at {seen.time_ms:.0f} ms"
-    lead = "" if seen.lead == "overall" else f"{seen.lead}: "
-    return f"{lead}{seen.what}{value}{at} ({seen.threshold})"
+def evidence_lines(evidence: tuple[Evidence, ...]) -> tuple[str, ...]:
+    """Evidence put together: one line for each kind of value, with all its leads.
+
+    As in "R peak time (> 60 ms): V5 72 ± 3 ms, V6 81 ± 3 ms". A value that was held against two
+    thresholds is shown once with both.
+    """
+    thresholds: dict[tuple[str, ...], dict[str, None]] = {}
+    for seen in evidence:
+        thresholds.setdefault(_place_and_value(seen), {})[seen.threshold] = None
+    lines: dict[tuple[str, str], list[str]] = {}
+    for (lead, what, value), wanted in thresholds.items():
+        shown = " ".join(part for part in (lead, value) if part)
+        lines.setdefault((what, ", ".join(wanted)), []).append(shown)
+    return tuple(
+        nice(f"{what} ({wanted}): {', '.join(places)}") for (what, wanted), places in lines.items()
+    )
 
 
-def clause_text(clause: Clause) -> str:
-    """A clause with its evidence, or with what would settle it."""
-    parts = [evidence_text(seen) for seen in clause.evidence]
+def clause_lines(clause: Clause) -> tuple[str, ...]:
+    """The evidence of a clause, and what would settle it where it is undecided."""
+    lines = evidence_lines(clause.evidence)
     if clause.result == "undecided" and clause.settle:
-        parts.append(f"to settle it: {clause.settle}")
-    return "; ".join(parts)
+        return (*lines, nice(f"to settle it: {clause.settle}"))
+    return lines
+
+
+def nice(text: str) -> str:
+    """Signs as they are printed."""
+    return text.replace(">=", "≥").replace("<=", "≤").replace(" -", " \N{MINUS SIGN}")
 
 
 def deciding(finding: Finding) -> tuple[Clause, ...]:
@@ -66,6 +86,17 @@ def deciding(finding: Finding) -> tuple[Clause, ...]:
     if finding.result == "met":
         return needed
     return tuple(c for c in needed if c.result == finding.result)
+
+
+def _place_and_value(seen: Evidence) -> tuple[str, str, str]:
+    """Lead, kind and value of one piece of evidence; a shape stands where there is no number."""
+    lead = "" if seen.lead == "overall" else seen.lead
+    if math.isnan(seen.value):
+        return lead, "shape", seen.what.removeprefix("shape ")
+    value = value_text(seen.value, seen.se, seen.unit)
+    if seen.time_ms is not None and math.isfinite(seen.time_ms) and seen.unit == "mV":
+        value += f" at {seen.time_ms:.0f} ms"
+    return lead, seen.what, value
 
 
 def _fixed(value: float, places: int) -> str:

@@ -1,7 +1,7 @@
 """The frontal QRS axis by name: normal, left, right, and how far."""
 
-from measure.criteria.case import OVERALL, Case
-from measure.criteria.decide import Limit, Look, clause, every, finding, look_at, unseen
+from measure.criteria.case import Case
+from measure.criteria.decide import OVERALL, Limit, Look, clause, every, finding, look_at, unseen
 from measure.criteria.finding import Finding
 from measure.criteria.lbbb import AHA
 from measure.quantity import Quantity

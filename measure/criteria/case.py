@@ -8,15 +8,13 @@ import numpy as np
 
 from measure.average import DominantBeat
 from measure.boundaries import Boundaries
-from measure.criteria.decide import Limit, Look, every, look_at, unseen
+from measure.criteria.decide import OVERALL, Limit, Look, every, look_at, unseen
 from measure.quantity import Quantity
 from measure.rhythm import Rhythm
 from measure.waves import LeadWaves
 
 if TYPE_CHECKING:
     from measure.reading import Person
-
-OVERALL = "overall"  # stands for the lead where a value belongs to all leads together
 
 
 @dataclass(frozen=True, eq=False)

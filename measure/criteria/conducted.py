@@ -3,8 +3,8 @@
 The definitions of block describe beats that reach the ventricles through the His bundle alone.
 """
 
-from measure.criteria.case import OVERALL, Case
-from measure.criteria.decide import Limit, Look, at_least, clause, finding, unseen
+from measure.criteria.case import Case
+from measure.criteria.decide import OVERALL, Limit, Look, at_least, clause, finding, unseen
 from measure.criteria.finding import Clause, Finding
 from measure.criteria.shape import notched_or_slurred
 from measure.waves import LeadWaves

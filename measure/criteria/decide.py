@@ -16,6 +16,8 @@ from typing import Literal
 from measure.criteria.finding import Clause, Evidence, Finding, Result
 from measure.quantity import Quantity
 
+OVERALL = "overall"  # stands for the lead where a value belongs to all leads together
+
 
 @dataclass(frozen=True)
 class Look:
@@ -64,7 +66,7 @@ def look_at(
 
 def unseen(lead: str, reason: str) -> Look:
     """An undecided look where nothing could be measured."""
-    return Look("undecided", (), f"{lead}: {reason}")
+    return Look("undecided", (), reason if lead == OVERALL else f"{lead}: {reason}")
 
 
 def every(looks: Iterable[Look]) -> Look:
@@ -134,8 +136,9 @@ def as_look(other: Finding) -> Look:
 def _close_call(seen: Evidence) -> str:
     number = f"{seen.value:.{2 if seen.unit == 'mV' else 0}f}"
     error = f"{seen.se:.{2 if seen.unit == 'mV' else 0}f}"
+    place = "" if seen.lead == OVERALL else f"{seen.lead}: "
     return (
-        f"{seen.lead}: {seen.what} {number} ± {error} {seen.unit} is too close to "
+        f"{place}{seen.what} {number} ± {error} {seen.unit} is too close to "
         f"{seen.threshold}; measure it by hand or on a sharper copy"
     )
 

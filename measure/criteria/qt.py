@@ -5,8 +5,9 @@ all four say the same. With a wide QRS the depolarisation itself lengthens QT: t
 stays undecided and QT less 48.5 % of the QRS is judged in its place.
 """
 
-from measure.criteria.case import OVERALL, Case
+from measure.criteria.case import Case
 from measure.criteria.decide import (
+    OVERALL,
     Limit,
     Look,
     by_sex,

@@ -5,8 +5,18 @@ The block itself raises and lowers these sums, so they say nothing about the mus
 
 from collections.abc import Callable
 
-from measure.criteria.case import OVERALL, Case
-from measure.criteria.decide import Limit, Look, by_sex, clause, finding, look_at, some, unseen
+from measure.criteria.case import Case
+from measure.criteria.decide import (
+    OVERALL,
+    Limit,
+    Look,
+    by_sex,
+    clause,
+    finding,
+    look_at,
+    some,
+    unseen,
+)
 from measure.criteria.finding import Finding
 from measure.quantity import Quantity, missing
 

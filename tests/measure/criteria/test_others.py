@@ -84,7 +84,7 @@ def test_pr_120_to_200_ms(pr_ms, key, result):  # common practice
 
 def test_pr_without_a_p_wave_is_undecided_with_the_reason():
     found = made.findings(normal_leads(), pr_ms=missing("ms", "no P wave found"))
-    assert found["pr_long"].clauses[0].settle == "overall: PR: no P wave found"
+    assert found["pr_long"].clauses[0].settle == "PR: no P wave found"
 
 
 def qtc(value):
