@@ -1,0 +1,115 @@
+"""From a page of pixels to calibrated leads: every stage, in order."""
+
+import dataclasses
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from pathlib import Path
+
+from digitize.calibrate import to_panels
+from digitize.checks import find_checks
+from digitize.errors import InputError, at
+from digitize.geometry import to_geometry
+from digitize.grid import Grid, find_grid
+from digitize.ink import Ink, find_ink
+from digitize.layout import Layout, find_layout
+from digitize.options import Options
+from digitize.pages import Page, open_pages
+from digitize.sheet import Sheet, flatten
+from digitize.trace import Stroke, trace_panels
+from digitize.tracing import Panel, Tracing
+from digitize.words import read_printing
+
+
+@dataclass(frozen=True, eq=False)
+class Stages:
+    """One page and what each stage made of it."""
+
+    page: Page
+    grid: Grid
+    sheet: Sheet
+    ink: Ink
+    layout: Layout
+    strokes: tuple[Stroke, ...]
+    tracing: Tracing
+
+
+def read_page(
+    page: Page, options: Options, *, on_stage: Callable[[str], None] = lambda name: None
+) -> Stages:
+    """Return one page read from end to end.
+
+    Parameters
+    ----------
+    page : Page
+        As `open_pages` gives it.
+    options : Options
+        What a person knows better than the page.
+    on_stage : callable, optional
+        Called with the name of each stage as it begins, and with "" after the last.
+
+    Raises
+    ------
+    NoGrid, NoTrace, PoorResolution
+        The page cannot be calibrated, or there is no ECG on it.
+    """
+    on_stage("grid")
+    grid = find_grid(page, options)
+    on_stage("sheet")
+    sheet = flatten(page, grid)
+    on_stage("ink")
+    ink = find_ink(sheet)
+    on_stage("printing")
+    printing = read_printing(ink)
+    on_stage("layout")
+    layout = find_layout(ink, printing, options)
+    on_stage("trace")
+    strokes = trace_panels(ink, layout)
+    on_stage("checks")
+    panels = to_panels(layout, strokes)
+    tracing = to_tracing(page, grid, layout, strokes, panels, options)
+    tracing = dataclasses.replace(tracing, checks=find_checks(tracing))
+    on_stage("")
+    return Stages(page, grid, sheet, ink, layout, strokes, tracing)
+
+
+def read_stages(
+    path: str | Path,
+    options: Options,
+    *,
+    on_error: Callable[[InputError], None] | None = None,
+    on_stage: Callable[[str], None] = lambda name: None,
+) -> Iterator[Stages]:
+    """Every page of a file, read from end to end; see `digitize.read_pages`."""
+    on_stage("page")
+    for page in open_pages(path, max_megapixels=options.max_megapixels, on_error=on_error):
+        try:
+            stages = read_page(page, options, on_stage=on_stage)
+        except InputError as error:
+            at(error, page.source.file_name, page.source.page)
+            if on_error is None:
+                raise
+            on_error(error)
+        else:
+            yield stages
+        on_stage("page")
+
+
+def to_tracing(
+    page: Page,
+    grid: Grid,
+    layout: Layout,
+    strokes: tuple[Stroke, ...],
+    panels: tuple[Panel, ...],
+    options: Options,
+) -> Tracing:
+    """Return the panels with where they come from and all that scales them."""
+    return Tracing(
+        source=page.source,
+        panels=panels,
+        speed_mm_s=layout.speed_mm_s,
+        gain_mm_mv=layout.gain_mm_mv,
+        layout=layout.name,
+        timing=layout.timing,
+        geometry=to_geometry(grid, layout, strokes),
+        options=dataclasses.asdict(options),
+    )
