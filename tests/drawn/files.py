@@ -1,6 +1,7 @@
 """Drawn pages as files: PNG, JPEG, 1-bit TIFF with its tags, PDF with one image page."""
 
 from pathlib import Path
+from typing import Any
 
 from PIL import Image
 
@@ -11,7 +12,7 @@ def write_page(drawn: DrawnPage, path: Path) -> Path:
     """Write a page in the format that the suffix of `path` names; return `path`."""
     capture = drawn.spec.capture
     image = Image.fromarray(drawn.pixels)
-    tag = {
+    tag: dict[str, Any] = {
         "right": {"dpi": capture.dpi},
         "absent": {},
         "wrong": {"dpi": (72.0, 72.0)},
@@ -25,7 +26,7 @@ def write_page(drawn: DrawnPage, path: Path) -> Path:
     elif suffix in (".jpg", ".jpeg"):
         image.save(path, quality=capture.jpeg_quality or 90, **tag)
     elif suffix == ".pdf":
-        image.save(path, "PDF", resolution=capture.dpi[0], quality=capture.jpeg_quality or 90)
+        image.save(path, resolution=capture.dpi[0], quality=capture.jpeg_quality or 90)
     else:
         image.save(path, **tag)
     return path

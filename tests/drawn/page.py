@@ -141,18 +141,18 @@ def _channel(
 ) -> np.ndarray:
     """Linear light of one colour channel at every pixel of the picture."""
     paper_light = _linear(spec.paper.colour[k])
-    light = np.float32(paper_light)
+    light = np.full(inks[0][0].shape, paper_light, np.float32)
     for steps, colour in inks:
         passing = max(_linear(colour[k]) / paper_light, 1e-3)
         amount = np.arange(_MOST_INK * _INK_STEPS + 1, dtype=np.float32) / _INK_STEPS
         # Partly covered: light is shared by area. Covered more than once: densities add.
-        light = light * np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)[steps]
+        light *= np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)[steps]
     pixel_mm = MM_PER_INCH / np.array(spec.capture.dpi)
     if spec.capture.turn_deg % 180:
         pixel_mm = pixel_mm[::-1]
     # A square aperture of width a has variance a^2/12; bilinear sampling adds none to speak of.
     sigma_px = np.hypot(spec.capture.blur_mm, pixel_mm / np.sqrt(12)) * raster.px_per_mm
-    light = cv2.GaussianBlur(light, (0, 0), sigmaX=sigma_px[0], sigmaY=sigma_px[1])
+    light = cv2.GaussianBlur(light, (0, 0), sigmaX=float(sigma_px[0]), sigmaY=float(sigma_px[1]))
     return resample(light, raster, page_map, _linear(_LID[k]))
 
 

@@ -189,7 +189,10 @@ def _letters(rng: np.random.Generator, layout: LayoutSpec) -> LetterSpec:
     ]
     spelling = spellings[3] if layout.chest_gain_mm_mv else str(rng.choice(spellings))
     run = () if rng.random() < 0.2 else (spelling,)
-    head = ("Marram Head Infirmary", f"Invented patient {rng.integers(1000, 9999)}")
+    head: tuple[str, ...] = (
+        "Marram Head Infirmary",
+        f"Invented patient {rng.integers(1000, 9999)}",
+    )
     if rng.random() < 0.5:
         head = ("   ".join(head),)
     at_head = bool(rng.random() < 0.3)
