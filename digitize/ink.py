@@ -20,6 +20,7 @@ _LINEAR_LIGHT = np.where(
     _CODE <= 0.04045, _CODE / 12.92, ((_CODE + 0.055) / 1.055) ** 2.4
 ).astype(np.float32)
 CELL_MM = 5  # grids repeat after 5 mm
+OPAQUE = 0.75  # ground darker than this share of a full stroke hides the ink over it
 REGION_CELLS = 7  # the mean cell is taken over so many cells each way
 
 
@@ -50,12 +51,17 @@ def find_ink(sheet: Sheet) -> Ink:
     """
     light = _even_light(sheet)
     absorbed = _mix(light, sheet) if light.ndim == 3 else 1 - light
-    absorbed -= _ground(absorbed, sheet.raster)
+    ground = _ground(absorbed, sheet.raster)
+    absorbed -= ground
     quiet = absorbed[::3, ::3]
     noise = 1.4826 * float(np.median(np.abs(quiet - np.median(quiet))))
     full = _full_stroke(absorbed, noise)
+    dark = np.clip(ground / (full + np.maximum(np.median(ground), 0)), 0, 1)
+    density = absorbed / (full * np.maximum(1 - dark, 0.25))
+    if np.mean(dark[::3, ::3] > OPAQUE) > 0.002:
+        density = _bridge(density, dark > OPAQUE)
     return Ink(
-        density=(absorbed / full).astype(np.float32),
+        density=density.astype(np.float32),
         hidden=~sheet.inside,
         raster=sheet.raster,
         noise=max(noise / full, 0.004),
@@ -93,9 +99,9 @@ def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:
     """
     absorbed = 1 - light
     step = sheet.raster.px_per_mm
-    sample = absorbed[1::3, 1::3].reshape(-1, 3)
-    row = np.arange(1, absorbed.shape[0], 3)
-    col = np.arange(1, absorbed.shape[1], 3)
+    sample = absorbed[1::5, 1::5].reshape(-1, 3)
+    row = np.arange(1, absorbed.shape[0], 5)
+    col = np.arange(1, absorbed.shape[1], 5)
     y, x = sheet.raster.y_mm(row), sheet.raster.x_mm(col)
     off_y, off_x = np.abs(y - np.round(y)), np.abs(x - np.round(x))
     reach = 1.2 / step
@@ -168,6 +174,15 @@ def _blend(centres: np.ndarray, count: int) -> np.ndarray:
     return np.stack(
         [np.interp(at, centres, np.eye(len(centres))[k]) for k in range(len(centres))], axis=1
     ).astype(np.float32)
+
+
+def _bridge(density: np.ndarray, opaque: np.ndarray) -> np.ndarray:
+    """Fill pixels under opaque grid lines from their neighbours beside the line."""
+    opaque = cv2.dilate(opaque.astype(np.uint8), np.ones((3, 3), np.uint8)) > 0
+    open_ = (~opaque).astype(np.float32)
+    weight = cv2.GaussianBlur(open_, (0, 0), 1.2)
+    filled = cv2.GaussianBlur(density * open_, (0, 0), 1.2) / np.maximum(weight, 1e-3)
+    return np.where(opaque, filled, density)
 
 
 def _full_stroke(absorbed: np.ndarray, noise: float) -> float:

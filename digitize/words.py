@@ -31,9 +31,11 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
     "V4R": ("V4R", "V4r"),
 }
 LETTER_MM = (0.7, 6.5)  # height of a letter
-WIDEST_LETTER_MM = 7.0
+WIDEST_LETTER_MM = 9.0
 INK_LEVEL = 0.35
-MOST_LINES = 40  # lines of printing read on one page
+NAME_MM = (1.1, 6.0)  # height of a lead name
+MOST_LINES = 30  # lines of printing read on one page
+MOST_WORDS = 70  # words held against the lead names on one page
 
 
 @dataclass(frozen=True)
@@ -63,8 +65,9 @@ def read_printing(ink: Ink) -> Printing:
     """Return the words and lines of a sheet, read."""
     letters = _letters(ink)
     words = _join(letters, reach=0.75)
-    lines = [line for line in _join(letters, reach=2.2) if line.right_mm - line.left_mm > 8]
-    short = [w for w in words if w.right_mm - w.left_mm < 4.5 * (w.bottom_mm - w.top_mm) + 1]
+    lines = [line for line in _join(letters, reach=3.5) if line.right_mm - line.left_mm > 8]
+    short = [w for w in words if _name_sized(w)]
+    short = sorted(short, key=lambda w: -_blackness(ink, w))[:MOST_WORDS]
     lines = sorted(lines, key=lambda b: _off_middle(b, ink))[::-1][:MOST_LINES]
     return Printing(
         words=tuple(read_boxes(ink, short)),
@@ -94,7 +97,8 @@ def _name_scores(probabilities: np.ndarray) -> dict[str, float]:
 
 def _letters(ink: Ink) -> list[Box]:
     """Boxes of separate pieces of ink that have the size of a letter."""
-    mask = (ink.density > INK_LEVEL).astype(np.uint8)
+    edge = cv2.dilate(ink.hidden.astype(np.uint8), np.ones((15, 15), np.uint8))
+    mask = ((ink.density > INK_LEVEL) & (edge == 0)).astype(np.uint8)
     _, _, stats, _ = cv2.connectedComponentsWithStats(mask, connectivity=8)
     scale = ink.raster.px_per_mm
     left, top, width, height, area = (stats[1:, k] / scale for k in range(5))
@@ -103,7 +107,7 @@ def _letters(ink: Ink) -> list[Box]:
         (height > LETTER_MM[0])
         & (height < LETTER_MM[1])
         & (width < WIDEST_LETTER_MM)
-        & (width < 3.5 * height)
+        & (width < 7 * height)
         & (area > 0.08 * height)
     )
     x0, y0 = ink.raster.left_mm, ink.raster.top_mm
@@ -134,6 +138,19 @@ def _join(letters: list[Box], reach: float) -> list[Box]:
         else:
             boxes.append(letter)
     return boxes
+
+
+def _name_sized(box: Box) -> bool:
+    height = box.bottom_mm - box.top_mm
+    return NAME_MM[0] < height < NAME_MM[1] and box.right_mm - box.left_mm < 4.5 * height
+
+
+def _blackness(ink: Ink, box: Box) -> float:
+    """Ink of the blackest part of a box: print is as black as the trace, residue of grid is not."""
+    r = ink.raster
+    rows = slice(int(r.row(box.top_mm)), int(r.row(box.bottom_mm)) + 1)
+    cols = slice(int(r.col(box.left_mm)), int(r.col(box.right_mm)) + 1)
+    return float(np.quantile(ink.density[rows, cols], 0.9))
 
 
 def _off_middle(box: Box, ink: Ink) -> float:

@@ -1,0 +1,173 @@
+"""The rows of trace on a sheet: height, extent, and where they break.
+
+Each column of pixels crosses each row in one short run of ink, or a long one at a steep stroke. A
+run counts as one, whatever its length, so the profile of runs over height peaks where the traces
+spend their time: at their baselines.
+"""
+
+from dataclasses import dataclass
+
+import cv2
+import numpy as np
+import scipy as sp
+
+from digitize.ink import Ink
+from digitize.sheet import Box
+
+INK_LEVEL = 0.35
+STEP_MM = 0.25  # columns are looked at this far apart
+BIN_MM = 0.25
+LONG_RULE_MM = 28.0  # a straight upright line this long is a frame or separator, no QRS
+FLAT_RULE_MM = 70.0  # a straight level line this long is a frame
+LEAST_PITCH_MM = 6.0
+
+
+@dataclass(frozen=True, eq=False)
+class Runs:
+    """Vertical runs of ink on sampled columns: place and both ends, in mm; sorted by x."""
+
+    x_mm: np.ndarray
+    top_mm: np.ndarray
+    bottom_mm: np.ndarray
+
+
+@dataclass(frozen=True)
+class Row:
+    """One row of trace: usual height, and its extent from first to last ink."""
+
+    y_mm: float
+    left_mm: float
+    right_mm: float
+
+
+@dataclass(frozen=True, eq=False)
+class Rows:
+    """All rows from top to bottom, their distance, and the runs they were found by.
+
+    `uprights` are long straight vertical lines (frames, separators).
+    """
+
+    rows: tuple[Row, ...]
+    pitch_mm: float
+    runs: Runs
+    uprights: tuple[Box, ...]
+
+
+def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
+    """Return the rows of trace on a sheet.
+
+    Parameters
+    ----------
+    ink : Ink
+        Traces, printing and dirt.
+    letters : tuple of Box
+        Separate letters: not part of any trace.
+    """
+    mask = (ink.density > INK_LEVEL).astype(np.uint8)
+    for box in letters:
+        mask[_window(ink, box)] = 0
+    mask, uprights = _without_rules(mask, ink)
+    runs = _find_runs(mask, ink)
+    heights = _row_heights(runs)
+    if not heights:
+        return Rows((), 0.0, runs, uprights)
+    pitch = float(np.median(np.diff(heights))) if len(heights) > 1 else 40.0
+    found = (_extent(runs, y, pitch) for y in heights)
+    rows = tuple(row for row in found if row is not None)
+    widest = max((row.right_mm - row.left_mm for row in rows), default=0.0)
+    rows = tuple(row for row in rows if row.right_mm - row.left_mm > 0.25 * widest)
+    return Rows(rows, pitch, runs, uprights)
+
+
+def _window(ink: Ink, box: Box) -> tuple[slice, slice]:
+    r = ink.raster
+    return (
+        slice(max(int(r.row(box.top_mm)), 0), int(np.ceil(r.row(box.bottom_mm))) + 1),
+        slice(max(int(r.col(box.left_mm)), 0), int(np.ceil(r.col(box.right_mm))) + 1),
+    )
+
+
+def _without_rules(mask: np.ndarray, ink: Ink) -> tuple[np.ndarray, tuple[Box, ...]]:
+    """Take frames and full-height separators away."""
+    scale = ink.raster.px_per_mm
+    tall = np.ones((round(LONG_RULE_MM * scale), 1), np.uint8)
+    wide = np.ones((1, round(FLAT_RULE_MM * scale)), np.uint8)
+    upright = cv2.morphologyEx(mask, cv2.MORPH_OPEN, tall)
+    level = cv2.morphologyEx(mask, cv2.MORPH_OPEN, wide)
+    grow = np.ones((3, 3), np.uint8)
+    _, _, stats, _ = cv2.connectedComponentsWithStats(cv2.dilate(upright, grow))
+    boxes = tuple(
+        Box(
+            ink.raster.x_mm(left),
+            ink.raster.y_mm(top),
+            ink.raster.x_mm(left + width),
+            ink.raster.y_mm(top + height),
+        )
+        for left, top, width, height, _ in stats[1:]
+    )
+    rules = cv2.dilate(upright | level, grow)
+    return mask & (1 - rules), boxes
+
+
+def _find_runs(mask: np.ndarray, ink: Ink) -> Runs:
+    step = max(1, round(STEP_MM * ink.raster.px_per_mm))
+    columns = np.ascontiguousarray(mask[:, ::step].T)
+    edges = np.diff(np.pad(columns, ((0, 0), (1, 1))).astype(np.int8), axis=1)
+    at, start = np.nonzero(edges == 1)
+    _, end = np.nonzero(edges == -1)
+    return Runs(
+        x_mm=ink.raster.x_mm(at * step),
+        top_mm=ink.raster.y_mm(start - 0.5),
+        bottom_mm=ink.raster.y_mm(end - 0.5),
+    )
+
+
+def _row_heights(runs: Runs) -> list[float]:
+    """Heights of the rows, top to bottom: peaks of the run profile that are far enough apart."""
+    length = runs.bottom_mm - runs.top_mm
+    middle = (runs.bottom_mm + runs.top_mm) / 2
+    low, high = middle.min(initial=0.0) - 5, middle.max(initial=0.0) + 5
+    bins = np.arange(low, high + BIN_MM, BIN_MM)
+    profile, _ = np.histogram(middle, bins, weights=1 / (1 + length / 1.0))
+    profile = sp.ndimage.gaussian_filter1d(profile.astype(float), 1.2 / BIN_MM)
+    wide = sp.ndimage.gaussian_filter1d(profile, 2.0 / BIN_MM)
+    peaks, _ = sp.signal.find_peaks(wide, distance=LEAST_PITCH_MM / BIN_MM)
+    strong = peaks[wide[peaks] > 0.1 * wide.max(initial=0.0)]
+    y = bins[strong] + BIN_MM / 2
+    share = np.array([_coverage(runs, height) for height in y])
+    keep = share > 0.35 * share.max(initial=0.0)
+    y, share = y[keep], share[keep]
+    return _spaced(y, share)
+
+
+def _coverage(runs: Runs, y_mm: float) -> float:
+    """Length in mm over which a run of ink lies within 3 mm of a height."""
+    near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
+    return float(len(np.unique(runs.x_mm[near]))) * STEP_MM
+
+
+def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:
+    """Drop the weaker of neighbours that are much closer than rows usually are."""
+    y, share = list(y), list(share)  # type: ignore[assignment]
+    while len(y) > 2:
+        strong = np.array(y)[np.array(share) > 0.6 * max(share)]
+        usual = np.median(np.diff(strong)) if len(strong) > 1 else np.median(np.diff(y))
+        gaps = np.diff(y)
+        close = int(np.argmin(gaps))
+        if gaps[close] > 0.6 * usual:
+            break
+        drop = close if share[close] < share[close + 1] else close + 1
+        del y[drop], share[drop]
+    return [float(v) for v in y]
+
+
+def _extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
+    """The longest stretch of a row without a long gap."""
+    reach = min(0.5 * pitch_mm, 12.0)
+    near = (runs.top_mm < y_mm + reach) & (runs.bottom_mm > y_mm - reach)
+    x = np.unique(runs.x_mm[near])
+    if len(x) < 20:
+        return None
+    parts = np.split(x, np.nonzero(np.diff(x) > 6.0)[0] + 1)
+    longest = max(parts, key=lambda p: p[-1] - p[0])
+    return Row(y_mm, float(longest[0]), float(longest[-1]))
