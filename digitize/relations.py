@@ -26,7 +26,7 @@ LIMB = {
 }
 LIMIT = 0.20  # of the usual voltage: leads read at 14 dB still pass (rule of thumb)
 NOISE_FACTOR = 2.0  # what the samples' own errors explain is no contradiction
-NOISE_LIMIT = 0.5  # with more of it than this nothing can be judged
+NOISE_LIMIT = 0.35  # with more of it than this nothing can be judged
 SHORTEST_S = 0.6  # of common time: about one beat
 
 _GAINS = {0.5: "at half the gain", 2.0: "at twice the gain"}
