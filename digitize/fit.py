@@ -6,7 +6,8 @@ ink does not show (a wiggle inside a steep flank, a node that the nib hides) is 
 second differences. Its strength is no constant: the expected square of each second difference, its
 own posterior variance included, is estimated from the page itself by expectation-maximisation, so
 a quiet baseline is smoothed and a QRS is not. Pixels that no pen line explains (dirt, the rest of
-the grid, a letter) are weighted down as outliers.
+the grid, a letter) are weighted down as outliers. Damping and convergence are local: a stretch that
+has settled is not computed again.
 
 References
 ----------
@@ -17,124 +18,144 @@ interpolation, Neural Computation 4 (1992) 415: the strength of a prior from the
 import math
 from dataclasses import dataclass
 
-import numba
 import numpy as np
 import scipy as sp
 
-from digitize.pen import Pen, envelope, reach_of, strips, weight_of
+from digitize.normal import band_of_inverse, column_costs, normal_equations
+from digitize.pen import Pen
 
-_OUTLIER = 4.0  # standard deviations from which on a pixel loses weight
-_FLAT = 1e-6
+_ROUNDS = 3  # estimates of the prior's strength
+_STEPS = 5  # Gauss-Newton steps in each
+_SETTLED_PX = 0.2
+_FLOOR_PX2 = 1e-3  # no second difference is expected below 0.03 px: finer than any ink shows
+_NEIGHBOURS = 4  # nodes to each side that share one prior strength
+_WORSE = 0.2  # rise of the local cost, in squared standard deviations, that undoes a step
+_FROZEN = 1e12
+
+
+@dataclass(frozen=True, eq=False)
+class View:
+    """What a line is fitted to: a cut-out of the ink.
+
+    `image` and `other` are (rows, cols) float32: density seen, NaN where unknown, and the density
+    that the strokes of other traces lay here. `rows` is (2, cols): from where to where ink must be
+    explained in each column, even where the line draws none.
+    """
+
+    image: np.ndarray
+    other: np.ndarray
+    rows: np.ndarray
+    noise: float
 
 
 @dataclass(frozen=True, eq=False)
 class Line:
-    """A fitted line: node heights and their standard errors, in pixels."""
+    """A fitted line: node heights and their standard errors, and cost by column."""
 
     y_px: np.ndarray
     sigma_px: np.ndarray
-    noise: float  # scatter of the density about the drawn ink
+    cost: np.ndarray
 
 
-@numba.njit(cache=True)
-def normal_equations(
-    y: np.ndarray,
-    x0: float,
-    step: float,
-    nib: tuple,
-    image: np.ndarray,
-    other: np.ndarray,
-    rows_seen: np.ndarray,
-    noise: float,
-    band: int,
-) -> tuple:
-    """Gauss-Newton system of the data: banded matrix, gradient and cost of each column.
+def fit_line(view: View, start_px: np.ndarray, x0_px: float, step_px: float, pen: Pen) -> Line:
+    """Fit the heights of a line's nodes to the ink.
 
-    `nib` is (width, blur_x, blur_y, gain). `image` is NaN where nothing is known. `other` is the
-    density that other strokes lay here, between 0 and 1. `rows_seen` (2, cols) are rows that must
-    be compared even where nothing is drawn. All residuals are in units of `noise`.
+    Parameters
+    ----------
+    view : View
+    start_px : (n,) float array
+        First guess of the heights, in rows of the cut-out.
+    x0_px, step_px : float
+        Place of the first node, in columns of the cut-out, and distance of the nodes.
+    pen : Pen
+
+    Returns
+    -------
+    Line
     """
-    width, blur_x, blur_y, gain = nib
-    rows, cols = image.shape
-    nodes = y.size
-    pad = math.ceil(0.5 * width / step)
-    edge, node, share = envelope(y, step, 0.5 * width, pad)
-    first, start, value = strips(edge, blur_y, rows)
-    n, x0 = edge.shape[1] - 1, x0 - pad * step
-    matrix = np.zeros((band + 1, nodes))
-    gradient = np.zeros(nodes)
-    cost = np.zeros(cols)
-    slope = np.zeros(nodes)
-    g = np.zeros(n)
-    for col in range(cols):
-        j0, j1 = reach_of(col, x0, step, blur_x, n)
-        low, high = rows_seen[0, col], rows_seen[1, col]
-        for j in range(j0, j1):
-            g[j] = gain * weight_of(col, j, x0, step, blur_x)
-            if start[j + 1] > start[j]:
-                low = min(low, first[j])
-                high = max(high, first[j] + start[j + 1] - start[j])
-        for row in range(low, high):
-            seen = image[row, col]
-            if math.isnan(seen):
-                continue
-            bare = (1 - other[row, col]) / noise
-            drawn = 0.0
-            left, right = nodes, -1
-            for j in range(j0, j1):
-                k = row - first[j]
-                if k < 0 or k >= start[j + 1] - start[j]:
-                    continue
-                at = start[j] + k
-                drawn += g[j] * value[at, 0]
-                for side in range(2):
-                    for end in range(2):
-                        d = value[at, 1 + 2 * side + end]
-                        if abs(d) < _FLAT:
-                            continue
-                        i, a = node[side, j + end], share[side, j + end]
-                        slope[i] += g[j] * bare * d * (1 - a)
-                        slope[i + 1] += g[j] * bare * d * a
-                        left, right = min(left, i), max(right, i + 1)
-            residual = seen / noise - gain * other[row, col] / noise - drawn * bare
-            ratio = residual / _OUTLIER
-            weight = 1 / (1 + ratio * ratio)
-            cost[col] += _OUTLIER * _OUTLIER * math.log(1 + ratio * ratio)
-            for i in range(left, right + 1):
-                s = slope[i]
-                if s != 0.0:
-                    s *= weight
-                    gradient[i] += s * residual
-                    for k in range(i, right + 1):
-                        matrix[k - i, i] += s * slope[k]
-            for i in range(left, right + 1):
-                slope[i] = 0.0
-    return matrix, gradient, cost
+    y = start_px.astype(float)
+    reach_px = 0.5 * pen.width_px + 3.5 * pen.blur_x_px + step_px
+    band = math.ceil(2 * reach_px / step_px) + 3
+    x = x0_px + step_px * np.arange(len(y))
+    at_col = np.clip(np.rint(x), 0, view.image.shape[1] - 1).astype(np.int64)
+    window = 2 * round(reach_px) + 1
+    place = (x0_px, step_px, pen.nib, view.image, view.other, view.rows, view.noise)
+
+    def local(cost: np.ndarray, line: np.ndarray, strength: np.ndarray) -> np.ndarray:
+        """Cost in the neighbourhood of each node."""
+        prior = np.pad(strength * _curvature(line) ** 2, 1)
+        near = sp.ndimage.uniform_filter1d(cost, window)[at_col]
+        return near + sp.ndimage.uniform_filter1d(prior, window) / step_px
+
+    def columns(nodes: np.ndarray) -> np.ndarray:
+        """Columns that the ink of these nodes reaches."""
+        cols = np.zeros(view.image.shape[1], bool)
+        cols[at_col[nodes]] = True
+        return sp.ndimage.maximum_filter1d(cols, window + 2)
+
+    everywhere = np.ones(view.image.shape[1], bool)
+    spread = _mean_near(_curvature(y) ** 2) + _FLOOR_PX2
+    damping = np.full(len(y), 0.1)
+    for turn in range(_ROUNDS + 1):
+        matrix, gradient, cost = normal_equations(y, *place, band, everywhere)
+        inverse = _inverse(_with_prior(matrix, 1 / spread))
+        if turn == _ROUNDS:
+            break
+        if turn:
+            spread = _mean_near(_curvature(y) ** 2 + _curvature_variance(inverse)) + _FLOOR_PX2
+        strength = 1 / spread
+        active = np.ones(len(y), bool)
+        for _ in range(_STEPS):
+            full = _with_prior(matrix, strength)
+            full[0] += np.where(active, damping * full[0] + 1e-9, _FROZEN)
+            pull = np.where(active, gradient + _prior_gradient(y, strength), 0)
+            move = sp.linalg.solveh_banded(full, pull, lower=True, check_finite=False)
+            trial = y + move
+            cols = columns(active)
+            tried = np.where(cols, column_costs(trial, *place, cols), cost)
+            worse = local(tried, trial, strength) > local(cost, y, strength) + _WORSE
+            damping = np.clip(damping * np.where(worse, 10, 0.2), 1e-4, 1e6)
+            y = np.where(worse, y, trial)
+            active &= worse | (np.abs(move) > _SETTLED_PX)
+            active = sp.ndimage.maximum_filter1d(active, 5)
+            if not active.any():
+                break
+            cols = columns(active)
+            matrix, gradient, again = normal_equations(y, *place, band, cols)
+            cost = np.where(cols, again, cost)
+    return Line(y, np.sqrt(inverse[0]), cost)
 
 
-@numba.njit(cache=True)
-def _covariance(factor: np.ndarray) -> np.ndarray:
-    """Band of the inverse, from the banded Cholesky factor (lower form); Takahashi's recursion."""
-    band, n = factor.shape[0] - 1, factor.shape[1]
-    inverse = np.zeros_like(factor)
-    for j in range(n - 1, -1, -1):
-        last = min(band, n - 1 - j)
-        for k in range(last, -1, -1):
-            total = 0.0
-            for m in range(1, last + 1):
-                a, b = min(k, m), max(k, m)
-                total += factor[m, j] * inverse[b - a, j + a]
-            own = 1 / factor[0, j] if k == 0 else 0.0
-            inverse[k, j] = (own - total) / factor[0, j]
-    return inverse
+def start_from_edges(
+    top: np.ndarray, bottom: np.ndarray, step: float, radius: float
+) -> tuple[np.ndarray, np.ndarray]:
+    """The two bounds of a line from the edges of its ink, the pen taken off.
+
+    The lower envelope of the discs cannot lie above a disc that touches the seen top edge, nor the
+    other way round: so the line lies between the two results, but for noise. Upward peaks are
+    exact in the first, downward peaks in the second.
+    """
+    reach = int(radius / step)
+    u = step * np.arange(-reach, reach + 1)
+    arc = np.sqrt(np.maximum(radius**2 - u**2, 0))
+    upper = sp.ndimage.grey_dilation(top, structure=arc, mode="nearest")
+    lower = sp.ndimage.grey_erosion(bottom, structure=arc, mode="nearest")
+    return upper, lower
 
 
 def _curvature(y: np.ndarray) -> np.ndarray:
     return np.convolve(y, (1.0, -2.0, 1.0), "valid")
 
 
-def _add_prior(matrix: np.ndarray, strength: np.ndarray) -> np.ndarray:
-    """Add D' diag(strength) D of second differences D to a banded matrix."""
+def _mean_near(values: np.ndarray) -> np.ndarray:
+    """Mean over a triangular window of neighbours, shrunk at the ends."""
+    kernel = np.bartlett(2 * _NEIGHBOURS + 3)[1:-1]
+    norm = np.convolve(np.ones_like(values), kernel, "same")
+    return np.convolve(values, kernel, "same") / norm
+
+
+def _with_prior(matrix: np.ndarray, strength: np.ndarray) -> np.ndarray:
+    """Matrix plus D' diag(strength) D of second differences D, banded."""
     n = matrix.shape[1]
     total = matrix.copy()
     for a, ca in enumerate((1.0, -2.0, 1.0)):
@@ -145,87 +166,17 @@ def _add_prior(matrix: np.ndarray, strength: np.ndarray) -> np.ndarray:
 
 
 def _prior_gradient(y: np.ndarray, strength: np.ndarray) -> np.ndarray:
-    pull = strength * _curvature(y)
-    return -np.convolve(pull, (1.0, -2.0, 1.0), "full")
+    return -np.convolve(strength * _curvature(y), (1.0, -2.0, 1.0), "full")
 
 
-def _smooth(values: np.ndarray, half: int) -> np.ndarray:
-    """Mean over a triangular window of `half` nodes to each side, shrunk at the ends."""
-    kernel = np.bartlett(2 * half + 3)[1:-1]
-    return np.convolve(values, kernel, "same") / np.convolve(np.ones_like(values), kernel, "same")
+def _inverse(matrix: np.ndarray) -> np.ndarray:
+    matrix[0] += 1e-9  # a line without any ink is still a matrix with an inverse
+    return band_of_inverse(sp.linalg.cholesky_banded(matrix, lower=True, check_finite=False))
 
 
-def _solve(matrix: np.ndarray, gradient: np.ndarray, damping: np.ndarray) -> np.ndarray:
-    damped = matrix.copy()
-    damped[0] += damping
-    return sp.linalg.solveh_banded(damped, gradient, lower=True, check_finite=False)
-
-
-def fit_line(
-    image: np.ndarray,
-    other: np.ndarray,
-    rows_seen: np.ndarray,
-    y_px: np.ndarray,
-    x0_px: float,
-    step_px: float,
-    pen: Pen,
-    noise: float,
-    rounds: int = 5,
-    steps: int = 3,
-) -> Line:
-    reach = pen.width_px + 7 * pen.blur_x_px + 2 * step_px
-    band = math.ceil(reach / step_px) + 3
-    y = y_px.copy()
-    at_col = np.clip(np.rint(x0_px + step_px * np.arange(len(y))), 0, image.shape[1] - 1)
-    at_col = at_col.astype(int)
-    window = 2 * round(0.5 * pen.width_px + 2 * pen.blur_x_px) + 1
-
-    def system(line: np.ndarray, noise: float) -> tuple:
-        return normal_equations(line, x0_px, step_px, pen.nib, image, other, rows_seen, noise, band)
-
-    def local(cost: np.ndarray, line: np.ndarray, strength: np.ndarray) -> np.ndarray:
-        return sp.ndimage.uniform_filter1d(cost, window)[at_col] + sp.ndimage.uniform_filter1d(
-            np.pad(strength * _curvature(line) ** 2, 1), window
-        )
-
-    floor = 1e-3
-    spread = _smooth(np.pad(_curvature(y) ** 2, 1, "edge"), 4)[1:-1] + floor
-    for _turn in range(rounds):
-        strength = 1 / spread
-        state = system(y, noise)
-        damping = np.full(len(y), 0.1)
-        for _ in range(steps):
-            matrix, gradient, cost = state
-            full = _add_prior(matrix, strength)
-            move = _solve(full, gradient + _prior_gradient(y, strength), damping * full[0])
-            trial = y + move
-            tried = system(trial, noise)
-            before, after = local(cost, y, strength), local(tried[2], trial, strength)
-            worse = after > before + 1e-6
-            damping = np.where(
-                worse, np.minimum(damping * 10, 1e6), np.maximum(damping * 0.1, 1e-4)
-            )
-            if worse.any():
-                y = np.where(worse, y, trial)
-                state = system(y, noise)
-            else:
-                y, state = trial, tried
-        full = _add_prior(state[0], strength)
-        full[0] += 1e-9
-        inverse = _covariance(sp.linalg.cholesky_banded(full, lower=True, check_finite=False))
-        d, e, f = inverse[0], inverse[1], inverse[2]
-        own = d[:-2] + 4 * d[1:-1] + d[2:] - 4 * e[:-2] - 4 * e[1:-1] + 2 * f[:-2]
-        spread = _smooth(np.pad(_curvature(y) ** 2 + own, 1, "edge"), 4)[1:-1] + floor
-    return Line(y, np.sqrt(inverse[0]), noise)
-
-
-def start_from_edges(
-    top: np.ndarray, bottom: np.ndarray, step: float, radius: float
-) -> tuple[np.ndarray, np.ndarray]:
-    """Node heights between the two edges of the ink, the pen taken off."""
-    reach = int(radius / step)
-    u = step * np.arange(-reach, reach + 1)
-    arc = np.sqrt(np.maximum(radius**2 - u**2, 0))
-    upper = sp.ndimage.grey_dilation(top, structure=arc, mode="nearest")
-    lower = sp.ndimage.grey_erosion(bottom, structure=arc, mode="nearest")
-    return upper, lower
+def _curvature_variance(inverse: np.ndarray) -> np.ndarray:
+    """Posterior variance of each second difference."""
+    own, next_, after = inverse[0], inverse[1], inverse[2]
+    return (own[:-2] + 4 * own[1:-1] + own[2:] - 4 * next_[:-2] - 4 * next_[1:-1] + 2 * after[:-2])[
+        : len(own) - 2
+    ]

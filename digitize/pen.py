@@ -16,10 +16,13 @@ from dataclasses import dataclass
 
 import numba
 import numpy as np
+import scipy as sp
 
-_REACH = 3.5  # standard deviations beyond which a Gaussian is taken as ended
+_REACH = 3.0  # standard deviations beyond which a Gaussian is taken as ended: 0.1 %
 _SQRT_HALF = math.sqrt(0.5)
-_INV_SQRT_2PI = 1 / math.sqrt(2 * math.pi)
+_PER_SIGMA = 64
+_GRID = np.arange(-_REACH, _REACH + 2 / _PER_SIGMA, 1 / _PER_SIGMA)
+_TABLE = np.stack([sp.special.ndtr(_GRID), np.exp(-0.5 * _GRID**2) / math.sqrt(2 * math.pi)])
 
 
 @dataclass(frozen=True)
@@ -96,7 +99,23 @@ def _phi(z: float) -> float:
     return 0.5 * (1 + math.erf(z * _SQRT_HALF))
 
 
-@numba.njit(cache=True)
+@numba.njit(cache=True, fastmath=True)
+def _normal(z: float) -> tuple[float, float]:
+    """Normal distribution function and density, to 1e-5, from a table."""
+    if z <= -_REACH:
+        return 0.0, 0.0
+    if z >= _REACH:
+        return 1.0, 0.0
+    place = (z + _REACH) * _PER_SIGMA
+    k = int(place)
+    a = place - k
+    return (
+        _TABLE[0, k] + a * (_TABLE[0, k + 1] - _TABLE[0, k]),
+        _TABLE[1, k] + a * (_TABLE[1, k + 1] - _TABLE[1, k]),
+    )
+
+
+@numba.njit(cache=True, fastmath=True)
 def _ramp(z0: float, z1: float) -> tuple[float, float, float]:
     """Mean of the normal distribution function between z0 and z1, and its two derivatives."""
     if min(z0, z1) > _REACH:
@@ -104,13 +123,14 @@ def _ramp(z0: float, z1: float) -> tuple[float, float, float]:
     if max(z0, z1) < -_REACH:
         return 0.0, 0.0, 0.0
     dz = z1 - z0
-    if abs(dz) < 0.02:  # the chord and the middle agree to 1e-5
+    if abs(dz) < 0.5:  # Taylor's series about the middle, to 5e-5
         z = 0.5 * (z0 + z1)
-        half = 0.5 * _INV_SQRT_2PI * math.exp(-0.5 * z * z)
-        return _phi(z), half, half
-    p0, p1 = _phi(z0), _phi(z1)
-    d0, d1 = math.exp(-0.5 * z0 * z0), math.exp(-0.5 * z1 * z1)
-    mean = (z1 * p1 - z0 * p0 + _INV_SQRT_2PI * (d1 - d0)) / dz
+        p, d = _normal(z)
+        lean = z * d * dz / 12
+        return p - 0.5 * lean * dz, 0.5 * d + lean, 0.5 * d - lean
+    p0, d0 = _normal(z0)
+    p1, d1 = _normal(z1)
+    mean = (z1 * p1 - z0 * p0 + d1 - d0) / dz
     return mean, (mean - p0) / dz, (p1 - mean) / dz
 
 

@@ -10,7 +10,7 @@ import numpy as np
 import scipy as sp
 import skimage as ski
 
-from digitize.fit import fit_line, start_from_edges
+from digitize.fit import View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.layout import Layout, PanelPlace
 from digitize.path import cheapest_path, runs_along
@@ -193,16 +193,8 @@ def _stroke(start: _Start, panel: PanelPlace, pen: Pen, ink: Ink) -> Stroke:
     seen = np.clip(seen, 0, len(start.image)).astype(np.int64)
     image = start.image.copy()
     image[:, ~inked] = np.nan
-    line = fit_line(
-        image,
-        np.zeros_like(image),
-        seen,
-        (upper + lower) / 2,
-        x_px[0],
-        x_px[1] - x_px[0],
-        pen,
-        max(ink.noise, 0.02),
-    )
+    view = View(image, np.zeros_like(image), seen, max(ink.noise, 0.02))
+    line = fit_line(view, (upper + lower) / 2, x_px[0], x_px[1] - x_px[0], pen)
     y_mm, sigma_mm = raster.y_mm(start.row0 + line.y_px), line.sigma_px / px
     bare = sp.ndimage.binary_opening(~inked, np.ones(max(round(_BRIDGE_MM * px), 1)))
     missing = np.interp(x_px, cols, bare.astype(float)) > 0.5
