@@ -89,6 +89,41 @@ def scan_map(capture: CaptureSpec, paper: PaperSpec) -> CaptureMap:
     return CaptureMap(homography, np.zeros(3), paper, None, (int(size_px[0]), int(size_px[1])))
 
 
+def photo_map(capture: CaptureSpec, photo: PhotoSpec, paper: PaperSpec) -> CaptureMap:
+    """Return the map of a camera: a pinhole over the wavy sheet, then a lens.
+
+    `capture.dpi` is the scale at the middle of the page.
+    """
+    wide_mm, high_mm = paper.size_mm
+    middle = np.array([wide_mm / 2 - paper.offset_mm[0], high_mm / 2 - paper.offset_mm[1]])
+    distance_mm = photo.distance_pages * wide_mm
+    focal_px = capture.dpi[0] / MM_PER_INCH * distance_mm
+    yaw, pitch, roll = np.deg2rad(
+        [photo.yaw_deg, photo.pitch_deg, capture.tilt_deg + capture.turn_deg]
+    )
+    about_x = np.array(
+        [[1, 0, 0], [0, np.cos(pitch), -np.sin(pitch)], [0, np.sin(pitch), np.cos(pitch)]]
+    )
+    about_y = np.array([[np.cos(yaw), 0, np.sin(yaw)], [0, 1, 0], [-np.sin(yaw), 0, np.cos(yaw)]])
+    about_z = np.array(
+        [[np.cos(roll), -np.sin(roll), 0], [np.sin(roll), np.cos(roll), 0], [0, 0, 1]]
+    )
+    pose = np.diag([focal_px, focal_px, 1.0]) @ about_x @ about_y @ about_z
+    # The sheet's middle lies straight ahead; a raised point comes towards the camera (-z).
+    at_middle = np.array([[1, 0, -middle[0]], [0, 1, -middle[1]], [0, 0, 1.0]])
+    homography = np.column_stack([pose[:, 0], pose[:, 1], [0, 0, distance_mm]]) @ at_middle
+    corners = np.array([[0, 1, 0, 1], [0, 0, 1, 1]]) * np.array([[wide_mm], [high_mm]])
+    corners = np.vstack([corners - np.array(paper.offset_mm)[:, None], np.ones(4)])
+    seen = homography @ corners
+    seen = seen[:2] / seen[2]
+    margin_px = photo.margin * np.ptp(seen[0])
+    size_px = np.round(np.ptp(seen, axis=1) + 2 * margin_px).astype(int)
+    shift = np.eye(3)
+    shift[:2, 2] = margin_px - seen.min(axis=1)
+    size = (int(size_px[0]), int(size_px[1]))
+    return CaptureMap(shift @ homography, -(shift @ pose[:, 2]), paper, photo, size)
+
+
 def resample(sheet: np.ndarray, raster: Raster, page_map: CaptureMap, outside: float) -> np.ndarray:
     """Return one channel of the sheet sampled at every pixel of the picture, float32."""
     wide_px, high_px = page_map.size_px

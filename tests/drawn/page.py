@@ -10,21 +10,21 @@ from dataclasses import dataclass
 
 import cv2
 import numpy as np
-from PIL import Image
 
 from digitize.sheet import Raster
-from tests.drawn.capture import MM_PER_INCH, CaptureMap, resample, scan_map
+from tests.drawn.capture import MM_PER_INCH, CaptureMap, photo_map, resample, scan_map
 from tests.drawn.composition import Composition, PanelTruth, compose
 from tests.drawn.heart import HeartTruth, Recording
 from tests.drawn.lettering import draw_word
 from tests.drawn.paper import draw_grid
 from tests.drawn.pen import draw_stroke
-from tests.drawn.spec import CaptureSpec, Colour, PageSpec
+from tests.drawn.sensor import light_up, to_light, to_pixels
+from tests.drawn.spec import Colour, PageSpec
+from tests.drawn.wear import Damage, wear_down
 
 _FINEST_PX_PER_MM = 24.0
 _COARSEST_PX_PER_MM = 14.0
 _INK_STEPS, _MOST_INK = 500, 6  # inks are tabled in steps of 1/500, up to six layers
-_LIGHT_STEPS = 65535
 _LID: Colour = (250, 250, 250)  # what a scanner sees beside the sheet
 
 
@@ -61,12 +61,19 @@ def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
     """Return the page of a recording under a specification; the same pixels every time."""
     rng = np.random.default_rng([spec.seed, 2])
     composition = compose(recording, spec)
-    page_map = scan_map(spec.capture, spec.paper)
+    capture = spec.capture
+    if capture.photo is None:
+        page_map = scan_map(capture, spec.paper)
+    else:
+        page_map = photo_map(capture, capture.photo, spec.paper)
     raster, shape = _raster(spec)
-    inks = _inks(composition, spec, raster, shape, rng)
-    grey = spec.capture.mode != "colour"
-    channels = [_channel(k, inks, spec, raster, page_map) for k in ((1,) if grey else (0, 1, 2))]
-    pixels = _coded(np.stack(channels, axis=-1), spec.capture, rng)
+    damage = wear_down(spec.wear, spec.paper, raster, shape, rng)
+    inks = _inks(composition, damage, spec, raster, shape, rng)
+    wanted = (0, 1, 2) if capture.mode == "colour" else (capture.grey_light,)
+    light = np.stack([_channel(k, inks, damage, spec, raster, page_map) for k in wanted], axis=-1)
+    if capture.photo is not None:
+        light = light_up(light, capture.photo, wanted, rng)
+    pixels = to_pixels(light, spec, rng)
     layout = spec.layout
     truth = PageTruth(
         panels=composition.panels,
@@ -94,6 +101,7 @@ def _raster(spec: PageSpec) -> tuple[Raster, tuple[int, int]]:
 
 def _inks(
     composition: Composition,
+    damage: Damage,
     spec: PageSpec,
     raster: Raster,
     shape: tuple[int, int],
@@ -118,6 +126,9 @@ def _inks(
     inks = [(draw_grid(spec.paper, raster, shape), spec.paper.grid_colour), (pen, spec.pen.colour)]
     if letters is not pen:
         inks.append((letters, spec.letters.colour))
+    if damage.remaining is not None:
+        pen *= damage.remaining
+    inks += damage.inks
     return [(_in_steps(amount), colour) for amount, colour in inks]
 
 
@@ -135,42 +146,27 @@ def _slow(n: int, rng: np.random.Generator) -> np.ndarray:
 def _channel(
     k: int,
     inks: list[tuple[np.ndarray, Colour]],
+    damage: Damage,
     spec: PageSpec,
     raster: Raster,
     page_map: CaptureMap,
 ) -> np.ndarray:
     """Linear light of one colour channel at every pixel of the picture."""
-    paper_light = _linear(spec.paper.colour[k])
-    light = np.full(inks[0][0].shape, paper_light, np.float32)
+    paper_light = to_light(spec.paper.colour[k])
+    light: np.ndarray = np.full(inks[0][0].shape, paper_light, np.float32)
     for steps, colour in inks:
-        passing = max(_linear(colour[k]) / paper_light, 1e-3)
+        passing = max(to_light(colour[k]) / paper_light, 1e-3)
         amount = np.arange(_MOST_INK * _INK_STEPS + 1, dtype=np.float32) / _INK_STEPS
         # Partly covered: light is shared by area. Covered more than once: densities add.
         light *= np.where(amount < 1, 1 - amount * (1 - passing), passing**amount)[steps]
+    outside = to_light(_LID[k] if spec.capture.photo is None else spec.capture.photo.desk[k])
+    for x_mm, y_mm, radius_mm in damage.holes_mm:
+        centre = (round(raster.col(x_mm)), round(raster.row(y_mm)))
+        cv2.circle(light, centre, round(radius_mm * raster.px_per_mm), outside, -1)
     pixel_mm = MM_PER_INCH / np.array(spec.capture.dpi)
     if spec.capture.turn_deg % 180:
         pixel_mm = pixel_mm[::-1]
     # A square aperture of width a has variance a^2/12; bilinear sampling adds none to speak of.
     sigma_px = np.hypot(spec.capture.blur_mm, pixel_mm / np.sqrt(12)) * raster.px_per_mm
     light = cv2.GaussianBlur(light, (0, 0), sigmaX=float(sigma_px[0]), sigmaY=float(sigma_px[1]))
-    return resample(light, raster, page_map, _linear(_LID[k]))
-
-
-def _linear(code: float) -> float:
-    """Linear light of an sRGB code value (IEC 61966-2-1, as a plain power of 2.2)."""
-    return float((code / 255) ** 2.2)
-
-
-def _coded(light: np.ndarray, capture: CaptureSpec, rng: np.random.Generator) -> np.ndarray:
-    """Code values of linear light, with the sensor's noise, in the asked mode."""
-    table = 255 * (np.arange(_LIGHT_STEPS + 1, dtype=np.float32) / _LIGHT_STEPS) ** (1 / 2.2)
-    code = table[(np.clip(light, 0, 1) * _LIGHT_STEPS).astype(np.uint16)]
-    if capture.noise:
-        code += np.float32(capture.noise) * rng.standard_normal(code.shape, np.float32)
-    code = code if code.shape[-1] == 3 else code[..., 0]
-    if capture.mode == "bilevel":
-        return np.where(code < capture.threshold, 0, 255).astype(np.uint8)
-    grey = np.clip(np.round(code), 0, 255).astype(np.uint8)
-    if capture.mode == "diffused":  # Floyd and Steinberg's error diffusion
-        return np.asarray(Image.fromarray(grey).convert("1")).astype(np.uint8) * np.uint8(255)
-    return grey
+    return resample(light, raster, page_map, outside)

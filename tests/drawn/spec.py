@@ -119,6 +119,7 @@ class CaptureSpec:
     blur_mm: float = 0.04
     noise: float = 1.5  # grey levels
     mode: str = "colour"  # "colour", "grey", "bilevel", "diffused"
+    grey_light: int = 1  # light in which a grey scanner sees: 0 red, 1 green, 2 blue
     threshold: float = 128.0  # code value that divides black from white
     jpeg_quality: int | None = None
     dpi_tag: str = "right"  # "right", "absent", "wrong"
