@@ -7,6 +7,7 @@ the QRS, which pattern, on what evidence, what to check by eye.
 from dataclasses import dataclass
 
 from digitize.tracing import LEADS, Known
+from measure.criteria.decide import OVERALL
 from measure.criteria.finding import Finding
 from measure.quantity import Quantity
 from measure.reading import Reading
@@ -44,7 +45,7 @@ FAMILIES: tuple[tuple[str, tuple[str, ...]], ...] = (
     ("Repolarisation", ("qtc_long", "qtc_long_wide_qrs")),
     ("Voltage", ("voltage_sokolow_lyon", "voltage_cornell")),
 )
-BLOCK_FAMILIES = 4  # the first families are the conduction blocks
+BLOCK_FAMILIES = tuple(name for name, _ in FAMILIES[:4])
 RHYTHM_KEYS = ("rate_bpm", "rr_ms", "p_ms", "pr_ms", "p_axis_deg")
 WIDTH_KEYS = (
     "qrs_ms",
@@ -87,29 +88,24 @@ class Answers:
     by_eye: tuple[str, ...]
 
 
-@dataclass(frozen=True)
-class Refusal:
-    """A definition that is not met, and the clauses that decided it."""
-
-    name: str
-    because: str
-
-
 def shown_in_full(
     families: tuple[tuple[str, tuple[Finding, ...]], ...],
 ) -> tuple[Finding, ...]:
-    """The findings whose every clause is worth a look: those met or open."""
-    return tuple(f for _, group in families for f in group if f.result != "not met")
+    """The findings whose every clause is worth a look: those met or open.
 
-
-def refusals(families: tuple[tuple[str, tuple[Finding, ...]], ...]) -> tuple[Refusal, ...]:
-    """Conduction definitions that are not met, each with what decided it."""
+    One that rests on overall intervals alone is left out: its numbers stand in the tables.
+    """
     return tuple(
-        Refusal(nice(f.definition), nice("not: " + "; ".join(c.text for c in deciding(f))))
-        for _, group in families[:BLOCK_FAMILIES]
+        f
+        for _, group in families
         for f in group
-        if f.result == "not met"
+        if f.result != "not met" and any(e.lead != OVERALL for c in f.clauses for e in c.evidence)
     )
+
+
+def refusal(finding: Finding) -> str:
+    """A definition that is not met, with the first clause that decided it."""
+    return nice(f"{finding.definition} (not: {deciding(finding)[0].text})")
 
 
 def answer(reading: Reading) -> Answers:
@@ -129,7 +125,8 @@ def _headline(reading: Reading) -> tuple[str, ...]:
     """Two or three sentences: rhythm and QRS, what is met, what is open."""
     qrs, rate = reading.intervals["qrs_ms"], reading.intervals["rate_bpm"]
     lines = [f"QRS {number(qrs)}. {_capital(reading.rhythm.statement)}, rate {number(rate)}."]
-    blocks = [f for name, group in _families(reading.findings)[:BLOCK_FAMILIES] for f in group]
+    families = _families(reading.findings)
+    blocks = [f for name, group in families if name in BLOCK_FAMILIES for f in group]
     for result, opening in (
         ("met", "Meets the criteria of: "),
         ("undecided", "Undecided: "),

@@ -7,7 +7,7 @@ from rich.table import Table
 from rich.text import Text
 
 from digitize.tracing import LEADS
-from measure.questions import Answers, Measured, answer, refusals, shown_in_full
+from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
 from measure.reading import Reading
 from measure.waves import LeadWaves
 from measure.wording import NOTICE, ONE_SE, SIGNS, clause_lines, nice, number, origin, signed
@@ -73,24 +73,28 @@ def _patterns(answers: Answers) -> Table:
                 style = _STYLES[finding.result]
                 table.add_row(first, Text(result, style), Text(nice(finding.definition), style))
                 first = ""
-        refused = "; ".join(nice(f.definition) for f in group if f.result == "not met")
+        refused = "; ".join(
+            refusal(f) if name in BLOCK_FAMILIES else nice(f.definition)
+            for f in group
+            if f.result == "not met"
+        )
         if refused:
             table.add_row(first, Text(f"{SIGNS['not met']} not met", "dim"), Text(refused, "dim"))
     return table
 
 
 def _evidence(answers: Answers) -> RenderableType:
-    """Every clause of what is met or open; of a block that is not met, what decided it."""
+    """Every clause of what is met or open."""
     table = _plain_table("", "clause", "evidence")
     for finding in shown_in_full(answers.families):
         title = Text(nice(f"{finding.definition}: {finding.result}"), style="bold")
         table.add_row(SIGNS[finding.result], title, Text(finding.source, style="dim"))
         for clause in finding.clauses:
+            if clause.result == "met" and not clause.evidence:
+                continue
             note = "" if clause.required else " (not required)"
             text = f"{SIGNS[clause.result]} {nice(clause.text)}{note}"
             table.add_row("", Text(text), "\n".join(clause_lines(clause)))
-    for line in refusals(answers.families):
-        table.add_row(SIGNS["not met"], Text(line.name), Text(line.because, style="dim"))
     return table
 
 

@@ -2,6 +2,7 @@
 
 import math
 
+from measure.criteria.decide import OVERALL
 from measure.criteria.finding import Clause, Evidence, Finding
 from measure.quantity import Quantity
 
@@ -52,7 +53,7 @@ def origin(quantity: Quantity) -> str:
 def evidence_lines(evidence: tuple[Evidence, ...]) -> tuple[str, ...]:
     """Evidence put together: one line for each kind of value, with all its leads.
 
-    As in "R peak time (> 60 ms): V5 72 ± 3 ms, V6 81 ± 3 ms". A value that was held against two
+    As in "R peak time (> 60 ms): V5 72 ± 3, V6 81 ± 3". A value that was held against two
     thresholds is shown once with both.
     """
     thresholds: dict[tuple[str, ...], dict[str, None]] = {}
@@ -90,12 +91,14 @@ def deciding(finding: Finding) -> tuple[Clause, ...]:
 
 def _place_and_value(seen: Evidence) -> tuple[str, str, str]:
     """Lead, kind and value of one piece of evidence; a shape stands where there is no number."""
-    lead = "" if seen.lead == "overall" else seen.lead
+    lead = "" if seen.lead == OVERALL else seen.lead
     if math.isnan(seen.value):
         return lead, "shape", seen.what.removeprefix("shape ")
     value = value_text(seen.value, seen.se, seen.unit)
-    if seen.time_ms is not None and math.isfinite(seen.time_ms) and seen.unit == "mV":
-        value += f" at {seen.time_ms:.0f} ms"
+    if seen.unit and seen.threshold.endswith(seen.unit):  # the threshold names the unit already
+        value = value.removesuffix(_SHOWN_UNIT.get(seen.unit, seen.unit)).rstrip()
+    elif seen.time_ms is not None and math.isfinite(seen.time_ms):
+        value = f"at {seen.time_ms:.0f} ms {value}"
     return lead, seen.what, value
 
 

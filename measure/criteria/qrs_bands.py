@@ -26,7 +26,7 @@ def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
     return tuple(
         finding(
             key,
-            f"{text} with left bundle branch block (resynchronisation band)",
+            f"resynchronisation band: left bundle branch block with {text}",
             EUROPEAN_2021,
             [present, clause(text, look)],
             [NOTE],

@@ -1,0 +1,245 @@
+"""The report as HTML: sections in the order of a reader's questions, nothing from outside."""
+
+import base64
+import json
+from collections.abc import Iterable
+from html import escape
+
+from digitize.tracing import LEADS
+from measure.criteria.finding import Clause, Finding
+from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
+from measure.reading import Reading
+from measure.reading_files import version
+from measure.report.beats import SPEED_MM_S, draw_beats, gain_mm_mv
+from measure.report.style import CSS
+from measure.waves import LeadWaves
+from measure.wording import (
+    NOTICE,
+    ONE_SE,
+    SIGNS,
+    clause_lines,
+    nice,
+    number,
+    origin,
+    signed,
+)
+
+
+def report(reading: Reading, *, overlay_png: bytes | None = None) -> str:
+    """Return the report of one reading as a complete HTML document.
+
+    Parameters
+    ----------
+    reading : Reading
+        What was measured.
+    overlay_png : bytes, optional
+        The page with the found trace drawn over it; it is embedded.
+    """
+    answers = answer(reading)
+    source = reading.tracing.source
+    title = f"{source.file_name}, page {source.page}"
+    sections = (
+        _section("1 Can the tracing be trusted?", _trust(answers, overlay_png)),
+        _section("2 What is the rhythm?", _list(answers.rhythm) + _rows(answers.rhythm_rows)),
+        '<div class="clear"></div>',
+        _section("3 How wide is the QRS, and what follows it?", _rows(answers.width_rows)),
+        _section("4 Which pattern?", _patterns(answers)),
+        _section("5 On what evidence?", _beats(reading) + _evidence(answers)),
+        _section("6 What to check by eye", _list(answers.by_eye)),
+        _section("The usual beat, lead by lead", _waves(reading)),
+    )
+    return (
+        '<!DOCTYPE html>\n<html lang="en"><head><meta charset="utf-8">'
+        '<meta name="viewport" content="width=device-width, initial-scale=1">'
+        '<meta http-equiv="Content-Security-Policy" content="default-src \'none\'; '
+        "style-src 'unsafe-inline'; img-src data:\">"
+        f"<title>ECG reading: {escape(title)}</title><style>{CSS}</style></head><body>"
+        f"<h1>ECG reading: {escape(title)}</h1>"
+        f'<p class="notice">{escape(NOTICE)}</p>'
+        f'<div class="headline">{_paragraphs(answers.headline)}</div>'
+        f"{''.join(sections)}{_footer(reading)}</body></html>\n"
+    )
+
+
+def _section(title: str, body: str) -> str:
+    return f"<section><h2>{escape(title)}</h2>{body}</section>"
+
+
+def _paragraphs(lines: Iterable[str]) -> str:
+    return "".join(f"<p>{escape(line)}</p>" for line in lines)
+
+
+def _list(lines: Iterable[str]) -> str:
+    items = "".join(
+        f'<li class="look">{escape(line)}</li>'
+        if line.startswith("LOOK")
+        else f"<li>{escape(line)}</li>"
+        for line in lines
+    )
+    return f"<ul>{items}</ul>"
+
+
+def _trust(answers: Answers, overlay_png: bytes | None) -> str:
+    if overlay_png is None:
+        return _list(answers.trust)
+    data = base64.b64encode(overlay_png).decode("ascii")
+    return (
+        '<figure class="overlay"><img alt="The page with the found trace, panels and leads drawn '
+        f'over it" src="data:image/png;base64,{data}"><figcaption>The found trace over the page: '
+        f"it must lie on the ink everywhere.</figcaption></figure>{_list(answers.trust)}"
+    )
+
+
+def _rows(rows: tuple[Measured, ...]) -> str:
+    """Intervals beside their usual range; a source that all ranges share is named once."""
+    sources = {row.usual.source for row in rows if row.usual.source}
+    shared = f", {sources.pop()}" if len(sources) == 1 else ""
+    headings = ["", "measured", "from", f"usual in adults{shared}"]
+    body = []
+    for row in rows:
+        off = row.place not in ("", "within")
+        usual = f"{row.place} ({row.usual.text})" if off else row.usual.text
+        cells = (
+            f"<td>{escape(row.usual.label)}</td>"
+            f'<td class="{"number" if row.quantity.known else "missing"}">'
+            f"{escape(number(row.quantity))}</td>"
+            f'<td class="plain">{escape(origin(row.quantity))}</td>'
+            f'<td class="plain{" off" if off else ""}">{escape(usual)}</td>'
+        )
+        source = "" if shared else f'<td class="small">{escape(row.usual.source)}</td>'
+        body.append(f"<tr>{cells}{source}</tr>")
+    return _table(headings if shared else [*headings, "source of the range"], body)
+
+
+def _table(headings: Iterable[str], rows: Iterable[str]) -> str:
+    head = "".join(f"<th>{escape(heading)}</th>" for heading in headings)
+    return f"<table><thead><tr>{head}</tr></thead><tbody>{''.join(rows)}</tbody></table>"
+
+
+def _result(result: str) -> str:
+    kind = result.replace(" ", "-")
+    return f'<span class="result {kind}">{SIGNS[result]} {escape(result)}</span>'
+
+
+def _patterns(answers: Answers) -> str:
+    """What is met or open line by line; what is not met, in one line for each family."""
+    rows = []
+    for name, group in answers.families:
+        cells = [
+            (_result(f.result), escape(nice(f.definition))) for f in group if f.result != "not met"
+        ]
+        refused = "; ".join(
+            refusal(f) if name in BLOCK_FAMILIES else nice(f.definition)
+            for f in group
+            if f.result == "not met"
+        )
+        if refused:
+            cells.append((_result("not met"), f'<span class="small">{escape(refused)}</span>'))
+        for index, (result, text) in enumerate(cells):
+            first = escape(name) if index == 0 else ""
+            rows.append(f'<tr><td class="plain">{first}</td><td>{result}</td><td>{text}</td></tr>')
+    note = (
+        '<p class="small">“Met” means: meets the criteria of the published definition. In '
+        "brackets: the first clause that is not met; the file NAME.reading.json has them all.</p>"
+    )
+    return _table(("", "result", "definition"), rows) + note
+
+
+def _beats(reading: Reading) -> str:
+    caption = (
+        f"Dominant beat of each lead, {SPEED_MM_S:g} mm/s, {gain_mm_mv(reading):g} mm/mV, all at "
+        "one scale; the grey band is one standard error. Full lines and shading: overall QRS; "
+        "broken lines: P and the end of T. ▼ notch, ◇ slur. Bar at the foot: QRS onset to "
+        "the last R peak, in ms. Dashed bar at the onset: depth from which a q counts."
+    )
+    return f"<figure>{draw_beats(reading)}<figcaption>{caption}</figcaption></figure>"
+
+
+def _evidence(answers: Answers) -> str:
+    shown: dict[str, str] = {}
+    findings = "".join(_finding(finding, shown) for finding in shown_in_full(answers.families))
+    return f'<div class="columns">{findings}</div>'
+
+
+def _finding(finding: Finding, shown: dict[str, str]) -> str:
+    """One definition; evidence that stands above already is only referred to."""
+    clauses = "".join(
+        _clause(clause, finding.definition, shown)
+        for clause in finding.clauses
+        if clause.evidence or clause.result != "met"
+    )
+    return (
+        f'<div class="finding"><h3>{_result(finding.result)}: {escape(nice(finding.definition))} '
+        f'<span class="source">{escape(finding.source)}</span></h3>'
+        f"{clauses}</div>"
+    )
+
+
+def _clause(clause: Clause, definition: str, shown: dict[str, str]) -> str:
+    note = "" if clause.required else " (not required)"
+    lines = "; ".join(escape(line) for line in clause_lines(clause))
+    above = shown.setdefault(lines, definition)
+    if above != definition and len(lines) > len(above):
+        lines = escape(f"as above: {above}")
+    text = f"{SIGNS[clause.result]} {escape(nice(clause.text))}{note}"
+    return f"<p><b>{text}</b> {lines}</p>"
+
+
+def _waves(reading: Reading) -> str:
+    known = [lead for lead in LEADS if lead in reading.waves]
+    rows = [
+        _wave_row(reading.waves[lead])
+        for lead in (*known, *sorted(set(reading.waves) - set(LEADS)))
+    ]
+    headings = (
+        "",
+        "shape",
+        "waves: mV (ms)",
+        "R peak",
+        "ST at J, +40, +60, +80 mV",
+        "T mV",
+        "beats",
+    )
+    return _table(headings, rows)
+
+
+def _wave_row(waves: LeadWaves) -> str:
+    if waves.beats == 0 or not waves.qrs_complete:
+        why = "no usual beat" if waves.beats == 0 else "QRS cut by the edge of the panel"
+        return f'<tr><td>{escape(waves.lead)}</td><td colspan="6">not measured: {why}</td></tr>'
+    deflections = [
+        f"{d.name} {d.amplitude_mv:+.2f} ({d.duration_ms:.0f})" for d in waves.deflections
+    ]
+    bends = [f"{n.kind} at {n.peak_ms:.0f} ms" for n in waves.notches]
+    peak = number(waves.r_peak_time_ms) if waves.r_peak_time_ms.known else "–"
+    cells = (
+        waves.lead,
+        waves.shape,
+        "; ".join(deflections + bends),
+        peak,
+        " ".join(signed(waves.st_mv[after]) for after in sorted(waves.st_mv)),
+        signed(waves.t_mv),
+        str(waves.beats),
+    )
+    return "<tr>" + "".join(f'<td class="small">{escape(cell)}</td>' for cell in cells) + "</tr>"
+
+
+def _footer(reading: Reading) -> str:
+    """Where this came from, in full."""
+    tracing, person = reading.tracing, reading.person
+    said = {"sex": person.sex or "not given", "age": person.age_years or "not given"}
+    facts = (
+        f"Source: {tracing.source.file_name}, page {tracing.source.page}, SHA-256 "
+        f"{tracing.source.sha256}.",
+        f"Program: millivellum {version()}. Options: {_flat(tracing.options)}.",
+        f"Patient: sex {said['sex']}, age {said['age']}.",
+        f"Corrections: {len(tracing.corrections)} "
+        f"{_flat(tracing.corrections) if tracing.corrections else ''}",
+        ONE_SE,
+        NOTICE,
+    )
+    return f"<footer>{_paragraphs(facts)}</footer>"
+
+
+def _flat(thing: object) -> str:
+    return json.dumps(thing, ensure_ascii=False, sort_keys=True, default=str)
