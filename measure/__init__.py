@@ -1,0 +1,1 @@
+"""Calibrated ECG leads in; beats, boundaries, wave shapes and published criteria out."""

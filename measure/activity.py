@@ -1,0 +1,77 @@
+"""How much the leads move at each moment, and where that movement begins and ends.
+
+Movement is the root mean square over the leads of their slope (mV/s) or of their distance from a
+level (mV). A wave begins where movement leaves the quiet level beside it and the trace then comes
+away from its baseline by more than a deflection must have to count.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import scipy as sp
+
+
+@dataclass(frozen=True, eq=False)
+class Leads:
+    """Averaged leads on a raster of 1 ms: `mv` (leads, n) without NaN, `seen` where measured."""
+
+    time_ms: np.ndarray
+    mv: np.ndarray
+    seen: np.ndarray
+
+    def index(self, at_ms: float) -> int:
+        """Number of the raster place at a time, kept inside the raster."""
+        return int(np.clip(np.searchsorted(self.time_ms, at_ms), 0, len(self.time_ms) - 1))
+
+    def slopes(self, width_ms: int) -> np.ndarray:
+        """Slope of each lead in mV/s from a parabola over `width_ms`, (leads, n)."""
+        return 1000 * sp.signal.savgol_filter(self.mv, width_ms | 1, 2, deriv=1, axis=1)
+
+    def size(self, values: np.ndarray) -> np.ndarray:
+        """Root mean square over the leads measured at each moment, (n,)."""
+        squares = np.where(self.seen, values, 0) ** 2
+        return np.sqrt(squares.sum(axis=0) / np.maximum(self.seen.sum(axis=0), 1))
+
+    def level(self, start: int, stop: int) -> np.ndarray:
+        """Mean of each lead from place `start` up to `stop`, (leads, 1)."""
+        start = max(start, 0)
+        return self.mv[:, start : max(stop, start + 1)].mean(axis=1, keepdims=True)
+
+    def distance(self, level: np.ndarray) -> np.ndarray:
+        """Root mean square distance in mV of the leads from their levels, (n,)."""
+        return self.size(self.mv - level)
+
+
+def leads_of(time_ms: np.ndarray, mv: np.ndarray, chosen: Sequence[int] | None = None) -> Leads:
+    """Leads of an averaged beat (all, or the chosen rows), gaps bridged and marked as not seen."""
+    rows = mv if chosen is None else mv[list(chosen)]
+    seen = np.isfinite(rows)
+    bridged = np.zeros_like(rows)
+    for out, row, ok in zip(bridged, rows, seen, strict=True):
+        if ok.any():
+            out[:] = np.interp(time_ms, time_ms[ok], row[ok])
+    return Leads(time_ms, bridged, seen)
+
+
+def reach(moving: np.ndarray, start: int, stop: int, gap: int) -> int:
+    """Return the last place from `start` towards `stop` up to which `moving` goes on.
+
+    Pauses of up to `gap` places, as at a turning point of all leads at once, do not end it.
+    """
+    step = 1 if stop >= start else -1
+    last = start
+    for k in range(start, stop, step):
+        if moving[k]:
+            last = k
+        elif abs(k - last) > gap:
+            break
+    return last
+
+
+def leave(distance: np.ndarray, start: int, least: float, step: int, most: int) -> int:
+    """Return the first place from `start` in direction `step` at which `distance` is `least`."""
+    k = start
+    while abs(k - start) < most and 0 < k < len(distance) - 1 and distance[k] < least:
+        k += step
+    return k

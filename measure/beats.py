@@ -1,0 +1,264 @@
+"""Where the beats are, and which of them belong to the dominant rhythm.
+
+At each moment every visible panel, short or strip, votes with its activity: the envelope of its
+steep part, in units of that panel's own QRS. So neither amplitude, nor baseline, nor a change of
+column matters. Beats are then told apart by shape (correlation over the leads that two beats share)
+and by timing.
+"""
+
+import itertools
+from dataclasses import dataclass
+
+import numpy as np
+import scipy as sp
+
+from digitize.errors import NoTrace
+from digitize.tracing import FS_HZ, Tracing
+from measure.spikes import bridge_spikes, find_spikes
+
+_BAND_HZ = (6.0, 28.0)  # steep parts of a QRS, wide ones too, rather than of P and T
+_ENVELOPE_MS = 70
+_WINDOW_S = 2.0  # holds at least one beat from 30/min
+_LEAST_SHARE = 0.30  # of the usual QRS activity
+_LEAST_IN_GAP = 0.13  # where a beat is overdue
+_OVERDUE = 1.55  # times the usual interval
+_REFRACTORY_MS = 220
+_T_WITHIN_MS = 420  # a smaller, slower hump this soon after a QRS is its T wave
+_T_SHARE = 0.55
+_SPIKE_BEFORE_MS = (180, -20)  # a pacing spike stands at most this far before the middle of its QRS
+_SHAPE_MS = (110, 150)  # window around the beat in which shapes are compared
+_ALIKE = 0.80  # correlation from which two shapes are one
+_SIZE_RATIO = 0.5  # and their amplitudes must not differ by more than this
+_EARLY = 0.85  # share of the usual interval below which a beat is early
+_IRREGULAR = 0.10  # robust relative scatter of intervals from which no beat counts as early
+
+
+@dataclass(frozen=True, eq=False)
+class Beats:
+    """All beats of a tracing.
+
+    `time_s` is (n,), the middle of each QRS in seconds of the recording. `kind` names each beat:
+    "usual", "early" (usual shape, before its time), "aberrant" (another shape), "early aberrant",
+    "paced" (another shape than usual, after a pacing spike). `dominant` is True for the beats whose
+    shape is the usual one and which are not early: those are averaged. `paced` is True after a
+    spike; `spike_s` holds the times of all spikes.
+    """
+
+    time_s: np.ndarray
+    kind: tuple[str, ...]
+    dominant: np.ndarray
+    paced: np.ndarray
+    spike_s: np.ndarray
+
+    @property
+    def rr_s(self) -> np.ndarray:
+        """Intervals between successive beats in seconds, (n - 1,)."""
+        return np.diff(self.time_s)
+
+
+def find_beats(tracing: Tracing) -> Beats:
+    """Return the beats of a tracing with their classes.
+
+    Raises
+    ------
+    NoTrace
+        No beat stands out in any lead.
+    """
+    start_s, mv = _on_one_raster(tracing)
+    spike_s = start_s + find_spikes(mv) / FS_HZ
+    start_s, mv = _on_one_raster(tracing, spike_s)
+    activity = _activity(mv)
+    at = _peaks(activity)
+    if len(at) == 0:
+        raise NoTrace(f"{tracing.source.file_name}: no beat stands out in any lead.")
+    time_s = start_s + at / FS_HZ
+    paced, spike_s = _after_spikes(time_s, spike_s)
+    alike = _same_shape(mv, at)
+    early = _early(time_s, alike)
+    return Beats(
+        time_s=time_s,
+        kind=tuple(map(_kind, alike, early, paced)),
+        dominant=alike & ~early if (alike & ~early).any() else alike,
+        paced=paced,
+        spike_s=spike_s,
+    )
+
+
+def _on_one_raster(tracing: Tracing, spike_s: np.ndarray | None = None) -> tuple[float, np.ndarray]:
+    """Start of the recording and all its panels, (panels, n), spikes bridged where given."""
+    start_s = min(panel.start_s for panel in tracing.panels)
+    offsets = [round((panel.start_s - start_s) * FS_HZ) for panel in tracing.panels]
+    n = max(k + len(panel.mv) for k, panel in zip(offsets, tracing.panels, strict=True))
+    mv = np.full((len(offsets), n), np.nan)
+    for row, k, panel in zip(mv, offsets, tracing.panels, strict=True):
+        row[k : k + len(panel.mv)] = panel.mv if spike_s is None else bridge_spikes(panel, spike_s)
+    return start_s, mv
+
+
+def _activity(mv: np.ndarray) -> np.ndarray:
+    """Activity at each moment, (n,): 1 at a usual QRS, whichever panels are visible."""
+    total = np.zeros(mv.shape[1])
+    weight = np.full(mv.shape[1], 1e-9)
+    for row in mv:
+        seen = np.isfinite(row)
+        if seen.sum() < 0.4 * FS_HZ:
+            continue
+        first, last = np.flatnonzero(seen)[[0, -1]]
+        envelope = _envelope(row[first : last + 1])
+        scale, contrast = _scale_and_contrast(envelope)
+        if scale > 0:
+            inside = seen[first : last + 1]
+            total[first : last + 1] += np.where(inside, contrast * envelope / scale, 0)
+            weight[first : last + 1] += np.where(inside, contrast, 0)
+    return total / weight
+
+
+def _envelope(row: np.ndarray) -> np.ndarray:
+    """Smoothed size of the steep part of one panel."""
+    index = np.arange(len(row))
+    seen = np.isfinite(row)
+    bridged = np.interp(index, index[seen], row[seen])
+    sos = sp.signal.butter(2, _BAND_HZ, "bandpass", fs=FS_HZ, output="sos")
+    steep = sp.signal.sosfiltfilt(sos, bridged, padtype="even", padlen=min(len(row) - 1, 100))
+    window = sp.signal.windows.hann(_samples(2 * _ENVELOPE_MS))
+    return np.sqrt(np.maximum(np.convolve(steep**2, window / window.sum(), "same"), 0))
+
+
+def _scale_and_contrast(envelope: np.ndarray) -> tuple[float, float]:
+    """Usual height of the envelope at a QRS, and how far it stands out of the rest."""
+    size = _samples(1000 * _WINDOW_S)
+    starts = range(0, max(len(envelope) - size // 2, 1), size // 2)
+    scale = float(np.median([envelope[k : k + size].max() for k in starts]))
+    rest = float(np.median(envelope))
+    return scale, min(scale / (rest + 1e-6), 50.0) ** 2
+
+
+def _peaks(activity: np.ndarray) -> np.ndarray:
+    """Sample numbers of the QRS complexes within the activity."""
+    at, _ = sp.signal.find_peaks(activity, height=_LEAST_IN_GAP, distance=_samples(80))
+    at = _without_refractory(activity, at)
+    strong = at[activity[at] >= _LEAST_SHARE]
+    strong = _without_t_waves(activity, strong)
+    return _with_overdue(activity, strong, at)
+
+
+def _without_refractory(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
+    """Peaks of which none has a higher one nearer than the refractory time."""
+    kept: list[int] = []
+    for k in at[np.argsort(-activity[at], kind="stable")]:
+        if all(abs(k - other) >= _samples(_REFRACTORY_MS) for other in kept):
+            kept.append(int(k))
+    return np.array(sorted(kept), dtype=int)
+
+
+def _without_t_waves(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
+    """Peaks without the lower ones that follow a QRS as its T wave does."""
+    kept: list[int] = []
+    for k in at:
+        soon = kept and k - kept[-1] <= _samples(_T_WITHIN_MS)
+        if not (soon and activity[k] < _T_SHARE * activity[kept[-1]]):
+            kept.append(int(k))
+    return np.array(kept, dtype=int)
+
+
+def _with_overdue(activity: np.ndarray, strong: np.ndarray, weak: np.ndarray) -> np.ndarray:
+    """Strong peaks and the highest weak one within each gap that is too long."""
+    if len(strong) < 3:
+        return strong
+    usual = np.median(np.diff(strong))
+    added: list[int] = []
+    for left, right in itertools.pairwise(strong):
+        between = weak[
+            (weak > left + _samples(_T_WITHIN_MS)) & (weak < right - _samples(_REFRACTORY_MS))
+        ]
+        if right - left > _OVERDUE * usual and len(between):
+            added.append(int(between[np.argmax(activity[between])]))
+    return np.array(sorted([*strong, *added]), dtype=int)
+
+
+def _after_spikes(time_s: np.ndarray, spike_s: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Which beats follow a spike, and the spikes; a single paced beat is not believed."""
+    lag_ms = 1000 * (time_s[:, None] - spike_s[None, :])
+    paced = ((lag_ms <= _SPIKE_BEFORE_MS[0]) & (lag_ms >= _SPIKE_BEFORE_MS[1])).any(axis=1)
+    if paced.sum() < 2:
+        return np.zeros(len(time_s), bool), np.array([])
+    return paced, spike_s
+
+
+def _same_shape(mv: np.ndarray, at: np.ndarray) -> np.ndarray:
+    """True for the beats of the commonest shape, column by column where columns share no lead."""
+    similarity = _similarity(mv, at)
+    comparable = np.isfinite(similarity)
+    _, group = sp.sparse.csgraph.connected_components(comparable, directed=False)
+    usual = np.zeros(len(at), bool)
+    for number in range(group.max() + 1):
+        members = np.flatnonzero(group == number)
+        usual[members] = _commonest(similarity[np.ix_(members, members)])
+    return usual
+
+
+def _similarity(mv: np.ndarray, at: np.ndarray) -> np.ndarray:
+    """Likeness of each pair of beats over shared leads, (n, n); NaN where they share none."""
+    before, after = (_samples(ms) for ms in _SHAPE_MS)
+    padded = np.pad(mv, ((0, 0), (before, after)), constant_values=np.nan)
+    cut = np.stack([padded[:, k : k + before + after : 2] for k in at])
+    whole = np.isfinite(cut).all(axis=2)
+    cut = np.where(whole[:, :, None], cut, 0)
+    slope = np.gradient(sp.ndimage.gaussian_filter1d(cut, 3, axis=2), axis=2)
+    n = len(at)
+    similarity = np.full((n, n), np.nan)
+    for i in range(n):
+        for j in range(i, n):
+            shared = whole[i] & whole[j]
+            if shared.any():
+                similarity[i, j] = similarity[j, i] = _likeness(slope[i][shared], slope[j][shared])
+    return similarity
+
+
+def _likeness(one: np.ndarray, other: np.ndarray) -> float:
+    """Correlation of two beats at their best of a few shifts; 0 where their sizes differ much."""
+    best = 0.0
+    for shift in range(-6, 7):
+        a = one[:, 6 + shift : one.shape[1] - 6 + shift]
+        b = other[:, 6:-6]
+        aa, bb = (a * a).sum(), (b * b).sum()
+        if aa == 0 or bb == 0 or min(aa, bb) < _SIZE_RATIO**2 * max(aa, bb):
+            continue
+        best = max(best, float((a * b).sum() / np.sqrt(aa * bb)))
+    return best
+
+
+def _commonest(similarity: np.ndarray) -> np.ndarray:
+    """True for the largest set of beats that are like one of them; NaN counts as unlike."""
+    alike = np.nan_to_num(similarity) >= _ALIKE
+    np.fill_diagonal(alike, True)
+    leader = int(np.argmax(alike.sum(axis=1) + 1e-3 * np.nan_to_num(similarity).sum(axis=1)))
+    return alike[leader]
+
+
+def _early(time_s: np.ndarray, alike: np.ndarray) -> np.ndarray:
+    """True for beats that come before their time in an otherwise regular rhythm."""
+    early = np.zeros(len(time_s), bool)
+    rr_s = np.diff(time_s)
+    if len(rr_s) < 3:
+        return early
+    both = alike[1:] & alike[:-1]
+    usual_s = np.median(rr_s[both]) if both.sum() >= 3 else np.median(rr_s)
+    scatter = np.median(np.abs(rr_s - usual_s)) / 0.6745 / usual_s
+    if scatter < _IRREGULAR:
+        early[1:] = rr_s < _EARLY * usual_s
+        # Of two short intervals in a row the second may only follow an early beat in time.
+        early[2:] &= ~(early[1:-1] & (time_s[2:] - time_s[:-2] > 2 * _EARLY * usual_s))
+    return early
+
+
+def _kind(alike: bool, early: bool, paced: bool) -> str:
+    if alike:
+        return "early" if early else "usual"
+    if paced:
+        return "paced"
+    return "early aberrant" if early else "aberrant"
+
+
+def _samples(ms: float) -> int:
+    return round(ms * FS_HZ / 1000)
