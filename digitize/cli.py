@@ -1,0 +1,119 @@
+"""The command `digitize`: scans in, calibrated leads and an overlay out.
+
+This module parses, calls and prints; image libraries are loaded when the first page is read.
+Results go to stdout and files, everything else to stderr. Exit codes: 0 every page was read, 1 some
+input could not be used, 2 the command was not understood.
+"""
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from digitize import CAUTION, program_version
+from digitize.console import console
+from digitize.options import Options
+
+app = typer.Typer(
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    help=f"Read calibrated leads from scans, faxes and photos of paper ECGs. {CAUTION}",
+)
+
+
+def main() -> None:
+    """Entry point of the command."""
+    app()
+
+
+@app.callback(invoke_without_command=True)
+def _command(
+    context: typer.Context,
+    version: Annotated[bool, typer.Option("--version", help="Print the version.")] = False,
+) -> None:
+    if version:
+        print(f"digitize {program_version()}")
+        raise typer.Exit
+    if context.invoked_subcommand is None:
+        print(context.get_help())
+
+
+@app.command()
+def page(
+    files: Annotated[
+        list[Path], typer.Argument(help="Scans, faxes, photos: PNG, JPEG, TIFF, PDF, HEIC, DICOM.")
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the results; else beside each file."),
+    ] = None,
+    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
+    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    layout: Annotated[
+        str | None, typer.Option(help="Rows x columns + rhythm strips, such as 3x4+1.")
+    ] = None,
+    leads: Annotated[
+        str | None, typer.Option(help="Lead names row by row, such as I,aVR,V1,V4,II,...")
+    ] = None,
+    turn: Annotated[
+        int | None, typer.Option(help="Clockwise turn that makes the page upright: 0 90 180 270.")
+    ] = None,
+    timing: Annotated[
+        str | None, typer.Option(help="Columns in time: consecutive or simultaneous.")
+    ] = None,
+    px_per_mm: Annotated[
+        str | None,
+        typer.Option(help="Scale of a page without grid, such as 11.8, or 8.04,3.85 for a fax."),
+    ] = None,
+    max_megapixels: Annotated[
+        float, typer.Option(help="Refuse larger pages.")
+    ] = Options.max_megapixels,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier results.")] = False,
+    timings: Annotated[
+        bool, typer.Option("--timings", help="Print how long each stage took (stderr).")
+    ] = False,
+) -> None:
+    """Read each page of each file: NAME.csv, NAME.json and NAME.overlay.png.
+
+    What you give here is taken as true; everything else is looked for on the page, and the JSON
+    says where each value came from. Look at the overlay before you use the numbers.
+    """
+    try:
+        options = Options(
+            speed_mm_s=speed,
+            gain_mm_mv=gain,
+            layout=layout,
+            lead_order=_names(leads),
+            turn_deg=turn,
+            timing=timing,
+            px_per_mm=_scale(px_per_mm),
+            max_megapixels=max_megapixels,
+        )
+    except ValueError as error:
+        raise typer.BadParameter(str(error)) from None
+    from digitize.run import read_files
+
+    with console(len(files)) as shown_on:
+        failed = read_files(
+            files, options, shown_on, folder=output, replace=replace, timings=timings
+        )
+    raise typer.Exit(1 if failed else 0)
+
+
+def _names(text: str | None) -> tuple[str, ...] | None:
+    """Lead names out of a list with commas."""
+    return None if text is None else tuple(name.strip() for name in text.split(","))
+
+
+def _scale(text: str | None) -> tuple[float, float] | None:
+    """Pixels per mm across and down out of one number or two."""
+    if text is None:
+        return None
+    try:
+        values = [float(part) for part in text.split(",")]
+    except ValueError:
+        values = []
+    if len(values) not in (1, 2):
+        raise ValueError(f"'{text}' is no scale: give one number or two, such as 8.04,3.85")
+    return values[0], values[-1]

@@ -1,0 +1,113 @@
+"""Files read one after another, their results written; one bad page never stops the others."""
+
+from pathlib import Path
+
+from digitize import CAUTION
+from digitize.console import Console
+from digitize.errors import InputError, OutputExists, at, shown
+from digitize.options import Options
+from digitize.overlay import draw_overlay
+from digitize.read import Stages, read_stages
+from digitize.safe_write import refuse_existing, write_files
+from digitize.tracing import Known
+from digitize.tracing_files import output_stem, tracing_files
+
+OVERLAY_ENDING = ".overlay.png"
+
+
+def read_files(
+    files: list[Path],
+    options: Options,
+    console: Console,
+    *,
+    folder: Path | None = None,
+    replace: bool = False,
+    timings: bool = False,
+) -> int:
+    """Read every page of every file and write its CSV, JSON and overlay.
+
+    Parameters
+    ----------
+    files : list of Path
+        Overlays among them are left out: they are results.
+    options : Options
+        What a person knows better than the pages.
+    console : Console
+        Takes results, errors and progress.
+    folder : Path, optional
+        Where the results go; beside each file if not given.
+    replace : bool
+        Whether earlier results may be replaced.
+    timings : bool
+        Whether to say how long each stage took.
+
+    Returns
+    -------
+    int
+        How many files and pages could not be used.
+    """
+    failed = done = 0
+    written: set[Path] = set()
+
+    def fail(error: InputError) -> None:
+        nonlocal failed
+        failed += 1
+        console.line(str(error))
+
+    for file in files:
+        console.begin(shown(file.name))
+        if file.name.endswith(OVERLAY_ENDING):
+            console.line(f"{shown(file.name)}: left out, an overlay is a result and not a scan")
+            console.end()
+            continue
+        try:
+            for stages in read_stages(file, options, on_error=fail, on_stage=console.stage):
+                try:
+                    stem = _write(
+                        stages, file.parent if folder is None else folder, written, replace
+                    )
+                except InputError as error:
+                    fail(at(error, file.name, stages.page.source.page))
+                    continue
+                done += 1
+                console.result(_summary(stages, stem))
+                if timings:
+                    console.line(f"{shown(stem.name)}, {console.timings()}")
+        except InputError as error:
+            fail(at(error, file.name))
+        console.end()
+    if done:
+        console.result(CAUTION)
+    return failed
+
+
+def _write(stages: Stages, folder: Path, written: set[Path], replace: bool) -> Path:
+    """Write the three files of a page; their common name, which is added to `written`."""
+    stem = folder / output_stem(stages.page.source)
+    if stem in written:
+        raise OutputExists("another file of the same name was read before it: use -o")
+    files = {folder / name: data for name, data in tracing_files(stages.tracing, stem.name).items()}
+    overlay = folder / f"{stem.name}{OVERLAY_ENDING}"
+    refuse_existing([overlay, *files], replace=replace)  # before the drawing, which takes time
+    write_files({overlay: draw_overlay(stages.page, stages.tracing), **files}, replace=replace)
+    written.add(stem)
+    return stem
+
+
+def _summary(stages: Stages, stem: Path) -> str:
+    """What was read on one page, in a few lines."""
+    tracing = stages.tracing
+    source = tracing.source
+    lines = [
+        f"{shown(source.file_name)}, page {source.page}: {len(tracing.leads)} leads, "
+        f"layout {_how(tracing.layout)}, {_how(tracing.speed_mm_s, 'mm/s')}, "
+        f"{_how(tracing.gain_mm_mv, 'mm/mV')}, columns {_how(tracing.timing)}"
+    ]
+    lines += [f"  look: {check.message}" for check in tracing.checks if check.passed is False]
+    return "\n".join([*lines, f"  {shown(stem)}.csv, .json, {OVERLAY_ENDING}"])
+
+
+def _how(known: Known, unit: str = "") -> str:
+    """A value with its unit and origin: "25 mm/s (printed)"."""
+    value = f"{known.value:g}" if isinstance(known.value, float) else str(known.value)
+    return f"{value} {unit}".rstrip() + f" ({known.source})"
