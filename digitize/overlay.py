@@ -62,6 +62,27 @@ def draw_overlay(page: Page, tracing: Tracing) -> bytes:
     return buffer.getvalue()
 
 
+def footer_lines(tracing: Tracing) -> Iterator[tuple[str, tuple[int, int, int]]]:
+    """The lines below the page, each with its colour; the caution is the last."""
+
+    def how(known: Known, unit: str = "") -> str:
+        value = f"{known.value:g}{unit}" if isinstance(known.value, float) else str(known.value)
+        return f"{value} ({_HOW[known.source]})"
+
+    yield (
+        f"Layout {how(tracing.layout)}   Speed {how(tracing.speed_mm_s, ' mm/s')}   "
+        f"Gain {how(tracing.gain_mm_mv, ' mm/mV')}   Columns {how(tracing.timing)}",
+        INK,
+    )
+    failed = [check for check in tracing.checks if check.passed is False]
+    if not failed:
+        yield f"No self-check failed ({len(tracing.checks)} made).", GREEN
+    for check in failed:
+        yield f"LOOK: {check.message}", ORANGE
+    yield "Solid blue: read.  Dashed orange: doubtful.  Hatched orange: not read, left blank.", INK
+    yield CAUTION, INK
+
+
 def _bleached(pixels: np.ndarray) -> tuple[np.ndarray, float]:
     """The page in pale colours at the size of the picture, and pixels of it per page pixel."""
     rows, cols = pixels.shape[:2]
@@ -192,7 +213,9 @@ def _with_footer(image: Image.Image, tracing: Tracing) -> Image.Image:
     """The picture with what was read, what to look at and the caution below it."""
     size_px = float(np.clip(image.width / 75, 15, 28))
     font = ImageFont.load_default(size_px)
-    lines = [line for text in _footer(tracing) for line in _wrapped(*text, font, image.width - 30)]
+    lines = [
+        line for text in footer_lines(tracing) for line in _wrapped(*text, font, image.width - 30)
+    ]
     step = round(size_px * 1.3)
     most = max(FOOTER_PX // step - 1, 3)
     if len(lines) > most:  # the caution comes last and always stays
@@ -203,27 +226,6 @@ def _with_footer(image: Image.Image, tracing: Tracing) -> Image.Image:
     for number, (line, colour) in enumerate(lines):
         draw.text((15, image.height + step // 2 + number * step), line, colour, font)
     return whole
-
-
-def _footer(tracing: Tracing) -> Iterator[tuple[str, tuple[int, int, int]]]:
-    """Lines below the page, each with its colour."""
-
-    def how(known: Known, unit: str = "") -> str:
-        value = f"{known.value:g}{unit}" if isinstance(known.value, float) else str(known.value)
-        return f"{value} ({_HOW[known.source]})"
-
-    yield (
-        f"Layout {how(tracing.layout)}   Speed {how(tracing.speed_mm_s, ' mm/s')}   "
-        f"Gain {how(tracing.gain_mm_mv, ' mm/mV')}   Columns {how(tracing.timing)}",
-        INK,
-    )
-    failed = [check for check in tracing.checks if check.passed is False]
-    if not failed:
-        yield f"No self-check failed ({len(tracing.checks)} made).", GREEN
-    for check in failed:
-        yield f"LOOK: {check.message}", ORANGE
-    yield "Solid blue: read.  Dashed orange: doubtful.  Hatched orange: not read, left blank.", INK
-    yield CAUTION, INK
 
 
 def _wrapped(
