@@ -80,7 +80,7 @@ def read(case: Case, save: Path | None = None) -> Result:
 def _maker_hash() -> str:
     """Hash of the page maker's own source: another maker, other pages."""
     sources = sorted((Path(__file__).parents[1] / "drawn").glob("*.py"))
-    text = b"".join(s.read_bytes() for s in sources if not s.name.startswith(("test_", "samples")))
+    text = b"".join(s.read_bytes() for s in sources if not s.name.startswith(("test_", "sample")))
     return hashlib.sha256(text).hexdigest()[:10]
 
 
