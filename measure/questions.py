@@ -151,7 +151,9 @@ def _trust(reading: Reading) -> tuple[str, ...]:
     if cut:
         lines.append(f"QRS cut by the edge of the panel, not measured in: {', '.join(cut)}.")
     lines += [
-        f"Paper speed {_known(tracing.speed_mm_s, 'mm/s')}; gain "
+        "A digital recording: no scale was taken from paper."
+        if tracing.layout.value == "digital"
+        else f"Paper speed {_known(tracing.speed_mm_s, 'mm/s')}; gain "
         f"{_known(tracing.gain_mm_mv, 'mm/mV')}; layout {_known(tracing.layout, '')}.",
         _beats(reading),
     ]

@@ -9,18 +9,19 @@ import dataclasses
 import json
 import math
 from collections.abc import Mapping
-from importlib import metadata
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from digitize import program_version
 from digitize.errors import UnreadableFile
 from measure.quantity import Quantity
 from measure.reading import Reading
 from measure.wording import NOTICE, ONE_SE
 
-FORMAT = "millivellum reading 1"
+FORMAT = "millivellum reading"
+FORMAT_VERSION = 1
 _DECIMALS = 5  # 0.01 microvolt, far below any error here
 
 
@@ -30,7 +31,8 @@ def document(reading: Reading) -> dict[str, Any]:
     return _plain(
         {
             "format": FORMAT,
-            "version": version(),
+            "format_version": FORMAT_VERSION,
+            "version": program_version(),
             "notice": f"{NOTICE} {ONE_SE}",
             "source": tracing.source,
             "scale": {
@@ -72,7 +74,8 @@ def load_document(path: Path) -> dict[str, Any]:
         content = json.loads(path.read_text(encoding="utf-8"))
     except (OSError, UnicodeDecodeError, json.JSONDecodeError) as error:
         raise UnreadableFile(f"{path}: cannot be read as a reading ({error}).") from error
-    if not isinstance(content, dict) or content.get("format") != FORMAT:
+    known = isinstance(content, dict) and content.get("format") == FORMAT
+    if not known or content.get("format_version") != FORMAT_VERSION:
         raise UnreadableFile(
             f"{path}: is no reading that this version knows; give the file of `measure read` that "
             "ends in .reading.json, or read the page again."
@@ -85,14 +88,6 @@ def quantity_of(entry: Mapping[str, Any]) -> Quantity:
     value, se = (math.nan if entry[k] is None else float(entry[k]) for k in ("value", "se"))
     leads = tuple(entry["leads"])
     return Quantity(value, se, entry["unit"], leads, entry["beats"], entry.get("reason"))
-
-
-def version() -> str:
-    """Version of the program that made the reading."""
-    try:
-        return metadata.version("millivellum")
-    except metadata.PackageNotFoundError:  # run from a source tree
-        return "not installed"
 
 
 def _beat(reading: Reading) -> dict[str, Any]:

@@ -51,7 +51,7 @@ def _intervals(rows: tuple[Measured, ...]) -> Table:
     table = _plain_table("", "measured", "from", "usual in adults", "source")
     for row in rows:
         off = row.place not in ("", "within")
-        remark = f"{row.place}: {row.usual.text}" if off else row.usual.text
+        remark = f"{row.place} (usual: {row.usual.text})" if off else row.usual.text
         table.add_row(
             row.usual.label,
             Text(number(row.quantity), style="bold" if off else ""),

@@ -37,7 +37,7 @@ class Limit:
     unit: str
 
     def __str__(self) -> str:
-        return f"{self.sign} {self.value:g} {self.unit}"
+        return f"{self.sign} {self.value:.3g} {self.unit}".rstrip()
 
     def judge(self, value: float, se: float) -> Result:
         """Compare a value and its standard error with the threshold; NaN is undecided."""

@@ -12,11 +12,13 @@ import numpy as np
 from measure.criteria.case import Case
 from measure.criteria.decide import Limit, Look, every, look_at, some
 from measure.criteria.finding import Evidence, Result
-from measure.quantity import Quantity
+from measure.quantity import Quantity, missing
 from measure.waves import Deflection, LeadWaves, Notch
 
 BROAD_R_MS = 80.0  # two small squares; no statement gives a number (common practice)
 SURE_NOTCH_SE = 3.0  # a notch is the largest of many bends: one standard error is not enough
+LEVEL_MS = 12.0  # the level before the QRS, as amplitudes are measured
+LONGEST_Q_MS = 40.0  # where there is no R to end it
 CONCORDANT_ST_MV = 0.1  # 1 mm, as in Sgarbossa et al., N Engl J Med 1996;334:481 (memory)
 
 
@@ -185,13 +187,13 @@ def _initial_depth(case: Case, waves: LeadWaves) -> tuple[Quantity, float]:
     """Deepest point between the QRS onset and the first R peak, below the level at the onset."""
     time_ms, mv, se_mv = case.samples(waves.lead)
     peaks = upward(waves)
-    end_ms = peaks[0].peak_ms if peaks else 40.0
+    end_ms = peaks[0].peak_ms if peaks else LONGEST_Q_MS
+    before = (time_ms >= -LEVEL_MS) & (time_ms <= 0) & np.isfinite(mv)
     inside = np.flatnonzero((time_ms >= 0) & (time_ms <= end_ms) & np.isfinite(mv))
-    if inside.size == 0:
-        return Quantity(math.nan, math.nan, "mV", reason="no sample at the onset"), math.nan
-    start = inside[0]
+    if inside.size == 0 or not before.any():
+        return missing("mV", "no sample at the onset"), math.nan
     lowest = inside[np.argmin(mv[inside])]
-    depth_mv = max(float(mv[start] - mv[lowest]), 0.0)
+    depth_mv = max(float(mv[before].mean() - mv[lowest]), 0.0)
     return Quantity(depth_mv, float(se_mv[lowest]), "mV"), float(time_ms[lowest])
 
 

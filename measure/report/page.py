@@ -5,11 +5,11 @@ import json
 from collections.abc import Iterable
 from html import escape
 
+from digitize import program_version
 from digitize.tracing import LEADS
 from measure.criteria.finding import Clause, Finding
 from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
 from measure.reading import Reading
-from measure.reading_files import version
 from measure.report.beats import SPEED_MM_S, draw_beats, gain_mm_mv
 from measure.report.style import CSS
 from measure.waves import LeadWaves
@@ -98,7 +98,7 @@ def _rows(rows: tuple[Measured, ...]) -> str:
     body = []
     for row in rows:
         off = row.place not in ("", "within")
-        usual = f"{row.place} ({row.usual.text})" if off else row.usual.text
+        usual = f"{row.place} (usual: {row.usual.text})" if off else row.usual.text
         cells = (
             f"<td>{escape(row.usual.label)}</td>"
             f'<td class="{"number" if row.quantity.known else "missing"}">'
@@ -231,7 +231,7 @@ def _footer(reading: Reading) -> str:
     facts = (
         f"Source: {tracing.source.file_name}, page {tracing.source.page}, SHA-256 "
         f"{tracing.source.sha256}.",
-        f"Program: millivellum {version()}. Options: {_flat(tracing.options)}.",
+        f"Program: millivellum {program_version()}. Options: {_flat(tracing.options)}.",
         f"Patient: sex {said['sex']}, age {said['age']}.",
         f"Corrections: {len(tracing.corrections)} "
         f"{_flat(tracing.corrections) if tracing.corrections else ''}",

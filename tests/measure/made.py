@@ -6,6 +6,7 @@ import numpy as np
 
 from digitize.tracing import LEADS, Known, PageSource, Panel, Tracing
 from measure.average import DominantBeat
+from measure.beats import Beats
 from measure.boundaries import Boundaries, Edges
 from measure.criteria import judge
 from measure.criteria.finding import Clause, Finding
@@ -246,6 +247,9 @@ def reading(leads=None, person=MALE, **interval_changes) -> Reading:
     return Reading(
         tracing=tracing,
         person=person,
+        beats=Beats(
+            np.arange(8.0), ("usual",) * 8, np.ones(8, bool), np.zeros(8, bool), np.zeros(0)
+        ),
         rhythm=heart,
         beat=made_beat,
         boundaries=edges,

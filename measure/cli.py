@@ -1,0 +1,143 @@
+"""The command `measure`: readings of ECGs, and old against new.
+
+This module parses, calls and prints. Tables go to stdout, results to files, everything else to
+stderr. Exit codes: 0 all was read, 1 some input could not be used, 2 the command was not
+understood.
+"""
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from digitize import CAUTION, program_version
+from digitize.options import Options
+
+if TYPE_CHECKING:
+    from measure.reading import Person
+
+OLDEST_YEARS = 130.0
+
+app = typer.Typer(
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    help=f"Measure ECGs and hold them against published criteria. {CAUTION}",
+)
+
+
+def main() -> None:
+    """Entry point of the command."""
+    app()
+
+
+@app.callback(invoke_without_command=True)
+def _command(
+    context: typer.Context,
+    version: Annotated[bool, typer.Option("--version", help="Print the version.")] = False,
+) -> None:
+    if version:
+        print(f"measure {program_version()}")
+        raise typer.Exit
+    if context.invoked_subcommand is None:
+        print(context.get_help())
+
+
+@app.command()
+def read(
+    files: Annotated[
+        list[Path],
+        typer.Argument(help="Scans, photos, PDFs; tracings (CSV, JSON); WFDB, EDF, DICOM, CSV."),
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the results; else beside each file."),
+    ] = None,
+    sex: Annotated[
+        str | None, typer.Option(help="male or female: some thresholds depend on it.")
+    ] = None,
+    age: Annotated[float | None, typer.Option(help="Age in years.")] = None,
+    unit: Annotated[
+        str | None, typer.Option(help="mV or uV, for a digital CSV that does not say it.")
+    ] = None,
+    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
+    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    layout: Annotated[
+        str | None, typer.Option(help="Rows x columns + rhythm strips, such as 3x4+1.")
+    ] = None,
+    leads: Annotated[
+        str | None, typer.Option(help="Lead names row by row, such as I,aVR,V1,V4,II,...")
+    ] = None,
+    turn: Annotated[
+        int | None, typer.Option(help="Clockwise turn that makes the page upright: 0 90 180 270.")
+    ] = None,
+    timing: Annotated[
+        str | None, typer.Option(help="Columns in time: consecutive or simultaneous.")
+    ] = None,
+    px_per_mm: Annotated[
+        str | None,
+        typer.Option(help="Scale of a page without grid, such as 11.8, or 8.04,3.85 for a fax."),
+    ] = None,
+    max_megapixels: Annotated[
+        float, typer.Option(help="Refuse larger pages.")
+    ] = Options.max_megapixels,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier results.")] = False,
+) -> None:
+    """Measure each ECG: a table, NAME.reading.json and NAME.reading.html.
+
+    A page is digitised first and its tracing and overlay are written too. Look at the overlay
+    before you use the numbers.
+    """
+    options = _options(speed, gain, layout, leads, turn, timing, px_per_mm, max_megapixels)
+    person = _person(sex, age)
+    from measure.run import read_files
+
+    failed = read_files(files, options, person, unit=unit, folder=output, replace=replace)
+    raise typer.Exit(1 if failed else 0)
+
+
+def _options(
+    speed: float | None,
+    gain: float | None,
+    layout: str | None,
+    leads: str | None,
+    turn: int | None,
+    timing: str | None,
+    px_per_mm: str | None,
+    max_megapixels: float,
+) -> Options:
+    """What the person knows about the page, as one record."""
+    try:
+        return Options(
+            speed_mm_s=speed,
+            gain_mm_mv=gain,
+            layout=layout,
+            lead_order=None if leads is None else tuple(n.strip() for n in leads.split(",")),
+            turn_deg=turn,
+            timing=timing,
+            px_per_mm=None if px_per_mm is None else _scale(px_per_mm),
+            max_megapixels=max_megapixels,
+        )
+    except ValueError as error:
+        raise typer.BadParameter(str(error)) from None
+
+
+def _scale(text: str) -> tuple[float, float]:
+    """Pixels per mm across and down out of one number or two."""
+    try:
+        values = [float(part) for part in text.split(",")]
+    except ValueError:
+        values = []
+    if len(values) not in (1, 2):
+        raise ValueError(f"'{text}' is no scale: give one number or two, such as 8.04,3.85")
+    return values[0], values[-1]
+
+
+def _person(sex: str | None, age: float | None) -> "Person":
+    from measure.reading import Person
+
+    if sex not in (None, "male", "female"):
+        raise typer.BadParameter(f"'{sex}' is not known here: give male or female")
+    if age is not None and not 0 <= age <= OLDEST_YEARS:
+        raise typer.BadParameter(f"{age:g} years is no age: give 0 to {OLDEST_YEARS:g}")
+    return Person(sex, age)
