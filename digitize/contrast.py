@@ -41,6 +41,6 @@ def _even(image: np.ndarray) -> np.ndarray:
     """Take the slow part away and divide by the local strength, so that shade plays no part."""
     image = image.astype(np.float32)
     image = image - cv2.blur(image, (31, 31))
-    strength = np.sqrt(cv2.blur(image * image, (63, 63)))
+    strength = np.sqrt(np.maximum(cv2.blur(image * image, (63, 63)), 0))
     floor = 0.3 * float(np.median(strength)) + 1e-3
     return image / np.maximum(strength, floor)

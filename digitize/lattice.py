@@ -206,10 +206,7 @@ def _comb(ray: np.ndarray, profile: np.ndarray) -> tuple[float, float, np.ndarra
     refined = _refine_spacing(float(spacing[best, 0]), peak_hz, peak)
     teeth_hz = np.arange(1, 11) / refined
     teeth = np.array(
-        [
-            profile[np.abs(ray - hz) < 0.003].max() if hz < 0.485 else 0.0
-            for hz in teeth_hz
-        ]
+        [profile[np.abs(ray - hz) < 0.003].max() if hz < 0.485 else 0.0 for hz in teeth_hz]
     )
     return refined, score, teeth
 
@@ -263,9 +260,7 @@ def _agree(
     return max(((a, d) for a in across for d in down), key=lambda pair: together(*pair))
 
 
-def _follow(
-    spectra: np.ndarray, axis: int, family: _Family
-) -> tuple[np.ndarray, np.ndarray]:
+def _follow(spectra: np.ndarray, axis: int, family: _Family) -> tuple[np.ndarray, np.ndarray]:
     """Follow one peak from the seed over all tiles, the clearest first.
 
     Returns frequency (tiles down, tiles across, 2) along and other, and the height of the peak
@@ -310,7 +305,9 @@ def _local_peak(
     height = _sample(spectrum, axis, along, other)
     i, j = np.unravel_index(np.argmax(height), height.shape)
     core = height > 0.6 * height[i, j]
-    near = (np.abs(along - along[i, j]) < 2.5 / FFT_PX) & (np.abs(other - other[i, j]) < 2.5 / FFT_PX)
+    near = (np.abs(along - along[i, j]) < 2.5 / FFT_PX) & (
+        np.abs(other - other[i, j]) < 2.5 / FFT_PX
+    )
     w = np.where(core & near, height, 0.0) ** 2
     return (
         (float(np.sum(w * along) / np.sum(w)), float(np.sum(w * other) / np.sum(w))),
@@ -345,7 +342,9 @@ def _carrier(
     for _ in range(4):
         c = np.linalg.lstsq(design * w[:, None], target * w, rcond=None)[0]
         off = np.abs(target - design @ c)
-        w = np.tile(np.minimum(weight[seen], 4 * CLEAR), 2) / (1 + (off / (3 * np.median(off) + 1e-9)) ** 2)
+        w = np.tile(np.minimum(weight[seen], 4 * CLEAR), 2) / (
+            1 + (off / (3 * np.median(off) + 1e-9)) ** 2
+        )
     table = np.zeros((degree + 1, degree + 1))
     for (m, n), value in zip(powers, c, strict=True):
         table[m, n] = value

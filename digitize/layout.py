@@ -1,18 +1,42 @@
-"""Which lead stands where, at what speed and gain."""
+"""Which lead stands where, at what speed and gain.
 
-from dataclasses import dataclass
+Every usual arrangement that fits the number of rows is held, as a whole, against all the
+evidence: lead names read, breaks between columns, length of the panels. The best one wins; the
+margin to the runner-up says how sure that is. Scale comes from what is printed and from the
+calibration marks; what neither says is assumed, and said so.
+"""
 
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from digitize.columns import Span, column_spans, marks_of_row, trace_extent
+from digitize.errors import NoTrace
+from digitize.ink import Ink
+from digitize.labels import LabelFit, Slot, fit_labels, look_again
+from digitize.marks import Mark, mark_box
+from digitize.options import Options
+from digitize.rows import Rows
+from digitize.scale import Scale, find_scale
 from digitize.sheet import Box
+from digitize.templates import TEMPLATES, Template
 from digitize.tracing import Known, Origin
+from digitize.words import Printing
+
+MOST_STRIPS = 3
+STRIP_LEAD = "II"  # common practice, where a strip's name cannot be read
+SURE = 3.0  # log odds to the runner-up below which the layout is called doubtful
+READ = 0.6  # probability from which a name counts as read
 
 
 @dataclass(frozen=True)
 class PanelPlace:
     """One printed stretch of one lead, before it is traced.
 
-    The trace runs from `left_mm` to `right_mm`; `baseline_mm` is the place of 0 mV where it is
-    known from a calibration mark, else the usual height of the trace (the level of its flat
-    stretches). A trace may leave `box` up or down: the box is what belongs to the row.
+    The trace runs from `box.left_mm` to `box.right_mm`; `baseline_mm` is the place of 0 mV where
+    it is known from a calibration mark, else the usual height of the trace. A trace may leave
+    `box` up or down: the box is what belongs to the row.
     """
 
     lead: str
@@ -40,3 +64,218 @@ class Layout:
     marks: tuple[Box, ...]  # calibration marks: not part of any trace
     words: tuple[Box, ...]  # printing on or near the traces: not part of any trace
     notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class _Hypothesis:
+    """One arrangement laid over the page."""
+
+    template: Template
+    strips: int
+    spans: tuple[Span, ...]
+    slots: tuple[Slot, ...]
+    labels: LabelFit
+    other: float  # evidence apart from the names
+
+    @property
+    def score(self) -> float:
+        return self.labels.score + self.other
+
+    @property
+    def name(self) -> str:
+        return self.template.name + (f"+{self.strips}" if self.strips else "")
+
+
+def find_layout(
+    ink: Ink,
+    printing: Printing,
+    rows: Rows,
+    marks: Sequence[Mark],
+    options: Options | None = None,
+) -> Layout:
+    """Return the panels of a page.
+
+    Parameters
+    ----------
+    ink : Ink
+        Looked at again where a lead name must be but was not read.
+    printing : Printing
+        Words with their likelihood under each lead name, and lines of text.
+    rows : Rows
+        The rows of trace.
+    marks : sequence of Mark
+        Calibration marks.
+    options : Options
+        Speed, gain, layout, lead order and timing that a person gave.
+
+    Raises
+    ------
+    NoTrace
+        There is no row of trace, or no arrangement has its number of rows.
+    """
+    options = options or Options()
+    if not rows.rows:
+        raise NoTrace("no ECG trace found on this page; give the page that holds the tracing")
+    marks = [m for row in rows.rows for m in marks_of_row(row, marks, rows.pitch_mm)]
+    extent = trace_extent(rows, marks)
+    scale = find_scale(printing, rows, marks, options)
+    hypotheses = _weigh(printing, rows, extent, scale, options)
+    if not hypotheses:
+        raise NoTrace(
+            f"{len(rows.rows)} rows of trace fit no usual layout; "
+            "give --layout, or crop the page to the tracing"
+        )
+    hypotheses = [
+        replace(h, labels=look_again(ink, h.labels, h.slots)) for h in hypotheses[:3]
+    ] + hypotheses[3:]
+    hypotheses.sort(key=lambda h: -h.score)
+    best = hypotheses[0]
+    margin = best.score - next((h.score for h in hypotheses[1:]), best.score - 20)
+    panels = _panels(best, rows, marks, scale, options)
+    return Layout(
+        name=_known_name(best, margin, options),
+        speed_mm_s=scale.speed_mm_s,
+        gain_mm_mv=scale.gain_mm_mv,
+        timing=_timing(options),
+        panels=panels,
+        marks=tuple(mark_box(m, 1.0) for m in marks),
+        words=printing.letters,
+        notes=(*scale.notes, *_notes(best, margin, panels, hypotheses)),
+    )
+
+
+def _weigh(
+    printing: Printing, rows: Rows, extent: Span, scale: Scale, options: Options
+) -> list[_Hypothesis]:
+    """All arrangements with the page's number of rows, the likeliest first."""
+    found = []
+    wanted = options.layout
+    for template in TEMPLATES:
+        strips = len(rows.rows) - template.rows
+        if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):
+            continue
+        name = template.name + (f"+{strips}" if strips else "")
+        if wanted is not None and wanted != name:
+            continue
+        spans, breaks = column_spans(rows, template.rows, extent, template.columns)
+        slots = tuple(_slots(template, strips, spans, rows))
+        labels = fit_labels(printing.words, slots, rows.pitch_mm)
+        seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
+        length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
+        evidence = 6.0 * (breaks - 0.4) if template.columns > 1 else 0.0
+        other = template.prior - 0.3 * strips + length + evidence
+        found.append(_Hypothesis(template, strips, spans, slots, labels, other))
+    return sorted(found, key=lambda h: -h.score)
+
+
+def _slots(template: Template, strips: int, spans: tuple[Span, ...], rows: Rows) -> list[Slot]:
+    slots = [
+        Slot(r, c, spans[c].left_mm, rows.rows[r].y_mm, lead)
+        for r, leads in enumerate(template.leads)
+        for c, lead in enumerate(leads)
+    ]
+    if template.name == "1x1":
+        slots = [replace(slots[0], name=None)]
+    return slots + [
+        Slot(template.rows + k, 0, spans[0].left_mm, rows.rows[template.rows + k].y_mm, None)
+        for k in range(strips)
+    ]
+
+
+def _panels(
+    best: _Hypothesis,
+    rows: Rows,
+    marks: Sequence[Mark],
+    scale: Scale,
+    options: Options,
+) -> tuple[PanelPlace, ...]:
+    start_mm = best.spans[0].left_mm
+    speed = float(scale.speed_mm_s.value)
+    panels = []
+    for number, slot in enumerate(best.slots):
+        strip = slot.row >= best.template.rows
+        lead, source, sure = _lead(slot, number, best, options)
+        left = best.spans[slot.column].left_mm
+        right = best.spans[-1].right_mm if strip else best.spans[slot.column].right_mm
+        row = rows.rows[slot.row]
+        half = rows.pitch_mm / 2
+        consecutive = options.timing != "simultaneous"
+        panels.append(
+            PanelPlace(
+                lead=lead,
+                lead_source=source,
+                lead_score=sure,
+                strip=strip,
+                row=slot.row,
+                column=slot.column,
+                box=Box(left, row.y_mm - half, right, row.y_mm + half),
+                baseline_mm=_baseline(row.y_mm, marks_of_row(row, marks, rows.pitch_mm)),
+                start_s=(left - start_mm) / speed if consecutive else 0.0,
+                speed_mm_s=speed,
+                gain_mm_mv=scale.gain_of(slot.row, lead),
+            )
+        )
+    return tuple(panels)
+
+
+def _lead(
+    slot: Slot, number: int, best: _Hypothesis, options: Options
+) -> tuple[str, Origin, float]:
+    """Name of a panel: given, read, or as the arrangement has it."""
+    if options.lead_order is not None and number < len(options.lead_order):
+        return options.lead_order[number], "given", 1.0
+    read = best.labels.names.get((slot.row, slot.column))
+    if slot.name is None:
+        if read is not None and read[1] > READ:
+            return read[0], "printed", read[1]
+        return STRIP_LEAD, "assumed", 0.5
+    if read is not None and read[0] == slot.name:
+        return slot.name, "printed", read[1]
+    if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
+        return read[0], "printed", read[1]
+    return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7
+
+
+def _baseline(row_mm: float, marks: Sequence[Mark]) -> float:
+    feet = [mark.foot_mm for mark in marks]
+    return float(np.median(feet)) if feet else row_mm
+
+
+def _known_name(best: _Hypothesis, margin: float, options: Options) -> Known:
+    if options.layout is not None:
+        return Known(best.name, "given")
+    read = best.labels.score > SURE
+    return Known(best.name, "found" if read or margin > SURE else "assumed")
+
+
+def _timing(options: Options) -> Known:
+    if options.timing is not None:
+        return Known(options.timing, "given")
+    return Known("consecutive", "assumed")
+
+
+def _notes(
+    best: _Hypothesis,
+    margin: float,
+    panels: Sequence[PanelPlace],
+    hypotheses: Sequence[_Hypothesis],
+) -> list[str]:
+    notes = []
+    if margin < SURE and len(hypotheses) > 1:
+        other = hypotheses[1]
+        first = ", ".join(lead for row in other.template.leads[:1] for lead in row)
+        notes.append(
+            f"layout {best.name} is little likelier than {other.name} (top row {first}); "
+            "look at the lead names, or give --layout"
+        )
+    assumed = [p.lead for p in panels if p.lead_source == "assumed"]
+    if assumed:
+        notes.append("lead names not read, assumed from the layout: " + ", ".join(assumed))
+    odd = [
+        f"{p.lead} where {s.name} is usual"
+        for p, s in zip(panels, best.slots, strict=True)
+        if s.name is not None and p.lead != s.name and p.lead_source != "given"
+    ]
+    if odd:
+        notes.append("unusual lead names read: " + ", ".join(odd))
+    return notes

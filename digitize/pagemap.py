@@ -216,7 +216,9 @@ def _second_differences(rows: int, cols: int) -> sp.sparse.csr_array:
 
     def d(n: int, order: int) -> sp.sparse.csr_array:
         step = {1: [-1.0, 1.0], 2: [1.0, -2.0, 1.0]}[order]
-        return sp.sparse.diags_array(step, offsets=range(order + 1), shape=(n - order, n), dtype=float)
+        return sp.sparse.diags_array(
+            step, offsets=range(order + 1), shape=(n - order, n), dtype=float
+        )
 
     eye = sp.sparse.eye_array
     return sp.sparse.vstack(

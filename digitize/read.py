@@ -12,8 +12,10 @@ from digitize.geometry import to_geometry
 from digitize.grid import Grid, find_grid
 from digitize.ink import Ink, find_ink
 from digitize.layout import Layout, find_layout
+from digitize.marks import find_marks
 from digitize.options import Options
 from digitize.pages import Page, open_pages
+from digitize.rows import find_rows
 from digitize.sheet import Sheet, flatten
 from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
@@ -61,7 +63,8 @@ def read_page(
     on_stage("printing")
     printing = read_printing(ink)
     on_stage("layout")
-    layout = find_layout(ink, printing, options)
+    rows = find_rows(ink, printing.letters)
+    layout = find_layout(ink, printing, rows, find_marks(ink), options)
     on_stage("trace")
     strokes = trace_panels(ink, layout)
     on_stage("checks")

@@ -20,6 +20,7 @@ BIN_MM = 0.25
 LONG_RULE_MM = 28.0  # a straight upright line this long is a frame or separator, no QRS
 FLAT_RULE_MM = 70.0  # a straight level line this long is a frame
 LEAST_PITCH_MM = 6.0
+SOLID_MM = 7  # unbroken ink of this length is trace or mark, no speck
 
 
 @dataclass(frozen=True, eq=False)
@@ -63,7 +64,8 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     letters : tuple of Box
         Separate letters: not part of any trace.
     """
-    mask = (ink.density > INK_LEVEL).astype(np.uint8)
+    edge = cv2.dilate(ink.hidden.astype(np.uint8), np.ones((15, 15), np.uint8))
+    mask = ((ink.density > INK_LEVEL) & (edge == 0)).astype(np.uint8)
     for box in letters:
         mask[_window(ink, box)] = 0
     mask, uprights = _without_rules(mask, ink)
@@ -162,12 +164,19 @@ def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:
 
 
 def _extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
-    """The longest stretch of a row without a long gap."""
+    """From the first to the last solid stretch of ink in a row; specks do not count."""
     reach = min(0.5 * pitch_mm, 12.0)
     near = (runs.top_mm < y_mm + reach) & (runs.bottom_mm > y_mm - reach)
     x = np.unique(runs.x_mm[near])
     if len(x) < 20:
         return None
-    parts = np.split(x, np.nonzero(np.diff(x) > 6.0)[0] + 1)
-    longest = max(parts, key=lambda p: p[-1] - p[0])
-    return Row(y_mm, float(longest[0]), float(longest[-1]))
+    first = np.floor(x[0])
+    inked = np.bincount((x - first).astype(int)) * STEP_MM
+    labels, _ = sp.ndimage.label(inked > 0.7)
+    solid = [part[0] for part in sp.ndimage.find_objects(labels)]
+    solid = [part for part in solid if part.stop - part.start >= SOLID_MM]
+    if not solid:
+        return None
+    left, right = first + solid[0].start, first + solid[-1].stop
+    within = x[(x >= left) & (x <= right)]
+    return Row(y_mm, float(within[0]), float(within[-1]))

@@ -1,0 +1,165 @@
+"""Lead names read on the page, held against where an arrangement expects them.
+
+A recorder prints its lead names at one fixed place relative to the start of each trace. So the
+place that most readings agree on is found first; names elsewhere do not count. Names that a
+trace touches are then looked for at that place alone.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from digitize.ink import Ink
+from digitize.sheet import Box
+from digitize.words import NAMES, Word, read_boxes
+
+REACH_LEFT_MM, REACH_RIGHT_MM = 18.0, 13.0  # a name stands this near the start of its trace
+SAME_X_MM, SAME_Y_MM = 3.0, 1.8
+# An upright stroke alone is easily read as I: such names weigh less.
+WEIGHT: Mapping[str, float] = {"I": 0.35, "II": 0.6, "III": 0.8}
+DOUBT = -5.0  # a crop that no name explains better than this says nothing
+
+
+@dataclass(frozen=True)
+class Slot:
+    """Where one panel starts, and the name expected of it; None: any name."""
+
+    row: int
+    column: int
+    x_mm: float
+    y_mm: float
+    name: str | None
+
+
+@dataclass(frozen=True)
+class LabelFit:
+    """How the readings fit an arrangement: log evidence, and the reading of each slot.
+
+    `names` is keyed by (row, column): name and probability among all names. `offset_mm` is the
+    place of the names relative to the starts, None where no two agree.
+    """
+
+    score: float
+    names: Mapping[tuple[int, int], tuple[str, float]]
+    offset_mm: tuple[float, float] | None
+    right_aligned: bool
+    boxes: tuple[Box, ...]
+
+
+def posterior(word: Word) -> dict[str, float]:
+    """Probability of each lead name, given that the word is one; empty where none fits."""
+    if not word.names or max(word.names.values()) < DOUBT:
+        return {}
+    log = np.array([word.names[name] for name in NAMES])
+    share = np.exp(log - log.max())
+    clear = np.exp(log.max() / 3)  # a poor reading spreads over all names
+    share = clear * share / share.sum() + (1 - clear) / len(NAMES)
+    return dict(zip(NAMES, share, strict=True))
+
+
+def fit_labels(words: Sequence[Word], slots: Sequence[Slot], pitch_mm: float) -> LabelFit:
+    """Return how the words fit the slots of an arrangement."""
+    fits = [
+        _fit_aligned([(w, p) for w in words if (p := posterior(w))], slots, pitch_mm, right)
+        for right in (False, True)
+    ]
+    return max(fits, key=lambda fit: fit.score)
+
+
+def _fit_aligned(
+    words: list[tuple[Word, dict[str, float]]],
+    slots: Sequence[Slot],
+    pitch_mm: float,
+    right: bool,
+) -> LabelFit:
+    pairs = []
+    for slot in slots:
+        for word, names in words:
+            x = word.box.right_mm if right else word.box.left_mm
+            dx = x - slot.x_mm
+            dy = (word.box.top_mm + word.box.bottom_mm) / 2 - slot.y_mm
+            if -REACH_LEFT_MM < dx < REACH_RIGHT_MM and abs(dy) < 0.85 * pitch_mm:
+                pairs.append((slot, word, dx, dy, _gain(slot, names)))
+    if not pairs:
+        return LabelFit(0.0, {}, None, right, ())
+    dx, dy, gain = (np.array([pair[k] for pair in pairs]) for k in (2, 3, 4))
+    first = np.array([pair[0].column == 0 for pair in pairs])
+    seeds = np.nonzero(gain > 0.5)[0]
+    best_score, chosen = 0.0, []
+    for k in seeds:
+        level = np.abs(dy - dy[k]) < SAME_Y_MM
+        near = level & (np.abs(dx - dx[k]) < SAME_X_MM)
+        score, own = _one_each(pairs, np.nonzero(near)[0])
+        # A calibration mark may push the names of the first column aside from the others'.
+        for j in seeds[level[seeds] & (first[seeds] != first[k]) & ~near[seeds]]:
+            apart = level & (np.abs(dx - np.where(first == first[k], dx[k], dx[j])) < SAME_X_MM)
+            both, two = _one_each(pairs, np.nonzero(apart)[0])
+            if both - 1.0 > score:
+                score, own = both - 1.0, two
+        if score > best_score:
+            best_score, chosen = score, own
+    if not chosen:
+        return LabelFit(0.0, {}, None, right, ())
+    names = {}
+    for k in chosen:
+        slot, word = pairs[k][:2]
+        post = posterior(word)
+        name = max(post, key=lambda n: post[n])
+        names[slot.row, slot.column] = (name, post[name])
+    offset = None
+    if len(chosen) > 1:
+        offset = (float(np.median(dx[chosen])), float(np.median(dy[chosen])))
+    return LabelFit(best_score, names, offset, right, tuple(pairs[k][1].box for k in chosen))
+
+
+def _gain(slot: Slot, names: Mapping[str, float]) -> float:
+    """Log evidence of one reading for one slot against a name drawn at random."""
+    name = slot.name or max(names, key=lambda n: names[n])
+    evidence = float(np.log(names[name] * len(NAMES)))
+    if slot.name is None:
+        evidence = 0.3 * max(evidence, 0.0)
+    return WEIGHT.get(name, 1.0) * max(evidence, -2.5)
+
+
+def _one_each(pairs: list, near: np.ndarray) -> tuple[float, list[int]]:  # type: ignore[type-arg]
+    """Best reading of each slot among the pairs, each word used once."""
+    score, chosen = 0.0, []
+    taken_slots, taken_words = set(), set()
+    for k in sorted(near, key=lambda k: -pairs[k][4]):
+        slot, word = pairs[k][0], pairs[k][1]
+        key = (slot.row, slot.column)
+        if key in taken_slots or word.box in taken_words:
+            continue
+        taken_slots.add(key)
+        taken_words.add(word.box)
+        score += pairs[k][4]
+        chosen.append(int(k))
+    return score, chosen
+
+
+def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot]) -> LabelFit:
+    """Read the place of each slot's name that was not read, where the others say it must be."""
+    missing = [slot for slot in slots if (slot.row, slot.column) not in fit.names]
+    if fit.offset_mm is None or not missing:
+        return fit
+    height = float(np.median([box.bottom_mm - box.top_mm for box in fit.boxes]))
+    boxes = [_expected_box(slot, fit, height) for slot in missing]
+    score, names = fit.score, dict(fit.names)
+    for slot, word in zip(missing, read_boxes(ink, boxes), strict=True):
+        post = posterior(word)
+        if not post:
+            continue
+        score += min(max(_gain(slot, post), -1.0), 2.0)
+        name = max(post, key=lambda n: post[n])
+        names[slot.row, slot.column] = (name, post[name])
+    return LabelFit(score, names, fit.offset_mm, fit.right_aligned, fit.boxes)
+
+
+def _expected_box(slot: Slot, fit: LabelFit, height_mm: float) -> Box:
+    assert fit.offset_mm is not None
+    dx, dy = fit.offset_mm
+    width = height_mm * 0.75 * max(len(slot.name or "V1"), 1.5)
+    left = slot.x_mm + dx - (width if fit.right_aligned else 0.0)
+    top = slot.y_mm + dy - height_mm / 2
+    return Box(left, top, left + width, top + height_mm)

@@ -1,0 +1,140 @@
+"""Speed and gain: as printed, as the calibration marks show, as given; else assumed."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from digitize.columns import marks_of_row
+from digitize.marks import PULSE_S, Mark
+from digitize.options import Options
+from digitize.rows import Rows
+from digitize.tracing import Known
+from digitize.words import GAINS_MM_MV, SPEEDS_MM_S, Printing, printed_gains, printed_speeds
+
+USUAL_SPEED_MM_S, USUAL_GAIN_MM_MV = 25.0, 10.0  # common practice
+NEAR = 0.06  # a mark this near to a usual size has that size
+
+
+@dataclass(frozen=True)
+class Scale:
+    """Speed and gain of a page, with the gain of each row's left and right end where it differs.
+
+    `row_gain` is keyed by row: (limb leads, chest leads) in mm/mV, from that row's marks.
+    """
+
+    speed_mm_s: Known
+    gain_mm_mv: Known
+    chest_gain_mm_mv: float | None
+    row_gain: Mapping[int, tuple[float, float]]
+    notes: tuple[str, ...]
+
+    def gain_of(self, row: int, lead: str) -> float:
+        """Gain of one panel in mm/mV."""
+        chest = lead.startswith("V")
+        if self.gain_mm_mv.source != "given" and row in self.row_gain:
+            return self.row_gain[row][1 if chest else 0]
+        if chest and self.chest_gain_mm_mv is not None:
+            return self.chest_gain_mm_mv
+        return float(self.gain_mm_mv.value)
+
+
+def find_scale(printing: Printing, rows: Rows, marks: Sequence[Mark], options: Options) -> Scale:
+    """Return speed and gain of a page and where each comes from."""
+    notes: list[str] = []
+    speed = _speed(printed_speeds(printing), marks, options, notes)
+    gains = printed_gains(printing)
+    row_gain = _row_gains(rows, marks)
+    chest = gains[1] if len(gains) > 1 else None
+    if row_gain and chest is not None:
+        chest = float(np.median([pair[1] for pair in row_gain.values()]))
+    gain = _gain(gains, row_gain, marks, options, notes)
+    if options.gain_mm_mv is not None:
+        chest = None
+    return Scale(speed, gain, chest, row_gain, tuple(notes))
+
+
+def _speed(
+    printed: Sequence[float], marks: Sequence[Mark], options: Options, notes: list[str]
+) -> Known:
+    drawn = _usual(np.array([m.width_mm / PULSE_S for m in marks]), SPEEDS_MM_S)
+    if options.speed_mm_s is not None:
+        return Known(options.speed_mm_s, "given")
+    if len(set(printed)) > 1:
+        notes.append(f"more than one speed is printed: {_listed(printed)} mm/s")
+    if printed:
+        if drawn is not None and drawn[0] != printed[0]:
+            notes.append(
+                f"speed printed as {printed[0]:g} mm/s, but the calibration marks are "
+                f"{drawn[0] * PULSE_S:g} mm wide, which would be {drawn[0]:g} mm/s"
+            )
+        return Known(printed[0], "printed")
+    if drawn is not None:
+        return Known(drawn[0], "found", drawn[1])
+    notes.append(
+        f"speed is not printed and no calibration mark was found: "
+        f"{USUAL_SPEED_MM_S:g} mm/s assumed; give --speed if you know it"
+    )
+    return Known(USUAL_SPEED_MM_S, "assumed")
+
+
+def _gain(
+    printed: Sequence[float],
+    row_gain: Mapping[int, tuple[float, float]],
+    marks: Sequence[Mark],
+    options: Options,
+    notes: list[str],
+) -> Known:
+    if options.gain_mm_mv is not None:
+        return Known(options.gain_mm_mv, "given")
+    if row_gain:
+        limb = float(np.median([pair[0] for pair in row_gain.values()]))
+        every = {g for pair in row_gain.values() for g in pair}
+        if printed and not set(printed) & every:
+            notes.append(
+                f"gain printed as {_listed(printed)} mm/mV, but the calibration marks are "
+                f"{_listed(sorted(every))} mm high; the marks were used"
+            )
+            return Known(limb, "found", _spread(marks))
+        return Known(limb, "printed" if printed else "found", _spread(marks))
+    if printed:
+        return Known(printed[0], "printed")
+    notes.append(
+        f"gain is not printed and no calibration mark was found: "
+        f"{USUAL_GAIN_MM_MV:g} mm/mV assumed; give --gain if you know it"
+    )
+    return Known(USUAL_GAIN_MM_MV, "assumed")
+
+
+def _row_gains(rows: Rows, marks: Sequence[Mark]) -> dict[int, tuple[float, float]]:
+    """Gain of limb and chest leads on each row that has a mark of its own."""
+    gains = {}
+    for number, row in enumerate(rows.rows):
+        own = sorted(marks_of_row(row, marks, rows.pitch_mm), key=lambda m: m.left_mm)
+        known = [_usual(np.array([m.height_mm]), GAINS_MM_MV) for m in own]
+        heights = [k[0] for k in known if k is not None]
+        if heights:
+            gains[number] = (heights[0], heights[-1])
+    return gains
+
+
+def _usual(values: np.ndarray, usual: Sequence[float]) -> tuple[float, float] | None:
+    """The usual value that most of the measured ones are near, and their standard error."""
+    if len(values) == 0:
+        return None
+    middle = float(np.median(values))
+    nearest = min(usual, key=lambda u: abs(np.log(middle / u)))
+    if abs(middle / nearest - 1) > NEAR:
+        return None
+    return nearest, float(np.std(values) / np.sqrt(len(values)))
+
+
+def _spread(marks: Sequence[Mark]) -> float | None:
+    heights = np.array([m.height_mm for m in marks])
+    if len(heights) < 2:
+        return None
+    return float(1.4826 * np.median(np.abs(heights - np.median(heights))) / np.sqrt(len(heights)))
+
+
+def _listed(values: Sequence[float]) -> str:
+    return " and ".join(f"{v:g}" for v in values)
