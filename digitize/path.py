@@ -18,13 +18,18 @@ _LEVEL, _CLIMB, _SINK = 0, 1, 2
 
 
 @numba.njit(cache=True)
-def cheapest_path(bare: np.ndarray, edge_cost: np.ndarray, px_per_mm: float) -> tuple:
+def cheapest_path(
+    bare: np.ndarray, ahead: np.ndarray, edge_cost: np.ndarray, px_per_mm: float
+) -> tuple:
     """Least-cost way from the left to the right side of `bare`.
 
     Parameters
     ----------
     bare : (rows, cols) float32 array
-        0 in full ink, 1 on bare paper.
+        0 in full ink, 1 on bare paper: price of climbing and sinking.
+    ahead : (rows, cols) float32 array
+        The same for going on to the next column; more than `bare` where another trace needs the
+        ink, so that it may be crossed but not followed.
     edge_cost : (rows,) float array
         Cost of entering and of leaving the panel at a row.
     px_per_mm : float
@@ -51,7 +56,7 @@ def cheapest_path(bare: np.ndarray, edge_cost: np.ndarray, px_per_mm: float) -> 
     new = np.empty((3, rows))
     for c in range(cols):
         for r in range(rows):
-            ahead = _GAP_PER_MM * step * bare[r, c]
+            onward = _GAP_PER_MM * step * ahead[r, c]
             best = 0
             for mode in range(1, 3):
                 if now[mode, r] < now[best, r]:
@@ -60,13 +65,13 @@ def cheapest_path(bare: np.ndarray, edge_cost: np.ndarray, px_per_mm: float) -> 
                 source, cost = mode, now[mode, r]
                 if now[best, r] + _TURN < cost:
                     source, cost = best, now[best, r] + _TURN
-                new[mode, r] = cost + ahead
+                new[mode, r] = cost + onward
                 came[c, mode, r] = source
         for r in range(rows):
             for code in (4, 5):
                 back = r - 1 if code == 4 else r + 1
                 if 0 <= back < rows:
-                    cost = now[_LEVEL, back] + _LEAN + _GAP_PER_MM * step * bare[r, c]
+                    cost = now[_LEVEL, back] + _LEAN + _GAP_PER_MM * step * ahead[r, c]
                     if cost < new[_LEVEL, r]:
                         new[_LEVEL, r] = cost
                         came[c, _LEVEL, r] = code
@@ -102,8 +107,8 @@ def cheapest_path(bare: np.ndarray, edge_cost: np.ndarray, px_per_mm: float) -> 
 
 
 @numba.njit(cache=True)
-def runs_along(density: np.ndarray, span: np.ndarray, level: float, slack: int) -> np.ndarray:
-    """The run of ink that the path passes through in each column, with sub-pixel edges.
+def run_at(density: np.ndarray, span: np.ndarray, level: float, slack: int) -> np.ndarray:
+    """The run of ink that the path passes through in each column.
 
     Parameters
     ----------
@@ -117,17 +122,17 @@ def runs_along(density: np.ndarray, span: np.ndarray, level: float, slack: int) 
 
     Returns
     -------
-    edges : (2, cols) float array
-        Top and bottom; NaN where there is no ink on the path.
+    run : (2, cols) int array
+        First and last row; -1 where there is no ink on the path.
     """
     rows, cols = density.shape
-    edges = np.full((2, cols), np.nan)
+    run = np.full((2, cols), -1)
     for c in range(cols):
         low, high = max(span[0, c] - slack, 0), min(span[1, c] + slack, rows - 1)
-        longest, top, bottom = 0, -1, -1
+        longest = 0
         r = low
         while r <= high:
-            if density[r, c] < level:
+            if not density[r, c] >= level:
                 r += 1
                 continue
             first = r
@@ -138,14 +143,19 @@ def runs_along(density: np.ndarray, span: np.ndarray, level: float, slack: int) 
                 while first > 0 and density[first - 1, c] >= level:
                     first -= 1
             if inside > longest:
-                longest, top, bottom = inside, first, r
+                longest, run[0, c], run[1, c] = inside, first, r
             r += 1
-        if longest:
-            edges[0, c], edges[1, c] = float(top), float(bottom)
-            if top > 0:
-                rise = density[top, c] - density[top - 1, c]
-                edges[0, c] -= (density[top, c] - level) / rise
-            if bottom < rows - 1:
-                rise = density[bottom, c] - density[bottom + 1, c]
-                edges[1, c] += (density[bottom, c] - level) / rise
+    return run
+
+
+def sharp_edges(density: np.ndarray, run: np.ndarray, level: float) -> np.ndarray:
+    """Sub-pixel top and bottom of runs where the density crosses `level`, (2, cols), or NaN."""
+    cols = np.flatnonzero(run[0] >= 0)
+    edges = np.full(run.shape, np.nan)
+    for side, out in ((0, -1), (1, 1)):
+        at = run[side, cols]
+        beyond = np.clip(at + out, 0, len(density) - 1)
+        inner, outer = density[at, cols], density[beyond, cols]
+        drop = np.where(outer < level, inner - outer, np.inf)
+        edges[side, cols] = at + out * np.clip((inner - level) / drop, 0, 1)
     return edges

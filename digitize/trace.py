@@ -1,28 +1,28 @@
 """The path of each trace: a pen line whose own stroke reproduces the ink.
 
-First a path of least cost finds the way of each trace through the ink at coarse resolution; the
-edges of the ink along it, the pen taken off, are the start of the fit of the pen line itself.
+The way of each trace through the ink gives the edges of its stroke; those, the pen taken off, are
+the start of a fit of the pen line itself. The strokes of all other traces are drawn beside it, so
+that where two cross, or where the next column begins, each has to explain only its own ink.
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 import scipy as sp
-import skimage as ski
 
-from digitize.fit import View, fit_line, start_from_edges
+from digitize.fit import Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.layout import Layout, PanelPlace
-from digitize.path import cheapest_path, runs_along
+from digitize.nib import find_pen
 from digitize.pen import Pen, draw_line
 from digitize.sheet import Raster
+from digitize.ways import Way, find_ways
 
 STEP_MM = 0.05  # 2 ms at 25 mm/s
-_REACH_MM = 45.0  # a trace may stray so far from its usual height: 4.5 mV at 10 mm/mV
-_PATH_PX_PER_MM = 6.0  # two pixels across the thinnest common pen are enough for the path
-_BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 10 ms at 25 mm/s
-_EDGE = 0.5  # density at the edge of a full stroke
-_ENTRY_PER_MM = 0.2  # cost of starting away from the usual height of the trace
+_BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
+_BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
+_NEAR_MM = 0.4  # ink so far from the start must be explained
+_NOISE_FLOOR = 0.02  # of coverage: pen pressure, paper fibre, 8-bit levels
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,13 +46,20 @@ class Stroke:
 
 
 @dataclass(frozen=True, eq=False)
-class _Start:
-    """Where a panel's fit begins: a cut-out of the ink and the edges of the trace's ink in it."""
+class _Course:
+    """A line in pixels of the ink's raster; `y` is NaN where it has no ink."""
 
-    image: np.ndarray  # NaN where hidden
+    x: np.ndarray
+    y: np.ndarray
+
+
+@dataclass(frozen=True, eq=False)
+class _Cut:
+    """A panel's cut-out of the page: where it lies, what the fit sees."""
+
     row0: int
     col0: int
-    edges: np.ndarray  # (2, cols), NaN where there is no ink
+    view: View
 
 
 def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
@@ -70,155 +77,135 @@ def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
     tuple of Stroke
         One per panel, in the order of `layout.panels`.
     """
-    clear = _without_printing(ink, layout)
-    starts = [_start(ink, clear, panel) for panel in layout.panels]
-    pen = _pen_of(starts, ink)
+    ways = find_ways(ink, layout)
+    pen = find_pen(ink, ways)
+    courses = [_start(w, p, pen, ink) for w, p in zip(ways, layout.panels, strict=True)]
+    lines: dict[int, Line] = {}
+    crossed = [k for k, way in enumerate(ways) if way.shared.any()]
+    for k in [*range(len(ways)), *crossed]:
+        if np.isfinite(courses[k].y).any():
+            cut = _cut(k, ways, courses, pen, ink)
+            lines[k] = _fit(cut, courses[k], pen)
+            courses[k] = _placed(lines[k], cut, courses[k])
     return tuple(
-        _stroke(start, panel, pen, ink) for start, panel in zip(starts, layout.panels, strict=True)
+        _stroke(k, lines.get(k), ways, courses, pen, ink) for k in range(len(layout.panels))
     )
 
 
 def redraw(strokes: tuple[Stroke, ...], raster: Raster, shape: tuple[int, int]) -> np.ndarray:
     """Density, float32 (rows, cols), that the strokes would leave on a raster."""
     image = np.zeros(shape, np.float32)
+    px = raster.px_per_mm
     for stroke in strokes:
-        for part in _unbroken(stroke.y_mm):
-            if part.stop - part.start < 2:
-                continue
-            pen = Pen(
-                stroke.pen_mm * raster.px_per_mm,
-                stroke.blur_mm[0] * raster.px_per_mm,
-                stroke.blur_mm[1] * raster.px_per_mm,
-                stroke.ink_gain,
-            )
-            x_px, y_px = raster.col(stroke.x_mm[part]), raster.row(stroke.y_mm[part])
-            low = max(int(x_px[0] - 5 * pen.width_px), 0)
-            high = min(int(x_px[-1] + 5 * pen.width_px) + 1, shape[1])
-            draw_line(image[:, low:high], y_px, x_px[0] - low, x_px[1] - x_px[0], pen)
+        blur_x_mm, blur_y_mm = stroke.blur_mm
+        pen = Pen(stroke.pen_mm * px, blur_x_mm * px, blur_y_mm * px, stroke.ink_gain)
+        _lay(image, _Course(raster.col(stroke.x_mm), raster.row(stroke.y_mm)), pen)
     return image
 
 
-def _unbroken(values: np.ndarray) -> list[slice]:
-    """Stretches without NaN."""
-    return list(np.ma.clump_unmasked(np.ma.masked_invalid(values)))
-
-
-def _without_printing(ink: Ink, layout: Layout) -> np.ndarray:
-    """Density with words and marks made faint: a trace may still pass through their boxes."""
-    clear = np.where(ink.hidden, 0, ink.density)
-    for box in layout.words + layout.marks:
-        rows = slice(*(max(round(ink.raster.row(y)), 0) for y in (box.top_mm, box.bottom_mm)))
-        cols = slice(*(max(round(ink.raster.col(x)), 0) for x in (box.left_mm, box.right_mm)))
-        clear[rows, cols] *= 0.5
-    return clear
-
-
-def _start(ink: Ink, clear: np.ndarray, panel: PanelPlace) -> _Start:
-    raster = ink.raster
-    rows, cols = ink.density.shape
-    row0 = max(int(raster.row(panel.baseline_mm - _REACH_MM)), 0)
-    row1 = min(int(raster.row(panel.baseline_mm + _REACH_MM)) + 1, rows)
-    col0 = max(int(np.ceil(raster.col(panel.box.left_mm))), 0)
-    col1 = min(int(raster.col(panel.box.right_mm)) + 1, cols)
-    band = clear[row0:row1, col0:col1]
-    factor = max(int(raster.px_per_mm // _PATH_PX_PER_MM), 1)
-    coarse = ski.transform.downscale_local_mean(band, (factor, factor))
-    bare = 1 - np.clip((coarse - 0.15) / 0.45, 0, 1).astype(np.float32)
-    y_mm = raster.y_mm(row0 + (np.arange(len(bare)) + 0.5) * factor - 0.5)
-    entry = _ENTRY_PER_MM * np.maximum(abs(y_mm - panel.baseline_mm) - 5, 0)
-    span, _, _ = cheapest_path(bare, entry, raster.px_per_mm / factor)
-    span = np.repeat(span, factor, axis=1)[:, : band.shape[1]] * factor
-    span[1] += factor - 1
-    image = np.where(ink.hidden, np.nan, ink.density)[row0:row1, col0:col1]
-    edges = runs_along(np.ascontiguousarray(band), span, _EDGE, factor)
-    return _Start(np.ascontiguousarray(image, np.float32), row0, col0, edges)
-
-
-def _pen_of(starts: list[_Start], ink: Ink) -> Pen:
-    """Width, blur and density of the pen, from the profile across level stretches."""
-    offsets = np.arange(-8, 9)
-    sums, counts = np.zeros(len(offsets) * 4), np.zeros(len(offsets) * 4)
-    for start in starts:
-        if not np.isfinite(start.edges).any():
+def _lay(image: np.ndarray, course: _Course, pen: Pen, row0: int = 0, col0: int = 0) -> None:
+    """Lay the ink of a course into an image whose corner is (row0, col0), in place."""
+    reach = pen.width_px + 4 * pen.blur_x_px
+    near = (course.x > col0 - reach) & (course.x < col0 + image.shape[1] + reach)
+    y = np.where(near, course.y, np.nan)
+    for part in np.ma.clump_unmasked(np.ma.masked_invalid(y)):
+        if part.stop - part.start < 2:
             continue
-        middle = start.edges.mean(axis=0)
-        slope = np.abs(np.gradient(middle))
-        thick = start.edges[1] - start.edges[0]
-        level = (sp.ndimage.maximum_filter1d(slope, 7) < 0.15) & (thick < 1.3 * np.nanmedian(thick))
-        cols = np.flatnonzero(level)
-        rows = np.rint(middle[cols]).astype(int)
-        inside = (rows > 8) & (rows < len(start.image) - 9)
-        cols, rows = cols[inside], rows[inside]
-        density = start.image[rows[:, None] + offsets, cols[:, None]]
-        away = rows[:, None] + offsets - middle[cols, None]
-        place = np.clip(((away + 8.5) * 4).astype(int), 0, len(sums) - 1)
-        seen = np.isfinite(density)
-        np.add.at(sums, place[seen], density[seen])
-        np.add.at(counts, place[seen], 1)
-    away = (np.arange(len(sums)) + 0.5) / 4 - 8.5
-    used = counts > 20
-    if used.sum() < 8:
-        return Pen(0.35 * ink.raster.px_per_mm, 0.8, 0.8)
-    profile, away = sums[used] / counts[used], away[used]
-
-    def misfit(values: np.ndarray) -> np.ndarray:
-        width, blur, gain = values
-        edge = sp.special.ndtr((away + width / 2) / blur) - sp.special.ndtr(
-            (away - width / 2) / blur
-        )
-        return gain * edge - profile
-
-    px = ink.raster.px_per_mm
-    fitted = sp.optimize.least_squares(
-        misfit, (0.35 * px, 0.8, 1.0), bounds=((0.1 * px, 0.3, 0.5), (1.0 * px, 0.4 * px, 1.5))
-    )
-    width, blur, gain = fitted.x
-    return Pen(float(width), float(blur), float(blur), float(gain))
+        x = course.x[part]
+        low = min(max(int(x[0] - col0 - reach), 0), image.shape[1])
+        high = min(max(int(x[-1] - col0 + reach) + 2, 0), image.shape[1])
+        if low < high:
+            draw_line(image[:, low:high], y[part] - row0, x[0] - col0 - low, x[1] - x[0], pen)
 
 
-def _stroke(start: _Start, panel: PanelPlace, pen: Pen, ink: Ink) -> Stroke:
-    raster, px = ink.raster, ink.raster.px_per_mm
-    count = int((panel.box.right_mm - panel.box.left_mm) / STEP_MM) + 1
-    x_mm = panel.box.left_mm + STEP_MM * np.arange(count)
-    x_px = raster.col(x_mm) - start.col0
-    cols = np.arange(start.image.shape[1])
-    inked = np.isfinite(start.edges[0])
+def _start(way: Way, panel: PanelPlace, pen: Pen, ink: Ink) -> _Course:
+    """First guess of a panel's line: midway between the bounds that the ink's edges give."""
+    count = int((panel.box.right_mm - panel.box.left_mm) / STEP_MM + 1e-6) + 1
+    x = ink.raster.col(panel.box.left_mm + STEP_MM * np.arange(count))
+    inked = np.isfinite(way.edges[0])
+    cols = way.col0 + np.arange(len(inked))
     if inked.sum() < 0.05 * len(inked):
-        empty = np.full(count, np.nan)
-        return Stroke(x_mm, empty, empty.copy(), pen.width_px / px, 1.0, ("no ink in this panel",))
-    edges = np.stack([np.interp(x_px, cols[inked], side[inked]) for side in start.edges])
-    upper, lower = start_from_edges(edges[0], edges[1], x_px[1] - x_px[0], pen.width_px / 2)
-    filled = np.stack([np.interp(cols, cols[inked], side[inked]) for side in start.edges])
-    seen = np.stack([np.floor(filled[0] - 4), np.ceil(filled[1] + 5)])
-    seen = np.clip(seen, 0, len(start.image)).astype(np.int64)
-    image = start.image.copy()
-    image[:, ~inked] = np.nan
-    view = View(image, np.zeros_like(image), seen, max(ink.noise, 0.02))
-    line = fit_line(view, (upper + lower) / 2, x_px[0], x_px[1] - x_px[0], pen)
-    y_mm, sigma_mm = raster.y_mm(start.row0 + line.y_px), line.sigma_px / px
-    bare = sp.ndimage.binary_opening(~inked, np.ones(max(round(_BRIDGE_MM * px), 1)))
-    missing = np.interp(x_px, cols, bare.astype(float)) > 0.5
-    y_mm[missing], sigma_mm[missing] = np.nan, np.nan
+        return _Course(x, np.full(count, np.nan))
+    top, bottom = (np.interp(x, cols[inked], side[inked]) for side in way.edges)
+    upper, lower = start_from_edges(top, bottom, x[1] - x[0], pen.width_px / 2)
+    gap = max(round(_BRIDGE_MM * ink.raster.px_per_mm), 1)
+    bare = sp.ndimage.binary_opening(~inked, np.ones(gap))
+    y = (upper + lower) / 2
+    y[np.interp(x, cols, bare.astype(float)) > 0.5] = np.nan
+    return _Course(x, y)
+
+
+def _cut(k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink) -> _Cut:
+    """What panel k's fit sees: ink near its way, and the ink of all other strokes there."""
+    way, px = ways[k], ink.raster.px_per_mm
+    near = max(_NEAR_MM * px, 3 * pen.blur_y_px + 1)
+    inked = np.isfinite(way.edges[0])
+    cols = np.arange(len(inked))
+    top, bottom = (np.interp(cols, cols[inked], side[inked]) for side in way.edges)
+    margin = near + 2 * pen.width_px
+    row0 = max(int(top.min() - margin), 0)
+    row1 = min(int(bottom.max() + margin) + 1, len(ink.density))
+    beside = round(_BESIDE_MM * px)
+    before = min(beside, way.col0)
+    after = min(beside, ink.density.shape[1] - way.col0 - len(inked))
+    col0, col1 = way.col0 - before, way.col0 + len(inked) + after
+    image = np.where(ink.hidden[row0:row1, col0:col1], np.nan, ink.density[row0:row1, col0:col1])
+    image[:, np.pad(~inked, (before, after))] = np.nan
+    other = np.zeros(image.shape, np.float32)
+    full = Pen(pen.width_px, pen.blur_x_px, pen.blur_y_px)
+    touched = [False, False]
+    for m, course in enumerate(courses):
+        if m != k and np.isfinite(course.y).any():
+            touched[0] |= abs(course.x[-1] - courses[k].x[0]) < beside
+            touched[1] |= abs(course.x[0] - courses[k].x[-1]) < beside
+            _lay(other, course, full, row0, col0)
+    # beyond an end where no other trace begins, what the ink means is unknown
+    if not touched[0]:
+        image[:, :before] = np.nan
+    if not touched[1]:
+        image[:, image.shape[1] - after :] = np.nan
+    rows = np.stack([np.floor(top - near) - row0, np.ceil(bottom + near) + 1 - row0])
+    rows = np.pad(np.clip(rows, 0, len(image)), ((0, 0), (before, after)), mode="edge")
+    noise = max(ink.noise, _NOISE_FLOOR)
+    return _Cut(row0, col0, View(image.astype(np.float32), other, rows.astype(np.int64), noise))
+
+
+def _fit(cut: _Cut, course: _Course, pen: Pen) -> Line:
+    inked = np.isfinite(course.y)
+    y = np.interp(course.x, course.x[inked], course.y[inked]) - cut.row0
+    return fit_line(cut.view, y, course.x[0] - cut.col0, course.x[1] - course.x[0], pen)
+
+
+def _placed(line: Line, cut: _Cut, course: _Course) -> _Course:
+    """A fitted line in pixels of the page, with the gaps of its start."""
+    return _Course(course.x, np.where(np.isnan(course.y), np.nan, line.y_px + cut.row0))
+
+
+def _stroke(
+    k: int, line: Line | None, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink
+) -> Stroke:
+    """Panel k in millimetres, with how much of its ink stays unexplained."""
+    raster, px, course = ink.raster, ink.raster.px_per_mm, courses[k]
+    missing = np.isnan(course.y)
+    nib = pen.width_px / px, (pen.blur_x_px / px, pen.blur_y_px / px), pen.gain
+    x_mm, y_mm = raster.x_mm(course.x), raster.y_mm(course.y)
+    if line is None:
+        return Stroke(x_mm, y_mm, y_mm.copy(), nib[0], 1.0, ("no ink in this panel",), *nib[1:])
+    sigma_mm = np.where(missing, np.nan, line.sigma_px / px)
     notes = ("no ink on the path for more than 0.4 mm",) if missing.any() else ()
-    stroke = Stroke(
-        x_mm,
-        y_mm,
-        sigma_mm,
-        pen.width_px / px,
-        0.0,
-        notes,
-        (pen.blur_x_px / px, pen.blur_y_px / px),
-        pen.gain,
-    )
-    return replace(stroke, unexplained=_unexplained(stroke, start, seen, raster))
+    unexplained = _unexplained(k, ways, courses, pen, ink)
+    return Stroke(x_mm, y_mm, sigma_mm, nib[0], unexplained, notes, *nib[1:])
 
 
-def _unexplained(stroke: Stroke, start: _Start, seen: np.ndarray, raster: Raster) -> float:
-    """Share of the ink beside the trace that the redrawn stroke leaves over."""
-    rows, cols = start.image.shape
-    local = Raster(raster.x_mm(start.col0), raster.y_mm(start.row0), raster.px_per_mm)
-    drawn = redraw((stroke,), local, (rows, cols))
-    row = np.arange(rows)[:, None]
-    near = (row >= seen[0]) & (row < seen[1]) & np.isfinite(start.image)
-    ink = np.clip(start.image[near], 0, None)
-    return float(np.clip(start.image[near] - drawn[near], 0, None).sum() / max(ink.sum(), 1e-9))
+def _unexplained(
+    k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink
+) -> float:
+    """Share of the ink beside panel k's trace that all redrawn strokes together leave over."""
+    cut = _cut(k, ways, courses, pen, ink)
+    drawn = cut.view.other * pen.gain
+    _lay(drawn, courses[k], pen, cut.row0, cut.col0)
+    row = np.arange(len(drawn))[:, None]
+    near = (row >= cut.view.rows[0]) & (row < cut.view.rows[1]) & np.isfinite(cut.view.image)
+    seen = np.clip(cut.view.image[near], 0, None)
+    left = np.clip(seen - drawn[near], 0, None)
+    return float(left.sum() / max(seen.sum(), 1e-9))
