@@ -106,8 +106,12 @@ def _check_names(tracing: Tracing) -> Check:
     if twice:
         message = f"{_leads(twice)} named twice at one time: one of them is another lead."
         return Check("lead_names", False, message, leads=twice)
-    assumed = tuple(panel.lead for panel in short if panel.lead_source == "assumed")
-    share = len(assumed) / len(short) if short else 0.0
+    assumed = tuple(
+        f"{panel.lead} (strip)" if panel.strip else panel.lead
+        for panel in tracing.panels
+        if panel.lead_source == "assumed"
+    )
+    share = len(assumed) / len(tracing.panels) if tracing.panels else 0.0
     if share > 0.5:
         message = f"Most lead names could not be read: {_leads(assumed)} named by the usual order."
         return Check("lead_names", False, message, share, 0.5, assumed)

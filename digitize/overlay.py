@@ -58,7 +58,7 @@ def draw_overlay(page: Page, tracing: Tracing) -> bytes:
     image = Image.fromarray(picture)
     _draw_words(image, page_map, tracing, scale)
     buffer = io.BytesIO()
-    _with_footer(image, tracing).save(buffer, "PNG", compress_level=6)
+    _with_footer(image, tracing).save(buffer, "PNG", compress_level=4)
     return buffer.getvalue()
 
 
@@ -94,7 +94,8 @@ def _bleached(pixels: np.ndarray) -> tuple[np.ndarray, float]:
     small = cv2.resize(pixels, size, interpolation=way)
     if small.ndim == 2:
         small = cv2.cvtColor(small, cv2.COLOR_GRAY2RGB)
-    return cv2.convertScaleAbs(small, alpha=0.55, beta=0.45 * 255), scale
+    pale = np.asarray(cv2.convertScaleAbs(small, alpha=0.55, beta=0.45 * 255), np.uint8)
+    return pale | 0b111, scale  # steps of 8 grey levels: noise of the paper makes large files
 
 
 def _draw_frame(picture: np.ndarray, page_map: PageMap, tracing: Tracing, scale: float) -> None:
@@ -192,11 +193,12 @@ def _draw_words(image: Image.Image, page_map: PageMap, tracing: Tracing, scale: 
     for panel in tracing.panels:
         name = panel.lead + (" strip" if panel.strip else "")
         name += {"assumed": " ?", "given": " (given)"}.get(panel.lead_source, "")
-        corner = _place(page_map, panel.box_mm[0] + 0.8, panel.box_mm[1] + 0.8, scale)
-        box = draw.textbbox(corner, name, font=font)
+        # On the upper edge of the panel: the page's own label mostly stands just below it.
+        corner = _place(page_map, panel.box_mm[0] + 1.2, panel.box_mm[1] + 1.5, scale)
+        box = draw.textbbox(corner, name, font=font, anchor="lb")
         colour = ORANGE if panel.lead_source == "assumed" else BLUE
         draw.rectangle((box[0] - 4, box[1] - 3, box[2] + 4, box[3] + 3), PAPER, colour, 2)
-        draw.text(corner, name, colour, font)
+        draw.text(corner, name, colour, font, anchor="lb")
     for left, top, right, bottom in tracing.geometry["marks_mm"]:
         corners = [(left, top), (right, top), (right, bottom), (left, bottom)]
         draw.polygon([_place(page_map, x, y, scale) for x, y in corners], outline=GREEN, width=2)
