@@ -207,17 +207,19 @@ def _families(findings: tuple[Finding, ...]) -> tuple[tuple[str, tuple[Finding, 
 
 
 def _by_eye(reading: Reading) -> tuple[str, ...]:
-    """What a person should look at: cautions, then what would settle each open definition."""
+    """What a person should look at: cautions, then what would settle the open definitions."""
+    waiting: dict[str, list[str]] = {}
+    notes: dict[str, list[str]] = {}
+    for finding in reading.findings:
+        if finding.result == "undecided":
+            settle = [c.settle for c in finding.clauses if c.result == "undecided" and c.settle]
+            waiting.setdefault("; ".join(dict.fromkeys(settle)), []).append(finding.definition)
+        for caution in finding.cautions if finding.result == "met" else ():
+            notes.setdefault(caution, []).append(finding.definition)
     lines = list(reading.cautions)
-    for finding in reading.findings:
-        if finding.result != "undecided":
-            continue
-        open_ends = [c.settle for c in finding.clauses if c.result == "undecided" and c.settle]
-        lines.append(f"{_capital(finding.definition)}: {'; '.join(dict.fromkeys(open_ends))}.")
-    for finding in reading.findings:
-        if finding.result == "met":
-            lines += [f"{_capital(finding.definition)}: {c}" for c in finding.cautions]
-    return tuple(dict.fromkeys(lines))
+    lines += [f"Open: {', '.join(names)}. To settle it: {how}." for how, names in waiting.items()]
+    lines += [f"{_capital(', '.join(names))}: {note}" for note, names in notes.items()]
+    return tuple(nice(line) for line in dict.fromkeys(lines))
 
 
 def _capital(text: str) -> str:

@@ -57,9 +57,9 @@ def document(reading: Reading) -> dict[str, Any]:
 
 
 def to_json(reading: Reading) -> bytes:
-    """The content of NAME.reading.json."""
-    text = json.dumps(document(reading), ensure_ascii=False, indent=1, allow_nan=False)
-    return (text + "\n").encode()
+    """The content of NAME.reading.json: one entry, one lead, one finding to a line."""
+    lines = [f"{json.dumps(k)}: {_in_lines(v)}" for k, v in document(reading).items()]
+    return ("{\n" + ",\n".join(lines) + "\n}\n").encode()
 
 
 def load_document(path: Path) -> dict[str, Any]:
@@ -100,6 +100,20 @@ def _beat(reading: Reading) -> dict[str, Any]:
         "mv": dict(zip(beat.leads, beat.mv, strict=True)),
         "se_mv": dict(zip(beat.leads, beat.se_mv, strict=True)),
     }
+
+
+def _in_lines(value: Any) -> str:
+    """The members of a list or dictionary, each on a line of its own."""
+    if isinstance(value, dict) and value:
+        members = [f"{_compact(k)}: {_compact(v)}" for k, v in value.items()]
+        return "{\n " + ",\n ".join(members) + "\n}"
+    if isinstance(value, list) and value:
+        return "[\n " + ",\n ".join(_compact(item) for item in value) + "\n]"
+    return _compact(value)
+
+
+def _compact(value: Any) -> str:
+    return json.dumps(value, ensure_ascii=False, allow_nan=False)
 
 
 def _plain(thing: Any) -> Any:

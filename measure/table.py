@@ -35,10 +35,12 @@ def _sections(reading: Reading, answers: Answers) -> list[tuple[str, RenderableT
     return [
         ("Can the tracing be trusted?", _lines(answers.trust)),
         ("What is the rhythm?", Group(_lines(answers.rhythm), _intervals(answers.rhythm_rows))),
-        ("How wide is the QRS, and what follows it?", _intervals(answers.width_rows)),
+        (
+            "How wide is the QRS, what is its shape, what follows it?",
+            Group(_intervals(answers.width_rows), Text(), _waves(reading)),
+        ),
         ("Which pattern?", _patterns(answers)),
         ("On what evidence?", _evidence(answers)),
-        ("The usual beat, lead by lead", _waves(reading)),
         ("What to check by eye", _lines(answers.by_eye)),
     ]
 

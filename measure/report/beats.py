@@ -178,7 +178,7 @@ def _edges(reading: Reading, box: tuple[float, float, float, float]) -> str:
 def _trace(reading: Reading, lead: str, left: float, zero_mm: float, gain: float) -> str:
     """The averaged beat with a band of one standard error; gaps stay gaps."""
     row = reading.beat.leads.index(lead)
-    visible = _visible(reading)
+    visible = np.flatnonzero(_visible(reading))[::2]  # 0.1 mm of paper at 1000 samples/s
     x = _x_mm(reading, left, 0.0) + (
         (reading.beat.time_ms[visible] - _onset_ms(reading)) * SPEED_MM_S / 1000.0
     )

@@ -40,13 +40,15 @@ def report(reading: Reading, *, overlay_png: bytes | None = None) -> str:
     title = f"{source.file_name}, page {source.page}"
     sections = (
         _section("1 Can the tracing be trusted?", _trust(answers, overlay_png)),
-        _section("2 What is the rhythm?", _list(answers.rhythm) + _rows(answers.rhythm_rows)),
+        _section("2 What is the rhythm?", _prose(answers.rhythm) + _rows(answers.rhythm_rows)),
         '<div class="clear"></div>',
-        _section("3 How wide is the QRS, and what follows it?", _rows(answers.width_rows)),
+        _section(
+            "3 How wide is the QRS, what is its shape, what follows it?",
+            _rows(answers.width_rows) + _waves(reading),
+        ),
         _section("4 Which pattern?", _patterns(answers)),
         _section("5 On what evidence?", _beats(reading) + _evidence(answers)),
         _section("6 What to check by eye", _list(answers.by_eye)),
-        _section("The usual beat, lead by lead", _waves(reading)),
     )
     return (
         '<!DOCTYPE html>\n<html lang="en"><head><meta charset="utf-8">'
@@ -67,6 +69,10 @@ def _section(title: str, body: str) -> str:
 
 def _paragraphs(lines: Iterable[str]) -> str:
     return "".join(f"<p>{escape(line)}</p>" for line in lines)
+
+
+def _prose(lines: Iterable[str]) -> str:
+    return f"<p>{escape(' '.join(line.rstrip('.') + '.' for line in lines))}</p>"
 
 
 def _list(lines: Iterable[str]) -> str:
@@ -137,7 +143,7 @@ def _patterns(answers: Answers) -> str:
             cells.append((_result("not met"), f'<span class="small">{escape(refused)}</span>'))
         for index, (result, text) in enumerate(cells):
             first = escape(name) if index == 0 else ""
-            rows.append(f'<tr><td class="plain">{first}</td><td>{result}</td><td>{text}</td></tr>')
+            rows.append(f"<tr><td>{first}</td><td>{result}</td><td>{text}</td></tr>")
     note = (
         '<p class="small">“Met” means: meets the criteria of the published definition. In '
         "brackets: the first clause that is not met; the file NAME.reading.json has them all.</p>"
@@ -200,7 +206,7 @@ def _waves(reading: Reading) -> str:
         "T mV",
         "beats",
     )
-    return _table(headings, rows)
+    return f'<div class="waves">{_table(headings, rows)}</div>'
 
 
 def _wave_row(waves: LeadWaves) -> str:
@@ -233,12 +239,11 @@ def _footer(reading: Reading) -> str:
         f"{tracing.source.sha256}.",
         f"Program: millivellum {program_version()}. Options: {_flat(tracing.options)}.",
         f"Patient: sex {said['sex']}, age {said['age']}.",
-        f"Corrections: {len(tracing.corrections)} "
-        f"{_flat(tracing.corrections) if tracing.corrections else ''}",
+        f"Corrections: {_flat(tracing.corrections) if tracing.corrections else 'none'}.",
         ONE_SE,
         NOTICE,
     )
-    return f"<footer>{_paragraphs(facts)}</footer>"
+    return f"<footer>{escape(' '.join(facts))}</footer>"
 
 
 def _flat(thing: object) -> str:
