@@ -5,6 +5,7 @@ stderr. Exit codes: 0 all was read, 1 some input could not be used, 2 the comman
 understood.
 """
 
+import datetime
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
@@ -94,6 +95,56 @@ def read(
 
     failed = read_files(files, options, person, unit=unit, folder=output, replace=replace)
     raise typer.Exit(1 if failed else 0)
+
+
+@app.command()
+def compare(
+    files: Annotated[
+        list[Path],
+        typer.Argument(help="Two or more readings (.reading.json) or ECGs, the oldest first."),
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the results; else beside the last file."),
+    ] = None,
+    date: Annotated[
+        list[str] | None,
+        typer.Option(help="Date of each ECG in the same order, such as 2024-03-01; repeat it."),
+    ] = None,
+    sex: Annotated[
+        str | None, typer.Option(help="male or female, for ECGs that were not read yet.")
+    ] = None,
+    age: Annotated[float | None, typer.Option(help="Age in years, likewise.")] = None,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier results.")] = False,
+) -> None:
+    """Hold the newest ECG of a person against the oldest: NEW.compare.json and NEW.compare.html.
+
+    Says whether a block is new, whether QRS is wider beyond the joint error, how axis and QTc have
+    changed, and draws the beats over each other. Three or more give the course over time.
+    """
+    if len(files) < 2:
+        raise typer.BadParameter("give two ECGs or more, the oldest first")
+    dates = _dates(date, len(files))
+    person = _person(sex, age)
+    from measure.run import compare_files
+
+    failed = compare_files(files, dates, person, folder=output, replace=replace)
+    raise typer.Exit(1 if failed else 0)
+
+
+def _dates(given: list[str] | None, count: int) -> list[str | None]:
+    """One date for each file, or none at all, in order of time."""
+    if not given:
+        return [None] * count
+    try:
+        days = [datetime.date.fromisoformat(text) for text in given]
+    except ValueError:
+        raise typer.BadParameter("a date is not of the form 2024-03-01") from None
+    if len(days) != count:
+        raise typer.BadParameter(f"{len(days)} dates for {count} ECGs: give one for each")
+    if days != sorted(days):
+        raise typer.BadParameter("the dates do not rise: give the oldest ECG first")
+    return [day.isoformat() for day in days]
 
 
 def _options(

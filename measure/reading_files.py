@@ -5,30 +5,27 @@ What could not be measured is `null` with a reason beside it. The same reading g
 bytes.
 """
 
-import dataclasses
 import json
 import math
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
 from digitize import program_version
 from digitize.errors import UnreadableFile
+from measure.plain import json_lines, plain
 from measure.quantity import Quantity
 from measure.reading import Reading
 from measure.wording import NOTICE, ONE_SE
 
 FORMAT = "millivellum reading"
 FORMAT_VERSION = 1
-_DECIMALS = 5  # 0.01 microvolt, far below any error here
 
 
 def document(reading: Reading) -> dict[str, Any]:
     """The reading as plain dictionaries, lists, numbers, words and None."""
     tracing = reading.tracing
-    return _plain(
+    return plain(
         {
             "format": FORMAT,
             "format_version": FORMAT_VERSION,
@@ -57,9 +54,8 @@ def document(reading: Reading) -> dict[str, Any]:
 
 
 def to_json(reading: Reading) -> bytes:
-    """The content of NAME.reading.json: one entry, one lead, one finding to a line."""
-    lines = [f"{json.dumps(k)}: {_in_lines(v)}" for k, v in document(reading).items()]
-    return ("{\n" + ",\n".join(lines) + "\n}\n").encode()
+    """The content of NAME.reading.json."""
+    return json_lines(document(reading))
 
 
 def load_document(path: Path) -> dict[str, Any]:
@@ -100,37 +96,3 @@ def _beat(reading: Reading) -> dict[str, Any]:
         "mv": dict(zip(beat.leads, beat.mv, strict=True)),
         "se_mv": dict(zip(beat.leads, beat.se_mv, strict=True)),
     }
-
-
-def _in_lines(value: Any) -> str:
-    """The members of a list or dictionary, each on a line of its own."""
-    if isinstance(value, dict) and value:
-        members = [f"{_compact(k)}: {_compact(v)}" for k, v in value.items()]
-        return "{\n " + ",\n ".join(members) + "\n}"
-    if isinstance(value, list) and value:
-        return "[\n " + ",\n ".join(_compact(item) for item in value) + "\n]"
-    return _compact(value)
-
-
-def _compact(value: Any) -> str:
-    return json.dumps(value, ensure_ascii=False, allow_nan=False)
-
-
-def _plain(thing: Any) -> Any:
-    """Dataclasses, arrays and tuples as dictionaries and lists; NaN as None."""
-    if isinstance(thing, Quantity):
-        entry = {f.name: _plain(getattr(thing, f.name)) for f in dataclasses.fields(thing)}
-        return entry if thing.reason else {k: v for k, v in entry.items() if k != "reason"}
-    if dataclasses.is_dataclass(thing):
-        return {f.name: _plain(getattr(thing, f.name)) for f in dataclasses.fields(thing)}
-    if isinstance(thing, Mapping):
-        return {str(key): _plain(value) for key, value in thing.items()}
-    if isinstance(thing, np.ndarray):
-        return _plain(thing.tolist())
-    if isinstance(thing, (list, tuple)):
-        return [_plain(item) for item in thing]
-    if isinstance(thing, (float, np.floating)):
-        return round(float(thing), _DECIMALS) if math.isfinite(thing) else None
-    if isinstance(thing, np.generic):
-        return thing.item()
-    return thing

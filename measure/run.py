@@ -1,23 +1,27 @@
-"""One call of `measure read`: every file read, its table printed, its results written."""
+"""One call of `measure read` or `measure compare`: files in, tables and results out."""
 
+import json
 import sys
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
 
 from rich.console import Console
 
-from digitize.errors import InputError, OutputExists, at, shown
+from digitize.errors import InputError, OutputExists, UnreadableFile, at, shown
 from digitize.options import Options
 from digitize.safe_write import refuse_existing, write_files
+from measure.compare import compare, comparison_json, side
 from measure.inputs import Given, open_ecgs
 from measure.reading import Person, read
-from measure.reading_files import to_json
-from measure.report import report
-from measure.table import print_reading
+from measure.reading_files import load_document, to_json
+from measure.report import comparison_page, report
+from measure.table import print_comparison, print_reading
 
 READING_ENDING = ".reading.json"
 REPORT_ENDING = ".reading.html"
+COMPARE_ENDINGS = (".compare.html", ".compare.json")
 
 
 def read_files(
@@ -53,6 +57,69 @@ def read_files(
         except InputError as error:
             results.fail(at(error, file.name))
     return results.failed
+
+
+def compare_files(
+    files: Sequence[Path],
+    dates: Sequence[str | None],
+    person: Person,
+    *,
+    folder: Path | None = None,
+    replace: bool = False,
+) -> int:
+    """Compare ECGs, oldest first, and return how many could not be used; with any, none is written.
+
+    Parameters
+    ----------
+    files : sequence of Path
+        Saved readings, or ECGs that are read now; of a file with several pages the first counts.
+    dates : sequence of str or None
+        Year-month-day of each file, where the person gave it.
+    person, folder, replace
+        As for `read_files`.
+    """
+    sides, failed = [], 0
+    for file, date in zip(files, dates, strict=True):
+        try:
+            content = _content(file, person)
+            sides.append(side(content, _name(file), date))
+        except InputError as error:
+            failed += 1
+            print(at(error, file.name), file=sys.stderr)
+    if failed:
+        return failed
+    comparison = compare(sides)
+    place = (files[-1].parent if folder is None else folder) / sides[-1].name
+    page, table = (place.with_name(place.name + end) for end in COMPARE_ENDINGS)
+    try:
+        contents = {page: comparison_page(comparison).encode(), table: comparison_json(comparison)}
+        write_files(contents, replace=replace)
+    except InputError as error:
+        print(error, file=sys.stderr)
+        return 1
+    print_comparison(comparison, Console())
+    print(f"\nWritten: {shown(place)}{' '.join(COMPARE_ENDINGS)}")
+    return 0
+
+
+def _name(file: Path) -> str:
+    """Name of an ECG without the endings of its files."""
+    reading = file.name.endswith(READING_ENDING)
+    return file.name.removesuffix(READING_ENDING) if reading else file.stem
+
+
+def _content(file: Path, person: Person) -> Mapping[str, Any]:
+    """Content of a saved reading, or of one made now."""
+    if file.name.endswith(READING_ENDING):
+        return load_document(file)
+
+    def refuse(error: InputError) -> None:
+        raise error
+
+    given = next(open_ecgs(file, Options(), on_error=refuse), None)
+    if given is None:
+        raise UnreadableFile("there is no ECG in it")
+    return json.loads(to_json(read(given.tracing, person)))
 
 
 @dataclass

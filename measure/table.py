@@ -7,8 +7,10 @@ from rich.table import Table
 from rich.text import Text
 
 from digitize.tracing import LEADS
+from measure.compare import Comparison, headline
 from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
 from measure.reading import Reading
+from measure.reference import usual
 from measure.waves import LeadWaves
 from measure.wording import NOTICE, ONE_SE, SIGNS, clause_lines, nice, number, origin, signed
 
@@ -28,6 +30,21 @@ def print_reading(reading: Reading, console: Console) -> None:
         console.print(Text(title, style="bold underline"))
         console.print(Padding(body, (0, 0, 0, 2)))
     console.print()
+    console.print(Text(f"{NOTICE} {ONE_SE}", style="bold"))
+
+
+def print_comparison(comparison: Comparison, console: Console) -> None:
+    """Print what changed between two readings or more."""
+    labels = usual(None)
+    console.print()
+    for line in headline(comparison):
+        console.print(Text(line))
+    table = _plain_table("", *(s.date or s.name for s in comparison.sides), "difference", "")
+    for change in comparison.changes:
+        values = [number(s.intervals[change.key]) for s in comparison.sides]
+        table.add_row(labels[change.key].label, *values, number(change.difference), change.verdict)
+    console.print(table)
+    console.print(_lines(comparison.cautions))
     console.print(Text(f"{NOTICE} {ONE_SE}", style="bold"))
 
 

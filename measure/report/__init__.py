@@ -1,5 +1,6 @@
-"""NAME.reading.html: one self-contained page that answers a reader's questions in order."""
+"""NAME.reading.html and NAME.compare.html: self-contained answers to a reader's questions."""
 
+from measure.report.comparison import comparison_page
 from measure.report.page import report
 
-__all__ = ["report"]
+__all__ = ["comparison_page", "report"]

@@ -13,6 +13,7 @@ import numpy as np
 
 from measure.criteria.finding import Evidence
 from measure.reading import Reading
+from measure.report.paper import drawing, ruled
 from measure.report.svg import line, polygon, polyline, rect, text
 
 GROUPS = (
@@ -47,11 +48,8 @@ def draw_beats(reading: Reading) -> str:
             rows.append(_cell(reading, lead, box, zero, gain))
         top += LABEL_MM + height + 1.5
     width = 4 * CELL_MM + 3 * GAP_MM
-    return (
-        f'<svg xmlns="http://www.w3.org/2000/svg" width="{width:g}mm" height="{top:g}mm" '
-        f'viewBox="0 0 {width:g} {top:g}" role="img" aria-label="Dominant beat of each lead at '
-        f'{SPEED_MM_S:g} mm/s and {gain:g} mm/mV">' + "".join(rows) + "</svg>"
-    )
+    label = f"Dominant beat of each lead at {SPEED_MM_S:g} mm/s and {gain:g} mm/mV"
+    return drawing(width, top, label, "".join(rows))
 
 
 def gain_mm_mv(reading: Reading) -> float:
@@ -114,7 +112,7 @@ def _cell(
 ) -> str:
     """Paper, trace, boundaries and evidence of one lead."""
     left, top, width, height = box
-    parts = [_paper(left, top, width, height, zero_mm)]
+    parts = [ruled(left, top, width, height, zero_mm, GRID, GRID_5)]
     if lead in reading.beat.leads:
         parts.append(_edges(reading, box))
         parts.append(_trace(reading, lead, left, zero_mm, gain))
@@ -127,22 +125,6 @@ def _cell(
         shape = waves.shape if waves.qrs_complete else "QRS cut by the panel edge"
         parts.append(text(left + width - 0.8, top + 3.2, shape, size=2.7, anchor="end"))
     return "".join(parts)
-
-
-def _paper(left: float, top: float, width: float, height: float, zero_mm: float) -> str:
-    """Millimetre lines; the fifths are heavier and one of them stands at 0 mV."""
-    thin: list[str] = []
-    thick: list[str] = []
-    for k in range(int(width) + 1):
-        (thick if k % 5 == 0 else thin).append(f"M{left + k:g} {top:g}v{height:g}")
-    first = math.ceil(top - zero_mm)
-    for k in range(first, first + int(height) + 1):
-        (thick if k % 5 == 0 else thin).append(f"M{left:g} {zero_mm + k:g}h{width:g}")
-    return (
-        f'<path d="{"".join(thin)}" stroke="{GRID}" stroke-width="0.1" fill="none"/>'
-        f'<path d="{"".join(thick)}" stroke="{GRID_5}" stroke-width="0.16" fill="none"/>'
-        + rect(left, top, width, height, colour=GRID_5, width_mm=0.25)
-    )
 
 
 def _x_mm(reading: Reading, left: float, after_qrs_ms: float) -> float:

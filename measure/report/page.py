@@ -2,7 +2,6 @@
 
 import base64
 import json
-from collections.abc import Iterable
 from html import escape
 
 from digitize import program_version
@@ -11,7 +10,7 @@ from measure.criteria.finding import Clause, Finding
 from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
 from measure.reading import Reading
 from measure.report.beats import SPEED_MM_S, draw_beats, gain_mm_mv
-from measure.report.style import CSS
+from measure.report.html import bullets, document, mark, prose, section, table
 from measure.waves import LeadWaves
 from measure.wording import (
     NOTICE,
@@ -39,60 +38,29 @@ def report(reading: Reading, *, overlay_png: bytes | None = None) -> str:
     source = reading.tracing.source
     title = f"{source.file_name}, page {source.page}"
     sections = (
-        _section("1 Can the tracing be trusted?", _trust(answers, overlay_png)),
-        _section("2 What is the rhythm?", _prose(answers.rhythm) + _rows(answers.rhythm_rows)),
+        section("1 Can the tracing be trusted?", _trust(answers, overlay_png)),
+        section("2 What is the rhythm?", prose(answers.rhythm) + _rows(answers.rhythm_rows)),
         '<div class="clear"></div>',
-        _section(
+        section(
             "3 How wide is the QRS, what is its shape, what follows it?",
             _rows(answers.width_rows) + _waves(reading),
         ),
-        _section("4 Which pattern?", _patterns(answers)),
-        _section("5 On what evidence?", _beats(reading) + _evidence(answers)),
-        _section("6 What to check by eye", _list(answers.by_eye)),
+        section("4 Which pattern?", _patterns(answers)),
+        section("5 On what evidence?", _beats(reading) + _evidence(answers)),
+        section("6 What to check by eye", bullets(answers.by_eye)),
     )
-    return (
-        '<!DOCTYPE html>\n<html lang="en"><head><meta charset="utf-8">'
-        '<meta name="viewport" content="width=device-width, initial-scale=1">'
-        '<meta http-equiv="Content-Security-Policy" content="default-src \'none\'; '
-        "style-src 'unsafe-inline'; img-src data:\">"
-        f"<title>ECG reading: {escape(title)}</title><style>{CSS}</style></head><body>"
-        f"<h1>ECG reading: {escape(title)}</h1>"
-        f'<p class="notice">{escape(NOTICE)}</p>'
-        f'<div class="headline">{_paragraphs(answers.headline)}</div>'
-        f"{''.join(sections)}{_footer(reading)}</body></html>\n"
-    )
-
-
-def _section(title: str, body: str) -> str:
-    return f"<section><h2>{escape(title)}</h2>{body}</section>"
-
-
-def _paragraphs(lines: Iterable[str]) -> str:
-    return "".join(f"<p>{escape(line)}</p>" for line in lines)
-
-
-def _prose(lines: Iterable[str]) -> str:
-    return f"<p>{escape(' '.join(line.rstrip('.') + '.' for line in lines))}</p>"
-
-
-def _list(lines: Iterable[str]) -> str:
-    items = "".join(
-        f'<li class="look">{escape(line)}</li>'
-        if line.startswith("LOOK")
-        else f"<li>{escape(line)}</li>"
-        for line in lines
-    )
-    return f"<ul>{items}</ul>"
+    body = "".join(sections) + _footer(reading)
+    return document(f"ECG reading: {title}", answers.headline, body)
 
 
 def _trust(answers: Answers, overlay_png: bytes | None) -> str:
     if overlay_png is None:
-        return _list(answers.trust)
+        return bullets(answers.trust)
     data = base64.b64encode(overlay_png).decode("ascii")
     return (
         '<figure class="overlay"><img alt="The page with the found trace, panels and leads drawn '
         f'over it" src="data:image/png;base64,{data}"><figcaption>The found trace over the page: '
-        f"it must lie on the ink everywhere.</figcaption></figure>{_list(answers.trust)}"
+        f"it must lie on the ink everywhere.</figcaption></figure>{bullets(answers.trust)}"
     )
 
 
@@ -114,17 +82,7 @@ def _rows(rows: tuple[Measured, ...]) -> str:
         )
         source = "" if shared else f'<td class="small">{escape(row.usual.source)}</td>'
         body.append(f"<tr>{cells}{source}</tr>")
-    return _table(headings if shared else [*headings, "source of the range"], body)
-
-
-def _table(headings: Iterable[str], rows: Iterable[str]) -> str:
-    head = "".join(f"<th>{escape(heading)}</th>" for heading in headings)
-    return f"<table><thead><tr>{head}</tr></thead><tbody>{''.join(rows)}</tbody></table>"
-
-
-def _result(result: str) -> str:
-    kind = result.replace(" ", "-")
-    return f'<span class="result {kind}">{SIGNS[result]} {escape(result)}</span>'
+    return table(headings if shared else [*headings, "source of the range"], body)
 
 
 def _patterns(answers: Answers) -> str:
@@ -132,7 +90,7 @@ def _patterns(answers: Answers) -> str:
     rows = []
     for name, group in answers.families:
         cells = [
-            (_result(f.result), escape(nice(f.definition))) for f in group if f.result != "not met"
+            (mark(f.result), escape(nice(f.definition))) for f in group if f.result != "not met"
         ]
         refused = "; ".join(
             refusal(f) if name in BLOCK_FAMILIES else nice(f.definition)
@@ -140,7 +98,7 @@ def _patterns(answers: Answers) -> str:
             if f.result == "not met"
         )
         if refused:
-            cells.append((_result("not met"), f'<span class="small">{escape(refused)}</span>'))
+            cells.append((mark("not met"), f'<span class="small">{escape(refused)}</span>'))
         for index, (result, text) in enumerate(cells):
             first = escape(name) if index == 0 else ""
             rows.append(f"<tr><td>{first}</td><td>{result}</td><td>{text}</td></tr>")
@@ -148,7 +106,7 @@ def _patterns(answers: Answers) -> str:
         '<p class="small">“Met” means: meets the criteria of the published definition. In '
         "brackets: the first clause that is not met; the file NAME.reading.json has them all.</p>"
     )
-    return _table(("", "result", "definition"), rows) + note
+    return table(("", "result", "definition"), rows) + note
 
 
 def _beats(reading: Reading) -> str:
@@ -175,7 +133,7 @@ def _finding(finding: Finding, shown: dict[str, str]) -> str:
         if clause.evidence or clause.result != "met"
     )
     return (
-        f'<div class="finding"><h3>{_result(finding.result)}: {escape(nice(finding.definition))} '
+        f'<div class="finding"><h3>{mark(finding.result)}: {escape(nice(finding.definition))} '
         f'<span class="source">{escape(finding.source)}</span></h3>'
         f"{clauses}</div>"
     )
@@ -206,7 +164,7 @@ def _waves(reading: Reading) -> str:
         "T mV",
         "beats",
     )
-    return f'<div class="waves">{_table(headings, rows)}</div>'
+    return f'<div class="waves">{table(headings, rows)}</div>'
 
 
 def _wave_row(waves: LeadWaves) -> str:
