@@ -14,6 +14,7 @@ from digitize.tracing import FS_HZ, LEADS, Check, Known, Panel, Tracing
 
 REPEAT_LIMIT_DB = 10.0  # a panel and its strip: the difference holds a tenth of the power
 REPEAT_SHORTEST_S = 0.6  # of common time: about one beat
+REPEAT_SAME_S = 0.1  # a panel that fits no farther away than this fits where it stands
 REPEAT_ELSEWHERE = 0.9  # correlation from which on a panel is said to fit another time better
 COVERAGE_LIMIT = 0.9  # share of a panel's samples that were read
 UNEXPLAINED_LIMIT = 0.25  # share of a panel's ink that its redrawn trace leaves over
@@ -185,14 +186,15 @@ def _agreement(short: np.ndarray, strip: np.ndarray, lag: int) -> tuple[float, f
 
 
 def _best_time(short: Panel, strip: Panel) -> float | None:
-    """Where along the strip the panel fits clearly better, in seconds; None where nowhere."""
+    """Where else along the strip the panel fits, in seconds; None where nowhere."""
     step = 5  # samples: 10 ms, a third of the narrowest QRS
     best, best_s = REPEAT_ELSEWHERE, None
     for lag in range(0, len(strip.mv) - len(short.mv) + 1, step):
         found = _agreement(short.mv, strip.mv, lag)
         if found is not None and found[1] > best:
             best, best_s = found[1], strip.start_s + lag / strip.fs_hz
-    return best_s
+    near = best_s is not None and abs(best_s - short.start_s) < REPEAT_SAME_S
+    return None if near else best_s
 
 
 def _check_coverage(tracing: Tracing) -> Check:

@@ -6,7 +6,8 @@
     ├── NoTrace                 no ECG on this page
     ├── PoorResolution          too few pixels per millimetre to measure
     ├── OutputExists            a result is there already and --replace was not given
-    └── CannotWrite             a result cannot be written where it was asked for
+    ├── CannotWrite             a result cannot be written where it was asked for
+    └── ProgramFault            the program itself failed on this page
 
 A stage says what happened and what to do; which file and page it was is added afterwards, by
 `at`, so that no stage has to know.
@@ -51,6 +52,10 @@ class OutputExists(InputError):
 
 class CannotWrite(InputError):
     """A result cannot be written where it was asked for."""
+
+
+class ProgramFault(InputError):
+    """The program itself failed on this page: a mistake of ours, not of the person's."""
 
 
 Error = TypeVar("Error", bound=InputError)

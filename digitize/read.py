@@ -4,10 +4,14 @@ import dataclasses
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
+from traceback import extract_tb
+
+import cv2
 
 from digitize.calibrate import to_panels
 from digitize.checks import find_checks
-from digitize.errors import InputError, at
+from digitize.errors import InputError, ProgramFault, at
+from digitize.evidence import require_ecg
 from digitize.geometry import to_geometry
 from digitize.grid import Grid, find_grid
 from digitize.ink import Ink, find_ink
@@ -17,9 +21,14 @@ from digitize.options import Options
 from digitize.pages import Page, open_pages
 from digitize.rows import find_rows
 from digitize.sheet import Sheet, flatten
+from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
+from digitize.upright import find_turn, turn_page
 from digitize.words import read_printing
+
+# What arithmetic on an unforeseen page can raise: LinAlgError is a ValueError.
+_FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
 
 
 @dataclass(frozen=True, eq=False)
@@ -62,14 +71,21 @@ def read_page(
     ink = find_ink(sheet)
     on_stage("printing")
     printing = read_printing(ink)
+    turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
+    if turn_deg:
+        upright = dataclasses.replace(options, turn_deg=0)
+        return read_page(turn_page(page, turn_deg), upright, on_stage=on_stage)
     on_stage("layout")
     rows = find_rows(ink, printing.letters)
     layout = find_layout(ink, printing, rows, find_marks(ink), options)
     on_stage("trace")
     strokes = trace_panels(ink, layout)
     on_stage("checks")
-    panels = to_panels(layout, strokes)
+    panels = name_strips(to_panels(layout, strokes))
+    panels, timing = settle_timing(panels, layout.timing)
+    layout = dataclasses.replace(layout, timing=timing)
     tracing = to_tracing(page, grid, layout, strokes, panels, options)
+    require_ecg(tracing)
     tracing = dataclasses.replace(tracing, checks=find_checks(tracing))
     on_stage("")
     return Stages(page, grid, sheet, ink, layout, strokes, tracing)
@@ -82,7 +98,11 @@ def read_stages(
     on_error: Callable[[InputError], None] | None = None,
     on_stage: Callable[[str], None] = lambda name: None,
 ) -> Iterator[Stages]:
-    """Every page of a file, read from end to end; see `digitize.read_pages`."""
+    """Every page of a file, read from end to end; see `digitize.read_pages`.
+
+    A mistake of the program's own is raised as it is, unless `on_error` is there to be told: then
+    it costs this page alone.
+    """
     on_stage("page")
     for page in open_pages(path, max_megapixels=options.max_megapixels, on_error=on_error):
         try:
@@ -92,6 +112,10 @@ def read_stages(
             if on_error is None:
                 raise
             on_error(error)
+        except _FAULTS as fault:
+            if on_error is None:
+                raise
+            on_error(at(_fault(fault), page.source.file_name, page.source.page))
         else:
             yield stages
         on_stage("page")
@@ -116,3 +140,12 @@ def to_tracing(
         geometry=to_geometry(grid, layout, strokes),
         options=dataclasses.asdict(options),
     )
+
+
+def _fault(fault: Exception) -> ProgramFault:
+    """What is said of a mistake of our own: enough to find it, nothing from the page."""
+    if isinstance(fault, MemoryError):
+        return ProgramFault("there is not memory enough for this page: scan it at 300 dpi")
+    last = extract_tb(fault.__traceback__)[-1]
+    where = f"{type(fault).__name__} at line {last.lineno} of {Path(last.filename).name}"
+    return ProgramFault(f"the program failed on this page ({where}): please report it")
