@@ -20,7 +20,8 @@ def to_panels(layout: Layout, strokes: tuple[Stroke, ...]) -> tuple[Panel, ...]:
     nodes of a stroke the pen drew straight lines, so samples are interpolated linearly; what the
     stroke leaves out stays NaN and is never bridged. The standard error of an interpolated sample
     takes neighbouring nodes as fully correlated and adds what their curvature can hide. Lead -aVR
-    (Cabrera's order) comes out as aVR, turned round, and its notes say so.
+    (Cabrera's order) comes out as aVR, turned round, and its notes say so. A stroke whose usual
+    height lies in another row would be another lead's: nothing of it is kept.
 
     Parameters
     ----------
@@ -42,8 +43,11 @@ def _to_panel(place: PanelPlace, stroke: Stroke) -> Panel:
     time_s = (first + np.arange(count)) / FS_HZ
     x_mm = box.left_mm + (time_s - place.start_s) * place.speed_mm_s
     y_mm, sigma_mm = _read_off(stroke, x_mm)
-    mv = (place.baseline_mm - y_mm) / place.gain_mm_mv  # y runs down the page, voltage up
     lead, notes = place.lead, stroke.notes
+    if _strayed(y_mm, place):
+        y_mm, sigma_mm = np.full_like(y_mm, np.nan), np.full_like(sigma_mm, np.nan)
+        notes = (*notes, "the line that was followed belongs to another row: left out")
+    mv = (place.baseline_mm - y_mm) / place.gain_mm_mv  # y runs down the page, voltage up
     if lead.startswith("-"):
         lead, mv = lead[1:], -mv
         notes = (f"printed upside down as {place.lead}: turned round here", *notes)
@@ -61,6 +65,12 @@ def _to_panel(place: PanelPlace, stroke: Stroke) -> Panel:
         lead_source=place.lead_source,
         notes=notes,
     )
+
+
+def _strayed(y_mm: np.ndarray, place: PanelPlace) -> bool:
+    """Whether the usual height of a trace lies outside the row that it should be in."""
+    read = y_mm[np.isfinite(y_mm)]
+    return len(read) > 0 and not place.box.top_mm <= np.median(read) <= place.box.bottom_mm
 
 
 def _read_off(stroke: Stroke, x_mm: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

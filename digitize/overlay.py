@@ -125,9 +125,7 @@ def _draw_panel(
     left, top, right, bottom = panel.box_mm
     for edge_mm in (left, right):
         _polyline(picture, page_map, np.full(2, edge_mm), np.array([top, bottom]), INK, 1, scale)
-    sign = -1.0 if fact.get("upside_down") else 1.0
-    x_mm = left + (panel.time_s - panel.start_s) * panel.speed_mm_s
-    y_mm = fact["baseline_mm"] - sign * panel.mv * panel.gain_mm_mv
+    x_mm, y_mm = _on_paper(panel, fact)
     doubtful = _doubtful(panel)
     for part in _runs(np.isfinite(panel.mv) & ~doubtful):
         _polyline(picture, page_map, x_mm[part], y_mm[part], BLUE, 2, scale)
@@ -138,6 +136,22 @@ def _draw_panel(
         if part.stop - part.start >= SHORTEST_GAP_S * panel.fs_hz:
             last = min(part.stop, len(x_mm) - 1)
             _hatch(picture, page_map, (x_mm[part.start], x_mm[last]), fact["baseline_mm"], scale)
+
+
+def _on_paper(panel: Panel, fact: dict) -> tuple[np.ndarray, np.ndarray]:
+    """Where the samples stand on the paper, (x_mm, y_mm)."""
+    sign = -1.0 if fact.get("upside_down") else 1.0
+    x_mm = panel.box_mm[0] + (panel.time_s - panel.start_s) * panel.speed_mm_s
+    return x_mm, fact["baseline_mm"] - sign * panel.mv * panel.gain_mm_mv
+
+
+def _first_read(panel: Panel, fact: dict) -> tuple[float, float] | None:
+    """Where the first sample that was read stands on the paper."""
+    read = np.flatnonzero(np.isfinite(panel.mv))
+    if len(read) == 0:
+        return None
+    x_mm, y_mm = _on_paper(panel, fact)
+    return float(x_mm[read[0]]), float(y_mm[read[0]])
 
 
 def _doubtful(panel: Panel) -> np.ndarray:
@@ -186,17 +200,20 @@ def _hatch(
 
 
 def _draw_words(image: Image.Image, page_map: PageMap, tracing: Tracing, scale: float) -> None:
-    """Lead names at their panels and "1 mV" at the calibration marks."""
+    """Lead names, each tied to the start of its trace, and "1 mV" at the calibration marks."""
     draw = ImageDraw.Draw(image)
     px_per_mm = min(page_map.scale_px_per_mm()) * scale
     font = ImageFont.load_default(float(np.clip(4.2 * px_per_mm, 16, 40)))
-    for panel in tracing.panels:
+    for panel, fact in zip(tracing.panels, tracing.geometry["panels"], strict=True):
         name = panel.lead + (" strip" if panel.strip else "")
         name += {"assumed": " ?", "given": " (given)"}.get(panel.lead_source, "")
         # On the upper edge of the panel: the page's own label mostly stands just below it.
         corner = _place(page_map, panel.box_mm[0] + 1.2, panel.box_mm[1] + 1.5, scale)
         box = draw.textbbox(corner, name, font=font, anchor="lb")
         colour = ORANGE if panel.lead_source == "assumed" else BLUE
+        start = _first_read(panel, fact)
+        if start is not None:
+            draw.line([corner, _place(page_map, *start, scale)], colour, 1)
         draw.rectangle((box[0] - 4, box[1] - 3, box[2] + 4, box[3] + 3), PAPER, colour, 2)
         draw.text(corner, name, colour, font, anchor="lb")
     for left, top, right, bottom in tracing.geometry["marks_mm"]:
