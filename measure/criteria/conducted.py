@@ -3,25 +3,26 @@
 The definitions of block describe beats that reach the ventricles through the His bundle alone.
 """
 
+import numpy as np
+
 from measure.criteria.case import Case
-from measure.criteria.decide import OVERALL, Limit, Look, at_least, clause, finding, unseen
+from measure.criteria.decide import OVERALL, Limit, Look, at_least, clause, finding, look_at, unseen
 from measure.criteria.finding import Clause, Finding
-from measure.criteria.shape import notched_or_slurred
+from measure.criteria.shape import described
+from measure.quantity import Quantity
 from measure.waves import LeadWaves
 
-DELTA_END_MS = 50.0  # a delta wave slurs the first 40 ms or so of the QRS (common practice)
-DELTA_LEADS = 2
+DELTA_MS = 30.0  # the slow part lasts this long or more (common practice)
+DELTA_MV = 0.05  # and is visible on paper
+STEEP_SHARE = 0.5  # of the steepest slope: from here the limb is no longer slow
+DELTA_LEADS = 3
 
 
 def judge(case: Case) -> tuple[Finding, ...]:
     """Short PR with a slurred QRS onset."""
-
-    def slurred_onset(waves: LeadWaves) -> Look:
-        return notched_or_slurred(waves, from_ms=0.0, to_ms=DELTA_END_MS, at="onset_ms")
-
     short = case.interval("pr_ms", Limit("<", 120, "ms"), what="PR")
     wide = case.interval("qrs_ms", Limit(">", 110, "ms"), what="QRS duration")
-    slur = at_least(DELTA_LEADS, case.in_leads(tuple(case.waves), slurred_onset))
+    slow = at_least(DELTA_LEADS, case.in_leads(tuple(case.waves), lambda w: _slow_onset(case, w)))
     return (
         finding(
             "short_pr_slurred_onset",
@@ -30,11 +31,33 @@ def judge(case: Case) -> tuple[Finding, ...]:
             [
                 clause("PR < 120 ms", short),
                 clause("QRS > 110 ms", wide),
-                clause("slurred first 50 ms of the QRS in two leads or more", slur),
+                clause("QRS begins slowly, for 30 ms or more, in three leads or more", slow),
             ],
             ["Fits pre-excitation, which imitates bundle branch block and infarction."],
         ),
     )
+
+
+def _slow_onset(case: Case, waves: LeadWaves) -> Look:
+    """The first limb of the QRS leads straight to its largest wave and begins slowly.
+
+    Looked at is the stretch from the lead's own onset to where the limb reaches half its steepest
+    slope. A limb that turns before, as after a septal q or r, is no delta wave.
+    """
+    limit = Limit(">=", DELTA_MS, "ms")
+    largest = max(waves.deflections, key=lambda d: abs(d.amplitude_mv), default=None)
+    if largest is None or largest is not waves.deflections[0]:
+        return described("not met", waves, "a slow first limb")
+    time_ms, mv, _ = case.samples(waves.lead)
+    limb = np.flatnonzero((time_ms >= largest.onset_ms) & (time_ms <= largest.peak_ms))
+    slope = np.gradient(mv[limb] * np.sign(largest.amplitude_mv)) if limb.size > 1 else np.zeros(0)
+    if slope.size == 0 or not np.isfinite(slope).all():
+        return unseen(waves.lead, "the first limb of the QRS is not visible")
+    steep = limb[int(np.argmax(slope >= STEEP_SHARE * slope.max()))]
+    if abs(mv[steep] - mv[limb[0]]) < DELTA_MV:
+        return described("not met", waves, "a slow first limb")
+    slow = Quantity(float(time_ms[steep]) - largest.onset_ms, case.edge_se_ms(waves.lead), "ms")
+    return look_at(slow, limit, lead=waves.lead, what="slow onset", time_ms=float(time_ms[steep]))
 
 
 def precondition(case: Case, pre_excited: Finding) -> Clause:
@@ -46,10 +69,3 @@ def precondition(case: Case, pre_excited: Finding) -> Clause:
     else:
         look = Look("met")
     return clause("(precondition) neither a paced nor a pre-excited beat", look)
-
-
-def not_paced(case: Case) -> Look:
-    """The same for definitions that a short PR does not touch."""
-    if case.rhythm.paced:
-        return unseen(OVERALL, "pacing spikes are seen")
-    return Look("met")

@@ -18,6 +18,7 @@ from measure.waves import LeadWaves
 
 WIDE_S_MS = 40.0
 LATE_RPT_MS = 50.0
+NORMAL_LATERAL_RPT_MS = 60.0  # what the statement calls late in V5 and V6 is beyond this
 
 
 def judge(case: Case, precondition: Clause) -> tuple[Finding, ...]:
@@ -121,7 +122,7 @@ def _late_in_v1(waves: LeadWaves) -> Look:
 
 
 def _normal_in_lateral(waves: LeadWaves) -> Look:
-    limit = Limit("<=", LATE_RPT_MS, "ms")
+    limit = Limit("<=", NORMAL_LATERAL_RPT_MS, "ms")
     return look_at(waves.r_peak_time_ms, limit, lead=waves.lead, what="R peak time")
 
 

@@ -176,7 +176,7 @@ def boundaries(leads=LEADS, qrs_ms=150.0):
 
 def beat(leads):
     """Straight lines from peak to peak of each lead's deflections, and a round T."""
-    time_ms = np.arange(-300.0, 500.0, 2.0)
+    time_ms = np.arange(-300.0, 500.0, 1.0)
     rows = []
     for waves in leads.values():
         knots = {-300.0: 0.0, QRS_ON_MS: 0.0, 500.0: 0.0}
@@ -191,18 +191,32 @@ def beat(leads):
     count = len(leads)
     mv_rows = np.array(rows).reshape(count, -1)
     return DominantBeat(
-        tuple(leads), time_ms, mv_rows, np.full(mv_rows.shape, 1e-3), (8,) * count, 500.0
+        tuple(leads), time_ms, mv_rows, np.full(mv_rows.shape, 1e-3), (8,) * count, 1000.0
     )
 
 
-def findings(leads, person=MALE, *, rhythm_changes=None, **interval_changes) -> dict[str, Finding]:
+def with_delta(drawn, leads, names, slow_ms):
+    """The same beat, its R in some leads beginning slowly: 0.1 mV in `slow_ms`, then steep."""
+    rows = drawn.mv.copy()
+    for name in names:
+        r = leads[name].deflections[0]
+        at = [QRS_ON_MS, QRS_ON_MS + slow_ms, QRS_ON_MS + r.peak_ms]
+        inside = (drawn.time_ms >= at[0]) & (drawn.time_ms <= at[2])
+        drawn_to = np.interp(drawn.time_ms[inside], at, [0.0, 0.1, r.amplitude_mv])
+        rows[drawn.leads.index(name), inside] = drawn_to
+    return replace(drawn, mv=rows)
+
+
+def findings(
+    leads, person=MALE, *, rhythm_changes=None, drawn=None, **interval_changes
+) -> dict[str, Finding]:
     """All findings by key."""
     found = judge(
         leads,
         boundaries(tuple(leads)),
         intervals(**interval_changes),
         rhythm(**(rhythm_changes or {})),
-        beat(leads),
+        drawn or beat(leads),
         person,
     )
     return {f.key: f for f in found}

@@ -257,11 +257,23 @@ def test_paced_beats_are_never_called_a_block():
 
 def test_short_pr_with_slurred_onset_withholds_the_block():
     leads = lbbb_leads()
-    for name in ("I", "V5", "V6"):
-        leads[name] = replace(
-            leads[name], notches=(*leads[name].notches, notch(20, 35, kind="slur"))
-        )
-    found = made.findings(leads, pr_ms=ms(100))
+    drawn = made.with_delta(made.beat(leads), leads, ("I", "V5", "V6"), 40.0)
+    found = made.findings(leads, drawn=drawn, pr_ms=ms(100))
     assert found["short_pr_slurred_onset"].result == "met"
     assert found["lbbb_european_2013"].result == "undecided"
-    assert made.findings(leads, pr_ms=ms(120))["lbbb_european_2013"].result == "met"
+    longer = made.findings(leads, drawn=drawn, pr_ms=ms(120))
+    assert longer["lbbb_european_2013"].result == "met"
+
+
+@pytest.mark.parametrize(
+    ("extra", "result"),
+    [
+        (wave("R'", 0.049, 150, 160), "undecided"),  # below half a small square: hardly visible
+        (wave("R'", 0.05, 150, 160), "not met"),
+        (wave("R'", 0.051, 150, 160), "not met"),
+    ],
+)
+def test_qs_or_rs_with_a_deflection_that_hardly_shows(extra, result):
+    rs = lbbb_leads()["V1"].deflections
+    found = made.findings(with_lead("V1", deflections=(*rs, extra)))["lbbb_european_2013"]
+    assert made.clause(found, "QS or rS").result == result

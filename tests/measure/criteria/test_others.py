@@ -221,12 +221,22 @@ def test_ischaemia_is_judged_only_within_left_bundle_branch_block():
     assert found["ischaemia_in_lbbb_original"].clauses[0].result == "not met"
 
 
-@pytest.mark.parametrize(("pr_ms", "result"), [(119, "met"), (120, "not met")])
-def test_short_pr_with_slurred_onset(pr_ms, result):
-    leads = normal_leads()
-    for name in ("I", "V5"):
-        leads[name] = replace(leads[name], notches=(made.notch(10, 30, kind="slur"),))
-    found = made.findings(leads, pr_ms=ms(pr_ms), qrs_ms=ms(115))
+@pytest.mark.parametrize(
+    ("pr_ms", "qrs_ms", "slow_ms", "names", "result"),
+    [
+        (119, 150, 40, ("I", "V5", "V6"), "met"),
+        (120, 150, 40, ("I", "V5", "V6"), "not met"),
+        (100, 111, 40, ("I", "V5", "V6"), "met"),
+        (100, 110, 40, ("I", "V5", "V6"), "not met"),
+        (100, 150, 31, ("I", "V5", "V6"), "met"),
+        (100, 150, 27, ("I", "V5", "V6"), "not met"),  # the slope is seen to within 2 ms
+        (100, 150, 40, ("V5", "V6"), "not met"),
+    ],
+)
+def test_short_pr_with_slurred_onset(pr_ms, qrs_ms, slow_ms, names, result):
+    leads = lbbb_leads()
+    drawn = made.with_delta(made.beat(leads), leads, names, slow_ms)
+    found = made.findings(leads, drawn=drawn, pr_ms=ms(pr_ms), qrs_ms=ms(qrs_ms))
     assert found["short_pr_slurred_onset"].result == result
 
 
