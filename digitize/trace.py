@@ -13,7 +13,7 @@ import scipy as sp
 from digitize.fit import Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.layout import Layout, PanelPlace
-from digitize.nib import find_pen
+from digitize.nib import find_pen, refine_pen
 from digitize.pen import Pen, draw_line
 from digitize.sheet import Raster
 from digitize.ways import Way, find_ways
@@ -22,6 +22,7 @@ STEP_MM = 0.05  # 2 ms at 25 mm/s
 _BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
 _BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
 _NEAR_MM = 0.4  # ink so far from the start must be explained
+_SAMPLE = 4  # traces on which the pen is refined
 _NOISE_FLOOR = 0.02  # of coverage: pen pressure, paper fibre, 8-bit levels
 
 
@@ -80,11 +81,12 @@ def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
     ways = find_ways(ink, layout)
     pen = find_pen(ink, ways)
     courses = [_start(w, p, pen, ink) for w, p in zip(ways, layout.panels, strict=True)]
+    pen, noise = _refined(pen, ways, courses, ink)
     lines: dict[int, Line] = {}
     crossed = [k for k, way in enumerate(ways) if way.shared.any()]
     for k in [*range(len(ways)), *crossed]:
         if np.isfinite(courses[k].y).any():
-            cut = _cut(k, ways, courses, pen, ink)
+            cut = _cut(k, ways, courses, pen, ink, noise)
             lines[k] = _fit(cut, courses[k], pen)
             courses[k] = _placed(lines[k], cut, courses[k])
     return tuple(
@@ -135,7 +137,27 @@ def _start(way: Way, panel: PanelPlace, pen: Pen, ink: Ink) -> _Course:
     return _Course(x, y)
 
 
-def _cut(k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink) -> _Cut:
+def _refined(
+    pen: Pen, ways: tuple[Way, ...], courses: list[_Course], ink: Ink
+) -> tuple[Pen, float]:
+    """The pen, and the noise of the ink, from a first fit of the clearest traces."""
+    noise = max(ink.noise, _NOISE_FLOOR)
+    clear = [k for k, c in enumerate(courses) if np.isfinite(c.y).mean() > 0.9]
+    clear.sort(key=lambda k: (ways[k].shared.sum(), len(courses[k].x), k))
+    fits = []
+    for k in clear[:_SAMPLE]:
+        cut = _cut(k, ways, courses, pen, ink, noise)
+        line, x = _fit(cut, courses[k], pen), courses[k].x
+        fits.append((cut.view, line, x[0] - cut.col0, x[1] - x[0]))
+    if not fits:
+        return pen, noise
+    pen, left = refine_pen(pen, fits)
+    return pen, max(left, noise)
+
+
+def _cut(
+    k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink, noise: float
+) -> _Cut:
     """What panel k's fit sees: ink near its way, and the ink of all other strokes there."""
     way, px = ways[k], ink.raster.px_per_mm
     near = max(_NEAR_MM * px, 3 * pen.blur_y_px + 1)
@@ -166,7 +188,6 @@ def _cut(k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: I
         image[:, image.shape[1] - after :] = np.nan
     rows = np.stack([np.floor(top - near) - row0, np.ceil(bottom + near) + 1 - row0])
     rows = np.pad(np.clip(rows, 0, len(image)), ((0, 0), (before, after)), mode="edge")
-    noise = max(ink.noise, _NOISE_FLOOR)
     return _Cut(row0, col0, View(image.astype(np.float32), other, rows.astype(np.int64), noise))
 
 
@@ -201,7 +222,7 @@ def _unexplained(
     k: int, ways: tuple[Way, ...], courses: list[_Course], pen: Pen, ink: Ink
 ) -> float:
     """Share of the ink beside panel k's trace that all redrawn strokes together leave over."""
-    cut = _cut(k, ways, courses, pen, ink)
+    cut = _cut(k, ways, courses, pen, ink, 1.0)
     drawn = cut.view.other * pen.gain
     _lay(drawn, courses[k], pen, cut.row0, cut.col0)
     row = np.arange(len(drawn))[:, None]
