@@ -10,14 +10,17 @@ from pathlib import Path
 
 import cv2
 import numpy as np
+import pypdfium2 as pdfium
 from PIL import Image
 
 from digitize.errors import InputError
-from digitize.tracing import Tracing
+from digitize.tracing import Panel, Tracing
 from tests.benchmark.pages import Case
 from tests.benchmark.score import PageScore, score_page
+from tests.drawn.composition import PanelTruth
 from tests.drawn.files import write_page
 from tests.drawn.page import PageTruth, draw_page
+from tests.drawn.vector import write_vector_page
 
 
 @dataclass(frozen=True)
@@ -49,10 +52,14 @@ def drawn(case: Case) -> tuple[Path, PageTruth]:
     kept = place / "truth.pickle"
     if not kept.exists():
         place.mkdir(exist_ok=True)
-        page = draw_page(case.recording(), case.spec)
-        write_page(page, path)
+        if case.family == "vector pdf":
+            truth = write_vector_page(case.recording(), case.spec, path)
+        else:
+            page = draw_page(case.recording(), case.spec)
+            write_page(page, path)
+            truth = page.truth
         part = kept.with_suffix(".part")
-        part.write_bytes(pickle.dumps(page.truth))
+        part.write_bytes(pickle.dumps(truth))
         part.rename(kept)
     return path, pickle.loads(kept.read_bytes())
 
@@ -87,36 +94,47 @@ def _maker_hash() -> str:
 def _decode_seconds(path: Path) -> float:
     """Time to decode the file and make it grey once."""
     start = time.perf_counter()
-    with Image.open(path) as image:
-        pixels = np.asarray(image.convert("RGB"))
-    cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY)
+    cv2.cvtColor(_picture(path), cv2.COLOR_RGB2GRAY)
     return time.perf_counter() - start
+
+
+def _picture(path: Path, wide_px: int = 0) -> np.ndarray:
+    """RGB pixels of a file; a PDF is rendered `wide_px` wide, or at 300 dpi."""
+    if path.suffix != ".pdf":
+        with Image.open(path) as image:
+            return np.array(image.convert("RGB"))
+    with pdfium.PdfDocument(path) as document:
+        page = document[0]
+        scale = wide_px / page.get_width() if wide_px else 300 / 72
+        return np.array(page.render(scale=scale).to_pil().convert("RGB"))
 
 
 def _draw_over(path: Path, truth: PageTruth, tracing: Tracing | None, out: Path) -> None:
     """Save the page with the truth in red and what was read, placed by the truth, in blue."""
-    with Image.open(path) as image:
-        canvas = np.array(image.convert("RGB"))
+    own_px = truth.page_map.size_px[0]
+    zoom = 1 if own_px > 1000 else 3  # points of a vector page are too coarse to look at
+    canvas = _picture(path, own_px * zoom)
     for true in truth.panels:
-        _polyline(canvas, truth, true.x_mm, true.y_mm, (220, 0, 0))
+        x_px, y_px = truth.page_map.to_px(true.x_mm, true.y_mm)
+        _polyline(canvas, zoom * x_px, zoom * y_px, (220, 0, 0))
     for panel in tracing.panels if tracing is not None else ():
-        fitting = [t for t in truth.panels if t.lead == panel.lead and t.strip == panel.strip]
-        if fitting:
-            t = fitting[0]
-            x_mm = t.left_mm + np.arange(len(panel.mv)) / panel.fs_hz * t.speed_mm_s
-            centred = panel.mv - np.nanmean(panel.mv) + t.mv.mean() if panel.mv.size else panel.mv
-            _polyline(canvas, truth, x_mm, t.baseline_mm - centred * t.gain_mm_mv, (0, 60, 255))
+        for true in truth.panels:
+            if (true.lead, true.strip) == (panel.lead, panel.strip):
+                x_px, y_px = truth.page_map.to_px(*_places(panel, true))
+                _polyline(canvas, zoom * x_px, zoom * y_px, (0, 60, 255))
     Image.fromarray(canvas).save(out)
 
 
+def _places(panel: Panel, true: PanelTruth) -> tuple[np.ndarray, np.ndarray]:
+    """Where the pen would have drawn what was read, in mm; the mean level is the truth's."""
+    x_mm = true.left_mm + np.arange(len(panel.mv)) / panel.fs_hz * true.speed_mm_s
+    read = np.isfinite(panel.mv)
+    level_mv = true.mv.mean() - panel.mv[read].mean() if read.any() else 0.0
+    return x_mm[read], true.baseline_mm - (panel.mv[read] + level_mv) * true.gain_mm_mv
+
+
 def _polyline(
-    canvas: np.ndarray,
-    truth: PageTruth,
-    x_mm: np.ndarray,
-    y_mm: np.ndarray,
-    colour: tuple[int, int, int],
+    canvas: np.ndarray, x_px: np.ndarray, y_px: np.ndarray, colour: tuple[int, int, int]
 ) -> None:
-    seen = np.isfinite(y_mm)
-    x_px, y_px = truth.page_map.to_px(x_mm[seen], y_mm[seen])
     points = np.round(np.stack([x_px, y_px], axis=1) * 8).astype(np.int32)
     cv2.polylines(canvas, [points], False, colour, 1, cv2.LINE_AA, 3)

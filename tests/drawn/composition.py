@@ -233,6 +233,10 @@ def _header(spec: PageSpec) -> Iterator[Word]:
     for number, text in enumerate(letters.header):
         y_mm = top_mm + letters.header_mm + number * step_mm
         yield Word(text, left_mm, y_mm, letters.header_mm, letters.header_font)
+    for number, text in enumerate(letters.aside):
+        x_mm = left_mm + 0.52 * paper.size_mm[0]
+        y_mm = top_mm + letters.header_mm + number * step_mm
+        yield Word(text, x_mm, y_mm, letters.header_mm, letters.header_font)
     for number, text in enumerate(reversed(letters.footer)):
         yield Word(
             text, left_mm, bottom_mm - number * step_mm, letters.header_mm, letters.header_font

@@ -74,19 +74,24 @@ def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
     if capture.photo is not None:
         light = light_up(light, capture.photo, wanted, rng)
     pixels = to_pixels(light, spec, rng)
-    layout = spec.layout
-    truth = PageTruth(
+    return DrawnPage(pixels, truth_of(recording, composition, spec, page_map), spec)
+
+
+def truth_of(
+    recording: Recording, composition: Composition, spec: PageSpec, page_map: CaptureMap
+) -> PageTruth:
+    """Return the truth of a composed page, whatever it is drawn with."""
+    return PageTruth(
         panels=composition.panels,
         marks=composition.marks,
-        layout=layout.name,
-        timing=layout.timing,
-        speed_mm_s=layout.speed_mm_s,
-        gain_mm_mv=layout.gain_mm_mv,
+        layout=spec.layout.name,
+        timing=spec.layout.timing,
+        speed_mm_s=spec.layout.speed_mm_s,
+        gain_mm_mv=spec.layout.gain_mm_mv,
         page_map=page_map,
         heart=recording.truth,
         recording=recording.name,
     )
-    return DrawnPage(pixels, truth, spec)
 
 
 def _raster(spec: PageSpec) -> tuple[Raster, tuple[int, int]]:

@@ -31,12 +31,31 @@ def light_up(
         away = np.cos(turn) * across + np.sin(turn) * down - edge
         # The edge of a hand's shadow under a ceiling lamp is a few millimetres wide.
         lamp = lamp * (1 - photo.shadow * sp.special.expit(away * 150))
+    if photo.finger:
+        light = _with_finger(light, channels, rng)
     lit = light * lamp[..., None] * np.array(photo.cast)[list(channels)]
     lit = lit.astype(np.float32)
     if photo.motion_px >= 1:
         kernel = _smear(photo.motion_px, rng.uniform(0, np.pi))
         lit = cv2.filter2D(lit, -1, kernel).reshape(lit.shape)
     return lit
+
+
+def _with_finger(
+    light: np.ndarray, channels: tuple[int, ...], rng: np.random.Generator
+) -> np.ndarray:
+    """A fingertip reaching in from the left or right edge of the picture."""
+    high, wide = light.shape[:2]
+    size_px = 0.05 * wide
+    row = rng.uniform(0.2, 0.8) * high
+    right = rng.random() < 0.5
+    rows, cols = np.ogrid[:high, :wide]
+    inward = (wide - 1 - cols) if right else cols
+    tip = np.hypot((inward - 1.6 * size_px) / 1.25, rows - row) < size_px
+    finger = tip | ((np.abs(rows - row) < size_px) & (inward < 1.6 * size_px))
+    skin = np.array([to_light(c) for c in (196, 150, 126)], np.float32)[list(channels)]
+    edge = cv2.GaussianBlur(finger.astype(np.float32), (0, 0), 0.04 * size_px)[..., None]
+    return light * (1 - edge) + skin * edge
 
 
 def _smear(length_px: float, angle: float) -> np.ndarray:

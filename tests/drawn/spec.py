@@ -44,6 +44,7 @@ class LetterSpec:
     colour: Colour = (25, 25, 30)
     header: tuple[str, ...] = ()
     footer: tuple[str, ...] = ()
+    aside: tuple[str, ...] = ()  # at the head, right of the middle
     header_font: str = "sans"
     header_mm: float = 2.4
 
@@ -72,7 +73,8 @@ class LayoutSpec:
     @property
     def name(self) -> str:
         """Conventional name such as "3x4+1"."""
-        return f"{self.rows}x{self.columns}" + (f"+{len(self.strips)}" if self.strips else "")
+        strips = f"+{len(self.strips)}" if self.strips and self.rows * self.columns > 1 else ""
+        return f"{self.rows}x{self.columns}{strips}"
 
 
 @dataclass(frozen=True)
@@ -90,6 +92,7 @@ class PhotoSpec:
     shadow: float = 0.0  # depth of a hard shadow
     cast: tuple[float, float, float] = (1.0, 0.96, 0.88)
     motion_px: float = 0.0
+    finger: bool = False  # a fingertip over one edge of the page
     desk: Colour = (95, 78, 62)
     margin: float = 0.06  # desk around the page, of the page's width
 
@@ -104,6 +107,7 @@ class WearSpec:
     folds: int = 0
     holes: int = 0
     stamp: bool = False
+    bars: int = 0  # black redaction bars
     writing: int = 0  # strokes of handwriting
     speckle: float = 0.0  # specks per square centimetre
     copies: int = 0  # times it went through a photocopier

@@ -18,6 +18,8 @@ from tests.drawn.spec import (
     PageSpec,
     PaperSpec,
     PenSpec,
+    PhotoSpec,
+    WearSpec,
 )
 
 A4, A4_UPRIGHT, LETTER, LONG = (297.0, 210.0), (210.0, 297.0), (279.4, 215.9), (330.0, 100.0)
@@ -38,6 +40,11 @@ PAPER_COLOURS: tuple[Colour, ...] = (
 FONTS = ("sans", "bold", "oblique", "serif", "serif bold", "mono", "times", "times bold", "stroke",
          "stroke double")  # fmt: skip
 PLACES = ("above", "above", "below", "left", "start")
+
+_ASIDES = (
+    "Ward 4, bed 2", "Requested by the clinic", "Rate 71 /min", "PR 162 ms   QRS 98 ms",
+    "Recorded at rest, supine", "Copy for the family doctor", "Unconfirmed", "Leads as standard",
+)  # fmt: skip
 
 # (rows, columns, strips, order): how often each is drawn is how often it stands here.
 ARRANGEMENTS: tuple[tuple[int, int, int, str], ...] = (
@@ -196,6 +203,7 @@ def _letters(rng: np.random.Generator, layout: LayoutSpec) -> LetterSpec:
     if rng.random() < 0.5:
         head = ("   ".join(head),)
     at_head = bool(rng.random() < 0.3)
+    aside = tuple(rng.permutation(_ASIDES)[: rng.integers(0, 5)].tolist())
     return LetterSpec(
         font=str(rng.choice(FONTS)),
         label_place=str(rng.choice(PLACES)),
@@ -203,6 +211,87 @@ def _letters(rng: np.random.Generator, layout: LayoutSpec) -> LetterSpec:
         colour=_pick(rng, PEN_COLOURS),
         header=head + run if at_head else head,
         footer=() if at_head else run,
+        aside=aside,
         header_font=str(rng.choice(FONTS)),
         header_mm=float(rng.uniform(1.8, 3.0)),
     )
+
+
+def vary_fax(seed: int, lines_per_inch: float) -> CaptureSpec:
+    """Return a fax: black and white, coarser down than across, often without its grid."""
+    rng = np.random.default_rng([seed, 7])
+    return CaptureSpec(
+        dpi=(204.0, lines_per_inch),
+        tilt_deg=float(rng.uniform(-1.5, 1.5)),
+        turn_deg=int(rng.choice([0, 0, 0, 90, 270])),
+        blur_mm=float(rng.uniform(0.03, 0.08)),
+        noise=float(rng.uniform(1, 6)),
+        mode=str(rng.choice(["bilevel", "bilevel", "bilevel", "diffused"])),
+        grey_light=int(rng.choice([0, 1, 1])),
+        threshold=float(rng.uniform(115, 185)),
+        dpi_tag=str(rng.choice(["right", "right", "right", "absent", "wrong"])),
+        dropped_lines=int(rng.choice([0, 0, 6, 15])),
+    )
+
+
+def vary_photo(seed: int) -> CaptureSpec:
+    """Return a hand-held photograph of about 8 to 15 megapixels."""
+    rng = np.random.default_rng([seed, 8])
+    scale = float(rng.uniform(250, 340))
+    photo = PhotoSpec(
+        yaw_deg=float(rng.uniform(-14, 14)),
+        pitch_deg=float(rng.uniform(-14, 14)),
+        distance_pages=float(rng.uniform(1.2, 2.2)),
+        barrel=float(rng.uniform(-0.03, 0.02)),
+        curl_mm=float(rng.choice([0.0, 2.0, 5.0, 9.0])),
+        curl_waves=float(rng.uniform(0.4, 1.3)),
+        fold_mm=float(rng.choice([0.0, 0.0, 2.5])),
+        shade=float(rng.uniform(0.05, 0.5)),
+        shadow=float(rng.choice([0.0, 0.3, 0.5])),
+        cast=(1.0, float(rng.uniform(0.88, 1.0)), float(rng.uniform(0.72, 1.0))),
+        motion_px=float(rng.choice([0.0, 0.0, 2.0, 3.5])),
+        finger=bool(rng.random() < 0.2),
+        desk=_pick(rng, ((95, 78, 62), (200, 196, 188), (40, 42, 48), (120, 130, 120))),
+        margin=float(rng.uniform(0.01, 0.12)),
+    )
+    return CaptureSpec(
+        dpi=(scale, scale),
+        tilt_deg=float(rng.uniform(-6, 6)),
+        turn_deg=int(rng.choice([0, 0, 0, 90, 180, 270])),
+        blur_mm=float(rng.uniform(0.05, 0.13)),
+        noise=float(rng.uniform(2, 7)),
+        jpeg_quality=int(rng.integers(65, 93)),
+        dpi_tag="absent",
+        photo=photo,
+    )
+
+
+def vary_wear(seed: int) -> WearSpec:
+    """Return the wear of a page that has lived, at least one sort of it."""
+    rng = np.random.default_rng([seed, 9])
+
+    def perhaps(chance: float) -> bool:
+        return bool(rng.random() < chance)
+
+    return WearSpec(
+        fade=float(rng.uniform(0.2, 0.75)) if perhaps(0.6) else 0.0,
+        yellow=float(rng.uniform(0.1, 0.7)) if perhaps(0.5) else 0.0,
+        stains=int(rng.integers(1, 4)) if perhaps(0.4) else 0,
+        folds=int(rng.integers(1, 4)) if perhaps(0.4) else 0,
+        holes=int(rng.choice([2, 4])) if perhaps(0.3) else 0,
+        stamp=perhaps(0.3),
+        bars=int(rng.integers(1, 3)) if perhaps(0.25) else 0,
+        writing=int(rng.integers(1, 6)) if perhaps(0.4) else 0,
+        speckle=float(rng.uniform(0.02, 0.2)),
+        copies=int(rng.integers(1, 3)) if perhaps(0.3) else 0,
+    )
+
+
+def crowd(layout: LayoutSpec, seed: int) -> LayoutSpec:
+    """Return the layout with its rows pushed together, so that tall complexes cross."""
+    rng = np.random.default_rng([seed, 10])
+    pitch_mm = float(rng.uniform(11, 17)) * layout.gain_mm_mv / 10
+    middle_mm = layout.top_mm + (layout.rows + len(layout.strips) - 1) * layout.pitch_mm / 2
+    pitch_mm = min(pitch_mm, layout.pitch_mm)
+    top_mm = middle_mm - (layout.rows + len(layout.strips) - 1) * pitch_mm / 2
+    return replace(layout, pitch_mm=pitch_mm, top_mm=top_mm)

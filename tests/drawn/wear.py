@@ -17,6 +17,7 @@ from tests.drawn.spec import Colour, PaperSpec, WearSpec
 
 STAMP_INK: Colour = (150, 60, 130)
 BALLPOINT: Colour = (40, 60, 150)
+MARKER: Colour = (12, 12, 14)
 STAIN: Colour = (205, 175, 130)
 DIRT: Colour = (60, 55, 50)
 
@@ -45,6 +46,8 @@ def wear_down(
         inks.append((_stamp(paper, raster, shape, rng), STAMP_INK))
     if wear.writing:
         inks.append((_writing(wear.writing, paper, raster, shape, rng), BALLPOINT))
+    if wear.bars:
+        inks.append((_bars(wear.bars, paper, raster, shape, rng), MARKER))
     if wear.speckle or wear.folds:
         inks.append((_dirt(wear, paper, raster, shape, rng), DIRT))
     remaining = None
@@ -125,6 +128,25 @@ def _stamp(
     turn = cv2.getRotationMatrix2D(centre, float(rng.uniform(-35, 35)), 1.0)
     turned = cv2.warpAffine(layer, turn, (shape[1], shape[0]))
     return turned * (0.25 + 0.6 * _slow_field(shape, 40, rng))
+
+
+def _bars(
+    count: int,
+    paper: PaperSpec,
+    raster: Raster,
+    shape: tuple[int, int],
+    rng: np.random.Generator,
+) -> np.ndarray:
+    """Bars of a black marker: the first over the head of the page, more wherever a name stood."""
+    layer = np.zeros(shape, np.float32)
+    for number in range(count):
+        x_mm, y_mm = _place(paper, rng)
+        if number == 0:
+            x_mm, y_mm = 12.0 - paper.offset_mm[0], 12.0 - paper.offset_mm[1]
+        end_mm = x_mm + rng.uniform(25, 60)
+        line = np.array([x_mm, end_mm]), np.array([y_mm, y_mm + rng.normal(0, 0.5)])
+        draw_stroke(layer, raster, *line, pen_mm=float(rng.uniform(4, 7)))
+    return layer
 
 
 def _writing(
