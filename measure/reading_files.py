@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from digitize import program_version
-from digitize.errors import UnreadableFile
+from digitize.errors import UnreadableFile, at
 from measure.plain import json_lines, plain
 from measure.quantity import Quantity
 from measure.reading import Reading
@@ -68,14 +68,16 @@ def load_document(path: Path) -> dict[str, Any]:
     """
     try:
         content = json.loads(path.read_text(encoding="utf-8"))
-    except (OSError, UnicodeDecodeError, json.JSONDecodeError) as error:
-        raise UnreadableFile(f"{path}: cannot be read as a reading ({error}).") from error
+    except (OSError, ValueError) as error:
+        reason = UnreadableFile(f"it cannot be read as a reading ({error})")
+        raise at(reason, path.name) from error
     known = isinstance(content, dict) and content.get("format") == FORMAT
     if not known or content.get("format_version") != FORMAT_VERSION:
-        raise UnreadableFile(
-            f"{path}: is no reading that this version knows; give the file of `measure read` that "
-            "ends in .reading.json, or read the page again."
+        message = (
+            "it is no reading that this version knows: give a file of `measure read` that ends in "
+            ".reading.json, or read the page again"
         )
+        raise at(UnreadableFile(message), path.name)
     return content
 
 

@@ -40,7 +40,7 @@ def comparison_page(comparison: Comparison) -> str:
         f"{s.source['sha256']}."
         for s in comparison.sides
     )
-    title = f"Two ECGs compared: {_when(first)} and {_when(last)}"
+    title = f"ECGs compared: {_when(first)} and {_when(last)}"
     footer = f"<footer>{escape(sources)} {escape(ONE_SE)}</footer>"
     return document(title, headline(comparison), "".join(sections) + footer)
 
