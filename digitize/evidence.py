@@ -10,6 +10,8 @@ import numpy as np
 from digitize.errors import NoTrace
 from digitize.tracing import Tracing
 
+NAMED = 0.25  # share of the lead names that must have been read: chance reads one
+FOLLOWED = 0.5  # half of the traces must have been read at least so far
 UNBROKEN = 0.9  # share of a trace's samples that were read
 ACCOUNTED = 0.25  # share of a panel's ink that its redrawn trace may leave over (rules of thumb)
 
@@ -25,11 +27,15 @@ def require_ecg(tracing: Tracing) -> None:
     Raises
     ------
     NoTrace
-        Nothing could be read along any trace; or no lead name and no run was read or given, and
+        Most traces could not be followed; or hardly a lead name and no run was read or given, and
         some trace is broken or leaves ink over.
     """
-    if not any(np.isfinite(panel.mv).any() for panel in tracing.panels):
-        raise NoTrace("no ECG trace could be read on this page; give the page that holds it")
+    read = [np.isfinite(panel.mv).mean() if len(panel.mv) else 0.0 for panel in tracing.panels]
+    if not read or np.median(read) < FOLLOWED:
+        raise NoTrace(
+            "no ECG could be followed on this page; give the page that holds it, at 200 dpi or "
+            "more, or what you know of it (--layout, --leads, --turn)"
+        )
     if _says_so(tracing) or _runs_clean(tracing):
         return
     raise NoTrace(
@@ -40,7 +46,7 @@ def require_ecg(tracing: Tracing) -> None:
 
 def _says_so(tracing: Tracing) -> bool:
     """Whether a lead name or a run was read or given."""
-    named = any(panel.lead_source != "assumed" for panel in tracing.panels)
+    named = np.mean([panel.lead_source != "assumed" for panel in tracing.panels]) >= NAMED
     run = {tracing.speed_mm_s.source, tracing.gain_mm_mv.source} & {"printed", "given"}
     return bool(named or run)
 
