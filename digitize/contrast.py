@@ -4,12 +4,12 @@ import cv2
 import numpy as np
 
 
-def grid_contrasts(pixels: np.ndarray) -> list[np.ndarray]:
-    """Return candidate contrast pictures, float32 (rows, cols), lines positive, locally even.
+def grid_contrast(pixels: np.ndarray) -> np.ndarray:
+    """Return the contrast picture, float32 (rows, cols), lines positive, locally even.
 
-    A coloured grid shows in the chroma (largest less smallest channel), where black ink does not;
-    any grid shows in the darkness, which is clipped so that the ink above the grid's own level
-    does not count.
+    Any grid shows in the darkness, which is clipped so that the ink above the grid's own level
+    does not count. A coloured grid shows in the chroma too (largest less smallest channel), where
+    black ink does not; JPEG stores chroma at half the resolution, so both are added.
 
     Parameters
     ----------
@@ -17,13 +17,13 @@ def grid_contrasts(pixels: np.ndarray) -> list[np.ndarray]:
         (rows, cols) or (rows, cols, 3) RGB.
     """
     if pixels.ndim == 2:
-        return [_even(_clipped_darkness(pixels))]
+        return _even(_clipped_darkness(pixels))
     darkness = _even(_clipped_darkness(pixels.min(axis=2)))
     chroma = pixels.max(axis=2).astype(np.float32) - pixels.min(axis=2)
     if np.quantile(chroma[::4, ::4], 0.98) < 6:
-        return [darkness]
+        return darkness
     limit = 4 * np.quantile(chroma[::4, ::4], 0.75) + 8  # coloured stamps and edges
-    return [_even(np.minimum(chroma, limit)), darkness]
+    return _even(np.minimum(chroma, limit)) + darkness
 
 
 def _clipped_darkness(grey: np.ndarray) -> np.ndarray:

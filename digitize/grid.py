@@ -13,9 +13,9 @@ import numpy as np
 import scipy as sp
 import skimage as ski
 
-from digitize.contrast import grid_contrasts
+from digitize.contrast import grid_contrast
 from digitize.errors import NoGrid
-from digitize.lattice import Lattice, find_lattice
+from digitize.lattice import find_lattice
 from digitize.options import Options
 from digitize.pagemap import PageMap, fit_page_map, uniform_page_map
 from digitize.pages import Page
@@ -71,14 +71,10 @@ def find_grid(page: Page, options: Options | None = None) -> Grid:
     """
     options = options or Options()
     reduced, factor = _reduce(page.pixels)
-    best: tuple[float, np.ndarray, Lattice] | None = None
-    for contrast in grid_contrasts(reduced):
-        lattice = find_lattice(contrast, factor=factor, dpi=page.source.dpi)
-        if lattice is not None and (best is None or lattice.score > best[0]):
-            best = (lattice.score, contrast, lattice)
-    if best is None:
+    contrast = grid_contrast(reduced)
+    lattice = find_lattice(contrast, factor=factor, dpi=page.source.dpi)
+    if lattice is None:
         return _without_grid(page, options)
-    _, contrast, lattice = best
     across = _read_phase(contrast, lattice.phase_x, lattice.mm_per_cycle_x)
     down = _read_phase(contrast, lattice.phase_y, lattice.mm_per_cycle_y)
     weight = np.minimum(across.weight, down.weight)

@@ -16,11 +16,16 @@ from digitize.sheet import Raster, Sheet
 
 _CODE = np.arange(256) / 255
 # IEC 61966-2-1 (sRGB): light from pixel values; optics blur light, not code values.
-_LINEAR_LIGHT = np.where(
-    _CODE <= 0.04045, _CODE / 12.92, ((_CODE + 0.055) / 1.055) ** 2.4
-).astype(np.float32)
+_LINEAR_LIGHT = np.where(_CODE <= 0.04045, _CODE / 12.92, ((_CODE + 0.055) / 1.055) ** 2.4).astype(
+    np.float32
+)
+# Absorption that varies for other reasons than ink: grey noise; colour noise, mostly of JPEG, which
+# keeps colour at half the resolution; and the share of the grid that its mean cell leaves over.
+GREY_NOISE, CHROMA_NOISE, GRID_LEFT = 0.02, 0.08, 0.3
 CELL_MM = 5  # grids repeat after 5 mm
+NO_PAPER = 0.35  # darker than this share of the usual paper is finger, desk or hole
 OPAQUE = 0.75  # ground darker than this share of a full stroke hides the ink over it
+FEWEST_CELLS = 8  # fewer ruled cells give no mean of their own
 REGION_CELLS = 7  # the mean cell is taken over so many cells each way
 
 
@@ -49,7 +54,7 @@ def find_ink(sheet: Sheet) -> Ink:
     sheet : Sheet
         Colour, grey or 1-bit, flattened so that the grid's period is whole pixels.
     """
-    light = _even_light(sheet)
+    light, level = _even_light(sheet)
     absorbed = _mix(light, sheet) if light.ndim == 3 else 1 - light
     ground = _ground(absorbed, sheet.raster)
     absorbed -= ground
@@ -62,7 +67,7 @@ def find_ink(sheet: Sheet) -> Ink:
         density = _bridge(density, dark > OPAQUE)
     return Ink(
         density=density.astype(np.float32),
-        hidden=~sheet.inside,
+        hidden=~sheet.inside | (level < NO_PAPER * np.median(level[::8, ::8])),
         raster=sheet.raster,
         noise=max(noise / full, 0.004),
         ruled_mm=sheet.ruled_mm,
@@ -70,8 +75,10 @@ def find_ink(sheet: Sheet) -> Ink:
     )
 
 
-def _even_light(sheet: Sheet) -> np.ndarray:
-    """Light relative to the local paper, float32: shade and vignetting divided out.
+def _even_light(sheet: Sheet) -> tuple[np.ndarray, np.ndarray]:
+    """Light relative to the local paper, float32, and that paper level as a code value.
+
+    Shade and vignetting are divided out.
 
     The local paper level is the mean of each millimetre cell, closed over 5 mm so that traces do
     not lower it, then smoothed.
@@ -85,17 +92,15 @@ def _even_light(sheet: Sheet) -> np.ndarray:
     level = cv2.morphologyEx(cells, cv2.MORPH_CLOSE, np.ones((5, 5), np.uint8))
     level = cv2.GaussianBlur(level, (0, 0), 1.5)
     level = cv2.resize(level, pixels.shape[1::-1], interpolation=cv2.INTER_LINEAR)
-    linear = _LINEAR_LIGHT[pixels]
-    return linear / np.interp(np.maximum(level, 8.0), np.arange(256), _LINEAR_LIGHT).astype(
-        np.float32
-    )
+    paper = np.interp(np.maximum(level, 8.0), np.arange(256), _LINEAR_LIGHT).astype(np.float32)
+    return _LINEAR_LIGHT[pixels] / paper, level if level.ndim == 2 else level.max(axis=2)
 
 
 def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:
     """Absorbed light in the mixture of channels where ink is strong and the grid faint.
 
-    Weights w minimise w'(noise + grid grid')w under w'ink = 1: the matched filter that knows the
-    grid's colour. The ink's colour is read from the darkest strokes.
+    Weights w minimise the variance of noise and grid under w'ink = 1: the matched filter that knows
+    the grid's colour. The ink's colour is read from the darkest strokes.
     """
     absorbed = 1 - light
     step = sheet.raster.px_per_mm
@@ -122,7 +127,10 @@ def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:
 
 
 def _matched(ink: np.ndarray, grid: np.ndarray) -> np.ndarray:
-    noise = 0.02**2 * np.eye(3) + np.outer(grid, grid)
+    """Channel weights of greatest contrast between ink and what else varies."""
+    grey = np.full((3, 3), 1 / 3)
+    noise = GREY_NOISE**2 * grey + CHROMA_NOISE**2 * (np.eye(3) - grey)
+    noise += GRID_LEFT**2 * np.outer(grid, grid)
     weights = np.linalg.solve(noise, ink)
     return weights / (weights @ ink)
 
@@ -137,24 +145,23 @@ def _ground(absorbed: np.ndarray, raster: Raster) -> np.ndarray:
         mode="reflect",
     )
     cells = padded.reshape(rows, cell, cols, cell).swapaxes(1, 2)
+    ruled = _ruled(cells)
+    usual = np.median(cells[ruled], axis=0) if ruled.any() else np.zeros((cell, cell), np.float32)
     tops, lefts = _region_starts(rows), _region_starts(cols)
     size_y, size_x = min(REGION_CELLS, rows), min(REGION_CELLS, cols)
-    grounds = np.stack(
-        [
-            np.stack(
-                [
-                    _median_cell(cells[t : t + size_y, s : s + size_x].reshape(-1, cell, cell))
-                    for s in lefts
-                ]
-            )
-            for t in tops
-        ]
-    )
+
+    def mean_cell(top: int, left: int) -> np.ndarray:
+        region = slice(top, top + size_y), slice(left, left + size_x)
+        own = cells[region][ruled[region]]
+        return np.median(own, axis=0) if len(own) >= FEWEST_CELLS else usual
+
+    grounds = np.stack([np.stack([mean_cell(top, left) for left in lefts]) for top in tops])
     blend_y = _blend(np.array(tops) + (size_y - 1) / 2, rows)
     blend_x = _blend(np.array(lefts) + (size_x - 1) / 2, cols)
     flat = grounds.reshape(len(tops), -1)
     down = (blend_y @ flat).reshape(rows, len(lefts), cell * cell)
     full = np.einsum("xl,rlc->rxc", blend_x, down, optimize=True)
+    full = full * ruled.reshape(rows, cols, 1)
     full = full.reshape(rows, cols, cell, cell).swapaxes(1, 2).reshape(rows * cell, cols * cell)
     return full[: absorbed.shape[0], : absorbed.shape[1]]
 
@@ -164,8 +171,19 @@ def _region_starts(count: int) -> list[int]:
     return [round(s) for s in np.linspace(0, max(count - REGION_CELLS, 0), regions)]
 
 
-def _median_cell(cells: np.ndarray) -> np.ndarray:
-    return np.median(cells, axis=0)
+def _ruled(cells: np.ndarray) -> np.ndarray:
+    """Which cells (rows, cols) show the usual ruling; margins and blank borders do not."""
+    rows, cols, size, _ = cells.shape
+    inner = cells[rows // 4 : rows - rows // 4, cols // 4 : cols - cols // 4]
+    pattern = np.median(inner.reshape(-1, size, size)[::3], axis=0)
+    pattern = pattern - np.median(pattern)
+    power = float(np.sum(pattern * pattern))
+    if power < 1e-3:
+        return np.ones((rows, cols), bool)
+    capped = np.minimum(cells, float(pattern.max())) - np.median(cells)
+    match = np.einsum("rcij,ij->rc", capped, pattern, optimize=True)
+    own = np.einsum("rcij,rcij->rc", capped, capped, optimize=True)
+    return match > 0.3 * np.sqrt(own * power)
 
 
 def _blend(centres: np.ndarray, count: int) -> np.ndarray:

@@ -20,6 +20,7 @@ MIN_HZ = 1 / 75  # cycles per pixel: 5 mm at 15 px/mm
 CLEAR = 5.0  # a peak counts from this many times the usual spectrum
 TOOTH = 0.12  # a harmonic is there from this share of the strongest peak
 USUAL_PAGE_MM = 260.0  # common practice: A4, Letter and strips; only to tell 1 mm from 5 mm
+VOTERS = 40  # tiles whose comb is looked at
 PX_PER_MM_RANGE = (2.4, 40.0)
 
 
@@ -142,8 +143,10 @@ def _settle(
     flat = spectra.reshape(-1, *spectra.shape[2:])
     strongest = np.array([np.argmax(np.where(cone, s, 0)) for s in flat])
     height = flat.reshape(len(flat), -1)[np.arange(len(flat)), strongest]
-    clear = np.argsort(height)[::-1][:24]
+    clear = np.argsort(height)[::-1]
     clear = clear[height[clear] > CLEAR]
+    # The strongest peaks may be edges of the sheet or of shadows: hear tiles of every strength.
+    clear = clear[:: max(1, len(clear) // VOTERS)]
     votes = []
     for tile in clear:
         peak = (along.flat[strongest[tile]], other.flat[strongest[tile]])
@@ -156,7 +159,7 @@ def _settle(
     if not votes:
         return []
     spacing = np.array([v[2] for v in votes])
-    weight = np.array([v[3] for v in votes])
+    weight = np.minimum([v[3] for v in votes], 3 * np.median([v[3] for v in votes]))
     support = [np.sum(weight[np.abs(np.log(spacing / s)) < 0.2]) for s in spacing]
     middle = spacing[int(np.argmax(support))]
     votes = [v for v in votes if abs(np.log(v[2] / middle)) < 0.2]
@@ -308,7 +311,7 @@ def _local_peak(
     near = (np.abs(along - along[i, j]) < 2.5 / FFT_PX) & (
         np.abs(other - other[i, j]) < 2.5 / FFT_PX
     )
-    w = np.where(core & near, height, 0.0) ** 2
+    w = np.where(core & near, height, 0.0) ** 2 + 1e-12
     return (
         (float(np.sum(w * along) / np.sum(w)), float(np.sum(w * other) / np.sum(w))),
         float(height[i, j]),

@@ -17,7 +17,7 @@ from digitize.ink import Ink
 from digitize.labels import LabelFit, Slot, fit_labels, look_again
 from digitize.marks import Mark, mark_box
 from digitize.options import Options
-from digitize.rows import Rows
+from digitize.rows import Row, Rows
 from digitize.scale import Scale, find_scale
 from digitize.sheet import Box
 from digitize.templates import TEMPLATES, Template
@@ -27,6 +27,8 @@ from digitize.words import Printing
 MOST_STRIPS = 3
 STRIP_LEAD = "II"  # common practice, where a strip's name cannot be read
 SURE = 3.0  # log odds to the runner-up below which the layout is called doubtful
+DROPPED_ROW = 3.0  # log odds against a row found that is none
+UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
 
 
@@ -72,6 +74,7 @@ class _Hypothesis:
 
     template: Template
     strips: int
+    rows: Rows
     spans: tuple[Span, ...]
     slots: tuple[Slot, ...]
     labels: LabelFit
@@ -83,7 +86,7 @@ class _Hypothesis:
 
     @property
     def name(self) -> str:
-        return self.template.name + (f"+{self.strips}" if self.strips else "")
+        return _full_name(self.template, self.strips)
 
 
 def find_layout(
@@ -131,7 +134,7 @@ def find_layout(
     hypotheses.sort(key=lambda h: -h.score)
     best = hypotheses[0]
     margin = best.score - next((h.score for h in hypotheses[1:]), best.score - 20)
-    panels = _panels(best, rows, marks, scale, options)
+    panels = _panels(best, marks, scale, options)
     return Layout(
         name=_known_name(best, margin, options),
         speed_mm_s=scale.speed_mm_s,
@@ -149,23 +152,49 @@ def _weigh(
 ) -> list[_Hypothesis]:
     """All arrangements with the page's number of rows, the likeliest first."""
     found = []
-    wanted = options.layout
-    for template in TEMPLATES:
-        strips = len(rows.rows) - template.rows
-        if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):
-            continue
-        name = template.name + (f"+{strips}" if strips else "")
-        if wanted is not None and wanted != name:
-            continue
-        spans, breaks = column_spans(rows, template.rows, extent, template.columns)
-        slots = tuple(_slots(template, strips, spans, rows))
-        labels = fit_labels(printing.words, slots, rows.pitch_mm)
-        seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
-        length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
-        evidence = 6.0 * (breaks - 0.4) if template.columns > 1 else 0.0
-        other = template.prior - 0.3 * strips + length + evidence
-        found.append(_Hypothesis(template, strips, spans, slots, labels, other))
+    for part, doubt in _row_choices(rows):
+        for template in TEMPLATES:
+            strips = len(part.rows) - template.rows
+            if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):
+                continue
+            if options.layout not in (None, _full_name(template, strips)):
+                continue
+            spans, breaks = column_spans(part, template.rows, extent, template.columns)
+            slots = tuple(_slots(template, strips, spans, part))
+            labels = fit_labels(printing.words, slots, part.pitch_mm)
+            seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
+            length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
+            evidence = 6.0 * (breaks - 0.4) if template.columns > 1 else 0.0
+            unread = sum((slot.row, 0) not in labels.names for slot in slots if slot.name is None)
+            strips_cost = 0.3 * strips + (UNREAD_STRIP * unread if labels.score > SURE else 0.0)
+            other = template.prior - strips_cost + length + evidence - doubt
+            found.append(_Hypothesis(template, strips, part, spans, slots, labels, other))
     return sorted(found, key=lambda h: -h.score)
+
+
+def _row_choices(rows: Rows) -> list[tuple[Rows, float]]:
+    """The rows found, and without an outermost one that may be no trace, with its cost."""
+    count = len(rows.rows)
+    left = float(np.median([row.left_mm for row in rows.rows]))
+    right = float(np.median([row.right_mm for row in rows.rows]))
+
+    def cost(row: Row) -> float:
+        both = min(right, row.right_mm) - max(left, row.left_mm)
+        either = max(right, row.right_mm) - min(left, row.left_mm)
+        return DROPPED_ROW if both > 0.93 * either else 0.3 * DROPPED_ROW
+
+    choices = []
+    for top in (0, 1):
+        for bottom in (0, 1):
+            kept = rows.rows[top : count - bottom]
+            dropped = (*rows.rows[:top], *rows.rows[count - bottom :])
+            if kept:
+                choices.append((replace(rows, rows=kept), sum(cost(row) for row in dropped)))
+    return choices
+
+
+def _full_name(template: Template, strips: int) -> str:
+    return template.name + (f"+{strips}" if strips else "")
 
 
 def _slots(template: Template, strips: int, spans: tuple[Span, ...], rows: Rows) -> list[Slot]:
@@ -184,13 +213,12 @@ def _slots(template: Template, strips: int, spans: tuple[Span, ...], rows: Rows)
 
 def _panels(
     best: _Hypothesis,
-    rows: Rows,
     marks: Sequence[Mark],
     scale: Scale,
     options: Options,
 ) -> tuple[PanelPlace, ...]:
     start_mm = best.spans[0].left_mm
-    speed = float(scale.speed_mm_s.value)
+    speed, rows = float(scale.speed_mm_s.value), best.rows
     panels = []
     for number, slot in enumerate(best.slots):
         strip = slot.row >= best.template.rows
@@ -212,7 +240,7 @@ def _panels(
                 baseline_mm=_baseline(row.y_mm, marks_of_row(row, marks, rows.pitch_mm)),
                 start_s=(left - start_mm) / speed if consecutive else 0.0,
                 speed_mm_s=speed,
-                gain_mm_mv=scale.gain_of(slot.row, lead),
+                gain_mm_mv=scale.gain_of(row.y_mm, lead),
             )
         )
     return tuple(panels)
@@ -230,7 +258,7 @@ def _lead(
             return read[0], "printed", read[1]
         return STRIP_LEAD, "assumed", 0.5
     if read is not None and read[0] == slot.name:
-        return slot.name, "printed", read[1]
+        return slot.name, "printed" if read[1] > 0.3 else "found", read[1]
     if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
         return read[0], "printed", read[1]
     return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7

@@ -20,20 +20,21 @@ NEAR = 0.06  # a mark this near to a usual size has that size
 class Scale:
     """Speed and gain of a page, with the gain of each row's left and right end where it differs.
 
-    `row_gain` is keyed by row: (limb leads, chest leads) in mm/mV, from that row's marks.
+    `row_gain` is keyed by the height of the row: (limb leads, chest leads) in mm/mV, from that
+    row's marks.
     """
 
     speed_mm_s: Known
     gain_mm_mv: Known
     chest_gain_mm_mv: float | None
-    row_gain: Mapping[int, tuple[float, float]]
+    row_gain: Mapping[float, tuple[float, float]]
     notes: tuple[str, ...]
 
-    def gain_of(self, row: int, lead: str) -> float:
+    def gain_of(self, row_mm: float, lead: str) -> float:
         """Gain of one panel in mm/mV."""
         chest = lead.startswith("V")
-        if self.gain_mm_mv.source != "given" and row in self.row_gain:
-            return self.row_gain[row][1 if chest else 0]
+        if self.gain_mm_mv.source != "given" and row_mm in self.row_gain:
+            return self.row_gain[row_mm][1 if chest else 0]
         if chest and self.chest_gain_mm_mv is not None:
             return self.chest_gain_mm_mv
         return float(self.gain_mm_mv.value)
@@ -80,7 +81,7 @@ def _speed(
 
 def _gain(
     printed: Sequence[float],
-    row_gain: Mapping[int, tuple[float, float]],
+    row_gain: Mapping[float, tuple[float, float]],
     marks: Sequence[Mark],
     options: Options,
     notes: list[str],
@@ -106,15 +107,15 @@ def _gain(
     return Known(USUAL_GAIN_MM_MV, "assumed")
 
 
-def _row_gains(rows: Rows, marks: Sequence[Mark]) -> dict[int, tuple[float, float]]:
+def _row_gains(rows: Rows, marks: Sequence[Mark]) -> dict[float, tuple[float, float]]:
     """Gain of limb and chest leads on each row that has a mark of its own."""
     gains = {}
-    for number, row in enumerate(rows.rows):
+    for row in rows.rows:
         own = sorted(marks_of_row(row, marks, rows.pitch_mm), key=lambda m: m.left_mm)
         known = [_usual(np.array([m.height_mm]), GAINS_MM_MV) for m in own]
         heights = [k[0] for k in known if k is not None]
         if heights:
-            gains[number] = (heights[0], heights[-1])
+            gains[row.y_mm] = (heights[0], heights[-1])
     return gains
 
 
