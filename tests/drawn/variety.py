@@ -228,7 +228,7 @@ def vary_fax(seed: int, lines_per_inch: float) -> CaptureSpec:
         noise=float(rng.uniform(1, 6)),
         mode=str(rng.choice(["bilevel", "bilevel", "bilevel", "diffused"])),
         grey_light=int(rng.choice([0, 1, 1])),
-        threshold=float(rng.uniform(115, 185)),
+        threshold=float(rng.choice([rng.uniform(115, 180), rng.uniform(180, 222)])),
         dpi_tag=str(rng.choice(["right", "right", "right", "absent", "wrong"])),
         dropped_lines=int(rng.choice([0, 0, 6, 15])),
     )
