@@ -4,6 +4,8 @@ The scale comes from Nominal Scanned Pixel Spacing (PS3.3 C.8.6.1) or Pixel Spac
 without pixels may be an ECG that was digital all along: the error says so.
 """
 
+import struct
+import warnings
 from collections.abc import Iterator
 from typing import BinaryIO
 
@@ -12,7 +14,19 @@ import numpy as np
 from digitize.errors import UnreadableFile
 from digitize.pictures import Loader, Picture, check_size, credible_dpi, plain_pixels
 
-_DAMAGE = (OSError, EOFError, ValueError, TypeError, KeyError, AttributeError, IndexError)
+# What pydicom is known to raise on damaged files (found by cutting and flipping bytes).
+_DAMAGE = (
+    OSError,
+    EOFError,
+    ValueError,
+    TypeError,
+    KeyError,
+    AttributeError,
+    IndexError,
+    OverflowError,
+    RuntimeError,  # NotImplementedError is one
+    struct.error,
+)
 
 
 def open_dicom(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
@@ -30,11 +44,13 @@ def open_dicom(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
             "DICOM files need one more package: install millivellum[dicom], or save it as PNG"
         ) from None
     try:
-        dataset = pydicom.dcmread(file)
-        holds_picture = "PixelData" in dataset
-        frames = int(dataset.get("NumberOfFrames") or 1)
-        size = int(dataset.get("Columns") or 0), int(dataset.get("Rows") or 0)
-    except (pydicom.errors.InvalidDicomError, *_DAMAGE):
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # on odd values of attributes that are not used here
+            dataset = pydicom.dcmread(file)
+            holds_picture = "PixelData" in dataset
+            frames = int(dataset.get("NumberOfFrames") or 1)
+            size = int(dataset.get("Columns") or 0), int(dataset.get("Rows") or 0)
+    except (pydicom.errors.InvalidDicomError, pydicom.errors.BytesLengthException, *_DAMAGE):
         raise _damage() from None
     if not holds_picture:
         raise UnreadableFile(
@@ -45,9 +61,11 @@ def open_dicom(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
         def load(index: int = index) -> Picture:
             check_size(size, max_megapixels)
             try:
-                pixels = _eight_bit(dataset, index)
-                return Picture(plain_pixels(pixels), credible_dpi(_dpi(dataset), *size))
-            except (NotImplementedError, RuntimeError, *_DAMAGE):
+                with warnings.catch_warnings():
+                    warnings.simplefilter("ignore")
+                    pixels = _eight_bit(dataset, index)
+                    return Picture(plain_pixels(pixels), credible_dpi(_dpi(dataset), *size))
+            except _DAMAGE:
                 raise _damage() from None
 
         yield load

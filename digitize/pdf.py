@@ -99,7 +99,7 @@ def _only_image(page: pdfium.PdfPage, image: pdfium.PdfImage) -> Picture | None:
     page_left, page_bottom, page_right, page_top = page.get_cropbox()
     page_width, page_height = page_right - page_left, page_top - page_bottom
     width, height = right - left, top - bottom
-    if width * height < MAIN_SHARE * page_width * page_height:
+    if width * height <= MAIN_SHARE * page_width * page_height or page_width * page_height <= 0:
         return None
     pixels = _pixels(image.get_bitmap())
     quarter_turns = page.get_rotation() // 90  # clockwise
@@ -136,11 +136,10 @@ def _render(page: pdfium.PdfPage, max_megapixels: float) -> Picture:
 
 def _pixels(bitmap: pdfium.PdfBitmap) -> np.ndarray:
     """A copy of the bitmap as grey or RGB."""
-    with closing(bitmap):
-        pixels = bitmap.to_numpy()
-        if pixels.ndim == 3:
-            pixels = pixels[..., 0] if pixels.shape[2] == 1 else pixels[..., 2::-1]
-        return np.ascontiguousarray(pixels)
+    pixels = bitmap.to_numpy()
+    if pixels.ndim == 3:
+        pixels = pixels[..., 0] if pixels.shape[2] == 1 else pixels[..., 2::-1]
+    return np.array(pixels, order="C")
 
 
 def _same(one: np.ndarray, other: np.ndarray) -> bool:

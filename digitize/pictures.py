@@ -7,9 +7,12 @@ an animated GIF, PNG or WebP and the second pictures of a phone's JPEG or HEIC a
 first or main picture alone counts.
 """
 
+import os
 import struct
+import sys
 import warnings
 from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import BinaryIO
 
@@ -77,7 +80,8 @@ def open_pictures(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
     while True:
         number += 1
         try:
-            image.seek(number)
+            with _quiet():
+                image.seek(number)
             page = image.tag_v2.get(_NEW_SUBFILE_TYPE, 0) & 0b101 == 0
         except EOFError:
             return
@@ -104,14 +108,14 @@ def open_heic(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
         ) from None
     try:
         heif = pillow_heif.open_heif(file, convert_hdr_to_8bit=True)
-    except _DAMAGE:
+    except (RuntimeError, *_DAMAGE):  # RuntimeError: the decoder's own safety limits
         raise _damage() from None
 
     def load() -> Picture:
-        check_size(heif.size, max_megapixels)
         try:
+            check_size(heif.size, max_megapixels)
             return as_picture(heif.to_pillow())
-        except _DAMAGE:
+        except (RuntimeError, *_DAMAGE):
             raise _damage() from None
 
     yield load
@@ -166,34 +170,49 @@ def plain_pixels(pixels: np.ndarray) -> np.ndarray:
 
 def _open(file: BinaryIO) -> Image.Image:
     """The file as a Pillow image, nothing decoded yet."""
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore")  # on size (ours is stricter) and metadata (not used)
-        try:
+    try:
+        with _quiet():
             return Image.open(file, formats=FORMATS)
-        except Image.UnidentifiedImageError:
-            raise UnreadableFile(
-                "this is no picture or document of a known kind: give a scan or photo as PNG, "
-                "JPEG, TIFF, PDF, HEIC or DICOM"
-            ) from None
-        except Image.DecompressionBombError:
-            raise UnreadableFile(
-                "the picture is far too large: scan it at 600 dpi or less"
-            ) from None
-        except _DAMAGE:
-            raise _damage() from None
+    except Image.UnidentifiedImageError:
+        raise UnreadableFile(
+            "this is no picture or document of a known kind: give a scan or photo as PNG, "
+            "JPEG, TIFF, PDF, HEIC or DICOM"
+        ) from None
+    except Image.DecompressionBombError:
+        raise UnreadableFile("the picture is far too large: scan it at 600 dpi or less") from None
+    except _DAMAGE:
+        raise _damage() from None
 
 
 def _load(image: Image.Image, max_megapixels: float, number: int = 0) -> Picture:
     """Page `number` of an open file."""
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore")
-        try:
+    try:
+        with _quiet():
             if image.format == "TIFF":
                 image.seek(number)
             check_size(image.size, max_megapixels)
             return as_picture(image)
-        except _DAMAGE:
-            raise _damage() from None
+    except _DAMAGE:
+        raise _damage() from None
+
+
+@contextmanager
+def _quiet() -> Iterator[None]:
+    """No warnings: those on size (ours is stricter), on metadata, and what libtiff itself prints.
+
+    libtiff writes to the file number of stderr, past Python: it is turned away for that while.
+    """
+    sys.stderr.flush()
+    kept, nowhere = os.dup(2), os.open(os.devnull, os.O_WRONLY)
+    try:
+        os.dup2(nowhere, 2)
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")
+            yield
+    finally:
+        os.dup2(kept, 2)
+        os.close(kept)
+        os.close(nowhere)
 
 
 def _eight_bit(image: Image.Image) -> np.ndarray:

@@ -375,6 +375,15 @@ def test_name_with_a_newline_stays_on_one_line(tmp_path):
     assert refused(path).startswith("two\\nlines.png: ")
 
 
+def test_decoders_do_not_chatter(tmp_path, capfd):
+    buffer = io.BytesIO()
+    Image.fromarray(made.paper()).save(buffer, "TIFF", compression="tiff_deflate")
+    content = bytearray(buffer.getvalue())
+    content[9:40] = bytes(31)  # within the compressed strip
+    refused(made.write(tmp_path / "broken.tiff", bytes(content)))
+    assert capfd.readouterr().err == ""
+
+
 @pytest.mark.parametrize("kind", ["PNG", "JPEG", "TIFF", "GIF", "BMP", "WEBP", "PDF"])
 def test_files_cut_anywhere_are_read_or_refused(tmp_path, kind):
     buffer = io.BytesIO()
