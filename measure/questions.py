@@ -125,6 +125,8 @@ def _headline(reading: Reading) -> tuple[str, ...]:
     """Two or three sentences: rhythm and QRS, what is met, what is open."""
     qrs, rate = reading.intervals["qrs_ms"], reading.intervals["rate_bpm"]
     lines = [f"QRS {number(qrs)}. {_capital(reading.rhythm.statement)}, rate {number(rate)}."]
+    if doubted := _doubted(reading):
+        lines.append(f"LOOK FIRST: the tracing is in doubt ({doubted}); see question 1.")
     families = _families(reading.findings)
     blocks = [f for name, group in families if name in BLOCK_FAMILIES for f in group]
     for result, opening in (
@@ -137,6 +139,15 @@ def _headline(reading: Reading) -> tuple[str, ...]:
     if not any(f.result != "not met" for f in blocks):
         lines.append("Meets the criteria of no conduction block that is judged here.")
     return tuple(lines)
+
+
+def _doubted(reading: Reading) -> str:
+    """What the failed self-checks concern, in words; empty where none failed."""
+    failed = [check for check in reading.tracing.checks if check.passed is False]
+    leads = dict.fromkeys(lead for check in failed for lead in check.leads)
+    if leads:
+        return f"leads {', '.join(leads)}: findings that rest on them may be wrong"
+    return "a self-check failed" if failed else ""
 
 
 def _trust(reading: Reading) -> tuple[str, ...]:
