@@ -19,7 +19,7 @@ _LEVEL, _CLIMB, _SINK = 0, 1, 2
 
 @numba.njit(cache=True)
 def cheapest_path(
-    bare: np.ndarray, ahead: np.ndarray, edge_cost: np.ndarray, px_per_mm: float
+    bare: np.ndarray, ahead: np.ndarray, enter: np.ndarray, leave: np.ndarray, px_per_mm: float
 ) -> tuple:
     """Least-cost way from the left to the right side of `bare`.
 
@@ -30,8 +30,8 @@ def cheapest_path(
     ahead : (rows, cols) float32 array
         The same for going on to the next column; more than `bare` where another trace needs the
         ink, so that it may be crossed but not followed.
-    edge_cost : (rows,) float array
-        Cost of entering and of leaving the panel at a row.
+    enter, leave : (rows,) float arrays
+        Price of beginning and of ending at a row.
     px_per_mm : float
         Costs are per millimetre of paper.
 
@@ -39,8 +39,6 @@ def cheapest_path(
     -------
     span : (2, cols) int array
         Highest and lowest row visited in each column.
-    leave : (cols,) int array
-        Row in which the path leaves each column.
     cost : float
         Of the whole path.
     """
@@ -52,7 +50,7 @@ def cheapest_path(
     now = np.empty((3, rows))
     for mode in range(3):
         for r in range(rows):
-            now[mode, r] = edge_cost[r] + (0.0 if mode == _LEVEL else _TURN)
+            now[mode, r] = enter[r] + (0.0 if mode == _LEVEL else _TURN)
     new = np.empty((3, rows))
     for c in range(cols):
         for r in range(rows):
@@ -89,12 +87,11 @@ def cheapest_path(
     mode, r, total = 0, 0, np.inf
     for m in range(3):
         for k in range(rows):
-            if now[m, k] + edge_cost[k] < total:
-                mode, r, total = m, k, now[m, k] + edge_cost[k]
+            if now[m, k] + leave[k] < total:
+                mode, r, total = m, k, now[m, k] + leave[k]
     span = np.empty((2, cols), np.int64)
-    leave = np.empty(cols, np.int64)
     for c in range(cols - 1, -1, -1):
-        span[0, c], span[1, c], leave[c] = r, r, r
+        span[0, c], span[1, c] = r, r
         while came[c, mode, r] == 3:
             r += -1 if mode == _SINK else 1
             span[0, c], span[1, c] = min(span[0, c], r), max(span[1, c], r)
@@ -103,7 +100,7 @@ def cheapest_path(
             mode = code
         else:
             r += -1 if code == 4 else 1
-    return span, leave, total
+    return span, total
 
 
 @numba.njit(cache=True)
