@@ -1,11 +1,13 @@
 """Table and report say what was measured, what was not and why, and never a diagnosis."""
 
+import base64
 import io
 import xml.etree.ElementTree as ET
 from dataclasses import replace
 from html.parser import HTMLParser
 
 import pytest
+from PIL import Image
 from rich.console import Console
 
 from digitize.tracing import Check, Known
@@ -16,8 +18,6 @@ from measure.report.beats import draw_beats, gain_mm_mv
 from measure.table import print_reading
 from measure.wording import NOTICE
 from tests.measure import made
-
-PNG = b"\x89PNG\r\n\x1a\n" + bytes(8)
 
 
 class Page(HTMLParser):
@@ -116,9 +116,14 @@ def test_open_definitions_with_one_reason_are_named_together():
 
 
 def test_report_loads_nothing_and_runs_nothing():
-    page = Page(report(made.reading(), overlay_png=PNG))
+    stream = io.BytesIO()
+    Image.new("RGB", (6, 4), "white").save(stream, "PNG")
+    page = Page(report(made.reading(), overlay_png=stream.getvalue()))
     assert len(page.loads) == 1
-    assert page.loads[0].startswith("data:image/png;base64,")
+    kind, data = page.loads[0].split(",")
+    assert kind == "data:image/webp;base64"
+    with Image.open(io.BytesIO(base64.b64decode(data))) as picture:
+        assert picture.size == (6, 4)
     assert "script" not in page.tags
     assert "link" not in page.tags
     assert "url(" not in report(made.reading())
