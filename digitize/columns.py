@@ -1,7 +1,7 @@
 """Where the columns of a page begin and end: the breaks that all rows share."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
@@ -10,6 +10,7 @@ from digitize.marks import Mark
 from digitize.rows import STEP_MM, Row, Rows, Runs
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
+TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
 
 
@@ -21,19 +22,12 @@ class Span:
     right_mm: float
 
 
-def trace_extent(rows: Rows, marks: Sequence[Mark]) -> Span:
-    """Where the traces begin and end across the page, calibration marks taken off."""
-    lefts, rights = [], []
-    for row in rows.rows:
-        left, right = row.left_mm, row.right_mm
-        for mark in marks_of_row(row, marks, rows.pitch_mm):
-            if mark.left_mm - left < 12:
-                left = _after(rows.runs, row, mark, left)
-            elif right - mark.right_mm < 12:
-                right = _before(rows.runs, row, mark, right)
-        lefts.append(left)
-        rights.append(right)
-    return Span(float(np.median(lefts)), float(np.median(rights)))
+def trace_extent(rows: Rows) -> Span:
+    """Where the traces begin and end across the page."""
+    return Span(
+        float(np.median([row.left_mm for row in rows.rows])),
+        float(np.median([row.right_mm for row in rows.rows])),
+    )
 
 
 def marks_of_row(row: Row, marks: Sequence[Mark], pitch_mm: float) -> list[Mark]:
@@ -42,35 +36,45 @@ def marks_of_row(row: Row, marks: Sequence[Mark], pitch_mm: float) -> list[Mark]
     return [mark for mark in marks if abs(mark.foot_mm - row.y_mm) < reach]
 
 
-def _after(runs: Runs, row: Row, mark: Mark, left_mm: float) -> float:
-    """First ink of the trace after a mark at its left: behind a gap, else behind a tail."""
-    x = _inked(runs, row)
-    tail = max(mark.left_mm - left_mm, 0.5)
-    behind = x[(x > mark.right_mm + 0.3) & (x < mark.right_mm + 8)]
-    gaps = np.nonzero(np.diff(behind) > 0.45)[0]
+def without_marks(rows: Rows, marks: Sequence[Mark]) -> Rows:
+    """Return the rows with their calibration marks, and the zero line beside these, taken off."""
+    keep = np.ones(len(rows.runs.x_mm), bool)
+    for row in rows.rows:
+        for mark in marks_of_row(row, marks, rows.pitch_mm):
+            keep &= ~_part_of(rows.runs, mark)
+    runs = Runs(*(a[keep] for a in (rows.runs.x_mm, rows.runs.top_mm, rows.runs.bottom_mm)))
+    return replace(rows, runs=runs, rows=tuple(_narrowed(row, runs) for row in rows.rows))
+
+
+def _part_of(runs: Runs, mark: Mark) -> np.ndarray:
+    """Which runs belong to a mark: its box, and its tails as far as the next gap."""
+    x = runs.x_mm
+    at_foot = (runs.top_mm < mark.foot_mm + 0.6) & (runs.bottom_mm > mark.foot_mm - 0.6)
+    near = np.unique(x[at_foot & (x > mark.left_mm - TAIL_MM) & (x < mark.right_mm + TAIL_MM)])
+    before = mark.left_mm - near[near < mark.left_mm - 0.3][::-1]
+    after = near[near > mark.right_mm + 0.3] - mark.right_mm
+    left, right = _tail(before), _tail(after)
+    left, right = left or right or 1.0, right or left or 1.0
+    zone = (x > mark.left_mm - left - 0.1) & (x < mark.right_mm + right + 0.1)
+    over = (runs.top_mm < mark.foot_mm + 0.8) & (runs.bottom_mm > mark.top_mm - 0.5)
+    box = (x > mark.left_mm - 0.4) & (x < mark.right_mm + 0.4) & over
+    return box | (zone & at_foot)
+
+
+def _tail(away_mm: np.ndarray) -> float | None:
+    """Length of the line that goes away from a mark, None where it does not end within reach."""
+    gaps = np.nonzero(np.diff(away_mm, prepend=0.3) > 0.45)[0]
     if len(gaps):
-        return float(behind[gaps[0] + 1])
-    if len(behind) and behind[0] > mark.right_mm + 0.9:
-        return float(behind[0])
-    return mark.right_mm + tail
+        return float(away_mm[gaps[0] - 1]) if gaps[0] > 0 else 0.3
+    if len(away_mm) == 0 or away_mm[-1] < TAIL_MM - 2 * STEP_MM:
+        return float(away_mm[-1]) if len(away_mm) else 0.3
+    return None
 
 
-def _before(runs: Runs, row: Row, mark: Mark, right_mm: float) -> float:
-    """Last ink of the trace before a mark at its right."""
-    x = _inked(runs, row)
-    tail = max(right_mm - mark.right_mm, 0.5)
-    ahead = x[(x < mark.left_mm - 0.3) & (x > mark.left_mm - 8)]
-    gaps = np.nonzero(np.diff(ahead) > 0.45)[0]
-    if len(gaps):
-        return float(ahead[gaps[-1]])
-    if len(ahead) and ahead[-1] < mark.left_mm - 0.9:
-        return float(ahead[-1])
-    return mark.left_mm - tail
-
-
-def _inked(runs: Runs, row: Row) -> np.ndarray:
+def _narrowed(row: Row, runs: Runs) -> Row:
     near = (runs.top_mm < row.y_mm + 12) & (runs.bottom_mm > row.y_mm - 12)
-    return np.unique(runs.x_mm[near])
+    x = runs.x_mm[near & (runs.x_mm >= row.left_mm) & (runs.x_mm <= row.right_mm)]
+    return replace(row, left_mm=float(x.min()), right_mm=float(x.max())) if len(x) else row
 
 
 def column_spans(
@@ -119,9 +123,7 @@ def _even(spans: tuple[Span, ...], extent: Span, shares: list[float]) -> tuple[S
     """An edge that no break shows, or out of step with the others, follows their even spacing."""
     count = len(spans)
     order = np.arange(1, count)
-    middle = np.array(
-        [(a.right_mm + b.left_mm) / 2 for a, b in pairwise(spans)]
-    )
+    middle = np.array([(a.right_mm + b.left_mm) / 2 for a, b in pairwise(spans)])
     gap = float(np.median([b.left_mm - a.right_mm for a, b in pairwise(spans)]))
     good = np.array(shares) >= 0.5
     if good.sum() >= 2:

@@ -90,10 +90,13 @@ def _even_light(sheet: Sheet) -> tuple[np.ndarray, np.ndarray]:
         pixels[: rows * step, : cols * step], (cols, rows), interpolation=cv2.INTER_AREA
     ).astype(np.float32)
     level = cv2.morphologyEx(cells, cv2.MORPH_CLOSE, np.ones((5, 5), np.uint8))
-    level = cv2.GaussianBlur(level, (0, 0), 1.5)
-    level = cv2.resize(level, pixels.shape[1::-1], interpolation=cv2.INTER_LINEAR)
-    paper = np.interp(np.maximum(level, 8.0), np.arange(256), _LINEAR_LIGHT).astype(np.float32)
-    return _LINEAR_LIGHT[pixels] / paper, level if level.ndim == 2 else level.max(axis=2)
+    level = np.maximum(cv2.GaussianBlur(level, (0, 0), 1.5), 8.0)
+    size = pixels.shape[1::-1]
+    per_light = 1 / np.interp(level, np.arange(256), _LINEAR_LIGHT).astype(np.float32)
+    light = _LINEAR_LIGHT[pixels]
+    light *= cv2.resize(per_light, size, interpolation=cv2.INTER_LINEAR)
+    brightest = level if level.ndim == 2 else level.max(axis=2)
+    return light, cv2.resize(brightest, size, interpolation=cv2.INTER_LINEAR)
 
 
 def _mix(light: np.ndarray, sheet: Sheet) -> np.ndarray:

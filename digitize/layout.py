@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from digitize.columns import Span, column_spans, marks_of_row, trace_extent
+from digitize.columns import Span, column_spans, marks_of_row, trace_extent, without_marks
 from digitize.errors import NoTrace
 from digitize.ink import Ink
 from digitize.labels import LabelFit, Slot, fit_labels, look_again
@@ -120,8 +120,9 @@ def find_layout(
     if not rows.rows:
         raise NoTrace("no ECG trace found on this page; give the page that holds the tracing")
     marks = [m for row in rows.rows for m in marks_of_row(row, marks, rows.pitch_mm)]
-    extent = trace_extent(rows, marks)
     scale = find_scale(printing, rows, marks, options)
+    rows = without_marks(rows, marks)
+    extent = trace_extent(rows)
     hypotheses = _weigh(printing, rows, extent, scale, options)
     if not hypotheses:
         raise NoTrace(

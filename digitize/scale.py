@@ -45,7 +45,7 @@ def find_scale(printing: Printing, rows: Rows, marks: Sequence[Mark], options: O
     notes: list[str] = []
     speed = _speed(printed_speeds(printing), marks, options, notes)
     gains = printed_gains(printing)
-    row_gain = _row_gains(rows, marks)
+    row_gain = _row_gains(rows, marks, gains)
     chest = gains[1] if len(gains) > 1 else None
     if row_gain and chest is not None:
         chest = float(np.median([pair[1] for pair in row_gain.values()]))
@@ -107,15 +107,23 @@ def _gain(
     return Known(USUAL_GAIN_MM_MV, "assumed")
 
 
-def _row_gains(rows: Rows, marks: Sequence[Mark]) -> dict[float, tuple[float, float]]:
-    """Gain of limb and chest leads on each row that has a mark of its own."""
+def _row_gains(
+    rows: Rows, marks: Sequence[Mark], printed: Sequence[float]
+) -> dict[float, tuple[float, float]]:
+    """Gain of limb and chest leads on each row that has a mark of its own.
+
+    Where two gains are printed, limb leads first, a single mark speaks for the leads next to it.
+    """
     gains = {}
     for row in rows.rows:
         own = sorted(marks_of_row(row, marks, rows.pitch_mm), key=lambda m: m.left_mm)
         known = [_usual(np.array([m.height_mm]), GAINS_MM_MV) for m in own]
         heights = [k[0] for k in known if k is not None]
         if heights:
-            gains[row.y_mm] = (heights[0], heights[-1])
+            limb, chest = heights[0], heights[-1]
+            if len(heights) == 1 and len(printed) == 2 and heights[0] in printed:
+                limb, chest = printed[0], printed[1]
+            gains[row.y_mm] = (limb, chest)
     return gains
 
 
