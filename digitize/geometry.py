@@ -16,12 +16,14 @@ from digitize.trace import Stroke
 def to_geometry(grid: Grid, layout: Layout, strokes: tuple[Stroke, ...]) -> dict[str, Any]:
     """Return what ties the panels to the pixels of the page, as JSON can hold it.
 
-    `map` is the projective matrix, the spline coefficients and their extent, as `PageMap` takes
-    them; `panels` follow the order of the tracing's panels: where 0 mV stands, how wide the pen
-    is, how much of the ink the redrawn trace leaves unexplained, how sure the lead's name is.
+    `turn_deg` is the clockwise turn of the page before all else; `map` is the projective matrix,
+    the spline coefficients and their extent, as `PageMap` takes them; `panels` follow the order of
+    the tracing's panels: where 0 mV stands, how wide the pen is, how much of the ink the redrawn
+    trace leaves unexplained, how sure the lead's name is.
     """
     page_map = grid.page_map
     return {
+        "turn_deg": 0,
         "map": {
             "homography": page_map.homography.tolist(),
             "bend_px": np.round(page_map.bend_px, 5).tolist(),

@@ -33,7 +33,7 @@ _FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2
 
 @dataclass(frozen=True, eq=False)
 class Stages:
-    """One page and what each stage made of it."""
+    """One page, upright, and what each stage made of it."""
 
     page: Page
     grid: Grid
@@ -73,8 +73,7 @@ def read_page(
     printing = read_printing(ink)
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
-        upright = dataclasses.replace(options, turn_deg=0)
-        return read_page(turn_page(page, turn_deg), upright, on_stage=on_stage)
+        return _read_turned(page, turn_deg, options, on_stage)
     on_stage("layout")
     rows = find_rows(ink, printing.letters)
     layout = find_layout(ink, printing, rows, find_marks(ink), options)
@@ -89,6 +88,21 @@ def read_page(
     tracing = dataclasses.replace(tracing, checks=find_checks(tracing))
     on_stage("")
     return Stages(page, grid, sheet, ink, layout, strokes, tracing)
+
+
+def _read_turned(
+    page: Page, turn_deg: int, options: Options, on_stage: Callable[[str], None]
+) -> Stages:
+    """The page read after a clockwise turn, which is kept with the geometry."""
+    upright = dataclasses.replace(options, turn_deg=0)
+    stages = read_page(turn_page(page, turn_deg), upright, on_stage=on_stage)
+    tracing = dataclasses.replace(
+        stages.tracing,
+        source=page.source,
+        geometry={**stages.tracing.geometry, "turn_deg": turn_deg},
+        options=dataclasses.asdict(options),
+    )
+    return dataclasses.replace(stages, tracing=tracing)
 
 
 def read_stages(
@@ -146,6 +160,9 @@ def _fault(fault: Exception) -> ProgramFault:
     """What is said of a mistake of our own: enough to find it, nothing from the page."""
     if isinstance(fault, MemoryError):
         return ProgramFault("there is not memory enough for this page: scan it at 300 dpi")
-    last = extract_tb(fault.__traceback__)[-1]
-    where = f"{type(fault).__name__} at line {last.lineno} of {Path(last.filename).name}"
+    ours = Path(__file__).parent
+    frames = [f for f in extract_tb(fault.__traceback__) if ours in Path(f.filename).parents]
+    where = (
+        f"{type(fault).__name__} at line {frames[-1].lineno} of {Path(frames[-1].filename).name}"
+    )
     return ProgramFault(f"the program failed on this page ({where}): please report it")

@@ -60,6 +60,20 @@ def test_same_page_same_bytes(stages):
     assert to_json(again) == to_json(stages.tracing)
 
 
+def test_a_turned_page_gives_the_same_leads_and_says_how_it_was_turned(stages, tmp_path):
+    image = Image.open(SAMPLES / "lafb_6x2.jpg")
+    path = tmp_path / "turned.png"
+    image.transpose(Image.Transpose.ROTATE_90).save(path, dpi=image.info["dpi"])
+    (tracing,) = digitize.read_pages(path)  # turned anticlockwise: it takes 90 degrees clockwise
+    assert tracing.geometry["turn_deg"] == 90
+    assert (tracing.source.width_px, tracing.source.height_px) == (image.height, image.width)
+    assert tracing.options["turn_deg"] is None
+    for one, other in zip(tracing.panels, stages.tracing.panels, strict=True):
+        assert one.lead == other.lead
+        both = np.isfinite(one.mv) & np.isfinite(other.mv)
+        np.testing.assert_allclose(one.mv[both], other.mv[both], atol=0.02)
+
+
 # ---- what is no ECG --------------------------------------------------------------------------
 
 
@@ -78,7 +92,7 @@ def letter() -> np.ndarray:
     """A page of writing, without a grid."""
     image = Image.new("L", (1240, 900), 255)
     draw, font = ImageDraw.Draw(image), ImageFont.load_default(22)
-    for row in range(12):
+    for row in range(8):
         draw.text(
             (60, 60 + 32 * row), "the tide went out over the marram and the sand " * 2, 0, font
         )
@@ -111,6 +125,8 @@ def test_a_fault_of_the_program_costs_one_page_when_someone_listens(tmp_path, mo
     errors: list[InputError] = []
     assert list(digitize.read_pages(path, on_error=errors.append)) == []
     assert [type(error) for error in errors] == [ProgramFault, ProgramFault]
-    assert "many.tiff, page 2: the program failed on this page (IndexError" in str(errors[1])
+    assert "many.tiff, page 2: the program failed on this page (IndexError at line" in str(
+        errors[1]
+    )
     with pytest.raises(IndexError):
         list(digitize.read_pages(path))
