@@ -157,14 +157,23 @@ def main() -> None:
     folder = Path(os.environ["PTBXL_DIR"])
     labels = list(records(folder))
     if given.pages:
-        grouped = [x for x in labels if x.statements & {"CLBBB", "CRBBB", "NORM"}]
-        labels = grouped[:: max(len(grouped) // given.pages, 1)][: given.pages]
-    judged = list(judge_all(labels, _digital(folder)))
-    print("met / undecided, % of the records with each statement\n" + table(judged))
-    if given.list:
-        print("\n".join(disagreements(judged)))
-    if given.pages:
-        print("\nthe same records through drawn pages\n" + table(list(judge_all(labels, _drawn))))
+        labels = _sample(labels, given.pages)
+    runs = [("digital", _digital(folder))] + ([("through drawn pages", _drawn)] * bool(given.pages))
+    for name, tracing_of in runs:
+        judged = list(judge_all(labels, tracing_of))
+        print(f"{name}: met / undecided, % of the records with each statement\n{table(judged)}")
+        if given.list:
+            print("\n".join(disagreements(judged)))
+
+
+def _sample(labels: list[Labelled], count: int) -> list[Labelled]:
+    """As many records of left block, right block and normal conduction, evenly taken."""
+    chosen: dict[str, Labelled] = {}
+    for group in ("CLBBB", "CRBBB", "NORM"):
+        members = [x for x in labels if group in x.statements]
+        step = max(len(members) * 3 // count, 1)
+        chosen |= {x.record: x for x in members[::step][: -(-count // 3)]}
+    return list(chosen.values())
 
 
 if __name__ == "__main__":
