@@ -13,11 +13,11 @@ from tests.benchmark.pages import FAMILIES, Case, cases
 from tests.benchmark.run import Result, read
 
 HEAD = (
-    f"{'family':<22}{'pages':>6}{'median':>8}{'p10':>7}{'names':>7}{'gain err':>9}{'shift':>8}"
-    f"{'R,S ok':>8}{'wrong':>7}{'refused':>8}{'s/page':>8}{'ratio':>7}{'MB':>6}"
+    f"{'family':<22}{'pages':>6}{'median':>8}{'p10':>7}{'limit':>7}{'p10':>7}{'names':>7}{'gain err':>9}{'shift':>8}"
+    f"{'R,S ok':>8}{'wrong':>7}{'refused':>8}{'cpu s':>8}{'ratio':>7}{'MB':>6}"
 )
 UNITS = (
-    f"{'':<22}{'':>6}{'dB':>8}{'dB':>7}{'right':>7}{'median':>9}{'ms':>8}"
+    f"{'':<22}{'':>6}{'dB':>8}{'dB':>7}{'dB':>7}{'dB':>7}{'right':>7}{'median':>9}{'ms':>8}"
     f"{'':>8}{'unsaid':>7}{'':>8}{'median':>8}{'':>7}{'max':>6}"
 )
 
@@ -29,6 +29,7 @@ def main() -> None:
     parser.add_argument("--only", type=int, help="at most so many pages of each family")
     parser.add_argument("--save", type=Path, help="folder for pictures: truth red, reading blue")
     parser.add_argument("--jobs", type=int, default=1, help="pages read at the same time")
+    parser.add_argument("--limit", action="store_true", help="what the pen fit alone could reach")
     parser.add_argument("--apart", action="store_true", help="a fresh process for every page")
     parser.add_argument("--worst", type=int, default=10, help="how many of the worst to name")
     options = parser.parse_args()
@@ -51,7 +52,7 @@ def main() -> None:
 
 
 def _results(todo: list[Case], options: argparse.Namespace) -> Iterator[Result]:
-    work = partial(read, save=options.save)
+    work = partial(read, save=options.save, with_limit=options.limit)
     if options.jobs == 1 and not options.apart:
         yield from map(work, todo)
         return
@@ -68,6 +69,7 @@ def _row(name: str, group: list[Result]) -> str:
     read = [lead for lead in leads if lead.read_share > 0]
     gain = np.median([abs(lead.gain_error) for lead in read]) if read else np.nan
     shift = 1e3 * np.median([abs(lead.shift_s) for lead in read]) if read else np.nan
+    best = np.array([db for result in group for db in result.limit_db] or [np.nan])
     names = np.mean([r.score.names_right for r in group])
     amplitudes = np.mean([lead.amplitudes_right for lead in leads])
     unsaid = sum(bool(r.score.unflagged) for r in group)
@@ -76,6 +78,7 @@ def _row(name: str, group: list[Result]) -> str:
     peak_mb = max(r.peak_mb for r in group)
     return (
         f"{name:<22}{len(group):>6}{np.median(snr):>8.1f}{np.percentile(snr, 10):>7.1f}"
+        f"{np.median(best):>7.1f}{np.percentile(best, 10):>7.1f}"
         f"{names:>7.0%}{gain:>9.2%}{shift:>8.1f}{amplitudes:>8.0%}{unsaid:>7}{refused:>8}"
         f"{seconds:>8.2f}{ratio:>7.1f}{peak_mb:>6.0f}"
     )

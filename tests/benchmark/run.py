@@ -15,6 +15,7 @@ from PIL import Image
 
 from digitize.errors import InputError
 from digitize.tracing import Panel, Tracing
+from tests.benchmark.limit import limit
 from tests.benchmark.pages import Case
 from tests.benchmark.score import PageScore, score_page
 from tests.drawn.composition import PanelTruth
@@ -31,10 +32,11 @@ class Result:
     family: str
     source: str
     score: PageScore
-    seconds: float
+    seconds: float  # of processor time, so that other programs do not count
     ratio: float  # to decoding the file and making it grey
     peak_mb: float
     error: str | None  # why there is no tracing
+    limit_db: tuple[float, ...] = ()  # what the pen fit alone reaches, panel by panel
 
     @property
     def median_db(self) -> float:
@@ -64,24 +66,27 @@ def drawn(case: Case) -> tuple[Path, PageTruth]:
     return path, pickle.loads(kept.read_bytes())
 
 
-def read(case: Case, save: Path | None = None) -> Result:
-    """Return the result of reading one page."""
+def read(case: Case, save: Path | None = None, *, with_limit: bool = False) -> Result:
+    """Return the result of reading one page; with a picture in the folder `save`."""
     import digitize  # here, so that drawing alone needs no reader
 
     path, truth = drawn(case)
     tracing, error = None, None
-    start = time.perf_counter()
+    start = time.process_time()
     try:
         tracing = next(iter(digitize.read_pages(path)))
     except InputError as refused:
         error = str(refused)
-    seconds = time.perf_counter() - start
+    seconds = time.process_time() - start
     peak_mb = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
     score = score_page(truth, tracing)
     if save is not None:
         _draw_over(path, truth, tracing, save / f"{path.stem}.png")
     ratio = seconds / _decode_seconds(path)
-    return Result(case.name, case.family, case.source, score, seconds, ratio, peak_mb, error)
+    best: tuple[float, ...] = ()
+    if with_limit and case.family != "vector pdf":  # paths have no pen to fit
+        best = tuple(lead.snr_db for lead in limit(case.recording(), case.spec))
+    return Result(case.name, case.family, case.source, score, seconds, ratio, peak_mb, error, best)
 
 
 def _maker_hash() -> str:
@@ -93,9 +98,9 @@ def _maker_hash() -> str:
 
 def _decode_seconds(path: Path) -> float:
     """Time to decode the file and make it grey once."""
-    start = time.perf_counter()
+    start = time.process_time()
     cv2.cvtColor(_picture(path), cv2.COLOR_RGB2GRAY)
-    return time.perf_counter() - start
+    return time.process_time() - start
 
 
 def _picture(path: Path, wide_px: int = 0) -> np.ndarray:

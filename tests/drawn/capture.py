@@ -31,6 +31,12 @@ class CaptureMap:
     photo: PhotoSpec | None
     size_px: tuple[int, int]  # across, down
 
+    @property
+    def extent_mm(self) -> tuple[float, float, float, float]:
+        """Left, top, right and bottom edge of the sheet."""
+        left, top = -self.paper.offset_mm[0], -self.paper.offset_mm[1]
+        return left, top, left + self.paper.size_mm[0], top + self.paper.size_mm[1]
+
     def to_px(self, x_mm: np.ndarray, y_mm: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Pixel coordinates (x, y) of places on the paper."""
         x_mm, y_mm = np.asarray(x_mm, float), np.asarray(y_mm, float)

@@ -59,8 +59,12 @@ class DrawnPage:
 
 def draw_page(recording: Recording, spec: PageSpec) -> DrawnPage:
     """Return the page of a recording under a specification; the same pixels every time."""
+    return draw_composition(recording, compose(recording, spec), spec)
+
+
+def draw_composition(recording: Recording, composition: Composition, spec: PageSpec) -> DrawnPage:
+    """Return the page of what was composed by hand; `spec.layout` names it, no more."""
     rng = np.random.default_rng([spec.seed, 2])
-    composition = compose(recording, spec)
     capture = spec.capture
     if capture.photo is None:
         page_map = scan_map(capture, spec.paper)

@@ -24,7 +24,7 @@ def light_up(
     down, across = np.ogrid[-1 : 1 : high * 1j, -1 : 1 : wide * 1j]
     angle = rng.uniform(0, 2 * np.pi)
     slope = (np.cos(angle) * across + np.sin(angle) * down) / np.sqrt(2)
-    lamp = 1 - photo.shade * (0.5 + 0.5 * slope) - 0.12 * (across**2 + down**2) / 2
+    lamp = 1 - photo.shade * (0.5 + 0.5 * slope) - photo.corners * (across**2 + down**2) / 2
     if photo.shadow:
         edge = rng.uniform(-0.5, 0.5)
         turn = rng.uniform(0, 2 * np.pi)

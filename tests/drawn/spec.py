@@ -89,6 +89,7 @@ class PhotoSpec:
     curl_waves: float = 0.7  # waves over the page
     fold_mm: float = 0.0  # height of a middle fold
     shade: float = 0.3  # loss of light towards one side
+    corners: float = 0.12  # loss of light in the corners
     shadow: float = 0.0  # depth of a hard shadow
     cast: tuple[float, float, float] = (1.0, 0.96, 0.88)
     motion_px: float = 0.0
