@@ -13,12 +13,12 @@ from tests.benchmark.pages import FAMILIES, Case, cases
 from tests.benchmark.run import Result, read
 
 HEAD = (
-    f"{'family':<22}{'pages':>6}{'median':>8}{'p10':>7}{'limit':>7}{'p10':>7}{'names':>7}{'gain err':>9}{'shift':>8}"
-    f"{'R,S ok':>8}{'wrong':>7}{'refused':>8}{'cpu s':>8}{'ratio':>7}{'MB':>6}"
+    f"{'family':<22}{'pages':>6}{'median':>8}{'p10':>7}{'limit':>7}{'p10':>7}{'names':>7}"
+    f"{'gain err':>9}{'shift':>8}{'R,S ok':>8}{'wrong':>7}{'refused':>8}{'cpu s':>8}{'ratio':>7}{'MB':>6}"
 )
 UNITS = (
-    f"{'':<22}{'':>6}{'dB':>8}{'dB':>7}{'dB':>7}{'dB':>7}{'right':>7}{'median':>9}{'ms':>8}"
-    f"{'':>8}{'unsaid':>7}{'':>8}{'median':>8}{'':>7}{'max':>6}"
+    f"{'':<22}{'':>6}{'dB':>8}{'dB':>7}{'dB':>7}{'dB':>7}{'right':>7}"
+    f"{'median':>9}{'ms':>8}{'':>8}{'unsaid':>7}{'':>8}{'median':>8}{'':>7}{'max':>6}"
 )
 
 
