@@ -151,6 +151,14 @@ def headline(comparison: Comparison) -> tuple[str, ...]:
     return tuple(lines)
 
 
+def verdict_text(change: Change) -> str:
+    """The verdict in words that fit the quantity: an axis turns, a time grows or shrinks."""
+    if change.difference.unit != "deg":
+        return change.verdict
+    turned = {"larger": "turned to the right", "smaller": "turned to the left"}
+    return turned.get(change.verdict, change.verdict)
+
+
 def comparison_json(comparison: Comparison) -> bytes:
     """The content of NAME.compare.json; its form is in `schema/compare.schema.json`."""
     return json_lines(

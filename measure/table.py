@@ -7,7 +7,7 @@ from rich.table import Table
 from rich.text import Text
 
 from digitize.tracing import LEADS
-from measure.compare import Comparison, headline
+from measure.compare import Comparison, headline, verdict_text
 from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
 from measure.reading import Reading
 from measure.reference import usual
@@ -42,7 +42,9 @@ def print_comparison(comparison: Comparison, console: Console) -> None:
     table = _plain_table("", *(s.date or s.name for s in comparison.sides), "difference", "")
     for change in comparison.changes:
         values = [number(s.intervals[change.key]) for s in comparison.sides]
-        table.add_row(labels[change.key].label, *values, number(change.difference), change.verdict)
+        table.add_row(
+            labels[change.key].label, *values, number(change.difference), verdict_text(change)
+        )
     console.print(table)
     console.print(_lines(comparison.cautions))
     console.print(Text(f"{NOTICE} {ONE_SE}", style="bold"))

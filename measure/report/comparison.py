@@ -7,7 +7,7 @@ from html import escape
 
 import numpy as np
 
-from measure.compare import BlockChange, Change, Comparison, Side, headline
+from measure.compare import BlockChange, Change, Comparison, Side, headline, verdict_text
 from measure.quantity import Quantity
 from measure.reference import usual
 from measure.report.beats import CELL_MM, GAP_MM, GRID, GRID_5, GROUPS, INK, LABEL_MM, SPEED_MM_S
@@ -69,7 +69,7 @@ def _changes(changes: Iterable[Change]) -> str:
             "<tr>"
             + "".join(f"<td>{escape(cell)}</td>" for cell in cells)
             + f"<td>{escape(_signed(change.difference))}</td>"
-            + f'<td class="{"off" if sure else ""}">{escape(change.verdict)}</td></tr>'
+            + f'<td class="{"off" if sure else ""}">{escape(verdict_text(change))}</td></tr>'
         )
     note = '<p class="small">A change counts beyond twice the joint standard error.</p>'
     return table(("", "before", "now", "difference", ""), rows) + note

@@ -6,7 +6,7 @@ from importlib import resources
 import jsonschema
 import pytest
 
-from measure.compare import compare, comparison_json, headline, side
+from measure.compare import compare, comparison_json, headline, side, verdict_text
 from measure.quantity import Quantity, missing
 from measure.reading_files import document
 from measure.report import comparison_page
@@ -68,7 +68,9 @@ def test_qrs_change_beyond_twice_the_joint_error(qrs_ms, verdict):
 )
 def test_axis_shift_goes_the_short_way_round(before, after, shift):
     sides = [of(qrs_axis_deg=Quantity(float(a), 2.0, "deg")) for a in (before, after)]
-    assert change(compare(sides), "qrs_axis_deg").difference.value == pytest.approx(shift)
+    found = change(compare(sides), "qrs_axis_deg")
+    assert found.difference.value == pytest.approx(shift)
+    assert verdict_text(found) == f"turned to the {'right' if shift > 0 else 'left'}"
 
 
 def test_missing_value_is_not_comparable_and_says_where():
