@@ -62,6 +62,7 @@ def read_files(
             continue
         try:
             for stages in read_stages(file, options, on_error=fail, on_stage=console.stage):
+                console.stage("files")
                 try:
                     stem = _write(
                         stages, file.parent if folder is None else folder, written, replace

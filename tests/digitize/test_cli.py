@@ -117,6 +117,7 @@ def test_timings_go_to_stderr(chart):
     result = run(chart, "--timings")
     assert result.stderr.startswith("chart, seconds: page 0.")
     assert "grid 0." in result.stderr
+    assert "files " in result.stderr
     assert "seconds" not in result.stdout
 
 
