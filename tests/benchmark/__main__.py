@@ -14,7 +14,8 @@ from tests.benchmark.run import Result, read
 
 HEAD = (
     f"{'family':<22}{'pages':>6}{'median':>8}{'p10':>7}{'limit':>7}{'p10':>7}{'names':>7}"
-    f"{'gain err':>9}{'shift':>8}{'R,S ok':>8}{'wrong':>7}{'refused':>8}{'cpu s':>8}{'ratio':>7}{'MB':>6}"
+    f"{'gain err':>9}{'shift':>8}{'R,S ok':>8}{'wrong':>7}{'refused':>8}"
+    f"{'cpu s':>8}{'ratio':>7}{'MB':>6}"
 )
 UNITS = (
     f"{'':<22}{'':>6}{'dB':>8}{'dB':>7}{'dB':>7}{'dB':>7}{'right':>7}"
