@@ -1,10 +1,11 @@
 """The way of every trace on the page, so that no two need the same ink and none is left over.
 
-Each panel's path is searched alone at first. Where two paths run along the same ink, one of them
-took a short cut: each is searched again while the ink on the other's path may be crossed but not
-followed. Ink that then belongs to nobody is offered to the traces about it. In columns where the
-ink of two traces has run together, each keeps what lies about its own path; open ends of the run
-belong to the path that is nearest to them.
+Where every trace is plain to see its path is anchored. In between, each panel's path is searched
+alone at first; where two then run along the same ink, one of them took a short cut, and each is
+searched again while the ink on the other's path may be crossed but not followed. Ink that then
+belongs to nobody is offered to the traces about it. In columns where the ink of two traces has run
+together, each keeps what lies about its own path; open ends of the run belong to the path that is
+nearest to them.
 """
 
 from dataclasses import dataclass
@@ -12,18 +13,17 @@ from dataclasses import dataclass
 import cv2
 import numpy as np
 
+from digitize.anchors import find_anchors
+from digitize.field import INKED, Field, Path, to_field, walk
 from digitize.ink import Ink
 from digitize.layout import Box, Layout, PanelPlace
-from digitize.leftover import Path, adopt
-from digitize.path import cheapest_path, run_at, sharp_edges
+from digitize.leftover import adopt
+from digitize.path import run_at, sharp_edges
 
 _REACH_MM = 45.0  # a trace may stray so far from its usual height: 4.5 mV at 10 mm/mV
-_PX_PER_MM = 6.0  # two pixels across the thinnest common pen are enough for a path
-_FAINT, _FULL = 0.15, 0.6  # densities of bare paper and of certain ink
 _ENTRY_PER_MM = 0.05  # price of starting away from the usual height of the trace
 _ENTRY_FREE_MM = 5.0
-_ASTRAY_PER_MM = 2e-3 / 6  # price of going on a millimetre, for each millimetre off that height
-_TAKEN = 0.7  # price of following the ink of another trace, as a share of bare paper's
+_ASTRAY_PER_MM = 2e-3 / 6  # bareness for each millimetre off that height
 _HALF_PEN_MM = 0.25  # ink about a path that is surely its own
 _SHORT_MM = 1.5  # a run of ink that stands out so little from its path holds no peak of its own
 _SWEEPS = 2
@@ -46,19 +46,16 @@ class Way:
 
 def find_ways(ink: Ink, layout: Layout) -> tuple[Way, ...]:
     """Find the way of each panel's trace, in the order of `layout.panels`."""
-    factor = max(int(ink.raster.px_per_mm // _PX_PER_MM), 1)
-    px_per_mm = ink.raster.px_per_mm / factor
+    panels = layout.panels
     clear = without_printing(ink, layout.words + layout.marks)
-    rows, cols = (n // factor for n in clear.shape)
-    coarse = cv2.resize(
-        clear[: rows * factor, : cols * factor], (cols, rows), interpolation=cv2.INTER_AREA
-    )
-    bare = 1 - np.clip((coarse - _FAINT) / (_FULL - _FAINT), 0, 1)
-    paths = _apart(bare, [_search(bare, bare, p, ink, factor) for p in layout.panels], layout, ink)
-    claimed = _claimed(paths, coarse, px_per_mm)
-    paths = adopt(bare, claimed, paths, round(_REACH_MM * px_per_mm), px_per_mm)
-    fine = [_enlarge(q, factor, p, ink) for q, p in zip(paths, layout.panels, strict=True)]
-    return tuple(_way(k, fine, clear, ink.raster.px_per_mm, factor) for k in range(len(fine)))
+    field = to_field(clear, ink.raster)
+    anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
+    paths = [_search(field, p, a) for p, a in zip(panels, anchors, strict=True)]
+    paths = _apart(field, paths, panels, anchors)
+    paths = adopt(field, _claimed(field, paths), paths, anchors)
+    fine = [_enlarge(q, field, p, ink) for q, p in zip(paths, panels, strict=True)]
+    slack = round(ink.raster.px_per_mm / field.px_per_mm)
+    return tuple(_way(k, fine, clear, ink.raster.px_per_mm, slack) for k in range(len(fine)))
 
 
 def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
@@ -81,37 +78,35 @@ def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
     return clear
 
 
-def _search(bare: np.ndarray, ahead: np.ndarray, panel: PanelPlace, ink: Ink, factor: int) -> Path:
-    raster, px = ink.raster, ink.raster.px_per_mm / factor
-    top = max(int(raster.row(panel.baseline_mm - _REACH_MM) / factor), 0)
-    bottom = min(int(raster.row(panel.baseline_mm + _REACH_MM) / factor) + 1, bare.shape[0])
-    left = max(int(raster.col(panel.box.left_mm) / factor), 0)
-    right = min(int(raster.col(panel.box.right_mm) / factor) + 1, bare.shape[1])
-    y_mm = raster.y_mm((np.arange(top, bottom) + 0.5) * factor - 0.5)
-    off_mm = np.abs(y_mm - panel.baseline_mm)
+def _search(
+    field: Field, panel: PanelPlace, anchor: np.ndarray, others: tuple[Path, ...] = ()
+) -> Path:
+    """Path of one panel from its left to its right edge."""
+    reach_mm = panel.baseline_mm - _REACH_MM, panel.baseline_mm + _REACH_MM
+    top, bottom = np.searchsorted(field.y_mm, reach_mm)
+    left, right = np.searchsorted(field.x_mm, (panel.box.left_mm, panel.box.right_mm))
+    left, right = max(int(left) - 1, 0), min(int(right) + 1, len(field.x_mm))
+    off_mm = np.abs(field.y_mm[top:bottom] - panel.baseline_mm)
     entry = _ENTRY_PER_MM * np.maximum(off_mm - _ENTRY_FREE_MM, 0)
-    cut = slice(top, bottom), slice(left, right)
-    price = np.ascontiguousarray(bare[cut])
-    onward = ahead[cut] + np.float32(_ASTRAY_PER_MM) * off_mm.astype(np.float32)[:, None]
-    span, _ = cheapest_path(price, onward, entry, entry, px)
-    return Path(left, span + top)
+    rows, cols = (int(top), int(bottom)), (left, right)
+    astray = _ASTRAY_PER_MM * off_mm
+    return walk(field, rows, cols, anchor, (entry, entry), others=others, extra=astray)[0]
 
 
-def _apart(bare: np.ndarray, paths: list[Path], layout: Layout, ink: Ink) -> list[Path]:
+def _apart(
+    field: Field,
+    paths: list[Path],
+    panels: tuple[PanelPlace, ...],
+    anchors: list[np.ndarray],
+) -> list[Path]:
     """Paths searched again until none follows another's ink, or twice."""
-    factor = max(int(ink.raster.px_per_mm // _PX_PER_MM), 1)
-    half = round(_HALF_PEN_MM * ink.raster.px_per_mm / factor)
+    half = round(_HALF_PEN_MM * field.px_per_mm)
     paths = list(paths)
     for _ in range(_SWEEPS):
         again = [k for k in range(len(paths)) if _overlap(k, paths, half)]
         for k in again:
-            taken = bare.copy()
-            for other in paths[:k] + paths[k + 1 :]:
-                row = np.arange(len(bare))[:, None]
-                on = (row >= other.span[0] - half) & (row <= other.span[1] + half)
-                part = taken[:, other.left : other.right]
-                part[on] = np.maximum(part[on], _TAKEN)
-            paths[k] = _search(bare, taken, layout.panels[k], ink, factor)
+            others = tuple(paths[:k] + paths[k + 1 :])
+            paths[k] = _search(field, panels[k], anchors[k], others)
         if not again:
             break
     return paths
@@ -130,26 +125,32 @@ def _overlap(k: int, paths: list[Path], half: int) -> bool:
     return False
 
 
-def _claimed(paths: list[Path], density: np.ndarray, px_per_mm: float) -> np.ndarray:
+def _claimed(field: Field, paths: list[Path]) -> np.ndarray:
     """Ink that the paths explain: about each path, and the run that it lies in if that is short."""
+    density, half = 1 - field.bare, _HALF_PEN_MM * field.px_per_mm
     claimed = np.zeros(density.shape, bool)
     row = np.arange(len(density))[:, None]
     for path in paths:
         ink = np.ascontiguousarray(density[:, path.left : path.right])
-        run = run_at(ink, path.span, _FAINT, 1)
-        short = (run[0] >= 0) & (np.diff(run - path.span, axis=0)[0] < _SHORT_MM * px_per_mm)
-        low = np.where(short, run[0], path.span[0] - _HALF_PEN_MM * px_per_mm)
-        high = np.where(short, run[1], path.span[1] + _HALF_PEN_MM * px_per_mm)
+        run = run_at(ink, path.span, 0.1, 1)
+        beyond = np.diff(run - path.span, axis=0)[0]
+        short = (run[0] >= 0) & (beyond < _SHORT_MM * field.px_per_mm)
+        low = np.where(short, run[0], path.span[0] - half)
+        high = np.where(short, run[1], path.span[1] + half)
         claimed[:, path.left : path.right] |= (row >= low - 1) & (row <= high + 1)
     return claimed
 
 
-def _enlarge(path: Path, factor: int, panel: PanelPlace, ink: Ink) -> Path:
+def _enlarge(path: Path, field: Field, panel: PanelPlace, ink: Ink) -> Path:
     """A coarse path in rows and columns of the ink's raster, from edge to edge of the panel."""
     first = max(int(np.ceil(ink.raster.col(panel.box.left_mm))), 0)
     last = min(int(ink.raster.col(panel.box.right_mm)), ink.density.shape[1] - 1)
-    at = np.clip(np.arange(first, last + 1) // factor - path.left, 0, path.span.shape[1] - 1)
-    return Path(first, np.stack([path.span[0, at] * factor, (path.span[1, at] + 1) * factor - 1]))
+    x_mm = ink.raster.x_mm(np.arange(first, last + 1))
+    step_mm = field.x_mm[1] - field.x_mm[0]
+    at = np.rint((x_mm - field.x_mm[0]) / step_mm).astype(int) - path.left
+    span = path.span[:, np.clip(at, 0, path.span.shape[1] - 1)]
+    scale = len(ink.density) / len(field.y_mm)
+    return Path(first, np.stack([(span[0] * scale), (span[1] + 1) * scale - 1]).astype(np.int64))
 
 
 def _way(k: int, paths: list[Path], density: np.ndarray, px_per_mm: float, slack: int) -> Way:
