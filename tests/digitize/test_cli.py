@@ -5,9 +5,9 @@ words; pages are opened as they are in use.
 """
 
 import json
+import resource
 import subprocess
 import sys
-import time
 from dataclasses import replace
 
 import numpy as np
@@ -243,13 +243,12 @@ def test_the_start_is_light():
 
 def test_version_comes_quickly():
     words = [sys.executable, "-c", "from digitize.cli import main; main()", "--version"]
-    seconds = []
-    for _ in range(3):
-        start = time.perf_counter()
-        done = subprocess.run(words, capture_output=True, text=True, check=True)
-        seconds.append(time.perf_counter() - start)
+    before = resource.getrusage(resource.RUSAGE_CHILDREN)
+    done = subprocess.run(words, capture_output=True, text=True, check=True)
+    after = resource.getrusage(resource.RUSAGE_CHILDREN)
     assert done.stdout == f"digitize {digitize.program_version()}\n"
-    assert min(seconds) < 0.7
+    # processor time: what a person waits on an idle machine, whatever else runs here
+    assert after.ru_utime + after.ru_stime - before.ru_utime - before.ru_stime < 0.7
 
 
 def test_help_carries_the_caution():
