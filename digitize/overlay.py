@@ -21,7 +21,7 @@ from digitize.pages import Page
 from digitize.tracing import Known, Panel, Tracing
 
 LONG_SIDE_PX = 2400  # of the whole picture
-SMALLEST_PX = 1500  # a smaller page is enlarged to this, for the words on it to be legible
+SMALLEST_PX = 2000  # a smaller page is enlarged to this: the line must be thinner than the pen
 FOOTER_PX = 330  # kept free below the page
 DOUBT_MV = 0.1  # a standard error of more than this, or than a tenth of the panel's voltage
 DOUBT_SHARE = 0.1
@@ -209,6 +209,7 @@ def _draw_words(image: Image.Image, page_map: PageMap, tracing: Tracing, scale: 
         name += {"assumed": " ?", "given": " (given)"}.get(panel.lead_source, "")
         # On the upper edge of the panel: the page's own label mostly stands just below it.
         corner = _place(page_map, panel.box_mm[0] + 1.2, panel.box_mm[1] + 1.5, scale)
+        corner = corner[0], max(corner[1], draw.textbbox((0, 0), name, font=font)[3] + 6.0)
         box = draw.textbbox(corner, name, font=font, anchor="lb")
         colour = ORANGE if panel.lead_source == "assumed" else BLUE
         start = _first_read(panel, fact)
