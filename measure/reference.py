@@ -54,7 +54,7 @@ class Usual:
 def usual(sex: str | None) -> Mapping[str, Usual]:
     """Ranges by key of the interval; those of QTc follow the sex, the narrower where unknown."""
     qtc_ms = 460.0 if sex == "female" else 450.0
-    who = {"female": "women", "male": "men"}.get(sex or "", "men; 460 in women")
+    who = {"female": "women", "male": "men"}.get(sex or "", "men; women 460")
     qtc = {
         f"qtc_{name}_ms": (f"QTc {title}", None, qtc_ms, "ms", f"{PART_IV}, {who}", True)
         for name, title in (

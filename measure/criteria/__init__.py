@@ -20,7 +20,7 @@ from measure.criteria import (
     voltage,
 )
 from measure.criteria.case import Case
-from measure.criteria.decide import as_look, some
+from measure.criteria.decide import OVERALL, as_look, some, unseen
 from measure.criteria.finding import Finding
 from measure.quantity import Quantity
 from measure.rhythm import Rhythm
@@ -65,6 +65,8 @@ def judge(
     complete = [f for f in definitions if f.key != "lbbb_aha_incomplete"]
     right = rbbb.judge(case, precondition)
     left_block = some(as_look(f) for f in complete)
+    if left_block.result == "undecided":
+        left_block = unseen(OVERALL, "whether left bundle branch block is there")
     findings = (
         *left,
         *right,

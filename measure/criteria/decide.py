@@ -21,11 +21,26 @@ OVERALL = "overall"  # stands for the lead where a value belongs to all leads to
 
 @dataclass(frozen=True)
 class Look:
-    """What one look at one lead or value gave: a result, its evidence, what would settle it."""
+    """What one look at one lead or value gave: a result, its evidence, and what is open.
+
+    `open` holds pairs of a lead and what would settle it there.
+    """
 
     result: Result
     evidence: tuple[Evidence, ...] = ()
-    settle: str | None = None
+    open: tuple[tuple[str, str], ...] = ()
+
+    @property
+    def settle(self) -> str | None:
+        """What would settle it in words, each reason once with all its leads."""
+        leads: dict[str, list[str]] = {}
+        for lead, reason in self.open:
+            leads.setdefault(reason, []).append(lead)
+        parts = [
+            reason if OVERALL in names else f"{', '.join(dict.fromkeys(names))}: {reason}"
+            for reason, names in leads.items()
+        ]
+        return "; ".join(parts) or None
 
 
 @dataclass(frozen=True)
@@ -61,12 +76,12 @@ def look_at(
         return unseen(lead, f"{what}: {quantity.reason}")
     result = limit.judge(quantity.value, quantity.se)
     seen = Evidence(lead, what, quantity.value, quantity.se, quantity.unit, str(limit), time_ms)
-    return Look(result, (seen,), _close_call(seen) if result == "undecided" else None)
+    return Look(result, (seen,), ((lead, _close_call(seen)),) if result == "undecided" else ())
 
 
 def unseen(lead: str, reason: str) -> Look:
     """An undecided look where nothing could be measured."""
-    return Look("undecided", (), reason if lead == OVERALL else f"{lead}: {reason}")
+    return Look("undecided", (), ((lead, reason),))
 
 
 def every(looks: Iterable[Look]) -> Look:
@@ -86,7 +101,7 @@ def at_least(count: int, looks: Iterable[Look]) -> Look:
     met = sum(look.result == "met" for look in looks)
     possible = met + sum(look.result == "undecided" for look in looks)
     result: Result = "met" if met >= count else "undecided" if possible >= count else "not met"
-    return Look(result, _evidence(looks), _settle(looks) if result == "undecided" else None)
+    return Look(result, _evidence(looks), _open(looks) if result == "undecided" else ())
 
 
 def reverse(look: Look) -> Look:
@@ -101,17 +116,15 @@ def by_sex(sex: str | None, *, male: Look, female: Look) -> Look:
         return male if sex == "male" else female
     evidence = tuple(dict.fromkeys(male.evidence + female.evidence))
     if male.result == female.result:
-        return Look(male.result, evidence, male.settle)
-    return Look(
-        "undecided",
-        evidence,
-        f"the patient's sex: {female.result} for a woman, {male.result} for a man",
-    )
+        return Look(male.result, evidence, male.open)
+    why = f"the patient's sex: {female.result} for a woman, {male.result} for a man"
+    return Look("undecided", evidence, ((OVERALL, why),))
 
 
 def clause(text: str, look: Look, *, required: bool = True) -> Clause:
     """One clause of a definition from what was seen."""
-    return Clause(text, look.result, look.evidence, look.settle, required)
+    settle = look.settle if look.result == "undecided" else None
+    return Clause(text, look.result, look.evidence, settle, required)
 
 
 def finding(
@@ -129,24 +142,21 @@ def finding(
 
 def as_look(other: Finding) -> Look:
     """A finding used as a clause of another: its result, without repeating its evidence."""
-    settle = f"whether the criteria of {other.definition} are met"
-    return Look(other.result, (), settle if other.result == "undecided" else None)
+    if other.result != "undecided":
+        return Look(other.result)
+    return unseen(OVERALL, f"whether the criteria of {other.definition} are met")
 
 
 def _close_call(seen: Evidence) -> str:
-    number = f"{seen.value:.{2 if seen.unit == 'mV' else 0}f}"
-    error = f"{seen.se:.{2 if seen.unit == 'mV' else 0}f}"
-    place = "" if seen.lead == OVERALL else f"{seen.lead}: "
-    return (
-        f"{place}{seen.what} {number} ± {error} {seen.unit} is too close to "
-        f"{seen.threshold}; measure it by hand or on a sharper copy"
-    )
+    places = 2 if seen.unit == "mV" else 0
+    number = f"{seen.value:.{places}f} ± {seen.se:.{places}f} {seen.unit}".rstrip()
+    return f"measure by hand: {seen.what} {number} is too close to {seen.threshold}"
 
 
 def _evidence(looks: tuple[Look, ...]) -> tuple[Evidence, ...]:
     return tuple(dict.fromkeys(seen for look in looks for seen in look.evidence))
 
 
-def _settle(looks: tuple[Look, ...]) -> str | None:
-    open_ends = [look.settle for look in looks if look.result == "undecided" and look.settle]
-    return "; ".join(dict.fromkeys(open_ends)) or None
+def _open(looks: tuple[Look, ...]) -> tuple[tuple[str, str], ...]:
+    pairs = (pair for look in looks if look.result == "undecided" for pair in look.open)
+    return tuple(dict.fromkeys(pairs))

@@ -3,7 +3,17 @@
 from collections.abc import Iterable
 
 from measure.criteria.case import Case
-from measure.criteria.decide import Limit, Look, as_look, clause, finding, reverse, some
+from measure.criteria.decide import (
+    OVERALL,
+    Limit,
+    Look,
+    as_look,
+    clause,
+    finding,
+    reverse,
+    some,
+    unseen,
+)
 from measure.criteria.finding import Clause, Finding
 from measure.criteria.lbbb import AHA
 
@@ -24,11 +34,15 @@ def judge(
         [
             precondition,
             clause("QRS > 110 ms", wide),
-            clause("left bundle branch block by none of the definitions", _none_of(left)),
-            clause("right bundle branch block not there", _none_of(right)),
+            clause(
+                "left bundle branch block by none of the definitions",
+                _none_of(left, "a left block"),
+            ),
+            clause("right bundle branch block not there", _none_of(right, "a right block")),
         ],
     )
 
 
-def _none_of(blocks: Iterable[Finding]) -> Look:
-    return reverse(some(as_look(block) for block in blocks))
+def _none_of(blocks: Iterable[Finding], name: str) -> Look:
+    found = reverse(some(as_look(block) for block in blocks))
+    return unseen(OVERALL, f"whether {name} is there") if found.result == "undecided" else found

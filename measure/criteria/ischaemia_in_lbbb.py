@@ -1,13 +1,14 @@
 """Signs of acute ischaemia within left bundle branch block, original and modified.
 
-ST is taken at the J point, and each sign is shown in the lead where it is strongest.
+ST is taken at the J point.
 """
 
 from collections.abc import Callable
+from dataclasses import replace
 
 from measure.criteria import shape
 from measure.criteria.case import Case
-from measure.criteria.decide import Limit, Look, clause, every, finding, look_at, some
+from measure.criteria.decide import Limit, Look, clause, every, finding, look_at, some, unseen
 from measure.criteria.finding import Finding
 from measure.quantity import Quantity
 from measure.waves import LeadWaves
@@ -22,10 +23,10 @@ NOTE = "A negative result does not exclude infarction; compare older ECGs, and t
 def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
     """The original score and the modified rule, only where left bundle branch block is there."""
     present = clause("left bundle branch block by one of the definitions", lbbb)
-    concordant = some(_over_leads(case, tuple(case.waves), _concordant_elevation))
-    depression = some(_over_leads(case, ("V1", "V2", "V3"), _depression))
-    excessive = some(_over_leads(case, tuple(case.waves), _discordant_elevation))
-    out_of_proportion = some(_over_leads(case, tuple(case.waves), _out_of_proportion))
+    concordant = _in_any(case, tuple(case.waves), _concordant_elevation)
+    depression = _in_any(case, ("V1", "V2", "V3"), _depression)
+    excessive = _in_any(case, tuple(case.waves), _discordant_elevation)
+    out_of_proportion = _in_any(case, tuple(case.waves), _out_of_proportion)
     texts = (
         clause("ST up 1 mm or more with the QRS, in any lead", concordant, required=False),
         clause("ST down 1 mm or more in V1, V2 or V3", depression, required=False),
@@ -61,10 +62,12 @@ def judge(case: Case, lbbb: Look) -> tuple[Finding, ...]:
     )
 
 
-def _over_leads(
-    case: Case, leads: tuple[str, ...], judge: Callable[[LeadWaves], Look]
-) -> tuple[Look, ...]:
-    return case.in_leads(leads, judge)
+def _in_any(case: Case, leads: tuple[str, ...], judge: Callable[[LeadWaves], Look]) -> Look:
+    """One lead with the sign is enough; shown are the leads that decide, none where none does."""
+    looks = case.in_leads(leads, judge)
+    found = some(looks)
+    telling = tuple(look for look in looks if look.result == found.result != "not met")
+    return replace(found, evidence=tuple(e for look in telling for e in look.evidence))
 
 
 def _score(concordant: Look, depression: Look, excessive: Look) -> Look:
@@ -75,8 +78,7 @@ def _score(concordant: Look, depression: Look, excessive: Look) -> Look:
     if sure >= POSITIVE_POINTS:
         return Look("met")
     if sure + open_points >= POSITIVE_POINTS:
-        settle = "; ".join(look.settle for look in looks.values() if look.settle)
-        return Look("undecided", (), settle or None)
+        return _bare(some(looks.values()))
     return Look("not met")
 
 
@@ -97,7 +99,7 @@ def _out_of_proportion(waves: LeadWaves) -> Look:
     deepest = min(waves.deflections, key=lambda d: d.amplitude_mv, default=None)
     st = waves.st_mv[0]
     if not st.known:
-        return Look("undecided", (), f"{waves.lead}: ST: {st.reason}")
+        return unseen(waves.lead, f"ST: {st.reason}")
     if deepest is None or deepest.amplitude_mv >= 0:
         return shape.described("not met", waves, "an S")
     ratio = st.value / deepest.amplitude_mv
@@ -123,4 +125,4 @@ def _st(waves: LeadWaves, limit: Limit) -> Look:
 
 def _bare(look: Look) -> Look:
     """Without the evidence, which the clauses above show already."""
-    return Look(look.result, (), look.settle)
+    return Look(look.result, (), look.open)

@@ -78,8 +78,8 @@ def _agree(case: Case, by_formula: dict[str, Quantity]) -> Look:
     all_long, any_long = every(looks), some(looks)
     if all_long.result == any_long.result:
         return all_long
-    settle = any_long.settle or "the four corrections disagree; judge by one, or at a rate near 60"
-    return Look("undecided", all_long.evidence, settle)
+    disagree = "the four corrections disagree: judge by one, or at a rate near 60"
+    return Look("undecided", all_long.evidence, any_long.open or ((OVERALL, disagree),))
 
 
 def _long(name: str, qtc: Quantity, limit_ms: float) -> Look:

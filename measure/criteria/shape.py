@@ -10,7 +10,7 @@ import math
 import numpy as np
 
 from measure.criteria.case import Case
-from measure.criteria.decide import Limit, Look, every, look_at, some
+from measure.criteria.decide import Limit, Look, every, look_at, some, unseen
 from measure.criteria.finding import Evidence, Result
 from measure.quantity import Quantity, missing
 from measure.waves import Deflection, LeadWaves, Notch
@@ -39,8 +39,8 @@ def no_q(case: Case, waves: LeadWaves) -> Look:
     seen = Evidence(waves.lead, "q depth", depth.value, depth.se, "mV", str(limit), time_ms)
     # Deep enough yet no Q: too short to count as a wave, or a sloping baseline. A reader decides.
     if depth.value - depth.se > waves.smallest_mv:
-        note = f"{waves.lead}: a brief dip of {depth.value:.2f} mV at the onset is hardly a q"
-        return Look("undecided", (seen,), note)
+        note = f"whether a brief dip of {depth.value:.2f} mV at the onset is a q"
+        return Look("undecided", (seen,), ((waves.lead, note),))
     return look_at(depth, limit, lead=waves.lead, what="q depth", time_ms=time_ms)
 
 
@@ -62,7 +62,7 @@ def has_q(case: Case, waves: LeadWaves) -> Look:
         )
         for e in absent.evidence
     )
-    return Look(turned[absent.result], evidence, absent.settle)
+    return Look(turned[absent.result], evidence, absent.open)
 
 
 def qs_or_rs(waves: LeadWaves) -> Look:
@@ -76,8 +76,9 @@ def qs_or_rs(waves: LeadWaves) -> Look:
     visible = tuple(d for d in waves.deflections if abs(d.amplitude_mv) >= VISIBLE_MV)
     if _down_or_small_up(waves, visible).result == "not met":
         return described("not met", waves, "QS or rS")
-    note = f"{waves.lead}: whether the deflections below {VISIBLE_MV:g} mV are real"
-    return Look("undecided", described("undecided", waves, "QS or rS").evidence, note)
+    note = f"whether the deflections below {VISIBLE_MV:g} mV are real"
+    seen = described("undecided", waves, "QS or rS").evidence
+    return Look("undecided", seen, ((waves.lead, note),))
 
 
 def rs(waves: LeadWaves) -> Look:
@@ -128,8 +129,8 @@ def notched_or_slurred(
     seen = Evidence(waves.lead, best.kind, best.depth_mv, se_mv, "mV", wanted, getattr(best, at))
     if best.prominence_se >= SURE_NOTCH_SE:
         return Look("met", (seen,))
-    note = f"{waves.lead}: the {best.kind} at {best.peak_ms:.0f} ms is hardly above the noise"
-    return Look("undecided", (seen,), note)
+    note = f"the {best.kind} at {best.peak_ms:.0f} ms is hardly above the noise"
+    return Look("undecided", (seen,), ((waves.lead, note),))
 
 
 def broad_notched_or_slurred(case: Case, waves: LeadWaves) -> Look:
@@ -143,7 +144,7 @@ def discordant(waves: LeadWaves) -> Look:
     area = waves.net_area_mv_ms
     if not area.known or not waves.t_mv.known:
         reason = area.reason or waves.t_mv.reason
-        return Look("undecided", (), f"{waves.lead}: QRS area or T wave: {reason}")
+        return unseen(waves.lead, f"QRS area or T wave: {reason}")
     sign = 1.0 if area.value > 0 else -1.0
     t_look = look_at(
         waves.t_mv,
@@ -152,7 +153,7 @@ def discordant(waves: LeadWaves) -> Look:
         what=f"T with {'an upright' if sign > 0 else 'a negative'} QRS",
     )
     if abs(area.value) < area.se:
-        return Look("undecided", t_look.evidence, f"{waves.lead}: the QRS points neither way")
+        return Look("undecided", t_look.evidence, ((waves.lead, "the QRS points neither way"),))
     st = waves.st_mv.get(60)
     if st is None or not st.known:
         return t_look

@@ -83,7 +83,7 @@ def _rows(rows: tuple[Measured, ...]) -> str:
     body = []
     for row in rows:
         off = row.place not in ("", "within")
-        usual = f"{row.place} (usual: {row.usual.text})" if off else row.usual.text
+        usual = f"{row.place} ({row.usual.text})" if off else row.usual.text
         cells = (
             f"<td>{escape(row.usual.label)}</td>"
             f'<td class="{"number" if row.quantity.known else "missing"}">'
@@ -97,27 +97,30 @@ def _rows(rows: tuple[Measured, ...]) -> str:
 
 
 def _patterns(answers: Answers) -> str:
-    """What is met or open line by line; what is not met, in one line for each family."""
+    """For each family what is met, what is open and what is not met."""
     rows = []
     for name, group in answers.families:
-        cells = [
-            (mark(f.result), escape(nice(f.definition))) for f in group if f.result != "not met"
-        ]
-        refused = "; ".join(
-            refusal(f) if name in BLOCK_FAMILIES else nice(f.definition)
-            for f in group
-            if f.result == "not met"
-        )
-        if refused:
-            cells.append((mark("not met"), f'<span class="small">{escape(refused)}</span>'))
-        for index, (result, text) in enumerate(cells):
-            first = escape(name) if index == 0 else ""
-            rows.append(f"<tr><td>{first}</td><td>{result}</td><td>{text}</td></tr>")
+        first = escape(name)
+        for result in ("met", "undecided", "not met"):
+            members = [f for f in group if f.result == result]
+            if members:
+                names = "; ".join(_named(f, name) for f in members)
+                kind = "small" if result == "not met" else ""
+                cell = f'<td class="{kind}">{escape(names)}</td>'
+                rows.append(f"<tr><td>{first}</td><td>{mark(result)}</td>{cell}</tr>")
+                first = ""
     note = (
         '<p class="small">“Met” means: meets the criteria of the published definition. In '
         "brackets: the first clause that is not met; the file NAME.reading.json has them all.</p>"
     )
     return table(("", "result", "definition"), rows) + note
+
+
+def _named(finding: Finding, family: str) -> str:
+    """The definition, and for a block that is not met what decided it."""
+    if finding.result == "not met" and family in BLOCK_FAMILIES:
+        return refusal(finding)
+    return nice(finding.definition)
 
 
 def _beats(reading: Reading) -> str:

@@ -29,7 +29,7 @@ figure img { width: 100%; border: 0.2mm solid #8b979e; }
 svg { display: block; max-width: 100%; height: auto; }
 footer { border-top: 0.3mm solid #46545d; margin-top: 2mm; padding-top: 0.6mm; font-size: 7pt;
   overflow-wrap: anywhere; }
-@media screen { body { padding: 0 3mm; font-size: 10pt; }
+@media screen { body { padding: 0 3mm; font-size: 10pt; max-width: 240mm; }
   .finding p, .small, td.small, .waves td, figcaption, footer { font-size: 9pt; } }
 @media print { body { margin: 0; max-width: none; }
   figure.overlay { float: right; width: 84mm; margin: 0 0 1mm 3mm; }

@@ -7,7 +7,7 @@ import pytest
 from measure.criteria.decide import Limit, Look, at_least, by_sex, clause, every, finding, some
 from measure.criteria.finding import Evidence
 
-MET, NOT, OPEN = Look("met"), Look("not met"), Look("undecided", (), "more beats")
+MET, NOT, OPEN = Look("met"), Look("not met"), Look("undecided", (), (("V1", "more beats"),))
 
 
 @pytest.mark.parametrize(
@@ -47,7 +47,9 @@ def test_every_some_and_at_least():
 
 
 def test_undecided_says_what_would_settle_it_once():
-    assert every([OPEN, OPEN, MET]).settle == "more beats"
+    assert every([OPEN, OPEN, MET]).settle == "V1: more beats"
+    other = Look("undecided", (), (("V2", "more beats"), ("overall", "a sharper copy")))
+    assert every([OPEN, other]).settle == "V1, V2: more beats; a sharper copy"
     assert every([MET]).settle is None
 
 
