@@ -11,6 +11,8 @@ from dataclasses import dataclass
 import numpy as np
 import scipy as sp
 
+_SEVERAL = 6  # leads from which one can be spared
+
 
 @dataclass(frozen=True, eq=False)
 class Leads:
@@ -29,9 +31,16 @@ class Leads:
         return 1000 * sp.signal.savgol_filter(self.mv, width_ms | 1, 2, deriv=1, axis=1)
 
     def size(self, values: np.ndarray) -> np.ndarray:
-        """Root mean square over the leads measured at each moment, (n,)."""
+        """Root mean square over the leads measured at each moment, (n,).
+
+        The lead that moves most is left out where there are several: one noisy lead, or one
+        artefact, must not decide where a wave begins.
+        """
         squares = np.where(self.seen, values, 0) ** 2
-        return np.sqrt(squares.sum(axis=0) / np.maximum(self.seen.sum(axis=0), 1))
+        count = self.seen.sum(axis=0)
+        several = count >= _SEVERAL
+        total = squares.sum(axis=0) - np.where(several, squares.max(axis=0), 0)
+        return np.sqrt(total / np.maximum(count - several, 1))
 
     def level(self, start: int, stop: int) -> np.ndarray:
         """Mean of each lead from place `start` up to `stop`, (leads, 1)."""

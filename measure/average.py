@@ -22,6 +22,7 @@ _QRS_MS = (-90, 110)  # this much of a beat must be visible, or the QRS counts a
 _LEVEL_MS = (-110, -70)  # phase at which the baseline is taken: between P wave and QRS mostly
 _SHIFTS_MS = np.arange(-30.0, 30.5, 1.0)
 _ROUNDS = 3
+_COMMON = 0.75
 _OUTLIER = 4.0  # times the usual distance from the average: such a beat is left out of its lead
 
 
@@ -34,7 +35,8 @@ class DominantBeat:
     error (scatter over beats and sigma of the samples together); NaN where no beat covers the
     place. `beats` counts the beats in each lead's average, 0 where there is none.
     `spike_ms` are the times of pacing spikes, (m,). `at_s` are the times in the recording of the
-    fiducial points of the averaged beats, (k,).
+    fiducial points of the averaged beats, (k,), and `single_mv` the aligned beats themselves,
+    (len(leads), k, n), NaN where a beat is cut, hidden or left out.
     """
 
     leads: tuple[str, ...]
@@ -45,6 +47,7 @@ class DominantBeat:
     fs_hz: float
     spike_ms: tuple[float, ...] = ()
     at_s: tuple[float, ...] = ()
+    single_mv: np.ndarray | None = None
 
     def lead(self, name: str) -> np.ndarray:
         """Average of one lead in mV, (n,); KeyError where the lead is not there."""
@@ -68,7 +71,7 @@ def average_beats(tracing: Tracing, beats: Beats) -> DominantBeat:
     shift_ms = np.zeros(len(at_s))
     for _ in range(_ROUNDS):
         cut = np.stack([_cut(p, c, at_s + shift_ms / 1000, raster_ms) for p, c in levelled])
-        shift_ms += _shifts(cut, raster_ms)
+        shift_ms += _shifts(cut[_common(cut)], raster_ms)
         shift_ms -= np.median(shift_ms)
     cut = np.stack([_cut(p, c, at_s + shift_ms / 1000, raster_ms) for p, c in levelled])
     cut[:, _outside(raster_ms, usable_ms)] = np.nan
@@ -85,6 +88,7 @@ def average_beats(tracing: Tracing, beats: Beats) -> DominantBeat:
         fs_hz=1000 / _RASTER_MS,
         spike_ms=_usual_spikes(at_s + shift_ms / 1000, beats.spike_s),
         at_s=tuple(float(t) for t in at_s + shift_ms / 1000),
+        single_mv=cut,
     )
 
 
@@ -150,6 +154,16 @@ def _cut(panel: Panel, mv: np.ndarray, at_s: np.ndarray, raster_ms: np.ndarray) 
     qrs = (raster_ms >= _QRS_MS[0]) & (raster_ms <= _QRS_MS[1])
     values[~np.isfinite(values[:, qrs]).all(axis=1)] = np.nan
     return values
+
+
+def _common(cut: np.ndarray) -> np.ndarray:
+    """True for the leads that show the most beats.
+
+    Where columns follow one another only the strip sees all beats. The leads of a column would
+    hold its beats together, at whatever time each was put, against the one lead that knows better.
+    """
+    count = np.isfinite(cut).any(axis=2).sum(axis=1)
+    return count >= _COMMON * count.max()
 
 
 def _shifts(cut: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:

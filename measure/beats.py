@@ -24,7 +24,8 @@ _LEAST_IN_GAP = 0.13  # where a beat is overdue
 _OVERDUE = 1.55  # times the usual interval
 _REFRACTORY_MS = 220
 _T_WITHIN_MS = 420  # a smaller, slower hump this soon after a QRS is its T wave
-_T_SHARE = 0.55
+_P_WITHIN_MS = 320  # before the middle of its QRS
+_WAVE_SHARE = 0.55  # of the activity of its QRS
 _SPIKE_BEFORE_MS = (180, -20)  # a pacing spike stands at most this far before the middle of its QRS
 _SHAPE_MS = (110, 150)  # window around the beat in which shapes are compared
 _ALIKE = 0.80  # correlation from which two shapes are one
@@ -54,6 +55,16 @@ class Beats:
     def rr_s(self) -> np.ndarray:
         """Intervals between successive beats in seconds, (n - 1,)."""
         return np.diff(self.time_s)
+
+    @property
+    def unsteadiness(self) -> float:
+        """Mean change from one interval of usual beats to the next, relative to their mean.
+
+        Breathing is slow and changes it little; NaN with fewer than three such intervals.
+        """
+        usual = np.array([kind in ("usual", "paced") for kind in self.kind])
+        rr_s = self.rr_s[usual[1:] & usual[:-1]]
+        return float(np.abs(np.diff(rr_s)).mean() / rr_s.mean()) if len(rr_s) >= 3 else np.nan
 
 
 def find_beats(tracing: Tracing) -> Beats:
@@ -138,7 +149,7 @@ def _peaks(activity: np.ndarray) -> np.ndarray:
     at, _ = sp.signal.find_peaks(activity, height=_LEAST_IN_GAP, distance=_samples(80))
     at = _without_refractory(activity, at)
     strong = at[activity[at] >= _LEAST_SHARE]
-    strong = _without_t_waves(activity, strong)
+    strong = _without_p_and_t(activity, strong)
     return _with_overdue(activity, strong, at)
 
 
@@ -151,14 +162,18 @@ def _without_refractory(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
     return np.array(sorted(kept), dtype=int)
 
 
-def _without_t_waves(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
-    """Peaks without the lower ones that follow a QRS as its T wave does."""
+def _without_p_and_t(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
+    """Peaks without the lower ones that stand to a QRS as its P or T wave does."""
     kept: list[int] = []
-    for k in at:
-        soon = kept and k - kept[-1] <= _samples(_T_WITHIN_MS)
-        if not (soon and activity[k] < _T_SHARE * activity[kept[-1]]):
+    for k in at[np.argsort(-activity[at], kind="stable")]:
+        is_wave = any(
+            -_samples(_P_WITHIN_MS) <= k - qrs <= _samples(_T_WITHIN_MS)
+            and activity[k] < _WAVE_SHARE * activity[qrs]
+            for qrs in kept
+        )
+        if not is_wave:
             kept.append(int(k))
-    return np.array(kept, dtype=int)
+    return np.array(sorted(kept), dtype=int)
 
 
 def _with_overdue(activity: np.ndarray, strong: np.ndarray, weak: np.ndarray) -> np.ndarray:

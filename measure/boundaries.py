@@ -13,13 +13,12 @@ from measure.activity import Leads, leads_of
 from measure.average import DominantBeat
 from measure.beats import Beats
 from measure.edges import Edge, p_edges, qrs_edges, t_end
+from measure.p_wave import is_p_wave
 from measure.quantity import Quantity, missing
 
 _LONGEST_PR_MS = 330
 _BEFORE_QRS_MS = 150  # a T wave must be over this long before the next QRS
-_LEAST_P_MV = 0.012  # root mean square over the leads at its highest
-_LEAST_P_RATIO = 2.5  # of P to the scatter of what is averaged, root mean square
-_LEAST_LEAD_MV = 0.02  # a deflection counts from 20 uV (CSE working party, from memory)
+_LATEST_T_PEAK_MS = 480  # after the QRS onset, at 60/min; shortens as the cube root of RR
 
 
 @dataclass(frozen=True)
@@ -54,10 +53,9 @@ def find_boundaries(beat: DominantBeat, beats: Beats) -> Boundaries:
     used = [k for k, count in enumerate(beat.beats) if count > 0]
     spikes = [ms for ms in beat.spike_ms if -160 < ms < 30]
     spike_ms = max(spikes) if spikes else None
-    rr_ms = _usual_rr_ms(beats)
-    overall = _edges_of(beat, used, rr_ms, spike_ms, None)
+    overall = _edges_of(beat, used, beats, spike_ms, None)
     by_lead = {
-        name: _edges_of(beat, [k], rr_ms, spike_ms, overall)
+        name: _edges_of(beat, [k], beats, spike_ms, overall)
         if k in used
         else _no_edges("no whole beat of this lead is visible")
         for k, name in enumerate(beat.leads)
@@ -77,7 +75,7 @@ def _usual_rr_ms(beats: Beats) -> float | None:
 def _edges_of(
     beat: DominantBeat,
     rows: list[int],
-    rr_ms: float | None,
+    beats: Beats,
     spike_ms: float | None,
     overall: Edges | None,
 ) -> Edges:
@@ -97,8 +95,9 @@ def _edges_of(
     if overall is not None:
         onset = _within(onset, overall.qrs_on_ms.value, overall.qrs_off_ms.value)
         offset = _within(offset, onset.at_ms, overall.qrs_off_ms.value)
-    t_off = _t_off(leads, offset, rr_ms)
-    p = _p_wave(beat, leads, rows, onset, t_off, rr_ms)
+    rr_ms = _usual_rr_ms(beats)
+    t_off = _t_off(leads, onset, offset, rr_ms)
+    p = _p_wave(beat, leads, rows, beats, onset, t_off)
     no_p = missing("ms", "no P wave stands out before the QRS")
     return Edges(
         p_on_ms=quantity(p[0]) if p else no_p,
@@ -113,40 +112,32 @@ def _within(edge: Edge, low_ms: float, high_ms: float) -> Edge:
     return Edge(min(max(edge.at_ms, low_ms), high_ms), edge.se_ms)
 
 
-def _t_off(leads: Leads, qrs_off: Edge, rr_ms: float | None) -> Edge | None:
+def _t_off(leads: Leads, qrs_on: Edge, qrs_off: Edge, rr_ms: float | None) -> Edge | None:
     latest_ms = qrs_off.at_ms + 520
+    peak_ms = qrs_on.at_ms + _LATEST_T_PEAK_MS
     if rr_ms is not None:
         latest_ms = min(latest_ms, max(rr_ms - _BEFORE_QRS_MS, qrs_off.at_ms + 200))
+        peak_ms = qrs_on.at_ms + _LATEST_T_PEAK_MS * (rr_ms / 1000) ** (1 / 3)
     seen = np.flatnonzero(leads.seen.any(axis=0))
-    return t_end(leads, qrs_off.at_ms, min(latest_ms, float(leads.time_ms[seen[-1]])))
+    return t_end(leads, qrs_off.at_ms, peak_ms, min(latest_ms, float(leads.time_ms[seen[-1]])))
 
 
 def _p_wave(
     beat: DominantBeat,
     leads: Leads,
     rows: list[int],
+    beats: Beats,
     qrs_on: Edge,
     t_off: Edge | None,
-    rr_ms: float | None,
 ) -> tuple[Edge, Edge] | None:
     """Edges of a P wave that stands out of the scatter of the averaged beats."""
     earliest_ms = qrs_on.at_ms - _LONGEST_PR_MS
+    rr_ms = _usual_rr_ms(beats)
     if t_off is not None and rr_ms is not None:
         earliest_ms = max(earliest_ms, t_off.at_ms - rr_ms)
     seen = np.flatnonzero(leads.seen.any(axis=0))
     found = p_edges(leads, qrs_on.at_ms, max(earliest_ms, float(leads.time_ms[seen[0]]) + 5))
-    if found is None:
-        return None
-    start, stop = leads.index(found[0].at_ms), leads.index(found[1].at_ms)
-    ends = leads.level(start - 12, start + 1), leads.level(stop, stop + 12)
-    share = np.linspace(0, 1, stop - start)[None, :]
-    wave = leads.mv[:, start:stop] - ends[0] * (1 - share) - ends[1] * share
-    wave[~leads.seen[:, start:stop]] = 0
-    se = np.nan_to_num(beat.se_mv[rows, start:stop], nan=np.inf)
-    ratio = np.sqrt(np.mean((wave / np.maximum(se, 1e-4)) ** 2))
-    high_mv = np.sqrt((wave**2).mean(axis=0)).max()
-    least_mv = _LEAST_P_MV if len(rows) > 1 else _LEAST_LEAD_MV
-    return found if high_mv >= least_mv and ratio >= _LEAST_P_RATIO else None
+    return found if found is not None and is_p_wave(beat, leads, rows, beats, found) else None
 
 
 def _no_edges(reason: str) -> Edges:

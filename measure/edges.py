@@ -25,6 +25,9 @@ _QRS_PARABOLA_MS = 15
 _P_PARABOLA_MS = 31
 _QRS_GAP_MS = 12
 _P_GAP_MS = 25
+_CORE = 0.1  # of the steepest movement of the QRS: more than a P wave ever has
+_CORE_GAP_MS = 20
+_LEAD_IN_MS = 45  # a QRS may begin this long before it is that steep
 _ST_MS = (15, 55)  # after a moment: the slope of the ST segment that is not QRS
 _SMOOTH_T_MS = 6
 _DISAGREE_MS = 16
@@ -33,6 +36,8 @@ _LEVEL_MS = 12
 # 5 % of the height are left at 2.448 SD.
 _TAIL_SD = 1.448
 _P_FRACTIONS = (0.2, 0.4)
+_CALM_MS = 30
+_NOISE_FACTOR = 3.0
 _SHORTEST_P_MS = 20
 _LEAST_SE_MS = 2.0  # the raster of the samples
 
@@ -58,8 +63,14 @@ def qrs_edges(leads: Leads, spike_ms: float | None = None) -> tuple[Edge, Edge]:
 
 
 def _qrs_onset(leads: Leads, moving: np.ndarray, middle: int, first: int) -> Edge:
-    quiet = _quiet(moving[first : middle + 1])
-    start = reach(moving > _QRS_SLOPE_MV_S + quiet, middle, first, _QRS_GAP_MS)
+    least = _least(moving[first : middle + 1], _QRS_SLOPE_MV_S)
+    steep = moving > max(least, _CORE * moving[middle])
+    core = reach(steep, middle, first, _CORE_GAP_MS)
+    furthest = max(first, core - _LEAD_IN_MS)
+    start = reach(moving > least, core, furthest, _QRS_GAP_MS)
+    if start <= furthest + 1 and core > furthest:
+        # No quiet stretch: the P wave runs into the QRS, which begins at the calmest place.
+        start = furthest + int(np.argmin(moving[furthest:core]))
     away = leads.distance(leads.level(start - _LEVEL_MS, start + 1))
     at = [leave(away, start, f * _QRS_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0)]
     return _edge(leads, *at)
@@ -74,7 +85,7 @@ def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: in
     )
     about = leads.size(slopes - following)
     plain, corrected = (
-        reach(m > _QRS_SLOPE_MV_S + _quiet(m[middle:last]), middle, last, _QRS_GAP_MS)
+        reach(m > _least(m[middle:last], _QRS_SLOPE_MV_S), middle, last, _QRS_GAP_MS)
         for m in (moving, about)
     )
     end = plain if plain - corrected <= _DISAGREE_MS else corrected
@@ -90,11 +101,12 @@ def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: in
     )
 
 
-def t_end(leads: Leads, qrs_off_ms: float, latest_ms: float) -> Edge | None:
+def t_end(leads: Leads, qrs_off_ms: float, peak_before_ms: float, latest_ms: float) -> Edge | None:
     """Return the end of the T wave, None where no hump of the leads comes down again.
 
     The tangent at the steepest place of the descent, carried on as the tail of a Gaussian to 5 %
-    of its height. The base is the quietest level after the wave.
+    of its height. The base is the quietest level after the wave, whose peak must come before
+    `peak_before_ms`: what is later belongs to the next P wave.
     """
     smooth = sp.ndimage.gaussian_filter1d(leads.mv, _SMOOTH_T_MS, axis=1)
     leads = Leads(leads.time_ms, smooth, leads.seen)
@@ -102,7 +114,8 @@ def t_end(leads: Leads, qrs_off_ms: float, latest_ms: float) -> Edge | None:
     if stop - start < 100:
         return None
     calm = sp.ndimage.uniform_filter1d(leads.size(leads.slopes(31)), 40)
-    top = start + int(np.argmax(calm[start:stop]))
+    before = min(max(leads.index(peak_before_ms), start + 50), stop)
+    top = start + int(np.argmax(calm[start:before]))
     base = top + int(np.argmin(calm[top:stop]))
     away = leads.distance(leads.level(base - 20, base + 20))
     peak = start + int(np.argmax(away[start:base])) if base > start else start
@@ -124,17 +137,19 @@ def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, E
     if stop - first < 50:
         return None
     top = first + 10 + int(np.argmax(moving[first + 10 : stop - 20]))
-    quiet = _quiet(moving[first : top + 1])
-    begin = reach(moving > _P_SLOPE_MV_S + quiet, top, first, _P_GAP_MS)
+    least = _least(moving[first : top + 1], _P_SLOPE_MV_S)
+    begin = reach(moving > least, top, first, _P_GAP_MS)
     away = leads.distance(leads.level(begin - _LEVEL_MS, begin + 1))
     onset = _edge(leads, *(leave(away, begin, f * _P_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0)))
     start = leads.index(onset.at_ms)
     if stop - start < _SHORTEST_P_MS:
         return None
-    away = sp.ndimage.uniform_filter1d(leads.distance(leads.level(stop - _LEVEL_MS, stop - 1)), 7)
-    high = away[start:stop].max(initial=0)
+    away = sp.ndimage.uniform_filter1d(leads.distance(leads.level(stop - _LEVEL_MS, stop - 1)), 15)
+    peak = start + int(np.argmax(away[start:stop]))
+    floor = away[peak:stop].min()
     low, half = (
-        stop - 2 - int(np.argmax(away[start : stop - 1][::-1] >= f * high)) for f in _P_FRACTIONS
+        peak + int(np.argmax(away[peak:stop] <= floor + f * (away[peak] - floor)))
+        for f in _P_FRACTIONS
     )
     end_ms = min(float(2 * leads.time_ms[low] - leads.time_ms[half]), qrs_on_ms)
     if end_ms - onset.at_ms < _SHORTEST_P_MS:
@@ -142,9 +157,12 @@ def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, E
     return onset, Edge(end_ms, math.hypot(_LEAST_SE_MS, (low - half) / 2))
 
 
-def _quiet(moving: np.ndarray) -> float:
-    """Lowest level of the movement, over 12 ms."""
-    return float(sp.ndimage.uniform_filter1d(moving, _LEVEL_MS).min())
+def _least(moving: np.ndarray, slope_mv_s: float) -> float:
+    """Movement that is not noise: over the calmest stretch by a slope, or by its own scatter."""
+    level = sp.ndimage.uniform_filter1d(moving, _CALM_MS, mode="nearest")
+    k = int(np.argmin(level))
+    calm = moving[max(k - _CALM_MS // 2, 0) : k + _CALM_MS // 2]
+    return float(level[k] + max(slope_mv_s, _NOISE_FACTOR * calm.std()))
 
 
 def _edge(leads: Leads, at: int, early: int, late: int) -> Edge:

@@ -10,9 +10,8 @@ from measure.boundaries import Boundaries
 from measure.quantity import Quantity, missing
 from measure.waves import LeadWaves
 
-_REGULAR = 0.08  # robust relative scatter of the intervals (common practice: about 10 %)
+_REGULAR = 0.08  # mean change from one interval to the next (common practice: about 10 %)
 _IRREGULAR = 0.12
-_LEAST_INTERVALS = 3
 
 
 @dataclass(frozen=True)
@@ -68,15 +67,9 @@ def _rate(rr_ms: Quantity) -> Quantity:
 
 def _regular(beats: Beats) -> bool | None:
     """Whether the intervals between usual beats are steady; None where too few or in between."""
-    usual = np.array([kind in ("usual", "paced") for kind in beats.kind])
-    rr_s = beats.rr_s[usual[1:] & usual[:-1]]
-    if len(rr_s) < _LEAST_INTERVALS:
-        return None
-    # Against its neighbours, so that breathing, which is slow, does not make a rhythm irregular.
-    scatter = np.median(np.abs(np.diff(rr_s))) / np.median(rr_s)
-    if scatter < _REGULAR:
+    if beats.unsteadiness < _REGULAR:
         return True
-    return False if scatter > _IRREGULAR else None
+    return False if beats.unsteadiness > _IRREGULAR else None
 
 
 def _statement(
