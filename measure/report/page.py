@@ -4,6 +4,7 @@ import base64
 import io
 import json
 from html import escape
+from typing import Any
 
 from digitize import program_version
 from digitize.tracing import LEADS
@@ -40,7 +41,9 @@ def report(reading: Reading, *, overlay_png: bytes | None = None) -> str:
     title = f"{source.file_name}, page {source.page}"
     sections = (
         section("1 Can the tracing be trusted?", _trust(answers, overlay_png)),
-        section("2 What is the rhythm?", prose(answers.rhythm) + _rows(answers.rhythm_rows)),
+        section(
+            "2 What is the rhythm?", prose(answers.rhythm) + _beside(_rows(answers.rhythm_rows))
+        ),
         '<div class="clear"></div>',
         section(
             "3 How wide is the QRS, what is its shape, what follows it?",
@@ -75,10 +78,15 @@ def _lighter(png: bytes) -> bytes:
     return stream.getvalue()
 
 
+def _beside(table_html: str) -> str:
+    """A table that may stand beside the overlay in print."""
+    return f'<div class="beside">{table_html}</div>'
+
+
 def _rows(rows: tuple[Measured, ...]) -> str:
     """Intervals beside their usual range; a source that all ranges share is named once."""
     sources = {row.usual.source for row in rows if row.usual.source}
-    shared = f", {sources.pop()}" if len(sources) == 1 else ""
+    shared = f" ({sources.pop()})" if len(sources) == 1 else ""
     headings = ["", "measured", "from", f"usual in adults{shared}"]
     body = []
     for row in rows:
@@ -209,13 +217,19 @@ def _footer(reading: Reading) -> str:
     facts = (
         f"Source: {tracing.source.file_name}, page {tracing.source.page}, SHA-256 "
         f"{tracing.source.sha256}.",
-        f"Program: millivellum {program_version()}. Options: {_flat(tracing.options)}.",
+        f"Program: millivellum {program_version()}. Given options: {_given(tracing.options)}.",
         f"Patient: sex {said['sex']}, age {said['age']}.",
         f"Corrections: {_flat(tracing.corrections) if tracing.corrections else 'none'}.",
         ONE_SE,
         NOTICE,
     )
     return f"<footer>{escape(' '.join(facts))}</footer>"
+
+
+def _given(options: dict[str, Any]) -> str:
+    """The options that a person gave."""
+    given = {key: value for key, value in options.items() if value is not None}
+    return _flat(given) if given else "none"
 
 
 def _flat(thing: object) -> str:
