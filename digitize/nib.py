@@ -5,19 +5,22 @@ level stretches of a page, laid upon one another by the middle of the ink, show 
 than one column of pixels does.
 """
 
-from dataclasses import replace
 
 import numpy as np
 import scipy as sp
 
 from digitize.fit import Line, View
 from digitize.ink import Ink
+from digitize.path import flank_runs
 from digitize.pen import Pen, draw_line
-from digitize.ways import Way
+from digitize.ways import EDGE, Way
 
 _USUAL_MM = 0.35  # common practice; where no stretch is level
 _LEVEL = 0.15  # slope, rows per column, below which the stroke is as thick as the nib to 1 %
 _REACH_MM = 0.9
+_STEEP_MM = 2.5  # ink so tall in one column is a flank
+_FLANK_ROWS = 30
+_SPREAD = 1.12  # of widths about the thinnest, that are one flank each
 _PER_PX = 4
 _ENOUGH = 20  # pixels in one bin of the profile
 _REFINEMENTS = 3
@@ -26,7 +29,10 @@ _PATCH = 3  # pixels: about what one node's height hangs on
 
 
 def find_pen(ink: Ink, ways: tuple[Way, ...]) -> Pen:
-    """Estimate the pen from the profile of the ink across level stretches.
+    """Estimate the pen from the profiles of the ink across level stretches and across flanks.
+
+    A trace that trembles within the nib's own width is thickened where it is level, but hardly
+    where it is steep: so the flanks tell the width, where there are enough of them.
 
     Parameters
     ----------
@@ -37,68 +43,100 @@ def find_pen(ink: Ink, ways: tuple[Way, ...]) -> Pen:
     Returns
     -------
     Pen
-        In pixels of the ink's raster; blur across is that down, but for the size of the source's
-        pixels.
+        In pixels of the ink's raster.
     """
     px = ink.raster.px_per_mm
-    half = max(round(_REACH_MM * px), 4)
+    level = _stacked(ink.density, *_level_places(ink, ways), px)
+    if level is None:
+        return Pen(_USUAL_MM * px, 0.07 * px, 0.07 * px)
+    width, blur_y, gain = _match(*level, px)
+    across, down = ((px / source) ** 2 / 12 for source in ink.source_px_per_mm)
+    blur_x = max(blur_y**2 - down + across, 0.09) ** 0.5
+    cols, middle, lean = _flank_places(ink, ways)
+    steep = _stacked(ink.density.T, cols, middle, px) if len(cols) else None
+    if steep is not None:
+        thick, blur, _ = _match(*steep, px, gain)
+        width, blur_x = min(width, thick * lean), blur * lean
+    return Pen(float(width), float(blur_x), float(blur_y), float(gain))
+
+
+def _stacked(
+    density: np.ndarray, lines: np.ndarray, middle: np.ndarray, px_per_mm: float
+) -> tuple[np.ndarray, np.ndarray] | None:
+    """Mean density against the distance from `middle`, down the given columns; None if too few."""
+    half = max(round(_REACH_MM * px_per_mm), 4)
     bins = (2 * half + 1) * _PER_PX
-    total, count = np.zeros(bins), np.zeros(bins)
-    for way in ways:
-        cols, middle = _level_columns(way)
-        rows = np.rint(middle).astype(int)
-        inside = (rows > half) & (rows < len(ink.density) - half - 1)
-        cols, rows, middle = cols[inside], rows[inside], middle[inside]
-        at = rows[:, None] + np.arange(-half, half + 1)
-        away = at - middle[:, None]
-        place = np.clip(((away + half + 0.5) * _PER_PX).astype(int), 0, bins - 1)
-        density = ink.density[at, way.col0 + cols[:, None]]
-        total += np.bincount(place.ravel(), density.ravel(), bins)
-        count += np.bincount(place.ravel(), minlength=bins)
-    away = (np.arange(bins) + 0.5) / _PER_PX - half - 0.5
+    at = np.rint(middle).astype(int)
+    inside = (at > half) & (at < len(density) - half - 1)
+    rows = at[inside, None] + np.arange(-half, half + 1)
+    away = rows - middle[inside, None]
+    place = np.clip(((away + half + 0.5) * _PER_PX).astype(int), 0, bins - 1)
+    total = np.bincount(place.ravel(), density[rows, lines[inside, None]].ravel(), bins)
+    count = np.bincount(place.ravel(), minlength=bins)
     used = count > _ENOUGH
     if used.sum() < 4 * _PER_PX:
-        return Pen(_USUAL_MM * px, 0.07 * px, 0.07 * px)
-    pen = _match(away[used], total[used] / count[used], px)
-    across, down = ((px / source) ** 2 / 12 for source in ink.source_px_per_mm)
-    blur_x = max(pen.blur_y_px**2 - down + across, 0.09) ** 0.5
-    return replace(pen, blur_x_px=blur_x)
+        return None
+    away = (np.arange(bins) + 0.5) / _PER_PX - half - 0.5
+    return away[used], total[used] / count[used]
 
 
-def _level_columns(way: Way) -> tuple[np.ndarray, np.ndarray]:
-    """Columns where the trace is level and alone, and the middle of its ink there."""
-    middle = way.edges.mean(axis=0)
-    thick = way.edges[1] - way.edges[0]
-    usable = np.isfinite(middle) & ~way.shared
-    if usable.sum() < 10:
-        return np.zeros(0, int), np.zeros(0)
-    slope = np.where(usable, np.abs(np.gradient(np.where(usable, middle, 0))), 9)
-    level = sp.ndimage.maximum_filter1d(slope, 7) < _LEVEL
-    level &= np.where(usable, thick, 99) < 1.3 * np.median(thick[usable])
-    cols = np.flatnonzero(level)
-    return cols, middle[cols]
+def _level_places(ink: Ink, ways: tuple[Way, ...]) -> tuple[np.ndarray, np.ndarray]:
+    """Columns where a trace is level and alone, and the middle of its ink there."""
+    columns, middles = [np.zeros(0, int)], [np.zeros(0)]
+    for way in ways:
+        middle = way.edges.mean(axis=0)
+        usable = np.isfinite(middle) & ~way.shared
+        if usable.sum() < 10:
+            continue
+        thick = way.edges[1] - way.edges[0]
+        slope = np.where(usable, np.abs(np.gradient(np.where(usable, middle, 0))), 9)
+        level = sp.ndimage.maximum_filter1d(slope, 7) < _LEVEL
+        level &= np.where(usable, thick, np.inf) < 1.3 * np.median(thick[usable])
+        cols = np.flatnonzero(level)
+        columns.append(way.col0 + cols)
+        middles.append(middle[cols])
+    return np.concatenate(columns), np.concatenate(middles)
 
 
-def _match(away: np.ndarray, profile: np.ndarray, px_per_mm: float) -> Pen:
+def _flank_places(ink: Ink, ways: tuple[Way, ...]) -> tuple[np.ndarray, np.ndarray, float]:
+    """Rows where a steep flank stands alone, its middle across, and the cosine of its lean."""
+    px = ink.raster.px_per_mm
+    found = [
+        flank_runs(ink.density, way.edges, way.shared, way.col0, EDGE, _STEEP_MM * px)
+        for way in ways
+    ]
+    row, left, right, lean = np.concatenate(found, axis=1)
+    if len(row) < _FLANK_ROWS:
+        return np.zeros(0, int), np.zeros(0), 1.0
+    wide = (right - left) * lean
+    # wider ones are two flanks, a notch, or the round of a peak
+    thin = wide < _SPREAD * np.quantile(wide, 0.2)
+    return row[thin].astype(int), 0.5 * (left + right)[thin], float(np.median(lean[thin]))
+
+
+def _match(
+    away: np.ndarray, profile: np.ndarray, px_per_mm: float, gain: float | None = None
+) -> tuple[float, float, float]:
+    """Width, blur and density of the blurred box that is most like a profile."""
+
+    def box(values: np.ndarray) -> np.ndarray:
+        width, blur = values[:2]
+        high = sp.special.ndtr((away + width / 2) / blur)
+        return high - sp.special.ndtr((away - width / 2) / blur)
+
     def misfit(values: np.ndarray) -> np.ndarray:
-        width, blur, gain = values
-        return (
-            gain
-            * (
-                sp.special.ndtr((away + width / 2) / blur)
-                - sp.special.ndtr((away - width / 2) / blur)
-            )
-            - profile
-        )
+        return (values[2] if gain is None else gain) * box(values) - profile
 
-    low, high = (0.1 * px_per_mm, 0.3, 0.5), (1.0 * px_per_mm, 0.5 * px_per_mm, 1.5)
-    start = np.clip((_USUAL_MM * px_per_mm, 0.8, 1.0), low, high)
-    width, blur, gain = sp.optimize.least_squares(misfit, start, bounds=(low, high)).x
-    return Pen(float(width), float(blur), float(blur), float(gain))
+    low = np.array([0.1 * px_per_mm, 0.3, 0.5])
+    high = np.array([1.0 * px_per_mm, 0.5 * px_per_mm, 1.5])
+    start = np.clip([_USUAL_MM * px_per_mm, 0.8, 1.0], low, high)
+    free = 3 if gain is None else 2
+    fitted = sp.optimize.least_squares(misfit, start[:free], bounds=(low[:free], high[:free])).x
+    return float(fitted[0]), float(fitted[1]), float(fitted[2] if gain is None else gain)
 
 
 def refine_pen(pen: Pen, strokes: list[tuple[View, Line, float, float]]) -> tuple[Pen, float]:
-    """Improve the pen, its blur across included, on fitted lines; and measure what is left.
+    """Improve blur and density of the pen on fitted lines, and measure what is left.
 
     Steep flanks show the blur across as level stretches show that down; the two differ where the
     pixels of the source are not square.
@@ -117,11 +155,12 @@ def refine_pen(pen: Pen, strokes: list[tuple[View, Line, float, float]]) -> tupl
         Noise of the ink about the strokes, as white noise of the same effect: residuals that
         neighbouring pixels share do not average out.
     """
+    width = pen.width_px
     regions = [_beside(view, line, x0, step, pen) for view, line, x0, step in strokes]
-    values = np.array(pen.nib)
+    values = np.array(pen.nib[1:])
 
     def residual(nib: np.ndarray) -> list[np.ndarray]:
-        trial = Pen(*(float(v) for v in nib))
+        trial = Pen(width, *(float(v) for v in nib))
         return [
             view.image - _drawn(view, line, x0, step, trial) for view, line, x0, step in strokes
         ]
@@ -137,7 +176,7 @@ def refine_pen(pen: Pen, strokes: list[tuple[View, Line, float, float]]) -> tupl
         shifts = 0.02 * values
         slopes = np.stack(
             [
-                (base - on_ink(residual(values + shift * np.eye(4)[i]))) / shift
+                (base - on_ink(residual(values + shift * np.eye(3)[i]))) / shift
                 for i, shift in enumerate(shifts)
             ]
         )
@@ -145,7 +184,7 @@ def refine_pen(pen: Pen, strokes: list[tuple[View, Line, float, float]]) -> tupl
         move = np.linalg.solve((slopes * weight) @ slopes.T + hold, (slopes * weight) @ base)
         values = values + np.clip(move, -0.2 * values, 0.2 * values)
         left = residual(values)
-    return Pen(*(float(v) for v in values)), _white_noise(left, regions)
+    return Pen(width, *(float(v) for v in values)), _white_noise(left, regions)
 
 
 def _drawn(view: View, line: Line, x0: float, step: float, pen: Pen) -> np.ndarray:

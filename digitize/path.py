@@ -156,3 +156,64 @@ def sharp_edges(density: np.ndarray, run: np.ndarray, level: float) -> np.ndarra
         drop = np.where(outer < level, inner - outer, np.inf)
         edges[side, cols] = at + out * np.clip((inner - level) / drop, 0, 1)
     return edges
+
+
+@numba.njit(cache=True)
+def flank_runs(
+    density: np.ndarray,
+    edges: np.ndarray,
+    shared: np.ndarray,
+    col0: int,
+    level: float,
+    steep: float,
+) -> np.ndarray:
+    """Runs of ink along rows, through the steep stretches of one trace.
+
+    Returns
+    -------
+    (4, n) float array
+        Row, sub-pixel left and right end, and the cosine of the flank's lean from upright, of
+        each run that is bare on both sides and whose neighbours two rows away are alike.
+    """
+    cols = density.shape[1]
+    found = []
+    last_row, last_left = -1, -1.0
+    for c in range(edges.shape[1]):
+        if shared[c] or not edges[1, c] - edges[0, c] > steep:
+            continue
+        margin = 0.25 * steep
+        for row in range(int(edges[0, c] + margin), int(edges[1, c] - margin)):
+            if row < 2 or row > density.shape[0] - 3:
+                continue
+            ends = np.zeros((3, 2))
+            whole = True
+            at = col0 + c
+            for k in range(3):
+                r = row + 2 * (k - 1)
+                if density[r, at] < level:
+                    whole = False
+                    break
+                for side in range(2):
+                    step = 2 * side - 1
+                    e = at
+                    while 2 < e < cols - 3 and density[r, e + step] >= level:
+                        e += step
+                    inner, outer = density[r, e], density[r, e + step]
+                    if outer >= level or density[r, e + 2 * step] > 0.5 * level:
+                        whole = False
+                    else:
+                        ends[k, side] = e + step * (inner - level) / (inner - outer)
+            if not whole or (row == last_row and ends[1, 0] == last_left):
+                continue
+            middle = 0.5 * (ends[:, 0] + ends[:, 1])
+            wide = ends[:, 1] - ends[:, 0]
+            lean = 0.25 * (middle[2] - middle[0])
+            bent = abs(middle[2] - 2 * middle[1] + middle[0])
+            if abs(lean) < 0.5 and bent < 0.5 and wide.max() < 1.2 * wide.min():
+                found.append((float(row), ends[1, 0], ends[1, 1], 1 / np.sqrt(1 + lean * lean)))
+                last_row, last_left = row, ends[1, 0]
+    out = np.zeros((4, len(found)))
+    for k in range(len(found)):
+        for i in range(4):
+            out[i, k] = found[k][i]
+    return out
