@@ -16,7 +16,7 @@ from measure.criteria.lbbb import AHA
 from measure.quantity import Quantity
 from measure.waves import LeadWaves
 
-WIDE_S_MS = 40.0
+WIDE_MS = 40.0  # the definition's measure of a wide S, taken for a wide R in V1 too
 LATE_RPT_MS = 50.0
 NORMAL_LATERAL_RPT_MS = 60.0  # what the statement calls late in V5 and V6 is beyond this
 
@@ -88,7 +88,17 @@ def _r_then_larger_r(waves: LeadWaves) -> Look:
 
 def _wide_r(case: Case, waves: LeadWaves) -> Look:
     """A wide R that dominates, alone or after a q."""
-    return every([shape.upright(waves), shape.broad(case, waves)])
+    tallest = max(shape.upward(waves), key=lambda d: d.amplitude_mv, default=None)
+    if tallest is None:
+        return shape.described("not met", waves, "a wide R")
+    wide = look_at(
+        Quantity(tallest.duration_ms, case.edge_se_ms(waves.lead), "ms"),
+        Limit(">", WIDE_MS, "ms"),
+        lead=waves.lead,
+        what="width of the R",
+        time_ms=tallest.peak_ms,
+    )
+    return every([shape.upright(waves), wide])
 
 
 def _wide_s(case: Case, waves: LeadWaves) -> Look:
@@ -98,7 +108,7 @@ def _wide_s(case: Case, waves: LeadWaves) -> Look:
     se_ms = case.edge_se_ms(waves.lead)
     long_s = look_at(
         Quantity(s.duration_ms, se_ms, "ms"),
-        Limit(">", WIDE_S_MS, "ms"),
+        Limit(">", WIDE_MS, "ms"),
         lead=waves.lead,
         what="S duration",
         time_ms=s.peak_ms,

@@ -80,6 +80,15 @@ def test_aha_2009_4_single_r_in_v1_peaks_beyond_50_ms(peak_ms, result):
     assert complete(single_r(peak_ms)).result == result
 
 
+# The definition's own measure of a wide S stands for "wide" in V1.
+@pytest.mark.parametrize(("end_ms", "result"), [(99, "not met"), (100, "not met"), (101, "met")])
+def test_aha_2009_2_wide_r_after_a_q_lasts_more_than_40_ms(end_ms, result):
+    leads = single_r(80)
+    q, r = wave("Q", -0.1, 0, 60), wave("R", 0.9, 60, end_ms, peak_ms=80)
+    leads["V1"] = lead("V1", "qR", q, r)
+    assert made.clause(complete(leads), "rsr'").result == result
+
+
 # Normal is not beyond the 60 ms from which the same statement calls it late in left block.
 @pytest.mark.parametrize(("rpt_ms", "result"), [(59, "met"), (60, "met"), (61, "not met")])
 def test_aha_2009_4_single_r_in_v1_with_normal_r_peak_time_in_v5_v6(rpt_ms, result):
