@@ -1,11 +1,10 @@
-"""The way of every trace on the page, so that no two need the same ink and none is left over.
+"""The way of every trace on the page, so that no two need the same ink.
 
 Where every trace is plain to see its path is anchored. In between, each panel's path is searched
 alone at first; where two then run along the same ink, one of them took a short cut, and each is
-searched again while the ink on the other's path may be crossed but not followed. Ink that then
-belongs to nobody is offered to the traces about it. In columns where the ink of two traces has run
-together, each keeps what lies about its own path; open ends of the run belong to the path that is
-nearest to them.
+searched again while the ink on the other's path may be crossed but not followed. In columns where
+the ink of two traces has run together, each keeps what lies about its own path; open ends of the
+run belong to the path that is nearest to them.
 """
 
 from dataclasses import dataclass
@@ -17,15 +16,14 @@ from digitize.anchors import find_anchors
 from digitize.field import INKED, Field, Path, to_field, walk
 from digitize.ink import Ink
 from digitize.layout import Box, Layout, PanelPlace
-from digitize.leftover import adopt
 from digitize.path import run_at, sharp_edges
+from digitize.sheet import Raster
 
 _REACH_MM = 45.0  # a trace may stray so far from its usual height: 4.5 mV at 10 mm/mV
 _ENTRY_PER_MM = 0.05  # price of starting away from the usual height of the trace
 _ENTRY_FREE_MM = 5.0
 _ASTRAY_PER_MM = 2e-3 / 6  # bareness for each millimetre off that height
 _HALF_PEN_MM = 0.25  # ink about a path that is surely its own
-_SHORT_MM = 1.5  # a run of ink that stands out so little from its path holds no peak of its own
 _SWEEPS = 2
 EDGE = 0.5  # density at the edge of a full stroke
 
@@ -44,18 +42,46 @@ class Way:
     shared: np.ndarray
 
 
-def find_ways(ink: Ink, layout: Layout) -> tuple[Way, ...]:
-    """Find the way of each panel's trace, in the order of `layout.panels`."""
+@dataclass(frozen=True, eq=False)
+class Routes:
+    """Paths of all traces over the coarse field, with what they were found on."""
+
+    field: Field
+    clear: np.ndarray  # density of the page without printing
+    anchors: list[np.ndarray]
+    paths: list[Path]
+
+
+def find_routes(ink: Ink, layout: Layout) -> Routes:
+    """Find the shortest path of each panel's trace, in the order of `layout.panels`."""
     panels = layout.panels
     clear = without_printing(ink, layout.words + layout.marks)
     field = to_field(clear, ink.raster)
     anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
     paths = [_search(field, p, a) for p, a in zip(panels, anchors, strict=True)]
-    paths = _apart(field, paths, panels, anchors)
-    paths = adopt(field, _claimed(field, paths), paths, anchors)
-    fine = [_enlarge(q, field, p, ink) for q, p in zip(paths, panels, strict=True)]
-    slack = round(ink.raster.px_per_mm / field.px_per_mm)
-    return tuple(_way(k, fine, clear, ink.raster.px_per_mm, slack) for k in range(len(fine)))
+    return Routes(field, clear, anchors, _apart(field, paths, panels, anchors))
+
+
+def to_ways(
+    routes: Routes, paths: list[Path], places: list[tuple[float, float]], raster: Raster
+) -> tuple[Way, ...]:
+    """The ink along each path.
+
+    Parameters
+    ----------
+    routes : Routes
+    paths : list of Path
+        Those of `routes`, or parts of them led otherwise.
+    places : list of (float, float)
+        From where to where each runs, in millimetres across.
+    raster : Raster
+        Of the ink.
+    """
+    fine = [
+        _enlarge(path, routes, place, raster) for path, place in zip(paths, places, strict=True)
+    ]
+    slack = round(raster.px_per_mm / routes.field.px_per_mm)
+    return tuple(_way(k, fine, routes.clear, raster.px_per_mm, slack) for k in range(len(fine)))
 
 
 def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
@@ -125,32 +151,18 @@ def _overlap(k: int, paths: list[Path], half: int) -> bool:
     return False
 
 
-def _claimed(field: Field, paths: list[Path]) -> np.ndarray:
-    """Ink that the paths explain: about each path, and the run that it lies in if that is short."""
-    density, half = 1 - field.bare, _HALF_PEN_MM * field.px_per_mm
-    claimed = np.zeros(density.shape, bool)
-    row = np.arange(len(density))[:, None]
-    for path in paths:
-        ink = np.ascontiguousarray(density[:, path.left : path.right])
-        run = run_at(ink, path.span, 0.1, 1)
-        beyond = np.diff(run - path.span, axis=0)[0]
-        short = (run[0] >= 0) & (beyond < _SHORT_MM * field.px_per_mm)
-        low = np.where(short, run[0], path.span[0] - half)
-        high = np.where(short, run[1], path.span[1] + half)
-        claimed[:, path.left : path.right] |= (row >= low - 1) & (row <= high + 1)
-    return claimed
-
-
-def _enlarge(path: Path, field: Field, panel: PanelPlace, ink: Ink) -> Path:
-    """A coarse path in rows and columns of the ink's raster, from edge to edge of the panel."""
-    first = max(int(np.ceil(ink.raster.col(panel.box.left_mm))), 0)
-    last = min(int(ink.raster.col(panel.box.right_mm)), ink.density.shape[1] - 1)
-    x_mm = ink.raster.x_mm(np.arange(first, last + 1))
+def _enlarge(path: Path, routes: Routes, place: tuple[float, float], raster: Raster) -> Path:
+    """A coarse path in rows and columns of the ink's raster."""
+    rows, cols = routes.clear.shape
+    first = max(int(np.ceil(raster.col(place[0]))), 0)
+    last = min(int(raster.col(place[1])), cols - 1)
+    x_mm = raster.x_mm(np.arange(first, last + 1))
+    field = routes.field
     step_mm = field.x_mm[1] - field.x_mm[0]
     at = np.rint((x_mm - field.x_mm[0]) / step_mm).astype(int) - path.left
     span = path.span[:, np.clip(at, 0, path.span.shape[1] - 1)]
-    scale = len(ink.density) / len(field.y_mm)
-    return Path(first, np.stack([(span[0] * scale), (span[1] + 1) * scale - 1]).astype(np.int64))
+    scale = rows / len(field.y_mm)
+    return Path(first, np.stack([span[0] * scale, (span[1] + 1) * scale - 1]).astype(np.int64))
 
 
 def _way(k: int, paths: list[Path], density: np.ndarray, px_per_mm: float, slack: int) -> Way:
