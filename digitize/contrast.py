@@ -33,8 +33,7 @@ def _clipped_darkness(grey: np.ndarray) -> np.ndarray:
     paper = cv2.GaussianBlur(cv2.dilate(small, np.ones((3, 3))), (0, 0), 2.0)
     paper = cv2.resize(paper, grey.shape[::-1], interpolation=cv2.INTER_LINEAR)
     dark = np.maximum(paper - grey, 0)
-    sample = dark[::4, ::4]
-    return np.minimum(dark, 2.5 * sample.mean() + 2)
+    return np.minimum(dark, 1.5 * np.quantile(dark[::4, ::4], 0.9) + 2)
 
 
 def _even(image: np.ndarray) -> np.ndarray:

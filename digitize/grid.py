@@ -24,6 +24,10 @@ from digitize.tracing import Origin
 CELL_PX = 16  # phase is read on cells of this many (reduced) pixels
 MIN_CELLS = 30
 MIN_COHERENCE = 0.35
+MIN_SEEN = 0.08  # a lattice seen on less of the page is chance
+MAX_RESIDUAL_MM = 0.12  # phase that scatters more follows no ruling
+MAX_PX_PER_MM = 60.0
+FAX_RATIOS = (204 / 98, 204 / 196, 204 / 391)  # ITU-T T.4 resolutions
 
 
 @dataclass(frozen=True, eq=False)
@@ -78,13 +82,15 @@ def find_grid(page: Page, options: Options | None = None) -> Grid:
     across = _read_phase(contrast, lattice.phase_x, lattice.mm_per_cycle_x)
     down = _read_phase(contrast, lattice.phase_y, lattice.mm_per_cycle_y)
     weight = np.minimum(across.weight, down.weight)
-    if np.count_nonzero(weight > MIN_COHERENCE) < MIN_CELLS:
-        return _without_grid(page, options)
     seen = _largest_part(weight > MIN_COHERENCE)
+    if np.mean(seen) < MIN_SEEN or np.count_nonzero(seen) < MIN_CELLS:
+        return _without_grid(page, options)
     x_px, y_px = _cell_centres(weight.shape, factor)
     page_map, residual_mm = fit_page_map(
         x_px[seen], y_px[seen], across.mm[seen], down.mm[seen], weight[seen], page.pixels.shape[:2]
     )
+    if residual_mm > MAX_RESIDUAL_MM or not _plausible(page_map.scale_px_per_mm(), page):
+        return _without_grid(page, options)
     x_mm, y_mm = page_map.to_mm(x_px[seen], y_px[seen])
     half = CELL_PX * factor / 2 / np.mean(page_map.scale_px_per_mm())
     ruled = (x_mm.min() - half, y_mm.min() - half, x_mm.max() + half, y_mm.max() + half)
@@ -97,6 +103,17 @@ def find_grid(page: Page, options: Options | None = None) -> Grid:
         residual_mm=residual_mm,
         ruled_mm=ruled,
     )
+
+
+def _plausible(px_per_mm: tuple[float, float], page: Page) -> bool:
+    """Whether pixels are about square, or as the file or a fax has them."""
+    usual = [1.0, *FAX_RATIOS]
+    if page.source.dpi is not None:
+        usual.append(page.source.dpi[0] / page.source.dpi[1])
+    if max(px_per_mm) > MAX_PX_PER_MM:
+        return False
+    ratio = px_per_mm[0] / px_per_mm[1]
+    return any(abs(np.log(ratio / r)) < 0.2 for r in (*usual, *(1 / r for r in usual)))
 
 
 def _reduce(pixels: np.ndarray) -> tuple[np.ndarray, int]:

@@ -9,6 +9,7 @@ import heapq
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+import cv2
 import numpy as np
 import scipy as sp
 
@@ -17,9 +18,13 @@ STRIDE_PX = 96
 FFT_PX = 256
 CONE = np.tan(np.deg2rad(40.0))  # a line family lies within this of its axis
 MIN_HZ = 1 / 75  # cycles per pixel: 5 mm at 15 px/mm
+HUMP = 15  # cells over which a hump of the spectrum is level
+STANDS_OUT = 2.5
 CLEAR = 5.0  # a peak counts from this many times the usual spectrum
 TOOTH = 0.12  # a harmonic is there from this share of the strongest peak
 USUAL_PAGE_MM = 260.0  # common practice: A4, Letter and strips; only to tell 1 mm from 5 mm
+SAME_SPACING = 0.2  # natural log: perspective changes the spacing less than this
+SPACINGS = 3  # distinct spacings considered per family
 VOTERS = 40  # tiles whose comb is looked at
 PX_PER_MM_RANGE = (2.4, 40.0)
 
@@ -104,8 +109,15 @@ def _tile_spectra(contrast: np.ndarray) -> tuple[np.ndarray, tuple[np.ndarray, n
         tiles = (tiles - tiles.mean(axis=(1, 2), keepdims=True)) * window
         spectrum = np.abs(sp.fft.rfft2(tiles, (FFT_PX, FFT_PX), axes=(1, 2)))
         usual = np.median(spectrum[:, ::4, ::4], axis=(1, 2), keepdims=True)
-        spectra[i] = np.fft.fftshift(spectrum / np.maximum(usual, 1e-6), axes=1)
+        shifted = np.fft.fftshift(spectrum / np.maximum(usual, 1e-6), axes=1)
+        spectra[i] = np.stack([_peaks_alone(one) for one in shifted])
     return spectra, (np.array(tops) + size_y / 2 - 0.5, np.array(lefts) + size_x / 2 - 0.5)
+
+
+def _peaks_alone(spectrum: np.ndarray) -> np.ndarray:
+    """What stands out of a spectrum: traces and shade make broad humps, a lattice sharp peaks."""
+    around = cv2.blur(spectrum, (HUMP, HUMP))
+    return np.where(spectrum > STANDS_OUT * around, spectrum - around, 0.0)
 
 
 def _starts(length: int, size: int) -> list[int]:
@@ -160,27 +172,45 @@ def _settle(
         return []
     spacing = np.array([v[2] for v in votes])
     weight = np.minimum([v[3] for v in votes], 3 * np.median([v[3] for v in votes]))
-    support = [np.sum(weight[np.abs(np.log(spacing / s)) < 0.2]) for s in spacing]
-    middle = spacing[int(np.argmax(support))]
-    votes = [v for v in votes if abs(np.log(v[2] / middle)) < 0.2]
-    teeth = np.median([v[4] for v in votes], axis=0)
-    tile, direction, length_px, _, _ = max(votes, key=lambda v: v[3])
-    seed = tuple(int(v) for v in np.unravel_index(tile, spectra.shape[:2]))
+    alike = np.abs(np.log(spacing[:, None] / spacing)) < SAME_SPACING
     families = []
-    for mm in (5.0, 1.0):
-        px_per_mm = middle / mm * factor
-        tooth = _trackable(teeth) if mm == 5 else 5
-        hz = (tooth if mm == 5 else 1) / length_px
-        families.append(
-            _Family(
-                px_per_mm=px_per_mm,
-                tooth=tooth,
-                seed=seed,  # type: ignore[arg-type]
-                seed_hz=(direction[0] * hz, direction[1] * hz),
-                evidence=_evidence(mm, teeth, px_per_mm, dpi, page_px),
-            )
-        )
+    left = np.ones(len(votes), bool)
+    for _ in range(SPACINGS):
+        if not left.any():
+            break
+        support = np.where(left, alike @ (weight * left), 0.0)
+        group = alike[int(np.argmax(support))] & left
+        left &= ~group
+        voters = [v for v, inside in zip(votes, group, strict=True) if inside]
+        share = float(weight[group].sum() / weight.sum())
+        for mm in (5.0, 1.0):
+            teeth = np.median([v[4] for v in voters], axis=0)
+            px_per_mm = float(np.median(spacing[group])) / mm * factor
+            evidence = _evidence(mm, teeth, px_per_mm, dpi, page_px) + 3 * np.log(share)
+            families.append(_family(mm, teeth, px_per_mm, voters, evidence, spectra.shape))
     return sorted(families, key=lambda f: -f.evidence)
+
+
+def _family(
+    mm: float,
+    teeth: np.ndarray,
+    px_per_mm: float,
+    voters: list[tuple[int, tuple[float, float], float, float, np.ndarray]],
+    evidence: float,
+    shape: tuple[int, ...],
+) -> _Family:
+    """The hypothesis that a comb is that of `mm`, followed from its clearest tile."""
+    tile, direction, length_px, _, _ = max(voters, key=lambda v: v[3])
+    tooth = _trackable(teeth) if mm == 5 else 5
+    hz = (tooth if mm == 5 else 1) / length_px
+    row, col = np.unravel_index(tile, shape[:2])
+    return _Family(
+        px_per_mm=px_per_mm,
+        tooth=tooth,
+        seed=(int(row), int(col)),
+        seed_hz=(direction[0] * hz, direction[1] * hz),
+        evidence=float(evidence),
+    )
 
 
 def _comb(ray: np.ndarray, profile: np.ndarray) -> tuple[float, float, np.ndarray] | None:
@@ -226,7 +256,7 @@ def _refine_spacing(spacing: float, peak_hz: np.ndarray, weight: np.ndarray) -> 
 
 def _trackable(teeth: np.ndarray) -> int:
     """Which harmonic of 5 mm to follow: the 1 mm one where it shows."""
-    if teeth[4] >= max(0.4 * teeth[:6].max(), CLEAR):
+    if teeth[4] >= max(0.25 * teeth[:6].max(), CLEAR):
         return 5
     return 1 + int(np.argmax(teeth[:3]))
 
