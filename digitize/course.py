@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 import scipy as sp
 
-from digitize.fit import Line, View, fit_line, start_from_edges
+from digitize.fit import ROUNDS, Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.pen import Pen, draw_line
 from digitize.ways import Way
@@ -92,11 +92,11 @@ def cut_out(
     return Cut(row0, col0, View(image.astype(np.float32), other, rows.astype(np.int64), noise))
 
 
-def fit(cut: Cut, course: Course, pen: Pen) -> Line:
+def fit(cut: Cut, course: Course, pen: Pen, rounds: int = ROUNDS) -> Line:
     """Fit a line from where its course begins."""
     inked = np.isfinite(course.y)
     y = np.interp(course.x, course.x[inked], course.y[inked]) - cut.row0
-    return fit_line(cut.view, y, course.x[0] - cut.col0, course.x[1] - course.x[0], pen)
+    return fit_line(cut.view, y, course.x[0] - cut.col0, course.x[1] - course.x[0], pen, rounds)
 
 
 def placed(line: Line, cut: Cut, course: Course) -> Course:

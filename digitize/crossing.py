@@ -23,9 +23,9 @@ _AROUND_MM = 2.5  # paper taken in to each side of a piece
 _TOUCH_MM = 1.2  # a piece so near to a path may belong to it
 _HALF_PEN_MM = 0.25  # ink about a path that is surely its own
 _SHORT_MM = 1.5  # a run of ink that stands out so little from its path holds no peak of its own
-_BEAM = 5
+_BEAM = 8
 _DEPTH = 6
-_ANSWERS = 4
+_ANSWERS = 8
 _CLOSE = 12.0  # answers dearer than the best by more are not worth drawing
 _OUTSIDE = 1e3
 
@@ -118,8 +118,8 @@ def _left_over(
         low = np.where(short, run[0], path.span[0] - half)
         high = np.where(short, run[1], path.span[1] + half)
         claimed[:, at] |= (row >= low - 1) & (row <= high + 1)
-    left = ((part < INKED) & ~claimed).astype(np.uint8)
-    left = cv2.morphologyEx(left, cv2.MORPH_OPEN, np.ones((2, 2), np.uint8))
+    unclaimed = ((part < INKED) & ~claimed).astype(np.uint8)
+    left = cv2.morphologyEx(unclaimed, cv2.MORPH_OPEN, np.ones((2, 2), np.uint8))
     _, labels, stats, _ = cv2.connectedComponentsWithStats(left, connectivity=8)
     size = np.maximum(stats[:, cv2.CC_STAT_HEIGHT], stats[:, cv2.CC_STAT_WIDTH])
     large = size >= _LEAST_MM * field.px_per_mm

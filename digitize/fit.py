@@ -24,7 +24,7 @@ import scipy as sp
 from digitize.normal import band_of_inverse, column_costs, normal_equations
 from digitize.pen import Pen
 
-_ROUNDS = 3  # estimates of the prior's strength
+ROUNDS = 3  # estimates of the prior's strength
 _STEPS = 5  # Gauss-Newton steps in each
 _SETTLED_PX = 0.2
 _FLOOR_PX2 = 1e-3  # no second difference is expected below 0.03 px: finer than any ink shows
@@ -57,7 +57,14 @@ class Line:
     cost: np.ndarray
 
 
-def fit_line(view: View, start_px: np.ndarray, x0_px: float, step_px: float, pen: Pen) -> Line:
+def fit_line(
+    view: View,
+    start_px: np.ndarray,
+    x0_px: float,
+    step_px: float,
+    pen: Pen,
+    rounds: int = ROUNDS,
+) -> Line:
     """Fit the heights of a line's nodes to the ink.
 
     Parameters
@@ -68,6 +75,8 @@ def fit_line(view: View, start_px: np.ndarray, x0_px: float, step_px: float, pen
     x0_px, step_px : float
         Place of the first node, in columns of the cut-out, and distance of the nodes.
     pen : Pen
+    rounds : int, optional
+        Estimates of the prior's strength; one is enough to compare, not to measure.
 
     Returns
     -------
@@ -96,10 +105,10 @@ def fit_line(view: View, start_px: np.ndarray, x0_px: float, step_px: float, pen
     everywhere = np.ones(view.image.shape[1], bool)
     spread = _mean_near(_curvature(y) ** 2) + _FLOOR_PX2
     damping = np.full(len(y), 0.1)
-    for turn in range(_ROUNDS + 1):
+    for turn in range(rounds + 1):
         matrix, gradient, cost = normal_equations(y, *place, band, everywhere)
         inverse = _inverse(_with_prior(matrix, 1 / spread))
-        if turn == _ROUNDS:
+        if turn == rounds:
             break
         if turn:
             spread = _mean_near(_curvature(y) ** 2 + _curvature_variance(inverse)) + _FLOOR_PX2

@@ -7,7 +7,7 @@ from digitize.crossing import Answer, find_answers, spliced
 from digitize.field import Path
 from digitize.ink import Ink
 from digitize.pen import Pen
-from digitize.ways import Routes, to_ways
+from digitize.ways import Routes, Way, to_ways
 
 _END_MM = 0.5  # of each end of a place, where the lines begin out of nothing
 _OUTLIER = 4.0
@@ -30,39 +30,55 @@ def settle(routes: Routes, ink: Ink, pen: Pen, noise: float) -> list[Path]:
     """
     paths = routes.paths
     for answers in find_answers(routes.field, routes.paths, routes.anchors):
-        best = answers[0]
-        if len(answers) > 1:
-            best = min(answers, key=lambda a: _misfit(a, answers, routes, ink, pen, noise))
-        paths = spliced(paths, best)
+        paths = spliced(paths, _best(answers, routes, ink, pen, noise))
     return paths
 
 
-def _misfit(
-    answer: Answer,
-    answers: tuple[Answer, ...],
-    routes: Routes,
-    ink: Ink,
-    pen: Pen,
-    noise: float,
-) -> float:
-    """Cost of the ink of one place against its best redrawing by one answer."""
+def _best(answers: tuple[Answer, ...], routes: Routes, ink: Ink, pen: Pen, noise: float) -> Answer:
+    """The answer whose redrawing is most like the ink; the cheapest of those that draw alike."""
+    varied = [
+        m
+        for m, path in answers[0].paths.items()
+        if any((a.paths[m].span != path.span).any() for a in answers[1:])
+    ]
+    if not varied:
+        return answers[0]
+    window = _window(answers, varied, routes, ink)
+    best, least, drawn = answers[0], np.inf, set()
+    for answer in answers:
+        ways, courses = _begun(answer, routes, ink, pen)
+        key = b"".join(way.edges.tobytes() for way in ways)
+        if key in drawn:
+            continue
+        drawn.add(key)
+        for _ in range(2):
+            for k, m in enumerate(answer.paths):
+                if m in varied and courses[k].inked:
+                    cut = cut_out(k, ways, courses, pen, ink, noise)
+                    courses[k] = placed(fit(cut, courses[k], pen, rounds=1), cut, courses[k])
+        cost = _cost(courses, window, pen, ink, noise)
+        if cost < least - 1e-6:
+            best, least = answer, cost
+    return best
+
+
+def _begun(
+    answer: Answer, routes: Routes, ink: Ink, pen: Pen
+) -> tuple[tuple[Way, ...], list[Course]]:
+    """The ink along each path of an answer, and the lines as they begin."""
     field, raster = routes.field, ink.raster
     parts = list(answer.paths.values())
     spans_mm = [(field.x_mm[p.left], field.x_mm[p.right - 1]) for p in parts]
     ways = to_ways(routes, parts, spans_mm, raster)
-    courses = [begin(w, *span, pen, ink) for w, span in zip(ways, spans_mm, strict=True)]
-    for _ in range(2):
-        for k, course in enumerate(courses):
-            if course.inked:
-                cut = cut_out(k, ways, courses, pen, ink, noise)
-                courses[k] = placed(fit(cut, course, pen), cut, course)
-    return _cost(courses, _window(answers, routes, ink), pen, ink, noise)
+    return ways, [begin(w, *span, pen, ink) for w, span in zip(ways, spans_mm, strict=True)]
 
 
-def _window(answers: tuple[Answer, ...], routes: Routes, ink: Ink) -> tuple[slice, slice]:
-    """Rows and columns of the ink that any of the answers goes through."""
+def _window(
+    answers: tuple[Answer, ...], varied: list[int], routes: Routes, ink: Ink
+) -> tuple[slice, slice]:
+    """Rows and columns of the ink that the paths in doubt go through."""
     field, raster = routes.field, ink.raster
-    parts = [path for answer in answers for path in answer.paths.values()]
+    parts = [path for answer in answers for m, path in answer.paths.items() if m in varied]
     top = min(int(p.span[0].min()) for p in parts)
     bottom = max(int(p.span[1].max()) for p in parts)
     left, right = min(p.left for p in parts), max(p.right for p in parts) - 1
