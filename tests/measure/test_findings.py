@@ -12,8 +12,10 @@ from digitize.tracing import LEADS
 from measure.questions import BLOCK_FAMILIES, FAMILIES
 from measure.reading import Person, read
 from measure.sources import tracing_from_samples
+from tests.criteria_benchmark import records
 from tests.drawn.heart import HeartSpec, record_model
-from tests.drawn.records import read_dicom_example
+from tests.drawn.records import read_dicom_example, read_ptbxl
+from tests.measure.open_data import folder
 
 LEFT = {"lbbb_european_2013", "lbbb_european_2021", "lbbb_strict", "lbbb_aha", "lbbb_bedside"}
 BLOCKS = {key for name, keys in FAMILIES if name in BLOCK_FAMILIES for key in keys}
@@ -68,3 +70,40 @@ def test_real_normal_recording_meets_no_block():
     tracing = tracing_from_samples(real.mv.T, LEADS, real.fs_hz, file_name="waveform_ecg.dcm")
     found = {f.key: f.result for f in read(tracing).findings}
     assert {found[key] for key in BLOCKS} == {"not met"}
+
+
+def labelled(statement, count):
+    """Results of some PTB-XL records with one statement and no pacing, evenly taken."""
+    ptbxl = folder("PTBXL_DIR")
+    members = [
+        label
+        for label in records(ptbxl)
+        if statement in label.statements and "PACE" not in label.statements
+    ]
+    for label in members[:: len(members) // count][:count]:
+        real = read_ptbxl(int(label.record.removesuffix("_lr")))
+        tracing = tracing_from_samples(real.mv.T, LEADS, real.fs_hz, file_name=label.record)
+        findings = read(tracing, label.person).findings
+        yield {f.key: f.result for f in findings}
+
+
+# PTB-XL (Wagner et al., Sci Data 7:154): statements by cardiologists or a recorder, some wrong.
+def test_ptbxl_left_block_is_met_or_open_and_never_right():
+    found = list(labelled("CLBBB", 15))
+    assert sum(f["lbbb_european_2013"] == "met" for f in found) >= 9  # 10, and 4 open
+    assert sum(f["lbbb_european_2013"] == "not met" for f in found) <= 1
+    strict, aha = (sum(f[k] == "met" for f in found) for k in ("lbbb_strict", "lbbb_aha"))
+    assert strict >= aha  # as in Netherlands Heart Journal 2021;29:643, table 2
+    assert sum(f["rbbb_complete"] == "met" for f in found) <= 1
+
+
+def test_ptbxl_right_block_is_met_and_never_left():
+    found = list(labelled("CRBBB", 15))
+    assert sum(f["rbbb_complete"] == "met" for f in found) >= 9
+    assert all(f[key] != "met" for f in found for key in LEFT - {"lbbb_bedside"})
+
+
+def test_ptbxl_normal_meets_no_bundle_branch_block():
+    found = list(labelled("NORM", 15))
+    for key in (LEFT | {"rbbb_complete", "rbbb_lafb"}) - {"lbbb_bedside"}:
+        assert all(f[key] != "met" for f in found)
