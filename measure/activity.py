@@ -28,7 +28,9 @@ class Leads:
 
     def slopes(self, width_ms: int) -> np.ndarray:
         """Slope of each lead in mV/s from a parabola over `width_ms`, (leads, n)."""
-        return 1000 * sp.signal.savgol_filter(self.mv, width_ms | 1, 2, deriv=1, axis=1)
+        return 1000 * sp.signal.savgol_filter(
+            self.mv, width_ms | 1, 2, deriv=1, axis=1, mode="nearest"
+        )
 
     def size(self, values: np.ndarray) -> np.ndarray:
         """Root mean square over the leads measured at each moment, (n,).

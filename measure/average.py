@@ -1,7 +1,6 @@
 """The dominant beat: the usual beats of each lead, aligned and averaged.
 
-Each beat is shifted by a fraction of a sample until all leads that show it fit the average best,
-so that columns that follow one another meet at the same fiducial point. Wander of the baseline is
+Wander of the baseline is
 taken off at the same phase of every beat, before its P wave or QRS.
 """
 
@@ -11,18 +10,14 @@ import numpy as np
 import scipy as sp
 
 from digitize.tracing import Panel, Tracing
+from measure.alignment import ALIGN_MS, QRS_MS, Strip, align_beats, cut_beats, quiet_mean, strip_of
 from measure.beats import Beats
 from measure.spikes import bridge_spikes
 
 _RASTER_MS = 1.0  # finer than the samples: boundaries lie between them
 _BEFORE_MS = 400  # holds a P wave with a PR of 300 ms
 _AFTER_MS = 700
-_ALIGN_MS = (-120, 160)  # the QRS, whose shape aligns
-_QRS_MS = (-90, 110)  # this much of a beat must be visible, or the QRS counts as cut
 _LEVEL_MS = (-110, -70)  # phase at which the baseline is taken: between P wave and QRS mostly
-_SHIFTS_MS = np.arange(-30.0, 30.5, 1.0)
-_ROUNDS = 3
-_COMMON = 0.75
 _OUTLIER = 4.0  # times the usual distance from the average: such a beat is left out of its lead
 
 
@@ -36,7 +31,8 @@ class DominantBeat:
     place. `beats` counts the beats in each lead's average, 0 where there is none.
     `spike_ms` are the times of pacing spikes, (m,). `at_s` are the times in the recording of the
     fiducial points of the averaged beats, (k,), and `single_mv` the aligned beats themselves,
-    (len(leads), k, n), NaN where a beat is cut, hidden or left out.
+    (len(leads), k, n), NaN where a beat is cut, hidden or left out. `column_se_ms` is the error of
+    bringing columns together that share no lead, 0 where a strip or simultaneous leads do it.
     """
 
     leads: tuple[str, ...]
@@ -48,6 +44,7 @@ class DominantBeat:
     spike_ms: tuple[float, ...] = ()
     at_s: tuple[float, ...] = ()
     single_mv: np.ndarray | None = None
+    column_se_ms: float = 0.0
 
     def lead(self, name: str) -> np.ndarray:
         """Average of one lead in mV, (n,); KeyError where the lead is not there."""
@@ -66,18 +63,15 @@ def average_beats(tracing: Tracing, beats: Beats) -> DominantBeat:
     at_s = beats.time_s[beats.dominant]
     usable_ms = _usable_ms(beats)
     panels = [tracing.lead(name) for name in tracing.leads]
-    levelled = [_levelled(panel, beats) for panel in panels]
+    strips = [_levelled(panel, beats) for panel in panels]
     sigma = np.array([_usual_sigma(panel) for panel in panels])
-    shift_ms = np.zeros(len(at_s))
-    for _ in range(_ROUNDS):
-        cut = np.stack([_cut(p, c, at_s + shift_ms / 1000, raster_ms) for p, c in levelled])
-        shift_ms += _shifts(cut[_common(cut)], raster_ms)
-        shift_ms -= np.median(shift_ms)
-    cut = np.stack([_cut(p, c, at_s + shift_ms / 1000, raster_ms) for p, c in levelled])
+    shift_ms, column_se_ms = align_beats(strips, at_s, raster_ms)
+    at_s = at_s + shift_ms / 1000
+    cut = cut_beats(strips, at_s, raster_ms)
     cut[:, _outside(raster_ms, usable_ms)] = np.nan
     _drop_outliers(cut, raster_ms)
     mv, se_mv = _mean_and_se(cut, sigma)
-    qrs = (raster_ms >= _QRS_MS[0]) & (raster_ms <= _QRS_MS[1])
+    qrs = (raster_ms >= QRS_MS[0]) & (raster_ms <= QRS_MS[1])
     counts = tuple(int(n) for n in np.isfinite(cut[:, :, qrs]).all(axis=2).sum(axis=1))
     return DominantBeat(
         leads=tracing.leads,
@@ -86,17 +80,18 @@ def average_beats(tracing: Tracing, beats: Beats) -> DominantBeat:
         se_mv=se_mv,
         beats=counts,
         fs_hz=1000 / _RASTER_MS,
-        spike_ms=_usual_spikes(at_s + shift_ms / 1000, beats.spike_s),
-        at_s=tuple(float(t) for t in at_s + shift_ms / 1000),
+        spike_ms=_usual_spikes(at_s, beats.spike_s),
+        at_s=tuple(float(t) for t in at_s),
         single_mv=cut,
+        column_se_ms=column_se_ms,
     )
 
 
 def _usable_ms(beats: Beats) -> tuple[np.ndarray, np.ndarray]:
     """How far before and after each dominant beat is free of its neighbours' QRS."""
     gap_ms = 1000 * np.diff(beats.time_s)
-    before = np.concatenate([[np.inf], gap_ms - _ALIGN_MS[1]])
-    after = np.concatenate([gap_ms + _ALIGN_MS[0], [np.inf]])
+    before = np.concatenate([[np.inf], gap_ms - ALIGN_MS[1]])
+    after = np.concatenate([gap_ms + ALIGN_MS[0], [np.inf]])
     return before[beats.dominant], after[beats.dominant]
 
 
@@ -110,8 +105,8 @@ def _usual_sigma(panel: Panel) -> float:
     return float(np.median(finite)) if len(finite) else 0.0
 
 
-def _levelled(panel: Panel, beats: Beats) -> tuple[Panel, np.ndarray]:
-    """A panel and its millivolts with spikes bridged and the wander of its baseline taken off."""
+def _levelled(panel: Panel, beats: Beats) -> Strip:
+    """A panel with its spikes bridged and the wander of its baseline taken off."""
     mv = bridge_spikes(panel, beats.spike_s)
     at_s = beats.time_s[beats.dominant]
     knots_s, levels = [], []
@@ -124,7 +119,7 @@ def _levelled(panel: Panel, beats: Beats) -> tuple[Panel, np.ndarray]:
         if len(stretch) > (right - left) // 2:
             knots_s.append(beat_s + np.mean(_LEVEL_MS) / 1000)
             levels.append(float(np.median(stretch)))
-    return panel, mv - _wander(panel.time_s, np.array(knots_s), np.array(levels))
+    return strip_of(panel, mv - _wander(panel.time_s, np.array(knots_s), np.array(levels)))
 
 
 def _wander(time_s: np.ndarray, knots_s: np.ndarray, levels: np.ndarray) -> np.ndarray | float:
@@ -137,62 +132,9 @@ def _wander(time_s: np.ndarray, knots_s: np.ndarray, levels: np.ndarray) -> np.n
     return line(np.clip(time_s, knots_s[0], knots_s[-1]))
 
 
-def _cut(panel: Panel, mv: np.ndarray, at_s: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:
-    """One lead around each beat, (beats, n); NaN outside the panel, in gaps, and for cut QRSs."""
-    index = np.arange(len(mv))
-    seen = np.isfinite(mv)
-    if not seen.any():
-        return np.full((len(at_s), len(raster_ms)), np.nan)
-    bridged = np.interp(index, index[seen], mv[seen])
-    coefficients = sp.ndimage.spline_filter1d(bridged, order=3, mode="nearest")
-    at = (at_s[:, None] + raster_ms[None, :] / 1000 - panel.start_s) * panel.fs_hz
-    values = sp.ndimage.map_coordinates(
-        coefficients, at[None], order=3, mode="nearest", prefilter=False
-    )
-    whole = np.interp(at, index, seen.astype(float), left=0, right=0) > 1 - 1e-9
-    values = np.where(whole, values, np.nan)
-    qrs = (raster_ms >= _QRS_MS[0]) & (raster_ms <= _QRS_MS[1])
-    values[~np.isfinite(values[:, qrs]).all(axis=1)] = np.nan
-    return values
-
-
-def _common(cut: np.ndarray) -> np.ndarray:
-    """True for the leads that show the most beats.
-
-    Where columns follow one another only the strip sees all beats. The leads of a column would
-    hold its beats together, at whatever time each was put, against the one lead that knows better.
-    """
-    count = np.isfinite(cut).any(axis=2).sum(axis=1)
-    return count >= _COMMON * count.max()
-
-
-def _shifts(cut: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:
-    """Shift of each beat in ms at which all its leads fit the average best, to a fraction."""
-    mean = _quiet_nanmean(cut, axis=1)
-    inside = (raster_ms >= _ALIGN_MS[0]) & (raster_ms <= _ALIGN_MS[1])
-    places = np.flatnonzero(inside)
-    steps = np.round(_SHIFTS_MS / _RASTER_MS).astype(int)
-    cost = np.full((cut.shape[1], len(steps)), np.nan)
-    reference = np.gradient(mean[:, places], axis=1)
-    for k, step in enumerate(steps):
-        moved = np.gradient(cut[:, :, places + step], axis=2)
-        cost[:, k] = np.nansum((moved - reference[:, None, :]) ** 2, axis=(0, 2))
-    best = np.argmin(cost, axis=1)
-    return np.array([_vertex(row, k) for row, k in zip(cost, best, strict=True)])
-
-
-def _vertex(cost: np.ndarray, k: int) -> float:
-    """Shift at the minimum of a parabola through the lowest cost and its neighbours."""
-    if not 0 < k < len(cost) - 1:
-        return float(_SHIFTS_MS[k]) if k > 0 else 0.0
-    left, middle, right = cost[k - 1 : k + 2]
-    bend = left - 2 * middle + right
-    return float(_SHIFTS_MS[k] + (0.5 * (left - right) / bend * _RASTER_MS if bend > 0 else 0))
-
-
 def _drop_outliers(cut: np.ndarray, raster_ms: np.ndarray) -> None:
     """Blank, lead by lead, the beats that lie far from the median beat."""
-    window = (raster_ms >= _ALIGN_MS[0]) & (raster_ms <= 400)
+    window = (raster_ms >= ALIGN_MS[0]) & (raster_ms <= 400)
     middle = _quiet_nanmedian(cut, axis=1)
     distance = _quiet_nanmedian(np.abs(cut - middle[:, None])[:, :, window], axis=2)
     usual = _quiet_nanmedian(distance, axis=1)
@@ -208,7 +150,7 @@ def _mean_and_se(cut: np.ndarray, sigma: np.ndarray) -> tuple[np.ndarray, np.nda
     within 20 ms.
     """
     n = np.isfinite(cut).sum(axis=1)
-    mean = _quiet_nanmean(cut, axis=1)
+    mean = quiet_mean(cut, axis=1)
     squares = np.nansum((cut - mean[:, None]) ** 2, axis=1)
     width = round(40 / _RASTER_MS) | 1
     freedom = np.maximum(n - 1, 0).astype(float)
@@ -224,15 +166,9 @@ def _usual_spikes(at_s: np.ndarray, spike_s: np.ndarray) -> tuple[float, ...]:
     if len(spike_s) == 0:
         return ()
     lag_ms = np.sort((1000 * (spike_s[None, :] - at_s[:, None])).ravel())
-    lag_ms = lag_ms[(lag_ms > -_BEFORE_MS) & (lag_ms < _ALIGN_MS[1])]
+    lag_ms = lag_ms[(lag_ms > -_BEFORE_MS) & (lag_ms < ALIGN_MS[1])]
     groups = np.split(lag_ms, np.flatnonzero(np.diff(lag_ms) > 15) + 1)
     return tuple(float(np.median(g)) for g in groups if len(g) >= 0.5 * len(at_s))
-
-
-def _quiet_nanmean(values: np.ndarray, axis: int) -> np.ndarray:
-    """Mean of the finite values, NaN where there is none."""
-    n = np.isfinite(values).sum(axis=axis)
-    return np.where(n > 0, np.nansum(values, axis=axis) / np.maximum(n, 1), np.nan)
 
 
 def _quiet_nanmedian(values: np.ndarray, axis: int) -> np.ndarray:

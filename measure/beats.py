@@ -22,6 +22,7 @@ _WINDOW_S = 2.0  # holds at least one beat from 30/min
 _LEAST_SHARE = 0.30  # of the usual QRS activity
 _LEAST_IN_GAP = 0.13  # where a beat is overdue
 _OVERDUE = 1.55  # times the usual interval
+_MOST = 2.0  # times a panel's usual QRS: what is larger is an artefact, or need not be louder
 _REFRACTORY_MS = 220
 _T_WITHIN_MS = 420  # a smaller, slower hump this soon after a QRS is its T wave
 _P_WITHIN_MS = 320  # before the middle of its QRS
@@ -107,9 +108,13 @@ def _on_one_raster(tracing: Tracing, spike_s: np.ndarray | None = None) -> tuple
 
 
 def _activity(mv: np.ndarray) -> np.ndarray:
-    """Activity at each moment, (n,): 1 at a usual QRS, whichever panels are visible."""
+    """Activity at each moment, (n,): 1 at a usual QRS, whichever panels are visible.
+
+    Energies add, so that leads with a large QRS lead where another shows P waves as steep as its
+    QRS; each moment is then measured by the usual QRS of the panels visible there.
+    """
     total = np.zeros(mv.shape[1])
-    weight = np.full(mv.shape[1], 1e-9)
+    usual = np.full(mv.shape[1], 1e-9)
     for row in mv:
         seen = np.isfinite(row)
         if seen.sum() < 0.4 * FS_HZ:
@@ -119,9 +124,10 @@ def _activity(mv: np.ndarray) -> np.ndarray:
         scale, contrast = _scale_and_contrast(envelope)
         if scale > 0:
             inside = seen[first : last + 1]
-            total[first : last + 1] += np.where(inside, contrast * envelope / scale, 0)
-            weight[first : last + 1] += np.where(inside, contrast, 0)
-    return total / weight
+            envelope = np.minimum(envelope, _MOST * scale)
+            total[first : last + 1] += np.where(inside, contrast * envelope**2, 0)
+            usual[first : last + 1] += np.where(inside, contrast * scale**2, 0)
+    return np.sqrt(total / usual)
 
 
 def _envelope(row: np.ndarray) -> np.ndarray:

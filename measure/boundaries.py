@@ -4,6 +4,7 @@ QRS first, since it is the clearest; then the end of T, which limits where the P
 beat may begin; then P. The same search runs over all leads together and over each alone.
 """
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -87,7 +88,8 @@ def _edges_of(
     count = max(beat.beats[k] for k in rows)
 
     def quantity(edge: Edge) -> Quantity:
-        return Quantity(edge.at_ms, edge.se_ms, "ms", names, count)
+        se_ms = math.hypot(edge.se_ms, beat.column_se_ms if len(rows) > 1 else 0.0)
+        return Quantity(edge.at_ms, se_ms, "ms", names, count)
 
     if overall is not None and not overall.qrs_on_ms.known:
         return overall
