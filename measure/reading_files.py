@@ -40,6 +40,12 @@ def document(reading: Reading) -> dict[str, Any]:
             },
             "person": reading.person,
             "rhythm": reading.rhythm,
+            "beats": [
+                {"time_s": time_s, "kind": kind, "averaged": averaged}
+                for time_s, kind, averaged in zip(
+                    reading.beats.time_s, reading.beats.kind, reading.beats.dominant, strict=True
+                )
+            ],
             "intervals": reading.intervals,
             "boundaries": reading.boundaries,
             "waves": reading.waves,

@@ -55,6 +55,7 @@ def test_saved_and_loaded_is_the_same(tmp_path):
     assert quantity_of(content["intervals"]["qrs_ms"]) == reading.intervals["qrs_ms"]
     assert content["intervals"]["qrs_ms"]["value"] == 150.0
     assert content["beat"]["start_ms"] == -240.0  # the beat starts 240 ms before its QRS onset
+    assert content["beats"][3] == {"time_s": 3.0, "kind": "usual", "averaged": True}
     assert content["source"]["sha256"] == reading.tracing.source.sha256
 
 
