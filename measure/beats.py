@@ -16,6 +16,11 @@ from digitize.errors import NoTrace
 from digitize.tracing import FS_HZ, Tracing
 from measure.spikes import bridge_spikes, find_spikes
 
+
+def _samples(ms: float) -> int:
+    return round(ms * FS_HZ / 1000)
+
+
 _BAND_HZ = (6.0, 28.0)  # steep parts of a QRS, wide ones too, rather than of P and T
 _ENVELOPE_MS = 70
 _WINDOW_S = 2.0  # holds at least one beat from 30/min
@@ -29,6 +34,7 @@ _P_WITHIN_MS = 320  # before the middle of its QRS
 _WAVE_SHARE = 0.55  # of the activity of its QRS
 _SPIKE_BEFORE_MS = (180, -20)  # a pacing spike stands at most this far before the middle of its QRS
 _SHAPE_MS = (110, 150)  # window around the beat in which shapes are compared
+_LAGS = _samples(80)  # the middle of a wide QRS may be put at either of two humps
 _ALIKE = 0.80  # correlation from which two shapes are one
 _SIZE_RATIO = 0.5  # and their amplitudes must not differ by more than this
 _EARLY = 0.85  # share of the usual interval below which a beat is early
@@ -85,7 +91,8 @@ def find_beats(tracing: Tracing) -> Beats:
         raise NoTrace(f"{tracing.source.file_name}: no beat stands out in any lead.")
     time_s = start_s + at / FS_HZ
     paced, spike_s = _after_spikes(time_s, spike_s)
-    alike = _same_shape(mv, at)
+    alike, late = _same_shape(mv, at)
+    time_s = time_s + late / FS_HZ
     early = _early(time_s, alike)
     return Beats(
         time_s=time_s,
@@ -206,55 +213,56 @@ def _after_spikes(time_s: np.ndarray, spike_s: np.ndarray) -> tuple[np.ndarray, 
     return paced, spike_s
 
 
-def _same_shape(mv: np.ndarray, at: np.ndarray) -> np.ndarray:
-    """True for the beats of the commonest shape, column by column where columns share no lead."""
-    similarity = _similarity(mv, at)
-    comparable = np.isfinite(similarity)
-    _, group = sp.sparse.csgraph.connected_components(comparable, directed=False)
-    usual = np.zeros(len(at), bool)
+def _same_shape(mv: np.ndarray, at: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """True for the beats of the commonest shape, and how many samples each beat lies late.
+
+    Columns that share no lead cannot be compared: each has its own commonest shape.
+    """
+    similarity, lag = _similarity(mv, at)
+    _, group = sp.sparse.csgraph.connected_components(np.isfinite(similarity), directed=False)
+    usual, late = np.zeros(len(at), bool), np.zeros(len(at), int)
     for number in range(group.max() + 1):
         members = np.flatnonzero(group == number)
-        usual[members] = _commonest(similarity[np.ix_(members, members)])
-    return usual
+        leader, alike = _commonest(similarity[np.ix_(members, members)])
+        usual[members] = alike
+        late[members] = np.where(alike, lag[members, members[leader]], 0)
+    return usual, late
 
 
-def _similarity(mv: np.ndarray, at: np.ndarray) -> np.ndarray:
-    """Likeness of each pair of beats over shared leads, (n, n); NaN where they share none."""
-    before, after = (_samples(ms) for ms in _SHAPE_MS)
+def _similarity(mv: np.ndarray, at: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Correlation of each pair of beats over shared leads at its best lag, and that lag, (n, n).
+
+    NaN where two beats share no lead, 0 where their sizes differ much.
+    """
+    before, after = (_samples(ms) + _LAGS for ms in _SHAPE_MS)
     padded = np.pad(mv, ((0, 0), (before, after)), constant_values=np.nan)
-    cut = np.stack([padded[:, k : k + before + after : 2] for k in at])
-    whole = np.isfinite(cut).all(axis=2)
-    cut = np.where(whole[:, :, None], cut, 0)
-    slope = np.gradient(sp.ndimage.gaussian_filter1d(cut, 3, axis=2), axis=2)
-    n = len(at)
-    similarity = np.full((n, n), np.nan)
-    for i in range(n):
-        for j in range(i, n):
-            shared = whole[i] & whole[j]
-            if shared.any():
-                similarity[i, j] = similarity[j, i] = _likeness(slope[i][shared], slope[j][shared])
-    return similarity
+    cut = np.stack([padded[:, k : k + before + after] for k in at])
+    inner = slice(_LAGS, before + after - _LAGS)
+    seen = np.isfinite(cut).all(axis=2)
+    slope = np.gradient(sp.ndimage.gaussian_filter1d(np.nan_to_num(cut), 4, axis=2), axis=2)
+    slope[~seen] = 0
+    fixed = slope[:, :, inner]
+    fixed_energy = seen.astype(float) @ (fixed**2).sum(axis=2).T
+    best = np.where(seen.astype(int) @ seen.T.astype(int) > 0, 0.0, np.nan)
+    lag = np.zeros(best.shape, int)
+    for shift in range(-_LAGS, _LAGS + 1, 2):
+        moved = slope[:, :, inner.start + shift : inner.stop + shift]
+        energy = (moved**2).sum(axis=2) @ seen.T.astype(float)
+        dot = moved.reshape(len(at), -1) @ fixed.reshape(len(at), -1).T
+        alike = dot / np.sqrt(np.maximum(energy * fixed_energy, 1e-12))
+        alike[energy < _SIZE_RATIO**2 * fixed_energy] = 0
+        alike[fixed_energy < _SIZE_RATIO**2 * energy] = 0
+        better = alike > best
+        best[better], lag[better] = alike[better], shift
+    return best, lag
 
 
-def _likeness(one: np.ndarray, other: np.ndarray) -> float:
-    """Correlation of two beats at their best of a few shifts; 0 where their sizes differ much."""
-    best = 0.0
-    for shift in range(-6, 7):
-        a = one[:, 6 + shift : one.shape[1] - 6 + shift]
-        b = other[:, 6:-6]
-        aa, bb = (a * a).sum(), (b * b).sum()
-        if aa == 0 or bb == 0 or min(aa, bb) < _SIZE_RATIO**2 * max(aa, bb):
-            continue
-        best = max(best, float((a * b).sum() / np.sqrt(aa * bb)))
-    return best
-
-
-def _commonest(similarity: np.ndarray) -> np.ndarray:
-    """True for the largest set of beats that are like one of them; NaN counts as unlike."""
+def _commonest(similarity: np.ndarray) -> tuple[int, np.ndarray]:
+    """The beat that most others are like, and True for those."""
     alike = np.nan_to_num(similarity) >= _ALIKE
     np.fill_diagonal(alike, True)
     leader = int(np.argmax(alike.sum(axis=1) + 1e-3 * np.nan_to_num(similarity).sum(axis=1)))
-    return alike[leader]
+    return leader, alike[leader]
 
 
 def _early(time_s: np.ndarray, alike: np.ndarray) -> np.ndarray:
@@ -279,7 +287,3 @@ def _kind(alike: bool, early: bool, paced: bool) -> str:
     if paced:
         return "paced"
     return "early aberrant" if early else "aberrant"
-
-
-def _samples(ms: float) -> int:
-    return round(ms * FS_HZ / 1000)
