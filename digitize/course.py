@@ -8,7 +8,7 @@ import scipy as sp
 
 from digitize.fit import ROUNDS, Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
-from digitize.pen import Pen, draw_line
+from digitize.pen import Pen, draw_line, envelope
 from digitize.ways import Way
 
 STEP_MM = 0.05  # of paper between nodes: 2 ms at 25 mm/s
@@ -117,3 +117,28 @@ def lay(image: np.ndarray, course: Course, pen: Pen, row0: int = 0, col0: int = 
         high = min(max(int(x[-1] - col0 + reach) + 2, 0), image.shape[1])
         if low < high:
             draw_line(image[:, low:high], y[part] - row0, x[0] - col0 - low, x[1] - x[0], pen)
+
+
+def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
+    """Standard deviation, in rows, of what trembles under the nib at each node.
+
+    Where a trace shakes faster than the nib is wide, only the envelope of the shaking is printed:
+    the ink is thicker than the fitted line draws it. About ten nodes lie under a nib, and the range
+    of ten normal deviates is three standard deviations. Beside that, a node may stand off its
+    neighbours by the nib's sagitta over one step without changing either edge.
+    """
+    step = course.x[1] - course.x[0]
+    radius = pen.width_px / 2
+    sagitta = radius - max(radius**2 - step**2, 0.0) ** 0.5
+    inked = np.isfinite(course.y)
+    y = np.interp(course.x, course.x[inked], course.y[inked])
+    edge, _, _ = envelope(y, step, radius, 0)
+    cols = way.col0 + np.arange(way.edges.shape[1])
+    seen = np.isfinite(way.edges[0]) & ~way.shared
+    if not seen.any():
+        return np.full(len(y), sagitta)
+    thick = np.interp(course.x, cols[seen], (way.edges[1] - way.edges[0])[seen])
+    excess = thick - (edge[1] - edge[0])
+    window = max(round(pen.width_px / step), 1)
+    near = sp.ndimage.median_filter(excess, 2 * window + 1, mode="nearest")
+    return np.hypot(np.maximum(near, 0) / 3, sagitta)

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from digitize.course import BRIDGE_MM, Course, begin, cut_out, fit, lay, placed
+from digitize.course import BRIDGE_MM, Course, begin, cut_out, fit, lay, placed, tremble
 from digitize.fit import Line
 from digitize.ink import Ink
 from digitize.layout import Layout
@@ -115,7 +115,8 @@ def _stroke(
     x_mm, y_mm = raster.x_mm(course.x), raster.y_mm(course.y)
     if line is None:
         return Stroke(x_mm, y_mm, y_mm.copy(), nib[0], 1.0, ("no ink in this panel",), *nib[1:])
-    sigma_mm = np.where(missing, np.nan, line.sigma_px / px)
+    sigma_px = np.hypot(line.sigma_px, tremble(ways[k], course, pen))
+    sigma_mm = np.where(missing, np.nan, sigma_px / px)
     notes = (f"no ink on the path for more than {BRIDGE_MM} mm",) if missing.any() else ()
     unexplained = _unexplained(k, ways, courses, pen, ink)
     return Stroke(x_mm, y_mm, sigma_mm, nib[0], unexplained, notes, *nib[1:])
