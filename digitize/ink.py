@@ -23,6 +23,8 @@ _LINEAR_LIGHT = np.where(_CODE <= 0.04045, _CODE / 12.92, ((_CODE + 0.055) / 1.0
 # keeps colour at half the resolution; and the share of the grid that its mean cell leaves over.
 GREY_NOISE, CHROMA_NOISE, GRID_LEFT = 0.02, 0.08, 0.3
 CELL_MM = 5  # grids repeat after 5 mm
+SPECK_MM = 0.11  # halftone dots are smaller than the thinnest pen
+SOLID = 0.32  # smoothed density from which ink is solid
 NO_PAPER = 0.35  # darker than this share of the usual paper is finger, desk or hole
 OPAQUE = 0.75  # ground darker than this share of a full stroke hides the ink over it
 FEWEST_CELLS = 8  # fewer ruled cells give no mean of their own
@@ -73,6 +75,13 @@ def find_ink(sheet: Sheet) -> Ink:
         ruled_mm=sheet.ruled_mm,
         source_px_per_mm=sheet.source_px_per_mm,
     )
+
+
+def solid_ink(ink: Ink) -> np.ndarray:
+    """Where there surely is ink, uint8 0 or 1: specks of a halftone and page edges left out."""
+    smooth = cv2.GaussianBlur(ink.density, (0, 0), SPECK_MM * ink.raster.px_per_mm)
+    edge = cv2.dilate(ink.hidden.astype(np.uint8), np.ones((15, 15), np.uint8))
+    return ((smooth > SOLID) & (edge == 0)).astype(np.uint8)
 
 
 def _even_light(sheet: Sheet) -> tuple[np.ndarray, np.ndarray]:

@@ -178,11 +178,11 @@ def _settle(
     for _ in range(SPACINGS):
         if not left.any():
             break
-        support = np.where(left, alike @ (weight * left), 0.0)
+        support = np.where(left, alike @ (weight * left), -1.0)
         group = alike[int(np.argmax(support))] & left
         left &= ~group
         voters = [v for v, inside in zip(votes, group, strict=True) if inside]
-        share = float(weight[group].sum() / weight.sum())
+        share = float(weight[group].sum() / weight.sum()) + 1e-6
         for mm in (5.0, 1.0):
             teeth = np.median([v[4] for v in voters], axis=0)
             px_per_mm = float(np.median(spacing[group])) / mm * factor

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import cv2
 import numpy as np
 
-from digitize.ink import Ink
+from digitize.ink import Ink, solid_ink
 from digitize.sheet import Box
 
 INK_LEVEL = 0.35
@@ -42,7 +42,7 @@ class Mark:
 def find_marks(ink: Ink) -> tuple[Mark, ...]:
     """Return the calibration marks of a sheet, left to right."""
     scale = ink.raster.px_per_mm
-    mask = (ink.density > INK_LEVEL).astype(np.uint8)
+    mask = solid_ink(ink)
     tall = np.ones((round(0.8 * HEIGHTS_MM[0] * scale), 1), np.uint8)
     strokes = cv2.morphologyEx(mask, cv2.MORPH_OPEN, tall)
     strokes = cv2.dilate(strokes, np.ones((3, 3), np.uint8))

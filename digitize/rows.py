@@ -11,15 +11,15 @@ import cv2
 import numpy as np
 import scipy as sp
 
-from digitize.ink import Ink
+from digitize.ink import Ink, solid_ink
 from digitize.sheet import Box
 
-INK_LEVEL = 0.35
 STEP_MM = 0.25  # columns are looked at this far apart
 BIN_MM = 0.25
 LONG_RULE_MM = 28.0  # a straight upright line this long is a frame or separator, no QRS
 FLAT_RULE_MM = 70.0  # a straight level line this long is a frame
 LEAST_PITCH_MM = 6.0
+THICKEST_PEN_MM = 1.3
 SOLID_MM = 7  # unbroken ink of this length is trace or mark, no speck
 
 
@@ -64,8 +64,7 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     letters : tuple of Box
         Separate letters: not part of any trace.
     """
-    edge = cv2.dilate(ink.hidden.astype(np.uint8), np.ones((15, 15), np.uint8))
-    mask = ((ink.density > INK_LEVEL) & (edge == 0)).astype(np.uint8)
+    mask = solid_ink(ink)
     for box in letters:
         mask[_window(ink, box)] = 0
     mask, uprights = _without_rules(mask, ink)
@@ -137,7 +136,7 @@ def _row_heights(runs: Runs) -> list[float]:
     strong = peaks[wide[peaks] > 0.1 * wide.max(initial=0.0)]
     y = bins[strong] + BIN_MM / 2
     share = np.array([_coverage(runs, height) for height in y])
-    keep = share > 0.35 * share.max(initial=0.0)
+    keep = (share > 0.35 * share.max(initial=0.0)) & [_thin(runs, height) for height in y]
     y, share = y[keep], share[keep]
     return _spaced(y, share)
 
@@ -146,6 +145,12 @@ def _coverage(runs: Runs, y_mm: float) -> float:
     """Length in mm over which a run of ink lies within 3 mm of a height."""
     near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
     return float(len(np.unique(runs.x_mm[near]))) * STEP_MM
+
+
+def _thin(runs: Runs, y_mm: float) -> bool:
+    """Whether the ink at a height is a pen's line; the shaded edge of a sheet is a broad band."""
+    near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
+    return bool(np.quantile((runs.bottom_mm - runs.top_mm)[near], 0.3) < THICKEST_PEN_MM)
 
 
 def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:

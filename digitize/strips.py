@@ -75,13 +75,16 @@ def settle_timing(panels: Sequence[Panel], known: Known) -> tuple[tuple[Panel, .
 
 
 def _agreement_db(strip: Panel, short: Panel) -> float:
-    """Power of a short panel over that of its difference from the strip at the same time."""
+    """Power of a short panel over that of its difference from the strip at the same time.
+
+    Both as heights on the paper: the strip's gain hangs on its name.
+    """
     first = round((short.start_s - strip.start_s) * FS_HZ)
     best = -np.inf
     for lag in range(-round(LAG_S * FS_HZ), round(LAG_S * FS_HZ) + 1):
         low = max(first + lag, 0)
-        other = strip.mv[low : first + lag + len(short.mv)]
-        own = short.mv[low - first - lag :][: len(other)]
+        other = strip.gain_mm_mv * strip.mv[low : first + lag + len(short.mv)]
+        own = short.gain_mm_mv * short.mv[low - first - lag :][: len(other)]
         both = np.isfinite(own) & np.isfinite(other)
         if both.sum() < 0.5 * len(short.mv) or np.std(own[both]) == 0:
             continue

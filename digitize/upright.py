@@ -28,7 +28,8 @@ def find_turn(ink: Ink, printing: Printing) -> int:
     """
     if _names(printing.words) >= ENOUGH:
         return 0
-    sideways = _concentration(ink.density, axis=0) > _concentration(ink.density, axis=1)
+    ruled = _ruled_part(ink)
+    sideways = _concentration(ruled, axis=0) > _concentration(ruled, axis=1)
     turns = (90, 270) if sideways else (180,)
     read = {turn: _names(read_printing(_turned(ink, turn)).words) for turn in turns}
     if not sideways:
@@ -47,6 +48,14 @@ def turn_page(page: Page, turn_deg: int) -> Page:
     if dpi is not None and turn_deg in (90, 270):
         dpi = dpi[::-1]
     return replace(page, pixels=pixels, source=replace(page.source, dpi=dpi))
+
+
+def _ruled_part(ink: Ink) -> np.ndarray:
+    """Density within the ruled area, away from the edges of the sheet and what lies beside it."""
+    left, top, right, bottom = ink.ruled_mm
+    rows = slice(max(int(ink.raster.row(top + 5)), 0), max(int(ink.raster.row(bottom - 5)), 1))
+    cols = slice(max(int(ink.raster.col(left + 5)), 0), max(int(ink.raster.col(right - 5)), 1))
+    return np.where(ink.hidden, 0, ink.density)[rows, cols]
 
 
 def _concentration(density: np.ndarray, axis: int) -> float:

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import cv2
 import numpy as np
 
-from digitize.ink import Ink
+from digitize.ink import Ink, solid_ink
 from digitize.recogniser import recogniser
 from digitize.sheet import Box
 from digitize.tracing import LEADS
@@ -32,9 +32,9 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
 }
 LETTER_MM = (0.7, 6.5)  # height of a letter
 WIDEST_LETTER_MM = 9.0
-INK_LEVEL = 0.35
 NAME_MM = (1.1, 6.0)  # height of a lead name
 MOST_LINES = 30  # lines of printing read on one page
+MOST_LENGTH = 250  # of all lines together, in heights of their letters
 MOST_WORDS = 70  # words held against the lead names on one page
 
 
@@ -69,6 +69,8 @@ def read_printing(ink: Ink) -> Printing:
     short = [w for w in words if _name_sized(w)]
     short = sorted(short, key=lambda w: -_blackness(ink, w))[:MOST_WORDS]
     lines = sorted(lines, key=lambda b: _off_middle(b, ink))[::-1][:MOST_LINES]
+    lengths = np.cumsum([(b.right_mm - b.left_mm) / (b.bottom_mm - b.top_mm) for b in lines])
+    lines = [line for line, length in zip(lines, lengths, strict=True) if length < MOST_LENGTH]
     return Printing(
         words=tuple(read_boxes(ink, short)),
         lines=tuple(read_boxes(ink, lines)),
@@ -97,9 +99,7 @@ def _name_scores(probabilities: np.ndarray) -> dict[str, float]:
 
 def _letters(ink: Ink) -> list[Box]:
     """Boxes of separate pieces of ink that have the size of a letter."""
-    edge = cv2.dilate(ink.hidden.astype(np.uint8), np.ones((15, 15), np.uint8))
-    mask = ((ink.density > INK_LEVEL) & (edge == 0)).astype(np.uint8)
-    _, _, stats, _ = cv2.connectedComponentsWithStats(mask, connectivity=8)
+    _, _, stats, _ = cv2.connectedComponentsWithStats(solid_ink(ink), connectivity=8)
     scale = ink.raster.px_per_mm
     left, top, width, height, area = (stats[1:, k] / scale for k in range(5))
     area = area / scale
