@@ -89,11 +89,14 @@ def rows_of(spec: PageSpec, heart: HeartSpec = QUIET_HEART) -> Rows:
 def drawn_strip(
     capture: CaptureSpec = STRIP.capture, paper: PaperSpec = STRIP.paper, flat: bool = False
 ) -> DrawnPage:
-    """The small page of one lead as scanned; `flat`: 0 mV all along, a ruled line."""
+    """The small page of one lead as scanned; `flat`: a line that rises by 2 mm in 75.
+
+    So it meets the pixels and the grid at every height, as a wandering baseline does.
+    """
     spec = replace(STRIP, capture=capture, paper=paper)
     recording = record_model(QUIET_HEART)
     if flat:
-        recording = Recording(np.zeros_like(recording.mv))
+        recording = Recording(np.tile(np.arange(5000) / recording.fs_hz * 0.2 / 3.0, (12, 1)))
     return draw_page(recording, spec)
 
 
