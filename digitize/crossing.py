@@ -17,14 +17,13 @@ from digitize.field import INKED, Field, Path, walk
 from digitize.path import run_at
 
 _WORTH_PER_MM = 0.8  # of stroke explained, in the path's price
-_PEN_MM = 0.4  # common practice; only to count ink as length of stroke
 _LEAST_MM = 1.0  # shorter pieces of stroke are left to the fit
 _AROUND_MM = 2.5  # paper taken in to each side of a piece
 _TOUCH_MM = 1.2  # a piece so near to a path may belong to it
-_HALF_PEN_MM = 0.25  # ink about a path that is surely its own
 _SHORT_MM = 1.5  # a run of ink that stands out so little from its path holds no peak of its own
+_INK = 0.1  # of full ink, that still belongs to a run
 _BEAM = 8
-_DEPTH = 6
+_DEPTH = 12
 _ANSWERS = 8
 _CLOSE = 12.0  # answers dearer than the best by more are not worth drawing
 _OUTSIDE = 1e3
@@ -107,45 +106,71 @@ def _left_over(
 ) -> np.ndarray:
     """Pieces of ink, labelled from 1, that the paths do not explain; 0 elsewhere."""
     part = field.bare[slice(*rows), slice(*cols)]
-    density, half = 1 - part, _HALF_PEN_MM * field.px_per_mm
-    claimed = np.zeros(part.shape, bool)
-    row = np.arange(*rows)[:, None]
-    for path in paths.values():
-        at = slice(path.left - cols[0], path.right - cols[0])
-        run = run_at(np.ascontiguousarray(density[:, at]), path.span - rows[0], 0.1, 1) + rows[0]
-        beyond = np.diff(run - path.span, axis=0)[0]
-        short = (run[0] >= rows[0]) & (beyond < _SHORT_MM * field.px_per_mm)
-        low = np.where(short, run[0], path.span[0] - half)
-        high = np.where(short, run[1], path.span[1] + half)
-        claimed[:, at] |= (row >= low - 1) & (row <= high + 1)
+    claimed = _claimed(1 - part, paths, rows[0], cols[0], field)
+    tall = round(_LEAST_MM * field.px_per_mm)
+    beside = cv2.dilate(claimed.astype(np.uint8), np.ones((2 * tall + 1, 1), np.uint8))
     unclaimed = ((part < INKED) & ~claimed).astype(np.uint8)
-    left = cv2.morphologyEx(unclaimed, cv2.MORPH_OPEN, np.ones((2, 2), np.uint8))
+    # slivers along a trace are its own thickness; flanks are tall, lost stretches lie apart
+    flanks = cv2.morphologyEx(unclaimed, cv2.MORPH_OPEN, np.ones((tall, 2), np.uint8))
+    apart = cv2.morphologyEx(unclaimed & ~beside & 1, cv2.MORPH_OPEN, np.ones((2, 2), np.uint8))
+    left = flanks | apart
     _, labels, stats, _ = cv2.connectedComponentsWithStats(left, connectivity=8)
     size = np.maximum(stats[:, cv2.CC_STAT_HEIGHT], stats[:, cv2.CC_STAT_WIDTH])
     large = size >= _LEAST_MM * field.px_per_mm
-    large[0] = False
-    return np.where(large[labels], labels, 0)
+    touching = np.zeros(len(stats), bool)
+    touching[np.unique(labels[cv2.dilate(claimed.astype(np.uint8), np.ones((5, 5))) > 0])] = True
+    keep = large & touching
+    keep[0] = False
+    return np.where(keep[labels], labels, 0)
+
+
+def _claimed(
+    density: np.ndarray, paths: dict[int, Path], row0: int, col0: int, field: Field
+) -> np.ndarray:
+    """Ink that paths explain: under the pen all along, and whole runs that no other path enters."""
+    claimed = np.zeros(density.shape, np.uint8)
+    row = np.arange(len(density))[:, None]
+    spans = {m: (path.left - col0, path.span - row0) for m, path in paths.items()}
+    for left, span in spans.values():
+        claimed[:, left : left + span.shape[1]] |= (row >= span[0]) & (row <= span[1])
+    size = 2 * round(field.pen_mm / 2 * field.px_per_mm + 0.5) + 1
+    claimed = cv2.dilate(claimed, cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size)))
+    for m, (left, span) in spans.items():
+        part = slice(left, left + span.shape[1])
+        run = run_at(np.ascontiguousarray(density[:, part]), span, _INK, 1)
+        beyond = np.diff(run - span, axis=0)[0] if run.size else np.zeros(0)
+        alone = (run[0] >= 0) & (beyond < _SHORT_MM * field.px_per_mm)
+        for k, (start, other) in spans.items():
+            a, b = max(left, start), min(part.stop, start + other.shape[1])
+            if k != m and a < b:
+                theirs, mine = other[:, a - start : b - start], run[:, a - left : b - left]
+                alone[a - left : b - left] &= (theirs[1] < mine[0]) | (theirs[0] > mine[1])
+        claimed[:, part] |= alone & (row >= run[0] - 1) & (row <= run[1] + 1)
+    return claimed.astype(bool)
 
 
 def _search(field: Field, place: _Place, paths: dict[int, Path]) -> tuple[Answer, ...]:
     """The best answers found by leading one path after another round what is left over."""
     prices = {m: _led(field, place, paths, m, None)[1] for m in paths}
     first = _answer(field, place, paths, prices)
-    beam, seen = [first], {_key(first)}
+    beam, open_, seen = [first], [first], {_key(first)}
     for _ in range(_DEPTH):
         new = []
-        for answer in beam:
-            for changed in _changes(field, place, answer):
-                if changed.total < answer.total - 0.1 and _key(changed) not in seen:
-                    seen.add(_key(changed))
+        for answer in open_:
+            changes = [c for c in _changes(field, place, answer) if c.total < answer.total - 0.1]
+            if len(changes) == 1:  # there is one way only: the answer without it is no answer
+                beam = [a for a in beam if a is not answer]
+            for changed in changes:
+                key = _key(changed)
+                if key not in seen:
+                    seen.add(key)
                     new.append(changed)
         if not new:
             break
         beam = sorted([*beam, *new], key=lambda a: a.total)[:_BEAM]
-    best = min(a.total for a in beam)
-    return tuple(a for a in sorted(beam, key=lambda a: a.total) if a.total < best + _CLOSE)[
-        :_ANSWERS
-    ]
+        open_ = [a for a in new if a in beam]
+    best = beam[0].total if beam else first.total
+    return tuple(a for a in beam if a.total < best + _CLOSE)[:_ANSWERS] or (first,)
 
 
 def _key(answer: Answer) -> bytes:
@@ -157,17 +182,26 @@ def _answer(
 ) -> Answer:
     """What these paths cost, ink left over included."""
     left = np.count_nonzero(_left_over(field, paths, place.rows, place.cols))
-    left_mm = left / field.px_per_mm**2 / _PEN_MM
+    left_mm = left / field.px_per_mm**2 / field.pen_mm
     return Answer(paths, prices, sum(prices.values()) + _WORTH_PER_MM * left_mm)
 
 
 def _changes(field: Field, place: _Place, answer: Answer) -> list[Answer]:
     """Answers in which one path more goes round the largest piece of ink that is left over."""
     labels = _left_over(field, answer.paths, place.rows, place.cols)
-    if not labels.any():
-        return []
-    largest = int(np.argmax(np.bincount(labels.ravel())[1:])) + 1
-    rows, cols = np.nonzero(labels == largest)
+    sizes = np.bincount(labels.ravel())[1:]
+    for label in np.argsort(-sizes, kind="stable") + 1:
+        if not sizes[label - 1]:
+            break
+        changed = _round(field, place, answer, labels == label)
+        if changed:
+            return changed
+    return []
+
+
+def _round(field: Field, place: _Place, answer: Answer, piece: np.ndarray) -> list[Answer]:
+    """Answers in which one path more goes round one piece of ink."""
+    rows, cols = np.nonzero(piece)
     rows, cols = rows + place.rows[0], cols + place.cols[0]
     changed = []
     for m, path in answer.paths.items():
@@ -178,13 +212,15 @@ def _changes(field: Field, place: _Place, answer: Answer) -> list[Answer]:
         away = np.maximum(span[0] - rows[inside], rows[inside] - span[1])
         if away.min() > _TOUCH_MM * field.px_per_mm:
             continue
-        for end in (np.argmin(rows[inside]), np.argmax(rows[inside])):
-            if away[end] <= 0:
+        for end in {int(np.argmin(rows[inside])), int(np.argmax(rows[inside]))}:
+            if away[end] <= _TOUCH_MM * field.px_per_mm:
                 continue
             via = int(rows[inside][end]), int(cols[inside][end])
             led, price = _led(field, place, answer.paths, m, via)
             paths, prices = answer.paths | {m: led}, answer.prices | {m: price}
             changed.append(_answer(field, place, paths, prices))
+    if len({next(m for m in c.paths if c.paths[m] is not answer.paths[m]) for c in changed}) == 1:
+        return [min(changed, key=lambda a: a.total)]  # nobody else's
     return changed
 
 

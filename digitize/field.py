@@ -14,19 +14,22 @@ _FAINT, _FULL = 0.15, 0.6  # densities of bare paper and of certain ink
 _WALL = 5.0  # bareness of an anchored column away from the anchor
 _TAKEN = 0.7  # bareness of ink that another trace needs: it may be crossed, not followed
 _NEVER = 1e4
+_PEN_MM = 0.4  # usual thickness of a level trace; common practice
 
 
 @dataclass(frozen=True, eq=False)
 class Field:
     """Bareness of the paper, 0 in full ink and 1 where there is none, at coarse resolution.
 
-    `bare` is (rows, cols) float32; `y_mm` (rows,) and `x_mm` (cols,) are the places of its pixels.
+    `bare` is (rows, cols) float32; `y_mm` (rows,) and `x_mm` (cols,) are the places of its pixels;
+    `pen_mm` is the thickness of a level trace.
     """
 
     bare: np.ndarray
     y_mm: np.ndarray
     x_mm: np.ndarray
     px_per_mm: float
+    pen_mm: float = _PEN_MM
 
 
 @dataclass(frozen=True, eq=False)

@@ -7,7 +7,7 @@ the ink of two traces has run together, each keeps what lies about its own path;
 run belong to the path that is nearest to them.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import cv2
 import numpy as np
@@ -58,6 +58,7 @@ def find_routes(ink: Ink, layout: Layout) -> Routes:
     clear = without_printing(ink, layout.words + layout.marks)
     field = to_field(clear, ink.raster)
     anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
+    field = replace(field, pen_mm=_thickness_mm(field, anchors))
     paths = [_search(field, p, a) for p, a in zip(panels, anchors, strict=True)]
     return Routes(field, clear, anchors, _apart(field, paths, panels, anchors))
 
@@ -82,6 +83,14 @@ def to_ways(
     ]
     slack = round(raster.px_per_mm / routes.field.px_per_mm)
     return tuple(_way(k, fine, routes.clear, raster.px_per_mm, slack) for k in range(len(fine)))
+
+
+def _thickness_mm(field: Field, anchors: list[np.ndarray]) -> float:
+    """Usual thickness of a level trace, from the strokes that are beyond doubt."""
+    known = np.concatenate([a[:, a[0] >= 0] for a in anchors], axis=1)
+    if known.shape[1] < 20:
+        return field.pen_mm
+    return float(np.median(known[1] - known[0] + 1)) / field.px_per_mm
 
 
 def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
