@@ -10,6 +10,7 @@ from pathlib import Path
 import numpy as np
 
 from digitize.dicom import open_dicom
+from digitize.drawing import Drawing
 from digitize.errors import InputError, UnreadableFile, at
 from digitize.options import Options
 from digitize.pdf import open_pdf
@@ -26,11 +27,13 @@ class Page:
 
     `pixels` is uint8, (rows, cols) for grey and 1-bit pages (0 black, 255 white) or
     (rows, cols, 3) RGB. `source.dpi` is (across, down), None where the file does not say.
+    `drawing` is what a page of a document draws as lines and text, in the same pixels.
     """
 
     pixels: np.ndarray
     source: PageSource
     bilevel: bool = False
+    drawing: Drawing | None = None
 
 
 def open_pages(
@@ -119,7 +122,9 @@ def _page(picture: Picture, file_name: str, sha256: str, number: int) -> Page:
     """A picture with where it came from."""
     height_px, width_px = picture.pixels.shape[:2]
     source = PageSource(file_name, sha256, number, width_px, height_px, picture.dpi)
-    return Page(picture.pixels, source, bilevel=_is_bilevel(picture.pixels))
+    return Page(
+        picture.pixels, source, bilevel=_is_bilevel(picture.pixels), drawing=picture.drawing
+    )
 
 
 def _is_bilevel(pixels: np.ndarray) -> bool:

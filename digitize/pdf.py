@@ -2,7 +2,8 @@
 
 A scanner's PDF page is one image: that image is taken at its own resolution, not resampled, once
 a small rendering of the page has confirmed that it is what the page shows (which settles
-cropping, masks and mirror matrices without interpreting them here). Every other page is rendered.
+cropping, masks and mirror matrices without interpreting them here). Every other page is rendered,
+and what it draws as lines and text is kept beside the pixels.
 """
 
 import math
@@ -16,6 +17,7 @@ import pypdfium2 as pdfium
 import pypdfium2.raw as pdfium_c
 
 from digitize.errors import UnreadableFile
+from digitize.pdf_paths import read_drawing
 from digitize.pictures import Loader, Picture, check_size, credible_dpi, plain_pixels
 
 RENDER_DPI = 300.0  # of pages that are more than one image
@@ -131,7 +133,8 @@ def _render(page: pdfium.PdfPage, max_megapixels: float) -> Picture:
     width_px, height_px = (math.ceil(points * scale) for points in page.get_size())
     check_size((width_px, height_px), max_megapixels)
     pixels = _pixels(page.render(scale=scale))
-    return Picture(plain_pixels(pixels), (RENDER_DPI, RENDER_DPI))
+    drawing = read_drawing(page, pixels.shape[1], pixels.shape[0])
+    return Picture(plain_pixels(pixels), (RENDER_DPI, RENDER_DPI), drawing)
 
 
 def _pixels(bitmap: pdfium.PdfBitmap) -> np.ndarray:

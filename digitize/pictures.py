@@ -25,6 +25,7 @@ from PIL import (  # every format of FORMATS that Pillow does not load by itself
     WebPImagePlugin,  # noqa: F401
 )
 
+from digitize.drawing import Drawing
 from digitize.errors import UnreadableFile
 
 FORMATS = ("PNG", "JPEG", "TIFF", "BMP", "GIF", "WEBP")
@@ -54,10 +55,14 @@ _DAMAGE = (
 
 @dataclass(frozen=True, eq=False)
 class Picture:
-    """Pixels, uint8, (rows, cols) or (rows, cols, 3), and dpi (across, down) where it is known."""
+    """Pixels, uint8, (rows, cols) or (rows, cols, 3), and dpi (across, down) where it is known.
+
+    `drawing` holds the lines and words of a page that draws them.
+    """
 
     pixels: np.ndarray
     dpi: tuple[float, float] | None
+    drawing: Drawing | None = None
 
 
 Loader = Callable[[], Picture]

@@ -10,6 +10,8 @@ import cv2
 
 from digitize.calibrate import to_panels
 from digitize.checks import find_checks
+from digitize.drawn_traces import drawn_strokes
+from digitize.drawn_words import drawn_printing
 from digitize.errors import InputError, ProgramFault, at
 from digitize.evidence import require_ecg
 from digitize.geometry import to_geometry
@@ -20,12 +22,13 @@ from digitize.marks import find_marks
 from digitize.options import Options
 from digitize.pages import Page, open_pages
 from digitize.rows import find_rows
+from digitize.ruling import find_ruling
 from digitize.sheet import Sheet, flatten
 from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
 from digitize.upright import find_turn, turn_page
-from digitize.words import read_printing
+from digitize.words import Printing, read_printing
 
 # What arithmetic on an unforeseen page can raise: LinAlgError is a ValueError.
 _FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
@@ -64,13 +67,13 @@ def read_page(
         The page cannot be calibrated, or there is no ECG on it.
     """
     on_stage("grid")
-    grid = find_grid(page, options)
+    grid = _grid(page, options)
     on_stage("sheet")
     sheet = flatten(page, grid)
     on_stage("ink")
     ink = find_ink(sheet)
     on_stage("printing")
-    printing = read_printing(ink)
+    printing = _printing(page, grid, ink)
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
         return _read_turned(page, turn_deg, options, on_stage)
@@ -78,7 +81,7 @@ def read_page(
     rows = find_rows(ink, printing.letters)
     layout = find_layout(ink, printing, rows, find_marks(ink), options)
     on_stage("trace")
-    strokes = trace_panels(ink, layout)
+    layout, strokes = _traced(page, grid, ink, layout)
     on_stage("checks")
     panels = name_strips(to_panels(layout, strokes))
     panels, timing = settle_timing(panels, layout.timing)
@@ -90,12 +93,39 @@ def read_page(
     return Stages(page, grid, sheet, ink, layout, strokes, tracing)
 
 
+def _grid(page: Page, options: Options) -> Grid:
+    """The ruling that a document draws, else the one that the picture shows."""
+    ruling = find_ruling(page.drawing, page.pixels.shape[:2]) if page.drawing else None
+    return ruling or find_grid(page, options)
+
+
+def _printing(page: Page, grid: Grid, ink: Ink) -> Printing:
+    """The document's own words where they name leads, else what is read in the picture."""
+    printing = drawn_printing(page.drawing, grid) if page.drawing else None
+    return printing or read_printing(ink)
+
+
+def _traced(page: Page, grid: Grid, ink: Ink, layout: Layout) -> tuple[Layout, tuple[Stroke, ...]]:
+    """The lines that a document draws, and for panels without one the ink followed."""
+    if page.drawing is None:
+        return layout, trace_panels(ink, layout)
+    layout, drawn = drawn_strokes(page.drawing, grid, layout, ink)
+    if None not in drawn:
+        return layout, tuple(stroke for stroke in drawn if stroke is not None)
+    traced = trace_panels(ink, layout)
+    return layout, tuple(d or t for d, t in zip(drawn, traced, strict=True))
+
+
 def _read_turned(
     page: Page, turn_deg: int, options: Options, on_stage: Callable[[str], None]
 ) -> Stages:
     """The page read after a clockwise turn, which is kept with the geometry."""
     upright = dataclasses.replace(options, turn_deg=0)
-    stages = read_page(turn_page(page, turn_deg), upright, on_stage=on_stage)
+    turned = turn_page(page, turn_deg)
+    if page.drawing is not None:
+        drawing = page.drawing.turned(turn_deg, page.pixels.shape[:2])
+        turned = dataclasses.replace(turned, drawing=drawing)
+    stages = read_page(turned, upright, on_stage=on_stage)
     tracing = dataclasses.replace(
         stages.tracing,
         source=page.source,
