@@ -136,7 +136,8 @@ def _row_heights(runs: Runs) -> list[float]:
     strong = peaks[wide[peaks] > 0.1 * wide.max(initial=0.0)]
     y = bins[strong] + BIN_MM / 2
     share = np.array([_coverage(runs, height) for height in y])
-    keep = (share > 0.35 * share.max(initial=0.0)) & [_thin(runs, height) for height in y]
+    thin = np.array([_thin(runs, height) for height in y], bool)
+    keep = thin & (share > 0.35 * share.max(initial=0.0))
     y, share = y[keep], share[keep]
     return _spaced(y, share)
 
