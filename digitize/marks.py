@@ -17,6 +17,7 @@ PULSE_S = 0.2  # common practice
 HEIGHTS_MM = (2.5, 5.0, 10.0, 20.0, 40.0)  # of 1 mV
 WIDTHS_MM = (2.5, 5.0, 10.0)
 STRAIGHT = 0.8  # share of a side that must be inked
+LEVEL_MM = 0.15  # a recorder's pulse is level; the top of a QRS rises, sinks and is notched
 
 
 @dataclass(frozen=True)
@@ -101,7 +102,7 @@ def _pulse(
     density = np.clip(ink.density, 0, 1)
     top = _level(density[y0:y1, inner], y0, ink)
     foot = _foot(density, ink, left, right)
-    if top is None:
+    if top is None or _unevenness_mm(density[y0:y1, inner], scale) > LEVEL_MM:
         return None
     if foot is None:
         foot = float(ink.raster.y_mm((left[2] + right[2]) / 2)) - 0.15
@@ -115,6 +116,16 @@ def _level(part: np.ndarray, first_row: int, ink: Ink) -> float | None:
         return None
     row = float(np.sum(weight * np.arange(len(weight))) / weight.sum())
     return float(ink.raster.y_mm(first_row + row))
+
+
+def _unevenness_mm(part: np.ndarray, px_per_mm: float) -> float:
+    """Standard deviation of the height of a stroke along its length."""
+    weight = part.sum(axis=0)
+    inked = weight > INK_LEVEL
+    if not inked.any():
+        return np.inf
+    height = np.arange(part.shape[0]) @ part[:, inked] / weight[inked]
+    return float(np.std(height)) / px_per_mm
 
 
 def _foot(
