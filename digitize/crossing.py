@@ -246,6 +246,35 @@ def _led(
     )
 
 
+def widened(field: Field, answer: Answer, m: int, side: int) -> Answer | None:
+    """The answer with path m given the ink above (side 0) or below it, up to the next path.
+
+    A path that must not follow another's ink turns back before a peak that ends inside that ink.
+    """
+    path = answer.paths[m]
+    stop = path.right
+    ink = np.ascontiguousarray(1 - field.bare[:, path.left : stop])
+    run = run_at(ink, path.span, 1 - INKED, 1)
+    edge = np.where(run[0] >= 0, run[side], path.span[side])
+    for k, other in answer.paths.items():
+        a, b = max(path.left, other.left), min(stop, other.right)
+        if k == m or a >= b:
+            continue
+        here = slice(a - path.left, b - path.left)
+        mine, theirs = path.span[:, here], other.cut(a, b)
+        if side == 0:
+            met = (theirs[0] < mine[0]) & (theirs[1] >= edge[here])
+            edge[here] = np.where(met, np.minimum(theirs[1] + 1, mine[0]), edge[here])
+        else:
+            met = (theirs[1] > mine[1]) & (theirs[0] <= edge[here])
+            edge[here] = np.where(met, np.maximum(theirs[0] - 1, mine[1]), edge[here])
+    span = path.span.copy()
+    span[side] = np.minimum(span[0], edge) if side == 0 else np.maximum(span[1], edge)
+    if np.abs(span - path.span).max() < _LEAST_MM * field.px_per_mm:
+        return None
+    return replace(answer, paths=answer.paths | {m: Path(path.left, span)})
+
+
 def spliced(paths: list[Path], answer: Answer) -> list[Path]:
     """The paths of a page with those of one place put in."""
     new = list(paths)

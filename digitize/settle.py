@@ -1,9 +1,11 @@
 """Which of several possible ways the traces took where they cross: the one that can be redrawn."""
 
+from dataclasses import dataclass, field
+
 import numpy as np
 
 from digitize.course import Course, begin, cut_out, fit, lay, placed
-from digitize.crossing import Answer, find_answers, spliced
+from digitize.crossing import Answer, find_answers, spliced, widened
 from digitize.field import Path
 from digitize.ink import Ink
 from digitize.pen import Pen
@@ -11,6 +13,7 @@ from digitize.ways import Routes, Way, to_ways
 
 _END_MM = 0.5  # of each end of a place, where the lines begin out of nothing
 _OUTLIER = 4.0
+_GAIN = 30.0  # of cost: as much as a few pixels of unexplained ink
 
 
 def settle(routes: Routes, ink: Ink, pen: Pen, noise: float) -> list[Path]:
@@ -34,6 +37,33 @@ def settle(routes: Routes, ink: Ink, pen: Pen, noise: float) -> list[Path]:
     return paths
 
 
+@dataclass(frozen=True, eq=False)
+class _Judge:
+    """What it takes to redraw an answer and compare it with the ink of its place."""
+
+    routes: Routes
+    ink: Ink
+    pen: Pen
+    noise: float
+    varied: tuple[int, ...]  # traces in doubt; the others are drawn as they begin
+    window: tuple[slice, slice]
+    known: dict[bytes, float] = field(default_factory=dict)  # costs, by the ink that is explained
+
+    def cost(self, answer: Answer) -> float:
+        """Cost of the ink of the place against its best redrawing by one answer."""
+        ways, courses = _begun(answer, self.routes, self.ink, self.pen)
+        key = b"".join(way.edges.tobytes() for way in ways)
+        if key not in self.known:
+            for _ in range(2):
+                for k, m in enumerate(answer.paths):
+                    if m in self.varied and courses[k].inked:
+                        cut = cut_out(k, ways, courses, self.pen, self.ink, self.noise)
+                        line = fit(cut, courses[k], self.pen, rounds=1)
+                        courses[k] = placed(line, cut, courses[k])
+            self.known[key] = _cost(courses, self.window, self.pen, self.ink, self.noise)
+        return self.known[key]
+
+
 def _best(answers: tuple[Answer, ...], routes: Routes, ink: Ink, pen: Pen, noise: float) -> Answer:
     """The answer whose redrawing is most like the ink; the cheapest of those that draw alike."""
     varied = [
@@ -44,21 +74,13 @@ def _best(answers: tuple[Answer, ...], routes: Routes, ink: Ink, pen: Pen, noise
     if not varied:
         return answers[0]
     window = _window(answers, varied, routes, ink)
-    best, least, drawn = answers[0], np.inf, set()
-    for answer in answers:
-        ways, courses = _begun(answer, routes, ink, pen)
-        key = b"".join(way.edges.tobytes() for way in ways)
-        if key in drawn:
-            continue
-        drawn.add(key)
-        for _ in range(2):
-            for k, m in enumerate(answer.paths):
-                if m in varied and courses[k].inked:
-                    cut = cut_out(k, ways, courses, pen, ink, noise)
-                    courses[k] = placed(fit(cut, courses[k], pen, rounds=1), cut, courses[k])
-        cost = _cost(courses, window, pen, ink, noise)
-        if cost < least - 1e-6:
-            best, least = answer, cost
+    judge = _Judge(routes, ink, pen, noise, tuple(varied), window)
+    best = min(answers, key=judge.cost)
+    for m in varied:
+        for side in (0, 1):
+            wider = widened(routes.field, best, m, side)
+            if wider is not None and judge.cost(wider) < judge.cost(best) - _GAIN:
+                best = wider
     return best
 
 
@@ -66,9 +88,9 @@ def _begun(
     answer: Answer, routes: Routes, ink: Ink, pen: Pen
 ) -> tuple[tuple[Way, ...], list[Course]]:
     """The ink along each path of an answer, and the lines as they begin."""
-    field, raster = routes.field, ink.raster
+    raster, x_mm = ink.raster, routes.field.x_mm
     parts = list(answer.paths.values())
-    spans_mm = [(field.x_mm[p.left], field.x_mm[p.right - 1]) for p in parts]
+    spans_mm = [(x_mm[p.left], x_mm[p.right - 1]) for p in parts]
     ways = to_ways(routes, parts, spans_mm, raster)
     return ways, [begin(w, *span, pen, ink) for w, span in zip(ways, spans_mm, strict=True)]
 
@@ -77,13 +99,13 @@ def _window(
     answers: tuple[Answer, ...], varied: list[int], routes: Routes, ink: Ink
 ) -> tuple[slice, slice]:
     """Rows and columns of the ink that the paths in doubt go through."""
-    field, raster = routes.field, ink.raster
+    raster, x_mm, y_mm = ink.raster, routes.field.x_mm, routes.field.y_mm
     parts = [path for answer in answers for m, path in answer.paths.items() if m in varied]
     top = min(int(p.span[0].min()) for p in parts)
     bottom = max(int(p.span[1].max()) for p in parts)
     left, right = min(p.left for p in parts), max(p.right for p in parts) - 1
-    rows = raster.row(field.y_mm[top] - 1), raster.row(field.y_mm[bottom] + 1)
-    cols = raster.col(field.x_mm[left] + _END_MM), raster.col(field.x_mm[right] - _END_MM)
+    rows = raster.row(y_mm[top] - 1), raster.row(y_mm[bottom] + 1)
+    cols = raster.col(x_mm[left] + _END_MM), raster.col(x_mm[right] - _END_MM)
     return slice(max(int(rows[0]), 0), int(rows[1]) + 1), slice(int(cols[0]), int(cols[1]) + 1)
 
 
