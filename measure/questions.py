@@ -46,7 +46,11 @@ FAMILIES: tuple[tuple[str, tuple[str, ...]], ...] = (
     ("Voltage", ("voltage_sokolow_lyon", "voltage_cornell")),
 )
 BLOCK_FAMILIES = tuple(name for name, _ in FAMILIES[:4])
-PRESENCE = "left bundle branch block by one of"  # clause of what is judged within the block
+# Clauses on the block itself, of what is judged only within it or only without it.
+ABOUT_BLOCK = (
+    "left bundle branch block by one of",
+    "(precondition) no left bundle branch block",
+)
 RHYTHM_KEYS = ("rate_bpm", "rr_ms", "p_ms", "pr_ms", "p_axis_deg")
 WIDTH_KEYS = (
     "qrs_ms",
@@ -95,14 +99,23 @@ def shown_in_full(
     """The findings whose every clause is worth a look: those met or open.
 
     Left out are those that rest on overall intervals alone, whose numbers stand in the tables,
-    and those that ask for a left bundle branch block that is not surely there.
+    and those withheld because a left bundle branch block is, or is not, surely there.
     """
     return tuple(
-        f
+        finding
         for _, group in families
-        for f in group
-        if f.result != "not met" and any(e.lead != OVERALL for c in f.clauses for e in c.evidence)
+        for finding in group
+        if finding.result != "not met" and _rests_on_leads(finding) and not _withheld(finding)
     )
+
+
+def _rests_on_leads(finding: Finding) -> bool:
+    return any(seen.lead != OVERALL for c in finding.clauses for seen in c.evidence)
+
+
+def _withheld(finding: Finding) -> bool:
+    """Whether it waits for, or gives way to, a left bundle branch block."""
+    return any(c.result != "met" and c.text.startswith(ABOUT_BLOCK) for c in finding.clauses)
 
 
 def refusal(finding: Finding) -> str:

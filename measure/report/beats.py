@@ -12,6 +12,7 @@ from html import escape
 import numpy as np
 
 from measure.criteria.finding import Evidence
+from measure.criteria.shape import LEVEL_MS
 from measure.reading import Reading
 from measure.report.paper import drawing, ruled
 from measure.report.svg import line, polygon, polyline, rect, text
@@ -256,10 +257,18 @@ def _q(
 ) -> str:
     """The depth from which a q counts, as a short bar before the R; and whether it is reached."""
     waves = reading.waves[lead]
-    y = zero_mm + waves.smallest_mv * gain
+    y = zero_mm - (_level_mv(reading, lead) - waves.smallest_mv) * gain
     x = _x_mm(reading, box[0], 0.0)
     present = seen.value >= waves.smallest_mv
     word = "q" if present else "no q"
     return line(x - 2.5, y, x + 2.0, y, colour=MARK, width_mm=0.25, dash="0.6 0.4") + text(
         x - 2.7, y + 1.9, escape(word), size=2.5, anchor="end", colour=MARK
     )
+
+
+def _level_mv(reading: Reading, lead: str) -> float:
+    """The level just before the QRS, from which deflections are measured."""
+    after_ms = reading.beat.time_ms - _onset_ms(reading)
+    before = reading.beat.lead(lead)[(after_ms >= -LEVEL_MS) & (after_ms <= 0)]
+    known = before[np.isfinite(before)]
+    return float(known.mean()) if known.size else 0.0

@@ -111,7 +111,9 @@ def _patterns(answers: Answers) -> str:
         first = escape(name)
         for result in ("met", "undecided", "not met"):
             members = [f for f in group if f.result == result]
-            if members:
+            # One name of the axis says that the others do not fit; a block's "not met" is news.
+            implied = result == "not met" and not first and name not in BLOCK_FAMILIES
+            if members and not implied:
                 names = "; ".join(_named(f, name) for f in members)
                 kind = "small" if result == "not met" else ""
                 cell = f'<td class="{kind}">{escape(names)}</td>'
@@ -182,7 +184,7 @@ def _waves(reading: Reading) -> str:
         "shape",
         "waves: mV (ms)",
         "R peak",
-        "ST at J, +40, +60, +80 mV",
+        "ST at J, 40, 60, 80",
         "T mV",
         "beats",
     )
@@ -207,7 +209,15 @@ def _wave_row(waves: LeadWaves) -> str:
         signed(waves.t_mv),
         str(waves.beats),
     )
-    return "<tr>" + "".join(f'<td class="small">{escape(cell)}</td>' for cell in cells) + "</tr>"
+    kinds = ("", "", "", "plain", "plain", "plain", "")
+    return (
+        "<tr>"
+        + "".join(
+            f'<td class="{kind}">{escape(cell)}</td>'
+            for kind, cell in zip(kinds, cells, strict=True)
+        )
+        + "</tr>"
+    )
 
 
 def _footer(reading: Reading) -> str:

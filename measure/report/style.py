@@ -34,7 +34,7 @@ footer { border-top: 0.3mm solid #46545d; margin-top: 2mm; padding-top: 0.6mm; f
 @media print { body { margin: 0; max-width: none; }
   figure.overlay { float: right; width: 68mm; margin: 0 0 1mm 3mm; }
   .beside table { width: auto; } .beside td, .beside th { padding-right: 1.6mm; }
-  figure.overlay img { max-height: 70mm; object-fit: contain; } }
+  figure.overlay img { max-height: 52mm; object-fit: contain; } }
 h2 { overflow: hidden; } /* beside the overlay, not under it */
 .clear { clear: both; }
 """
