@@ -22,6 +22,19 @@ class Span:
     right_mm: float
 
 
+@dataclass(frozen=True, eq=False)
+class Breaks:
+    """At each sampled column, (rows, columns): whether a row broke just before it, and has ink."""
+
+    x_mm: np.ndarray
+    broken: np.ndarray
+    inked: np.ndarray
+
+    def of(self, first: int, last: int) -> "Breaks":
+        """Those of some rows alone."""
+        return Breaks(self.x_mm, self.broken[first:last], self.inked[first:last])
+
+
 def trace_extent(rows: Rows) -> Span:
     """Where the traces begin and end across the page."""
     return Span(
@@ -77,10 +90,17 @@ def _narrowed(row: Row, runs: Runs) -> Row:
     return replace(row, left_mm=float(x.min()), right_mm=float(x.max())) if len(x) else row
 
 
-def column_spans(
-    rows: Rows, short_rows: int, extent: Span, count: int
-) -> tuple[tuple[Span, ...], float]:
+def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, ...], float]:
     """Divide the extent evenly into columns, then move to the breaks that the rows share.
+
+    Parameters
+    ----------
+    breaks : Breaks
+        Of the rows of short panels.
+    extent : Span
+        From the first to the last ink of the traces.
+    count : int
+        Number of columns.
 
     Returns
     -------
@@ -91,7 +111,7 @@ def column_spans(
     """
     if count == 1:
         return (extent,), 0.0
-    x, broken, inked = _breaks(rows, short_rows)
+    x, broken, inked = breaks.x_mm, breaks.broken.mean(axis=0), breaks.inked.mean(axis=0)
     width = (extent.right_mm - extent.left_mm) / count
     edges, shares = [], []
     for k in range(1, count):
@@ -138,33 +158,24 @@ def _even(spans: tuple[Span, ...], extent: Span, shares: list[float]) -> tuple[S
     return tuple(Span(float(a), float(b)) for a, b in zip(lefts, rights, strict=True))
 
 
-def _breaks(rows: Rows, short_rows: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """At each sampled column: x, share of rows broken just before it, share of rows with ink."""
+def row_breaks(rows: Rows) -> Breaks:
+    """Return where each row's trace breaks off from one sampled column to the next."""
     runs = rows.runs
     first, last = runs.x_mm.min(), runs.x_mm.max()
     steps = round((last - first) / STEP_MM) + 1
     column = np.round((runs.x_mm - first) / STEP_MM).astype(int)
     reach = 0.5 * rows.pitch_mm if len(rows.rows) > 1 else 15.0
-    broken, inked = np.zeros(steps), np.zeros(steps)
-    for row in rows.rows[:short_rows]:
+    broken = np.zeros((len(rows.rows), steps), bool)
+    inked = np.zeros((len(rows.rows), steps), bool)
+    for number, row in enumerate(rows.rows):
         near = (runs.top_mm < row.y_mm + reach) & (runs.bottom_mm > row.y_mm - reach)
-        top = [[] for _ in range(steps)]  # type: list[list[float]]
-        bottom = [[] for _ in range(steps)]  # type: list[list[float]]
+        spans: list[list[tuple[float, float]]] = [[] for _ in range(steps)]
         for c, a, b in zip(column[near], runs.top_mm[near], runs.bottom_mm[near], strict=True):
-            top[c].append(a)
-            bottom[c].append(b)
-        for c in range(1, steps):
-            inked[c] += bool(top[c])
-            broken[c] += not _touch(top[c - 1], bottom[c - 1], top[c], bottom[c])
-    count = max(short_rows, 1)
-    return first + np.arange(steps) * STEP_MM, broken / count, inked / count
+            spans[c].append((a, b))
+        inked[number] = [bool(span) for span in spans]
+        broken[number, 1:] = [not _touch(a, b) for a, b in pairwise(spans)]
+    return Breaks(first + np.arange(steps) * STEP_MM, broken, inked)
 
 
-def _touch(
-    top_a: list[float], bottom_a: list[float], top_b: list[float], bottom_b: list[float]
-) -> bool:
-    return any(
-        a0 < b1 + TOUCH_MM and b0 < a1 + TOUCH_MM
-        for a0, a1 in zip(top_a, bottom_a, strict=True)
-        for b0, b1 in zip(top_b, bottom_b, strict=True)
-    )
+def _touch(before: list[tuple[float, float]], after: list[tuple[float, float]]) -> bool:
+    return any(a0 < b1 + TOUCH_MM and b0 < a1 + TOUCH_MM for a0, a1 in before for b0, b1 in after)

@@ -116,7 +116,8 @@ def _fit_aligned(
 def _gain(slot: Slot, names: Mapping[str, float]) -> float:
     """Log evidence of one reading for one slot against a name drawn at random."""
     name = slot.name or max(names, key=lambda n: names[n])
-    evidence = float(np.log(names[name] * len(NAMES)))
+    share = names[name] + (names["aVR"] if name == "-aVR" else 0.0)  # a minus is easily lost
+    evidence = float(np.log(share * len(NAMES)))
     if slot.name is None:
         evidence = 0.3 * max(evidence, 0.0)
     return WEIGHT.get(name, 1.0) * max(evidence, -2.5)

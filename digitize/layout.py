@@ -11,7 +11,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from digitize.columns import Span, column_spans, marks_of_row, trace_extent, without_marks
+from digitize.columns import (
+    Span,
+    column_spans,
+    marks_of_row,
+    row_breaks,
+    trace_extent,
+    without_marks,
+)
 from digitize.errors import NoTrace
 from digitize.ink import Ink
 from digitize.labels import LabelFit, Slot, fit_labels, look_again
@@ -153,19 +160,21 @@ def _weigh(
 ) -> list[_Hypothesis]:
     """All arrangements with the page's number of rows, the likeliest first."""
     found = []
-    for part, doubt in _row_choices(rows):
+    breaks = row_breaks(rows)
+    for first, part, doubt in _row_choices(rows):
         for template in TEMPLATES:
             strips = len(part.rows) - template.rows
             if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):
                 continue
             if options.layout not in (None, _full_name(template, strips)):
                 continue
-            spans, breaks = column_spans(part, template.rows, extent, template.columns)
+            short = breaks.of(first, first + template.rows)
+            spans, shared = column_spans(short, extent, template.columns)
             slots = tuple(_slots(template, strips, spans, part))
             labels = fit_labels(printing.words, slots, part.pitch_mm)
             seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
             length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
-            evidence = 6.0 * (breaks - 0.4) if template.columns > 1 else 0.0
+            evidence = 6.0 * (shared - 0.4) if template.columns > 1 else 0.0
             unread = sum((slot.row, 0) not in labels.names for slot in slots if slot.name is None)
             strips_cost = 0.3 * strips + (UNREAD_STRIP * unread if labels.score > SURE else 0.0)
             other = template.prior - strips_cost + length + evidence - doubt
@@ -173,8 +182,8 @@ def _weigh(
     return sorted(found, key=lambda h: -h.score)
 
 
-def _row_choices(rows: Rows) -> list[tuple[Rows, float]]:
-    """The rows found, and without an outermost one that may be no trace, with its cost."""
+def _row_choices(rows: Rows) -> list[tuple[int, Rows, float]]:
+    """The rows found, and without an outermost one that may be no trace: first, rows, cost."""
     count = len(rows.rows)
     left = float(np.median([row.left_mm for row in rows.rows]))
     right = float(np.median([row.right_mm for row in rows.rows]))
@@ -190,7 +199,8 @@ def _row_choices(rows: Rows) -> list[tuple[Rows, float]]:
             kept = rows.rows[top : count - bottom]
             dropped = (*rows.rows[:top], *rows.rows[count - bottom :])
             if kept:
-                choices.append((replace(rows, rows=kept), sum(cost(row) for row in dropped)))
+                doubt = sum(cost(row) for row in dropped)
+                choices.append((top, replace(rows, rows=kept), doubt))
     return choices
 
 
@@ -222,7 +232,7 @@ def _panels(
     speed, rows = float(scale.speed_mm_s.value), best.rows
     panels = []
     for number, slot in enumerate(best.slots):
-        strip = slot.row >= best.template.rows
+        strip = slot.row >= best.template.rows or best.template.name == "1x1"
         lead, source, sure = _lead(slot, number, best, options)
         left = best.spans[slot.column].left_mm
         right = best.spans[-1].right_mm if strip else best.spans[slot.column].right_mm
@@ -258,7 +268,7 @@ def _lead(
         if read is not None and read[1] > READ:
             return read[0], "printed", read[1]
         return STRIP_LEAD, "assumed", 0.5
-    if read is not None and read[0] == slot.name:
+    if read is not None and read[0] in (slot.name, slot.name.removeprefix("-")):
         return slot.name, "printed" if read[1] > 0.3 else "found", read[1]
     if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
         return read[0], "printed", read[1]

@@ -15,26 +15,42 @@ import numpy as np
 from digitize.tracing import FS_HZ, Known, Panel
 
 SAME_DB, CLEAR_DB = 8.0, 3.0  # agreement of a repeated lead, and its lead over the next best
-SURE_NAME = ("printed", "given")
+CONTRADICTS_DB = 6.0  # more that is asked for to overrule a name that was read
 LAG_S = 0.02
 BEAT_S = 0.03  # width of a beat's activity
 APART = 0.25  # difference of correlation that settles the timing
 
 
 def name_strips(panels: Sequence[Panel]) -> tuple[Panel, ...]:
-    """Return the panels with each unread strip named after the short panel that it repeats."""
+    """Return the panels with each strip named after the short panel that it repeats.
+
+    A name that was read is overruled only by clear agreement with another lead.
+    """
     short = [panel for panel in panels if not panel.strip]
-    named = []
-    for panel in panels:
-        if panel.strip and panel.lead_source not in SURE_NAME and short:
-            agreement = sorted(((_agreement_db(panel, s), s.lead) for s in short), reverse=True)
-            best, lead = agreement[0]
-            second = next((db for db, other in agreement[1:] if other != lead), -np.inf)
-            if best > SAME_DB and best - second > CLEAR_DB:
-                note = f"named {lead} because it repeats that lead ({best:.0f} dB)"
-                panel = replace(panel, lead=lead, lead_source="found", notes=(*panel.notes, note))
-        named.append(panel)
-    return tuple(named)
+    return tuple(_named(panel, short) if panel.strip and short else panel for panel in panels)
+
+
+def _named(strip: Panel, short: Sequence[Panel]) -> Panel:
+    """One strip under the name of the lead it repeats, where that is beyond doubt."""
+    if strip.lead_source == "given":
+        return strip
+    agreement = sorted(((_agreement_db(strip, s), s.lead) for s in short), reverse=True)
+    best, lead = agreement[0]
+    second = next((db for db, other in agreement[1:] if other != lead), -np.inf)
+    own = next((db for db, other in agreement if other == strip.lead), -np.inf)
+    needed = SAME_DB + (CONTRADICTS_DB if strip.lead_source == "printed" else 0.0)
+    if lead == strip.lead or best < needed or best - max(second, own) < CLEAR_DB:
+        return strip
+    gain = next(s.gain_mm_mv for s in short if s.lead == lead)
+    return replace(
+        strip,
+        lead=lead,
+        lead_source="found",
+        mv=strip.mv * strip.gain_mm_mv / gain,
+        sigma_mv=strip.sigma_mv * strip.gain_mm_mv / gain,
+        gain_mm_mv=gain,
+        notes=(*strip.notes, f"named {lead} because it repeats that lead ({best:.0f} dB)"),
+    )
 
 
 def settle_timing(panels: Sequence[Panel], known: Known) -> tuple[tuple[Panel, ...], Known]:
