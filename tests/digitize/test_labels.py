@@ -21,7 +21,7 @@ SLOTS = tuple(
 
 def word(name: str, x_mm: float, y_mm: float, *, doubt: float = 0.0) -> Word:
     """A crop read as `name`; `doubt` in log probability, shared by all other names at -8."""
-    names = {n: -8.0 for n in NAMES} | {name: -0.01 - doubt}
+    names = dict.fromkeys(NAMES, -8.0) | {name: -0.01 - doubt}
     return Word(Box(x_mm, y_mm, x_mm + 5.0, y_mm + 2.6), name, 0.95, names)
 
 

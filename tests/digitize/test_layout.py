@@ -9,6 +9,7 @@ from digitize.errors import NoTrace
 from digitize.layout import Layout, find_layout
 from digitize.marks import find_marks
 from digitize.options import Options
+from digitize.tracing import LEADS
 from tests.digitize.drawn_ink import CHART, perfect_sheet, read_words, rows_of
 from tests.drawn.spec import LayoutSpec, LetterSpec, PageSpec
 
@@ -109,7 +110,7 @@ def test_without_a_word_on_the_page_names_are_assumed_and_said_to_be():
 
 
 def test_what_a_person_gives_is_taken():
-    order = tuple(f"V{n}" for n in range(1, 7)) + ("I", "II", "III", "aVR", "aVL", "aVF")
+    order = (*LEADS[6:], *LEADS[:6])
     found = layout_of(PAGES["6x2"], Options(layout="6x2", lead_order=order, timing="simultaneous"))
     assert (found.name.value, found.name.source) == ("6x2", "given")
     assert tuple(panel.lead for panel in found.panels) == order
@@ -161,5 +162,5 @@ def test_no_row_no_layout():
 
 
 def test_a_layout_that_cannot_be_is_refused_with_advice():
-    with pytest.raises(NoTrace, match="4 rows of trace.*--layout"):
+    with pytest.raises(NoTrace, match=r"4 rows of trace.*--layout"):
         layout_of(CHART, Options(layout="12x1"))
