@@ -1,12 +1,14 @@
 """The report as HTML: sections in the order of a reader's questions, nothing from outside."""
 
 import base64
+import dataclasses
 import io
 import json
 from html import escape
 from typing import Any
 
 from digitize import program_version
+from digitize.options import Options
 from digitize.tracing import LEADS
 from measure.criteria.finding import Clause, Finding
 from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
@@ -238,7 +240,8 @@ def _footer(reading: Reading) -> str:
 
 def _given(options: dict[str, Any]) -> str:
     """The options that a person gave."""
-    given = {key: value for key, value in options.items() if value is not None}
+    defaults = dataclasses.asdict(Options())
+    given = {key: value for key, value in options.items() if value != defaults.get(key)}
     return _flat(given) if given else "none"
 
 

@@ -139,7 +139,11 @@ def test_report_escapes_what_comes_from_outside():
 
 def test_report_names_source_version_options_and_corrections():
     reading = made.reading()
-    tracing = replace(reading.tracing, options={"speed_mm_s": 25.0}, corrections=({"lead": "V1"},))
+    tracing = replace(
+        reading.tracing,
+        options={"speed_mm_s": 25.0, "max_megapixels": 120.0},
+        corrections=({"lead": "V1"},),
+    )
     text = Page(report(replace(reading, tracing=tracing))).text
     assert reading.tracing.source.sha256 in text
     assert '{"speed_mm_s": 25.0}' in text
