@@ -154,8 +154,8 @@ def _read_phase(contrast: np.ndarray, carrier: np.ndarray, mm_per_cycle: float) 
 
 def _cell_centres(shape: tuple[int, ...], factor: int) -> tuple[np.ndarray, np.ndarray]:
     """Full-size pixel coordinates (x, y) of the cell centres."""
-    y, x = np.mgrid[: shape[0], : shape[1]].astype(float)
-    return tuple(((v + 0.5) * CELL_PX) * factor - 0.5 for v in (x, y))  # type: ignore[return-value]
+    y, x = (np.mgrid[: shape[0], : shape[1]] + 0.5) * CELL_PX * factor - 0.5
+    return x, y
 
 
 def _largest_part(seen: np.ndarray) -> np.ndarray:

@@ -71,14 +71,15 @@ def settle_timing(panels: Sequence[Panel], known: Known) -> tuple[tuple[Panel, .
     columns = [_activity([p for p in panels if not p.strip and p.start_s == s]) for s in starts]
     strips = [p for p in panels if p.strip]
     strip = _activity(strips) if strips else None
-    follow, repeat = [], []
+    follow: list[float] = []
+    repeat: list[float] = []
     for start, column in zip(starts[1:], columns[1:], strict=True):
         repeat.append(_correlation(column, columns[0] if strip is None else strip))
         if strip is not None:
             follow.append(_correlation(column, strip[round(start * FS_HZ) :]))
     if strip is None:
         simultaneous = min(repeat) > 0.7
-        decided = simultaneous or np.mean(repeat) < 0.4
+        decided = simultaneous or float(np.mean(repeat)) < 0.4
     else:
         difference = float(np.mean(follow) - np.mean(repeat))
         simultaneous = difference < 0
@@ -104,8 +105,8 @@ def _agreement_db(strip: Panel, short: Panel) -> float:
         both = np.isfinite(own) & np.isfinite(other)
         if both.sum() < 0.5 * len(short.mv) or np.std(own[both]) == 0:
             continue
-        error = np.var(own[both] - other[both])
-        best = max(best, float(10 * np.log10(np.var(own[both]) / max(error, 1e-9))))
+        error = max(float(np.var(own[both] - other[both])), 1e-9)
+        best = max(best, float(10 * np.log10(np.var(own[both]) / error)))
     return best
 
 
