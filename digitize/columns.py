@@ -7,7 +7,7 @@ from itertools import pairwise
 import numpy as np
 
 from digitize.marks import Mark
-from digitize.rows import STEP_MM, Row, Rows, Runs
+from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
@@ -56,7 +56,8 @@ def without_marks(rows: Rows, marks: Sequence[Mark]) -> Rows:
         for mark in marks_of_row(row, marks, rows.pitch_mm):
             keep &= ~_part_of(rows.runs, mark)
     runs = Runs(*(a[keep] for a in (rows.runs.x_mm, rows.runs.top_mm, rows.runs.bottom_mm)))
-    return replace(rows, runs=runs, rows=tuple(_narrowed(row, runs) for row in rows.rows))
+    narrowed = (row_extent(runs, row.y_mm, rows.pitch_mm) or row for row in rows.rows)
+    return replace(rows, runs=runs, rows=tuple(narrowed))
 
 
 def _part_of(runs: Runs, mark: Mark) -> np.ndarray:
@@ -82,12 +83,6 @@ def _tail(away_mm: np.ndarray) -> float | None:
     if len(away_mm) == 0 or away_mm[-1] < TAIL_MM - 2 * STEP_MM:
         return float(away_mm[-1]) if len(away_mm) else 0.3
     return None
-
-
-def _narrowed(row: Row, runs: Runs) -> Row:
-    near = (runs.top_mm < row.y_mm + 12) & (runs.bottom_mm > row.y_mm - 12)
-    x = runs.x_mm[near & (runs.x_mm >= row.left_mm) & (runs.x_mm <= row.right_mm)]
-    return replace(row, left_mm=float(x.min()), right_mm=float(x.max())) if len(x) else row
 
 
 def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, ...], float]:

@@ -15,7 +15,8 @@ from digitize.sheet import Box
 from digitize.words import NAMES, Word, read_boxes
 
 REACH_LEFT_MM, REACH_RIGHT_MM = 18.0, 13.0  # a name stands this near the start of its trace
-SAME_X_MM, SAME_Y_MM = 3.0, 1.8
+SAME_X_MM = 3.0
+SAME_Y = 0.1  # of the distance between rows: traces wander about their zero line
 # An upright stroke alone is easily read as I: such names weigh less.
 WEIGHT: Mapping[str, float] = {"I": 0.35, "II": 0.6, "III": 0.8}
 DOUBT = -5.0  # a crop that no name explains better than this says nothing
@@ -87,8 +88,9 @@ def _fit_aligned(
     first = np.array([pair[0].column == 0 for pair in pairs])
     seeds = np.nonzero(gain > 0.5)[0]
     best_score, chosen = 0.0, []
+    same_y_mm = max(SAME_Y * pitch_mm, 1.8)
     for k in seeds:
-        level = np.abs(dy - dy[k]) < SAME_Y_MM
+        level = np.abs(dy - dy[k]) < same_y_mm
         near = level & (np.abs(dx - dx[k]) < SAME_X_MM)
         score, own = _one_each(pairs, np.nonzero(near)[0])
         # A calibration mark may push the names of the first column aside from the others'.

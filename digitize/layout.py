@@ -127,6 +127,7 @@ def find_layout(
     if not rows.rows:
         raise NoTrace("no ECG trace found on this page; give the page that holds the tracing")
     marks = [m for row in rows.rows for m in marks_of_row(row, marks, rows.pitch_mm)]
+    rows = _at_zero_line(rows, marks)
     scale = find_scale(printing, rows, marks, options)
     rows = without_marks(rows, marks)
     extent = trace_extent(rows)
@@ -142,7 +143,7 @@ def find_layout(
     hypotheses.sort(key=lambda h: -h.score)
     best = hypotheses[0]
     margin = best.score - next((h.score for h in hypotheses[1:]), best.score - 20)
-    panels = _panels(best, marks, scale, options)
+    panels = _panels(best, scale, options)
     return Layout(
         name=_known_name(best, margin, options),
         speed_mm_s=scale.speed_mm_s,
@@ -153,6 +154,16 @@ def find_layout(
         words=printing.letters,
         notes=(*scale.notes, *_notes(best, margin, panels, hypotheses)),
     )
+
+
+def _at_zero_line(rows: Rows, marks: Sequence[Mark]) -> Rows:
+    """The rows at their calibration marks' zero line, where they have one: traces wander."""
+    feet = [[m.foot_mm for m in marks_of_row(row, marks, rows.pitch_mm)] for row in rows.rows]
+    moved = (
+        replace(row, y_mm=float(np.median(own))) if own else row
+        for row, own in zip(rows.rows, feet, strict=True)
+    )
+    return replace(rows, rows=tuple(moved))
 
 
 def _weigh(
@@ -224,7 +235,6 @@ def _slots(template: Template, strips: int, spans: tuple[Span, ...], rows: Rows)
 
 def _panels(
     best: _Hypothesis,
-    marks: Sequence[Mark],
     scale: Scale,
     options: Options,
 ) -> tuple[PanelPlace, ...]:
@@ -248,7 +258,7 @@ def _panels(
                 row=slot.row,
                 column=slot.column,
                 box=Box(left, row.y_mm - half, right, row.y_mm + half),
-                baseline_mm=_baseline(row.y_mm, marks_of_row(row, marks, rows.pitch_mm)),
+                baseline_mm=row.y_mm,
                 start_s=(left - start_mm) / speed if consecutive else 0.0,
                 speed_mm_s=speed,
                 gain_mm_mv=scale.gain_of(row.y_mm, lead),
@@ -273,11 +283,6 @@ def _lead(
     if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
         return read[0], "printed", read[1]
     return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7
-
-
-def _baseline(row_mm: float, marks: Sequence[Mark]) -> float:
-    feet = [mark.foot_mm for mark in marks]
-    return float(np.median(feet)) if feet else row_mm
 
 
 def _known_name(best: _Hypothesis, margin: float, options: Options) -> Known:

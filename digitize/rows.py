@@ -73,7 +73,7 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     if not heights:
         return Rows((), 0.0, runs, uprights)
     pitch = float(np.median(np.diff(heights))) if len(heights) > 1 else 40.0
-    found = (_extent(runs, y, pitch) for y in heights)
+    found = (row_extent(runs, y, pitch) for y in heights)
     rows = tuple(row for row in found if row is not None)
     widest = max((row.right_mm - row.left_mm for row in rows), default=0.0)
     rows = tuple(row for row in rows if row.right_mm - row.left_mm > 0.25 * widest)
@@ -169,8 +169,11 @@ def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:
     return [float(v) for v in y]
 
 
-def _extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
-    """From the first to the last solid stretch of ink in a row; specks do not count."""
+def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
+    """Return the row at a height, from its first to its last solid stretch of ink.
+
+    Specks do not count; None where there is no solid stretch at all.
+    """
     reach = min(0.5 * pitch_mm, 12.0)
     near = (runs.top_mm < y_mm + reach) & (runs.bottom_mm > y_mm - reach)
     x = np.unique(runs.x_mm[near])
