@@ -6,12 +6,11 @@ from dataclasses import dataclass
 import numpy as np
 import scipy as sp
 
-from digitize.fit import ROUNDS, Line, View, fit_line, start_from_edges
+from digitize.fit import ROUNDS, STEP_MM, Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.pen import Pen, draw_line, envelope
 from digitize.ways import Way
 
-STEP_MM = 0.05  # of paper between nodes: 2 ms at 25 mm/s
 BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
 _BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
 _NEAR_MM = 0.4  # ink so far from the start must be explained
