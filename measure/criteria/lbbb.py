@@ -16,6 +16,7 @@ LATERAL = ("I", "aVL", "V5", "V6")
 NOTCH_LEADS = ("V1", "V2", "V5", "V6", "I", "aVL")
 LATE_RPT_MS = 60.0
 NORMAL_RPT_MS = 50.0  # right precordial leads; the bound the statement itself uses in V1
+UNSEEN_PACING = "Pacing whose spikes do not show on this tracing gives the same picture."
 STRICT_FIRST_MS = 40.0  # the strict definition's notch starts after the first 40 ms
 
 
@@ -49,6 +50,7 @@ def _aha_complete(case: Case, precondition: Clause) -> Finding:
             clause("R peak time normal in V1-V3 where an initial r is seen", _early_r(case)),
             clause("ST and T usually opposite to the QRS", _discordance(case), required=False),
         ],
+        [UNSEEN_PACING],
     )
 
 
@@ -66,6 +68,7 @@ def _aha_incomplete(case: Case, precondition: Clause) -> Finding:
             clause("R peak time > 60 ms in V4, V5 and V6", _late_r(case, "V4", "V5", "V6")),
             clause("no q in I, V5 and V6", _no_q(case, "I", "V5", "V6")),
         ],
+        [UNSEEN_PACING],
     )
 
 
@@ -96,6 +99,7 @@ def _strict(case: Case, precondition: Clause) -> Finding:
                 at_least(2, case.in_leads(NOTCH_LEADS, mid_notch)),
             ),
         ],
+        [UNSEEN_PACING],
     )
 
 
@@ -119,6 +123,7 @@ def _european_2013(case: Case, precondition: Clause) -> Finding:
             ),
             clause("no q in V5 and V6", _no_q(case, "V5", "V6")),
         ],
+        [UNSEEN_PACING],
     )
 
 
@@ -145,6 +150,7 @@ def _european_2021(case: Case, precondition: Clause) -> Finding:
             clause("QS or rS in V1", case.in_lead("V1", shape.qs_or_rs)),
             clause("ST and T opposite to the QRS", _discordance(case)),
         ],
+        [UNSEEN_PACING],
     )
 
 
@@ -172,6 +178,7 @@ def _bedside(case: Case, precondition: Clause) -> Finding:
             clause("septal r in V1 gone or below 0.1 mV", case.in_lead("V1", _small_r)),
             clause("T opposite to the QRS", _discordance(case)),
         ],
+        [UNSEEN_PACING],
     )
 
 
