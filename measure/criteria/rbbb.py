@@ -102,7 +102,9 @@ def _wide_r(case: Case, waves: LeadWaves) -> Look:
 
 
 def _wide_s(case: Case, waves: LeadWaves) -> Look:
-    s = waves.find("S")
+    """The longest S (a small s may stand before the R') against the tallest R."""
+    below = [d for d in waves.deflections if d.name.startswith("S")]
+    s = max(below, key=lambda d: d.duration_ms, default=None)
     if s is None:
         return shape.described("not met", waves, "an S longer than R or > 40 ms")
     se_ms = case.edge_se_ms(waves.lead)
@@ -113,7 +115,7 @@ def _wide_s(case: Case, waves: LeadWaves) -> Look:
         what="S duration",
         time_ms=s.peak_ms,
     )
-    r = waves.find("R")
+    r = max(shape.upward(waves), key=lambda d: d.amplitude_mv, default=None)
     if r is None:
         return long_s
     longer = look_at(

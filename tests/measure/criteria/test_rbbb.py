@@ -68,6 +68,19 @@ def test_aha_2009_3_s_longer_than_r(s_ms, result):
     assert made.clause(complete(leads), "S longer").result == result
 
 
+def test_aha_2009_3_a_small_s_before_the_main_r_is_not_the_one_meant():
+    leads = rbbb_leads()
+    leads["V6"] = lead(
+        "V6",
+        "rsR'S'",
+        wave("R", 0.05, 0, 8),
+        wave("S", -0.1, 8, 20),
+        wave("R'", 1.2, 20, 62),
+        wave("S'", -0.4, 62, 130),
+    )
+    assert made.clause(complete(leads), "S longer").result == "met"
+
+
 def single_r(peak_ms):
     leads = rbbb_leads()
     leads["V1"] = lead("V1", "R", wave("R", 0.9, 0, 130, peak_ms=peak_ms))
