@@ -11,16 +11,22 @@ from dataclasses import dataclass
 import numpy as np
 import scipy as sp
 
+_CALM_MS = 30
 _SEVERAL = 6  # leads from which one can be spared
 
 
 @dataclass(frozen=True, eq=False)
 class Leads:
-    """Averaged leads on a raster of 1 ms: `mv` (leads, n) without NaN, `seen` where measured."""
+    """Averaged leads on a raster of 1 ms.
+
+    `mv` is (leads, n) without NaN, `seen` True where it was measured. `weight` is (leads,): a lead
+    noisier than the others counts for less.
+    """
 
     time_ms: np.ndarray
     mv: np.ndarray
     seen: np.ndarray
+    weight: np.ndarray
 
     def index(self, at_ms: float) -> int:
         """Number of the raster place at a time, kept inside the raster."""
@@ -33,16 +39,18 @@ class Leads:
         )
 
     def size(self, values: np.ndarray) -> np.ndarray:
-        """Root mean square over the leads measured at each moment, (n,).
+        """Weighted root mean square over the leads measured at each moment, (n,).
 
         The lead that moves most is left out where there are several: one noisy lead, or one
         artefact, must not decide where a wave begins.
         """
-        squares = np.where(self.seen, values, 0) ** 2
-        count = self.seen.sum(axis=0)
-        several = count >= _SEVERAL
-        total = squares.sum(axis=0) - np.where(several, squares.max(axis=0), 0)
-        return np.sqrt(total / np.maximum(count - several, 1))
+        weight = np.where(self.seen, self.weight[:, None], 0)
+        squares = weight * values**2
+        several = self.seen.sum(axis=0) >= _SEVERAL
+        most = np.argmax(squares, axis=0)[None, :]
+        left_out = [np.take_along_axis(a, most, axis=0)[0] for a in (squares, weight)]
+        total = squares.sum(axis=0) - np.where(several, left_out[0], 0)
+        return np.sqrt(total / np.maximum(weight.sum(axis=0) - several * left_out[1], 1e-9))
 
     def level(self, start: int, stop: int) -> np.ndarray:
         """Mean of each lead from place `start` up to `stop`, (leads, 1)."""
@@ -62,7 +70,15 @@ def leads_of(time_ms: np.ndarray, mv: np.ndarray, chosen: Sequence[int] | None =
     for out, row, ok in zip(bridged, rows, seen, strict=True):
         if ok.any():
             out[:] = np.interp(time_ms, time_ms[ok], row[ok])
-    return Leads(time_ms, bridged, seen)
+    return Leads(time_ms, bridged, seen, _weights(bridged, seen.any(axis=1)))
+
+
+def _weights(mv: np.ndarray, used: np.ndarray) -> np.ndarray:
+    """1 / (1 + noise squared): noise is the slope in the calmest quarter, 1 in the middle lead."""
+    calm = sp.ndimage.uniform_filter1d(np.abs(np.diff(mv, axis=1)), _CALM_MS, axis=1)
+    noise = np.percentile(calm, 25, axis=1)
+    usual = float(np.median(noise[used])) if used.any() else 0.0
+    return used / (1 + (noise / max(usual, 1e-9)) ** 2)
 
 
 def reach(moving: np.ndarray, start: int, stop: int, gap: int) -> int:

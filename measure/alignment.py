@@ -54,35 +54,59 @@ def cut_beats(strips: Sequence[Strip], at_s: np.ndarray, raster_ms: np.ndarray) 
 def align_beats(
     strips: Sequence[Strip], at_s: np.ndarray, raster_ms: np.ndarray
 ) -> tuple[np.ndarray, float]:
-    """Return the shift of each beat in ms that brings all leads together, and its error."""
+    """Return the shift of each beat in ms that brings all leads together, and its error.
+
+    Beats that show the same leads (a column) are aligned by all of them, then moved as one.
+    """
     shift_ms = np.zeros(len(at_s))
     seen = np.isfinite(cut_beats(strips, at_s, raster_ms)).any(axis=2)
-    together = seen.T.astype(int) @ seen.astype(int) > 0
-    count, column = sp.sparse.csgraph.connected_components(together, directed=False)
-    onset_ms = np.full(len(at_s), np.nan)
-    for number in range(count):
+    _, column = np.unique(seen, axis=1, return_inverse=True)
+    averages = []
+    for number in range(int(column.max()) + 1):
         members = np.flatnonzero(column == number)
-        leads = np.flatnonzero(seen[:, members].any(axis=1))
-        if len(leads):
-            chosen = [strips[k] for k in leads.tolist()]
-            shift_ms[members], onset_ms[members] = _align_column(chosen, at_s[members], raster_ms)
-    if len(np.unique(onset_ms[np.isfinite(onset_ms)])) <= 1:
-        return shift_ms, 0.0
-    return shift_ms + np.nan_to_num(onset_ms - np.nanmedian(onset_ms)), _COLUMN_SE_MS
+        for turn in range(_ROUNDS):
+            cut = cut_beats(strips, at_s[members] + shift_ms[members] / 1000, raster_ms)
+            shift_ms[members] += _shifts(cut, raster_ms, medoid=turn == 0)
+            shift_ms[members] -= np.median(shift_ms[members])
+        cut = cut_beats(strips, at_s[members] + shift_ms[members] / 1000, raster_ms)
+        averages.append(quiet_mean(cut, axis=1))
+    moved_ms, se_ms = _meet(np.stack(averages, axis=1), raster_ms)
+    return shift_ms + moved_ms[column], se_ms
 
 
-def _align_column(
-    strips: Sequence[Strip], at_s: np.ndarray, raster_ms: np.ndarray
-) -> tuple[np.ndarray, float]:
-    """Shifts of beats that share leads, and the QRS onset of their average."""
-    shift_ms = np.zeros(len(at_s))
-    for number in range(_ROUNDS):
-        cut = cut_beats(strips, at_s + shift_ms / 1000, raster_ms)
-        shift_ms += _shifts(cut[_common(cut)], raster_ms, medoid=number == 0)
-        shift_ms -= np.median(shift_ms)
-    cut = cut_beats(strips, at_s + shift_ms / 1000, raster_ms)
-    onset, _ = qrs_edges(leads_of(raster_ms, quiet_mean(cut, axis=1)))
-    return shift_ms, onset.at_ms
+def _meet(columns: np.ndarray, raster_ms: np.ndarray) -> tuple[np.ndarray, float]:
+    """Shift of each column's average, (leads, columns, n), by the leads that columns share.
+
+    Columns that share none are brought together by where their QRS begins.
+    """
+    seen = np.isfinite(columns).any(axis=2)
+    moved_ms = np.zeros(columns.shape[1])
+    together = seen.T.astype(int) @ seen.astype(int) > 0
+    count, group = sp.sparse.csgraph.connected_components(together, directed=False)
+    onset_ms = np.full(len(moved_ms), np.nan)
+    for number in range(count):
+        members = np.flatnonzero(group == number)
+        if not seen[:, members].any():
+            continue
+        for turn in range(_ROUNDS):
+            moved = _moved(columns[:, members], moved_ms[members], raster_ms)
+            moved_ms[members] += _shifts(moved[_common(moved)], raster_ms, medoid=turn == 0)
+            moved_ms[members] -= np.median(moved_ms[members])
+        moved = _moved(columns[:, members], moved_ms[members], raster_ms)
+        onset_ms[members] = qrs_edges(leads_of(raster_ms, quiet_mean(moved, axis=1)))[0].at_ms
+    apart = len(np.unique(onset_ms[np.isfinite(onset_ms)])) > 1
+    if not apart:
+        return moved_ms, 0.0
+    return moved_ms + np.nan_to_num(onset_ms - np.nanmedian(onset_ms)), _COLUMN_SE_MS
+
+
+def _moved(columns: np.ndarray, by_ms: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:
+    """Each column's average later by its own shift, NaN where nothing was seen."""
+    moved = np.full_like(columns, np.nan)
+    for lead, column in np.argwhere(np.isfinite(columns).any(axis=2)):
+        row = columns[lead, column]
+        moved[lead, column] = np.interp(raster_ms + by_ms[column], raster_ms, row)
+    return moved
 
 
 def quiet_mean(values: np.ndarray, axis: int) -> np.ndarray:

@@ -22,7 +22,7 @@ def _samples(ms: float) -> int:
 
 
 _BAND_HZ = (6.0, 28.0)  # steep parts of a QRS, wide ones too, rather than of P and T
-_ENVELOPE_MS = 70
+_ENVELOPE_MS = 100
 _WINDOW_S = 2.0  # holds at least one beat from 30/min
 _LEAST_SHARE = 0.30  # of the usual QRS activity
 _LEAST_IN_GAP = 0.13  # where a beat is overdue

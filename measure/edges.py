@@ -109,7 +109,7 @@ def t_end(leads: Leads, qrs_off_ms: float, peak_before_ms: float, latest_ms: flo
     `peak_before_ms`: what is later belongs to the next P wave.
     """
     smooth = sp.ndimage.gaussian_filter1d(leads.mv, _SMOOTH_T_MS, axis=1)
-    leads = Leads(leads.time_ms, smooth, leads.seen)
+    leads = Leads(leads.time_ms, smooth, leads.seen, np.ones(len(smooth)))
     start, stop = leads.index(qrs_off_ms + 60), leads.index(latest_ms)
     if stop - start < 100:
         return None
@@ -131,20 +131,31 @@ def t_end(leads: Leads, qrs_off_ms: float, peak_before_ms: float, latest_ms: flo
 
 
 def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, Edge] | None:
-    """Return onset and offset of the P wave, None where nothing rises between the limits."""
+    """Return onset and offset of the P wave, None where nothing rises between the limits.
+
+    The offset is where the descent from the level of half the height, carried on through a fifth,
+    meets the level before the QRS: the PR segment itself often slopes.
+    """
     moving = leads.size(leads.slopes(_P_PARABOLA_MS))
     stop, first = leads.index(qrs_on_ms), leads.index(earliest_ms)
     if stop - first < 50:
         return None
+    away = leads.distance(leads.level(stop - _LEVEL_MS, stop - 1))
+    away = sp.ndimage.uniform_filter1d(away, _LEVEL_MS + 3)
     top = first + 10 + int(np.argmax(moving[first + 10 : stop - 20]))
     least = _least(moving[first : top + 1], _P_SLOPE_MV_S)
-    begin = reach(moving > least, top, first, _P_GAP_MS)
-    away = leads.distance(leads.level(begin - _LEVEL_MS, begin + 1))
-    onset = _edge(leads, *(leave(away, begin, f * _P_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0)))
+    # The flat top of a broad P wave does not move, but it stands high.
+    calm = first + int(np.argmin(sp.ndimage.uniform_filter1d(moving, _CALM_MS)[first : top + 1]))
+    hump = np.minimum(away, leads.distance(leads.level(calm - _LEVEL_MS, calm + _LEVEL_MS)))
+    high = hump > 0.5 * hump[max(top - 40, first) : stop].max()
+    begin = reach((moving > least) | high, top, first, _P_GAP_MS)
+    before = leads.distance(leads.level(begin - _LEVEL_MS, begin + 1))
+    onset = _edge(
+        leads, *(leave(before, begin, f * _P_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0))
+    )
     start = leads.index(onset.at_ms)
     if stop - start < _SHORTEST_P_MS:
         return None
-    away = sp.ndimage.uniform_filter1d(leads.distance(leads.level(stop - _LEVEL_MS, stop - 1)), 15)
     peak = start + int(np.argmax(away[start:stop]))
     floor = away[peak:stop].min()
     low, half = (
