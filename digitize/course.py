@@ -13,6 +13,8 @@ from digitize.ways import Way
 
 BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
 _BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
+_STRETCH_MM = 6.0
+_MISPLACED = 0.7  # half of the power of the shaking
 _NEAR_MM = 0.4  # ink so far from the start must be explained
 
 
@@ -121,23 +123,25 @@ def lay(image: np.ndarray, course: Course, pen: Pen, row0: int = 0, col0: int = 
 def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
     """Standard deviation, in rows, of what trembles under the nib at each node.
 
-    Where a trace shakes faster than the nib is wide, only the envelope of the shaking is printed:
-    the ink is thicker than the fitted line draws it. About ten nodes lie under a nib, and the range
-    of ten normal deviates is three standard deviations. Beside that, a node may stand off its
-    neighbours by the nib's sagitta over one step without changing either edge.
+    Where a trace shakes faster than the nib is wide, only the envelope of the shaking is printed.
+    Ink thicker than the line draws it tells its range: about ten nodes lie under a nib, and the
+    range of ten normal deviates is three standard deviations. Where the line itself shakes to
+    fill the ink, it does so with the right strength, but each turn of it is as likely as not at
+    another place.
     """
     step = course.x[1] - course.x[0]
-    radius = pen.width_px / 2
-    sagitta = radius - max(radius**2 - step**2, 0.0) ** 0.5
     inked = np.isfinite(course.y)
     y = np.interp(course.x, course.x[inked], course.y[inked])
-    edge, _, _ = envelope(y, step, radius, 0)
+    under = 2 * max(round(pen.width_px / step / 2), 1) + 1
+    shaking = np.abs(y - sp.ndimage.uniform_filter1d(y, under, mode="nearest"))
+    # the median over a stretch longer than two QRS complexes is not moved by one
+    stretch = 2 * round(_STRETCH_MM / STEP_MM / 2) + 1
+    usual = 1.4826 * sp.ndimage.median_filter(shaking, stretch, mode="nearest")
+    edge, _, _ = envelope(y, step, pen.width_px / 2, 0)
     cols = way.col0 + np.arange(way.edges.shape[1])
     seen = np.isfinite(way.edges[0]) & ~way.shared
     if not seen.any():
-        return np.full(len(y), sagitta)
+        return _MISPLACED * usual
     thick = np.interp(course.x, cols[seen], (way.edges[1] - way.edges[0])[seen])
-    excess = thick - (edge[1] - edge[0])
-    window = max(round(pen.width_px / step), 1)
-    near = sp.ndimage.median_filter(excess, 2 * window + 1, mode="nearest")
-    return np.hypot(np.maximum(near, 0) / 3, sagitta)
+    excess = sp.ndimage.median_filter(thick - (edge[1] - edge[0]), 2 * under + 1, mode="nearest")
+    return np.hypot(_MISPLACED * usual, np.maximum(excess, 0) / 3)
