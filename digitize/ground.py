@@ -33,7 +33,7 @@ def ruled_ground(absorbed: np.ndarray, raster: Raster) -> np.ndarray:
         ((0, rows * cell - absorbed.shape[0]), (0, cols * cell - absorbed.shape[1])),
         mode="reflect",
     )
-    cells = padded.reshape(rows, cell, cols, cell).swapaxes(1, 2)
+    cells = np.ascontiguousarray(padded.reshape(rows, cell, cols, cell).swapaxes(1, 2))
     ruled = _ruled(cells)
     usual = _mean_cell(cells[ruled][::7]) if ruled.any() else np.zeros((cell, cell), np.float32)
     tops, lefts = _region_starts(rows), _region_starts(cols)
@@ -69,12 +69,12 @@ def _ruled(cells: np.ndarray) -> np.ndarray:
     """Which cells (rows, cols) show the usual ruling; margins and blank borders do not."""
     rows, cols, size, _ = cells.shape
     inner = cells[rows // 4 : rows - rows // 4, cols // 4 : cols - cols // 4]
-    pattern = np.median(inner.reshape(-1, size, size)[::3], axis=0)
+    pattern = _mean_cell(inner.reshape(-1, size, size))
     pattern = pattern - np.median(pattern)
     power = float(np.sum(pattern * pattern))
     if power < 1e-3:
         return np.ones((rows, cols), bool)
-    capped = np.minimum(cells, float(pattern.max())) - np.median(cells)
+    capped = np.minimum(cells, float(pattern.max())) - np.median(cells[..., ::7, ::7])
     match = np.einsum("rcij,ij->rc", capped, pattern, optimize=True)
     own = np.einsum("rcij,rcij->rc", capped, capped, optimize=True)
     return match > 0.3 * np.sqrt(own * power)
