@@ -48,6 +48,17 @@ class LabelFit:
     boxes: tuple[Box, ...]
 
 
+@dataclass(frozen=True)
+class _Pair:
+    """One reading held against one slot: its place relative to the start, its log evidence."""
+
+    slot: Slot
+    word: Word
+    dx_mm: float
+    dy_mm: float
+    gain: float
+
+
 def posterior(word: Word) -> dict[str, float]:
     """Probability of each lead name, given that the word is one; empty where none fits."""
     if not word.names or max(word.names.values()) < DOUBT:
@@ -74,50 +85,63 @@ def _fit_aligned(
     pitch_mm: float,
     right: bool,
 ) -> LabelFit:
-    pairs = []
+    pairs: list[_Pair] = []
     for slot in slots:
         for word, names in words:
             x = word.box.right_mm if right else word.box.left_mm
             dx = x - slot.x_mm
             dy = (word.box.top_mm + word.box.bottom_mm) / 2 - slot.y_mm
             if -REACH_LEFT_MM < dx < REACH_RIGHT_MM and abs(dy) < 0.85 * pitch_mm:
-                pairs.append((slot, word, dx, dy, _gain(slot, names)))
+                pairs.append(_Pair(slot, word, dx, dy, _gain(slot, names)))
     if not pairs:
         return LabelFit(0.0, {}, None, right, ())
-    dx, dy, gain = (np.array([pair[k] for pair in pairs]) for k in (2, 3, 4))
-    first = np.array([pair[0].column == 0 for pair in pairs])
+    chosen, score = _shared_place(pairs, pitch_mm)
+    if not chosen:
+        return LabelFit(0.0, {}, None, right, ())
+    names = {(pair.slot.row, pair.slot.column): _likeliest(posterior(pair.word)) for pair in chosen}
+    offset = None
+    if len(chosen) > 1:
+        offset = (
+            float(np.median([pair.dx_mm for pair in chosen])),
+            float(np.median([pair.dy_mm for pair in chosen])),
+        )
+    return LabelFit(score, names, offset, right, tuple(pair.word.box for pair in chosen))
+
+
+def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair], float]:
+    """The readings at the one place, relative to the starts, that explains most; their evidence."""
+    dx = np.array([pair.dx_mm for pair in pairs])
+    dy = np.array([pair.dy_mm for pair in pairs])
+    gain = np.array([pair.gain for pair in pairs])
+    first = np.array([pair.slot.column == 0 for pair in pairs])
     seeds = np.nonzero(gain > 0.5)[0]
-    best_score, chosen = 0.0, []
+    best_score = 0.0
+    chosen: list[_Pair] = []
     same_y_mm = max(SAME_Y * pitch_mm, 1.8)
     for k in seeds:
         level = np.abs(dy - dy[k]) < same_y_mm
         near = level & (np.abs(dx - dx[k]) < SAME_X_MM)
-        score, own = _one_each(pairs, np.nonzero(near)[0])
+        score, own = _one_each(_those(pairs, near))
         # A calibration mark may push the names of the first column aside from the others'.
         for j in seeds[level[seeds] & (first[seeds] != first[k]) & ~near[seeds]]:
             apart = level & (np.abs(dx - np.where(first == first[k], dx[k], dx[j])) < SAME_X_MM)
-            both, two = _one_each(pairs, np.nonzero(apart)[0])
+            both, two = _one_each(_those(pairs, apart))
             if both - 1.0 > score:
                 score, own = both - 1.0, two
         if score > best_score:
             best_score, chosen = score, own
-    if not chosen:
-        return LabelFit(0.0, {}, None, right, ())
-    names = {}
-    for k in chosen:
-        slot, word = pairs[k][:2]
-        post = posterior(word)
-        name = max(post, key=lambda n: post[n])
-        names[slot.row, slot.column] = (name, post[name])
-    offset = None
-    if len(chosen) > 1:
-        offset = (float(np.median(dx[chosen])), float(np.median(dy[chosen])))
-    return LabelFit(best_score, names, offset, right, tuple(pairs[k][1].box for k in chosen))
+    return chosen, best_score
+
+
+def _likeliest(names: Mapping[str, float]) -> tuple[str, float]:
+    """The likeliest of some names and its probability."""
+    name = max(names, key=lambda n: names[n])
+    return name, names[name]
 
 
 def _gain(slot: Slot, names: Mapping[str, float]) -> float:
     """Log evidence of one reading for one slot against a name drawn at random."""
-    name = slot.name or max(names, key=lambda n: names[n])
+    name = slot.name or _likeliest(names)[0]
     share = names[name] + (names["aVR"] if name == "-aVR" else 0.0)  # a minus is easily lost
     evidence = float(np.log(share * len(NAMES)))
     if slot.name is None:
@@ -125,20 +149,20 @@ def _gain(slot: Slot, names: Mapping[str, float]) -> float:
     return WEIGHT.get(name, 1.0) * max(evidence, -2.5)
 
 
-def _one_each(pairs: list, near: np.ndarray) -> tuple[float, list[int]]:  # type: ignore[type-arg]
-    """Best reading of each slot among the pairs, each word used once."""
-    score, chosen = 0.0, []
-    taken_slots, taken_words = set(), set()
-    for k in sorted(near, key=lambda k: -pairs[k][4]):
-        slot, word = pairs[k][0], pairs[k][1]
-        key = (slot.row, slot.column)
-        if key in taken_slots or word.box in taken_words:
-            continue
-        taken_slots.add(key)
-        taken_words.add(word.box)
-        score += pairs[k][4]
-        chosen.append(int(k))
-    return score, chosen
+def _those(pairs: Sequence[_Pair], mask: np.ndarray) -> list[_Pair]:
+    """The pairs that a mask marks."""
+    return [pair for pair, marked in zip(pairs, mask, strict=True) if marked]
+
+
+def _one_each(pairs: Sequence[_Pair]) -> tuple[float, list[_Pair]]:
+    """Best reading of each slot among the pairs, each word used once; their evidence first."""
+    chosen: list[_Pair] = []
+    taken: set[Slot | Box] = set()
+    for pair in sorted(pairs, key=lambda pair: -pair.gain):
+        if pair.slot not in taken and pair.word.box not in taken:
+            taken |= {pair.slot, pair.word.box}
+            chosen.append(pair)
+    return sum(pair.gain for pair in chosen), chosen
 
 
 def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot]) -> LabelFit:
@@ -154,8 +178,7 @@ def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot]) -> LabelFit:
         if not post:
             continue
         score += min(max(_gain(slot, post), -1.0), 2.0)
-        name = max(post, key=lambda n: post[n])
-        names[slot.row, slot.column] = (name, post[name])
+        names[slot.row, slot.column] = _likeliest(post)
     return LabelFit(score, names, fit.offset_mm, fit.right_aligned, fit.boxes)
 
 

@@ -106,8 +106,8 @@ def _without_rules(mask: np.ndarray, ink: Ink) -> tuple[np.ndarray, tuple[Box, .
         )
         for left, top, width, height, _ in stats[1:]
     )
-    rules = cv2.dilate(upright | level, grow)
-    return mask & (1 - rules), boxes
+    rules = cv2.dilate(np.maximum(upright, level), grow)
+    return np.where(rules > 0, 0, mask).astype(np.uint8), boxes
 
 
 def _find_runs(mask: np.ndarray, ink: Ink) -> Runs:
