@@ -1,4 +1,4 @@
-"""The lines and words that a PDF page draws, read from its objects instead of from its pixels.
+"""What a PDF page draws, read from its objects instead of from its pixels.
 
 Form XObjects are entered with their matrices, subpaths become lines of their own, Bézier curves
 are flattened, and what lies outside a clip is cut off: what the page does not show is not read.
@@ -13,7 +13,8 @@ import numpy as np
 import pypdfium2 as pdfium
 import pypdfium2.raw as pdfium_c
 
-from digitize.drawing import Drawing, DrawnLine, DrawnWord
+from digitize.drawing import Drawing, DrawnLine
+from digitize.pdf_words import words_of
 
 MOST_OBJECTS = 400_000  # a drawing of more is no chart
 DEEPEST_FORM = 8
@@ -23,16 +24,26 @@ MOST_DECIMALS = 5
 
 _POINTS_PER_MM = 72 / 25.4
 _FINE = 1000  # places are asked for in thousandths of a pixel: the library answers in integers
-_TURNED = 0.02  # radians off level from which text counts as turned
-_WORD_GAP, _WORD_OVERLAP = 0.35, 0.4  # of the letter height: letters of one word
+
+
+Frame = tuple[float, float, float, float]  # left, top, right, bottom
 
 
 @dataclass(frozen=True)
 class _State:
     """How the objects of a form reach the page: matrix to pixels, visible box in pixels."""
 
-    matrix: np.ndarray  # (3, 3), column vectors
-    box: tuple[float, float, float, float]
+    matrix: tuple[float, ...]  # a b c d e f of ISO 32000-1, 8.3.3
+    box: Frame
+
+
+@dataclass(frozen=True)
+class _Subpath:
+    """Vertices in the path's own space, and what takes them to the page."""
+
+    points: list[tuple[float, float]]
+    width: float
+    state: _State
 
 
 def read_drawing(page: pdfium.PdfPage, width_px: int, height_px: int) -> Drawing | None:
@@ -52,47 +63,76 @@ def read_drawing(page: pdfium.PdfPage, width_px: int, height_px: int) -> Drawing
         return None
     to_px = _to_pixels(page, width_px, height_px)
     state = _State(to_px, (-0.5, -0.5, width_px - 0.5, height_px - 0.5))
-    lines = tuple(_lines_of_page(page, state))
+    count = pdfium_c.FPDFPage_CountObjects(page)
+    objects = (pdfium_c.FPDFPage_GetObject(page, k) for k in range(count))
+    lines = _to_lines([path for item in objects for path in _subpaths_of(item, state, 0)])
     if not lines:
         return None
-    return Drawing(lines, tuple(_words(page, to_px)), _scale(to_px) * _POINTS_PER_MM)
+    return Drawing(lines, tuple(words_of(page, to_px)), _scale(to_px) * _POINTS_PER_MM)
 
 
-def _to_pixels(page: pdfium.PdfPage, width_px: int, height_px: int) -> np.ndarray:
+def _to_pixels(page: pdfium.PdfPage, width_px: int, height_px: int) -> tuple[float, ...]:
     """The matrix from page space to pixels, crop box and page rotation included."""
-    corners = np.array([[0.0, 0.0], [1000.0, 0.0], [0.0, 1000.0]])
     found = []
-    for x, y in corners:
+    for x, y in ((0.0, 0.0), (1000.0, 0.0), (0.0, 1000.0)):
         u, v = ctypes.c_int(), ctypes.c_int()
-        pdfium_c.FPDF_PageToDevice(
-            page, 0, 0, width_px * _FINE, height_px * _FINE, 0, x, y, u, v
-        )  # fmt: skip
+        size = width_px * _FINE, height_px * _FINE
+        pdfium_c.FPDF_PageToDevice(page, 0, 0, *size, 0, x, y, u, v)
         found.append((u.value / _FINE - 0.5, v.value / _FINE - 0.5))
-    origin, right, up = (np.array(place) for place in found)
-    matrix = np.eye(3)
-    matrix[:2] = np.column_stack([(right - origin) / 1e3, (up - origin) / 1e3, origin])
-    return matrix
+    (e, f), right, up = found
+    return (right[0] - e) / 1e3, (right[1] - f) / 1e3, (up[0] - e) / 1e3, (up[1] - f) / 1e3, e, f
 
 
-def _scale(matrix: np.ndarray) -> float:
-    return math.sqrt(abs(float(np.linalg.det(matrix[:2, :2]))))
+def _scale(matrix: tuple[float, ...]) -> float:
+    a, b, c, d, _, _ = matrix
+    return math.sqrt(abs(a * d - b * c))
 
 
-def _lines_of_page(page: pdfium.PdfPage, state: _State) -> Iterator[DrawnLine]:
-    for k in range(pdfium_c.FPDFPage_CountObjects(page)):
-        yield from _lines_of(pdfium_c.FPDFPage_GetObject(page, k), state, 0)
+def _moved(points: np.ndarray, matrix: tuple[float, ...]) -> np.ndarray:
+    a, b, c, d, e, f = matrix
+    return points @ np.array([[a, b], [c, d]]) + np.array([e, f])
 
 
-def _lines_of(item: pdfium_c.FPDF_PAGEOBJECT, state: _State, depth: int) -> Iterator[DrawnLine]:
-    """Lines of one object; those of a form's objects where it is one."""
+def _within(item: pdfium_c.FPDF_PAGEOBJECT, state: _State) -> _State:
+    """What takes an object's own space to the page; a clip of any shape counts by its box."""
+    m = pdfium_c.FS_MATRIX()
+    pdfium_c.FPDFPageObj_GetMatrix(item, m)
+    a, b, c, d, e, f = state.matrix
+    matrix = (
+        *(a * m.a + c * m.b, b * m.a + d * m.b),
+        *(a * m.c + c * m.d, b * m.c + d * m.d),
+        *(a * m.e + c * m.f + e, b * m.e + d * m.f + f),
+    )
+    left, top, right, bottom = state.box
+    clip = pdfium_c.FPDFPageObj_GetClipPath(item)
+    for k in range(max(pdfium_c.FPDFClipPath_CountPaths(clip), 0)):
+        count = pdfium_c.FPDFClipPath_CountPathSegments(clip, k)
+        raw = [_point(pdfium_c.FPDFClipPath_GetPathSegment(clip, k, j)) for j in range(count)]
+        if raw:
+            points = _moved(np.array(raw), state.matrix)
+            (x0, y0), (x1, y1) = points.min(axis=0).tolist(), points.max(axis=0).tolist()
+            left, top, right, bottom = max(left, x0), max(top, y0), min(right, x1), min(bottom, y1)
+    return _State(matrix, (left, top, right, bottom))
+
+
+def _point(segment: pdfium_c.FPDF_PATHSEGMENT) -> tuple[float, float]:
+    x, y = ctypes.c_float(), ctypes.c_float()
+    pdfium_c.FPDFPathSegment_GetPoint(segment, x, y)
+    return x.value, y.value
+
+
+def _subpaths_of(item: pdfium_c.FPDF_PAGEOBJECT, state: _State, depth: int) -> Iterator[_Subpath]:
+    """Stroked subpaths of one object; those of a form's objects where it is one."""
     kind = pdfium_c.FPDFPageObj_GetType(item)
     if kind == pdfium_c.FPDF_PAGEOBJ_PATH and _is_stroked(item):
-        inner = _State(state.matrix @ _matrix(item), _clipped(item, state))
-        yield from _strokes(item, inner)
+        width, inner = ctypes.c_float(), _within(item, state)
+        pdfium_c.FPDFPageObj_GetStrokeWidth(item, width)
+        for points in _subpaths(item):
+            yield _Subpath(points, width.value, inner)
     elif kind == pdfium_c.FPDF_PAGEOBJ_FORM and depth < DEEPEST_FORM:
-        inner = _State(state.matrix @ _matrix(item), _clipped(item, state))
+        inner = _within(item, state)
         for k in range(pdfium_c.FPDFFormObj_CountObjects(item)):
-            yield from _lines_of(pdfium_c.FPDFFormObj_GetObject(item, k), inner, depth + 1)
+            yield from _subpaths_of(pdfium_c.FPDFFormObj_GetObject(item, k), inner, depth + 1)
 
 
 def _is_stroked(item: pdfium_c.FPDF_PAGEOBJECT) -> bool:
@@ -105,49 +145,8 @@ def _is_stroked(item: pdfium_c.FPDF_PAGEOBJECT) -> bool:
     return colour[3].value >= FAINTEST_ALPHA
 
 
-def _matrix(item: pdfium_c.FPDF_PAGEOBJECT) -> np.ndarray:
-    m = pdfium_c.FS_MATRIX()
-    pdfium_c.FPDFPageObj_GetMatrix(item, m)
-    return np.array([[m.a, m.c, m.e], [m.b, m.d, m.f], [0, 0, 1]])
-
-
-def _clipped(item: pdfium_c.FPDF_PAGEOBJECT, state: _State) -> tuple[float, float, float, float]:
-    """The visible box, narrowed by the object's own clip; a clip of any shape counts by its box."""
-    left, top, right, bottom = state.box
-    clip = pdfium_c.FPDFPageObj_GetClipPath(item)
-    for k in range(max(pdfium_c.FPDFClipPath_CountPaths(clip), 0)):
-        count = pdfium_c.FPDFClipPath_CountPathSegments(clip, k)
-        raw = [_point(pdfium_c.FPDFClipPath_GetPathSegment(clip, k, j)) for j in range(count)]
-        if raw:
-            points = _moved(np.array(raw), state.matrix)
-            (x0, y0), (x1, y1) = points.min(axis=0), points.max(axis=0)
-            left, top, right, bottom = max(left, x0), max(top, y0), min(right, x1), min(bottom, y1)
-    return left, top, right, bottom
-
-
-def _point(segment: pdfium_c.FPDF_PATHSEGMENT) -> tuple[float, float]:
-    x, y = ctypes.c_float(), ctypes.c_float()
-    pdfium_c.FPDFPathSegment_GetPoint(segment, x, y)
-    return x.value, y.value
-
-
-def _moved(points: np.ndarray, matrix: np.ndarray) -> np.ndarray:
-    return points @ matrix[:2, :2].T + matrix[:2, 2]
-
-
-def _strokes(item: pdfium_c.FPDF_PAGEOBJECT, state: _State) -> Iterator[DrawnLine]:
-    """Visible parts of the subpaths of one path."""
-    width = ctypes.c_float()
-    pdfium_c.FPDFPageObj_GetStrokeWidth(item, width)
-    scale = _scale(state.matrix)
-    for points in _subpaths(item):
-        step_px = _resolution(points) * scale
-        for part in _visible(_moved(points, state.matrix), state.box):
-            yield DrawnLine(part, width.value * scale, step_px)
-
-
-def _subpaths(item: pdfium_c.FPDF_PAGEOBJECT) -> Iterator[np.ndarray]:
-    """Vertices of each subpath in the path's own space, (n, 2)."""
+def _subpaths(item: pdfium_c.FPDF_PAGEOBJECT) -> Iterator[list[tuple[float, float]]]:
+    """Vertices of each subpath of a path."""
     points: list[tuple[float, float]] = []
     curve: list[tuple[float, float]] = []
     for k in range(pdfium_c.FPDFPath_CountSegments(item)):
@@ -155,7 +154,7 @@ def _subpaths(item: pdfium_c.FPDF_PAGEOBJECT) -> Iterator[np.ndarray]:
         kind = pdfium_c.FPDFPathSegment_GetType(segment)
         if kind == pdfium_c.FPDF_SEGMENT_MOVETO:
             if len(points) > 1:
-                yield np.array(points)
+                yield points
             points = [_point(segment)]
         elif kind == pdfium_c.FPDF_SEGMENT_BEZIERTO:
             curve.append(_point(segment))
@@ -167,7 +166,23 @@ def _subpaths(item: pdfium_c.FPDF_PAGEOBJECT) -> Iterator[np.ndarray]:
         if pdfium_c.FPDFPathSegment_GetClose(segment) and points[0] != points[-1]:
             points.append(points[0])
     if len(points) > 1:
-        yield np.array(points)
+        yield points
+
+
+def _to_lines(paths: list[_Subpath]) -> tuple[DrawnLine, ...]:
+    """Visible lines in pixels, in the order of the subpaths; those of one state moved at once."""
+    groups: dict[_State, list[int]] = {}
+    for k, path in enumerate(paths):
+        groups.setdefault(path.state, []).append(k)
+    lines: list[tuple[int, DrawnLine]] = []
+    for state, members in groups.items():
+        points = np.concatenate([paths[k].points for k in members])
+        scale, step = _scale(state.matrix), _resolution(points)
+        ends = np.cumsum([len(paths[k].points) for k in members])[:-1]
+        for k, own in zip(members, np.split(_moved(points, state.matrix), ends), strict=True):
+            for part in _visible(own, state.box):
+                lines.append((k, DrawnLine(part, paths[k].width * scale, step * scale)))
+    return tuple(line for _, line in sorted(lines, key=lambda numbered: numbered[0]))
 
 
 def _flattened(*control: tuple[float, float]) -> list[tuple[float, float]]:
@@ -188,11 +203,10 @@ def _resolution(points: np.ndarray) -> float:
     return max(10.0**-MOST_DECIMALS, single)
 
 
-def _visible(points: np.ndarray, box: tuple[float, float, float, float]) -> Iterator[np.ndarray]:
+def _visible(points: np.ndarray, box: Frame) -> Iterator[np.ndarray]:
     """The parts of a line whose vertices lie inside a box; a crossing straight part counts."""
-    left, top, right, bottom = box
-    x, y = points.T
-    inside = (x >= left) & (x <= right) & (y >= top) & (y <= bottom)
+    low, high = np.array(box[:2]), np.array(box[2:])
+    inside = ((points >= low) & (points <= high)).all(axis=1)
     if inside.all():
         yield points
         return
@@ -205,7 +219,7 @@ def _visible(points: np.ndarray, box: tuple[float, float, float, float]) -> Iter
             yield points[start:stop]
 
 
-def _straight(points: np.ndarray, box: tuple[float, float, float, float]) -> Iterator[np.ndarray]:
+def _straight(points: np.ndarray, box: Frame) -> Iterator[np.ndarray]:
     """A straight line cut at a box (Liang and Barsky, ACM Trans Graphics 3:1, 1984)."""
     start, way = points[0], points[1] - points[0]
     enter, leave = 0.0, 1.0
@@ -219,63 +233,3 @@ def _straight(points: np.ndarray, box: tuple[float, float, float, float]) -> Ite
         enter, leave = max(enter, ends[0]), min(leave, ends[1])
     if enter < leave:
         yield start + np.array([[enter], [leave]]) * way
-
-
-def _words(page: pdfium.PdfPage, to_px: np.ndarray) -> Iterator[DrawnWord]:
-    """Words of the page's text: letters that stand close together on one base line."""
-    text = page.get_textpage()
-    word, box, upright = "", (0.0, 0.0, 0.0, 0.0), True
-    for k in range(text.count_chars()):
-        letter = chr(pdfium_c.FPDFText_GetUnicode(text, k))
-        own = _letter_box(text, k, to_px)
-        level = _is_level(text, k, to_px)
-        if word and (letter.isspace() or not _follows(box, own) or level != upright):
-            yield DrawnWord(word, box, upright)
-            word = ""
-        if letter.isspace() or not letter.isprintable():
-            continue
-        upright = level
-        box = _around(box, own) if word else own
-        word += letter
-    if word:
-        yield DrawnWord(word, box, upright)
-    text.close()
-
-
-def _letter_box(
-    text: pdfium.PdfTextPage, k: int, to_px: np.ndarray
-) -> tuple[float, float, float, float]:
-    left, right, bottom, top = (ctypes.c_double() for _ in range(4))
-    pdfium_c.FPDFText_GetCharBox(text, k, left, right, bottom, top)
-    corners = np.array([[left.value, bottom.value], [right.value, top.value]])
-    (x0, y0), (x1, y1) = np.sort(_moved(corners, to_px), axis=0)
-    return float(x0), float(y0), float(x1), float(y1)
-
-
-def _is_level(text: pdfium.PdfTextPage, k: int, to_px: np.ndarray) -> bool:
-    """Whether a letter stands upright on the rendered page."""
-    angle = pdfium_c.FPDFText_GetCharAngle(text, k)
-    along = to_px[:2, :2] @ np.array([math.cos(angle), math.sin(angle)])
-    return bool(along[0] > 0 and abs(along[1]) < _TURNED * along[0])
-
-
-def _follows(
-    word: tuple[float, float, float, float], letter: tuple[float, float, float, float]
-) -> bool:
-    """Whether a letter stands next to a word on its line."""
-    high = max(word[3] - word[1], letter[3] - letter[1])
-    overlap = min(word[3], letter[3]) - max(word[1], letter[1])
-    gap = letter[0] - word[2]
-    low = min(word[3] - word[1], letter[3] - letter[1])
-    return bool(overlap >= _WORD_OVERLAP * low and -high < gap < _WORD_GAP * high)
-
-
-def _around(
-    one: tuple[float, float, float, float], other: tuple[float, float, float, float]
-) -> tuple[float, float, float, float]:
-    return (
-        min(one[0], other[0]),
-        min(one[1], other[1]),
-        max(one[2], other[2]),
-        max(one[3], other[3]),
-    )
