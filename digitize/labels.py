@@ -98,14 +98,14 @@ def _fit_aligned(
     chosen, score = _shared_place(pairs, pitch_mm)
     if not chosen:
         return LabelFit(0.0, {}, None, right, ())
-    names = {(pair.slot.row, pair.slot.column): _likeliest(posterior(pair.word)) for pair in chosen}
+    read = {(pair.slot.row, pair.slot.column): _likeliest(posterior(pair.word)) for pair in chosen}
     offset = None
     if len(chosen) > 1:
         offset = (
             float(np.median([pair.dx_mm for pair in chosen])),
             float(np.median([pair.dy_mm for pair in chosen])),
         )
-    return LabelFit(score, names, offset, right, tuple(pair.word.box for pair in chosen))
+    return LabelFit(score, read, offset, right, tuple(pair.word.box for pair in chosen))
 
 
 def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair], float]:
