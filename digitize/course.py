@@ -41,7 +41,7 @@ class Cut:
 
 
 def begin(way: Way, left_mm: float, right_mm: float, pen: Pen, ink: Ink) -> Course:
-    """First guess of a line: midway between the bounds that the edges of its ink give."""
+    """First guess of a line, from the edges of its ink."""
     count = int((right_mm - left_mm) / STEP_MM + 1e-6) + 1
     x = ink.raster.col(left_mm + STEP_MM * np.arange(count))
     inked = np.isfinite(way.edges[0])
@@ -49,10 +49,9 @@ def begin(way: Way, left_mm: float, right_mm: float, pen: Pen, ink: Ink) -> Cour
     if inked.sum() < 0.05 * len(inked):
         return Course(x, np.full(count, np.nan))
     top, bottom = (np.interp(x, cols[inked], side[inked]) for side in way.edges)
-    upper, lower = start_from_edges(top, bottom, x[1] - x[0], pen.width_px / 2)
+    y = start_from_edges(top, bottom, x[1] - x[0], pen.width_px / 2)
     gap = max(round(BRIDGE_MM * ink.raster.px_per_mm), 1)
     bare = sp.ndimage.binary_opening(~inked, np.ones(gap))
-    y = (upper + lower) / 2
     y[np.interp(x, cols, bare.astype(float)) > 0.5] = np.nan
     return Course(x, y)
 

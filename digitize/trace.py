@@ -97,7 +97,7 @@ def _refined(pen: Pen, ways: tuple[Way, ...], courses: list[Course], ink: Ink) -
     fits = []
     for k in clear[:_SAMPLE]:
         cut = cut_out(k, ways, courses, pen, ink, noise)
-        line, x = fit(cut, courses[k], pen), courses[k].x
+        line, x = fit(cut, courses[k], pen, rounds=1), courses[k].x
         fits.append((cut.view, line, x[0] - cut.col0, x[1] - x[0]))
     if not fits:
         return pen, noise
