@@ -108,13 +108,11 @@ def _left_over(
     part = field.bare[slice(*rows), slice(*cols)]
     claimed = _claimed(1 - part, paths, rows[0], cols[0], field)
     tall = round(_LEAST_MM * field.px_per_mm)
-    beside = cv2.dilate(claimed.astype(np.uint8), np.ones((2 * tall + 1, 1), np.uint8))
-    unclaimed = ((part < INKED) & ~claimed).astype(np.uint8)
+    beside = cv2.dilate(claimed.astype(np.uint8), np.ones((2 * tall + 1, 1), np.uint8)) > 0
+    unclaimed = (part < INKED) & ~claimed
     # slivers along a trace are its own thickness; flanks are tall, lost stretches lie apart
-    flanks = cv2.morphologyEx(unclaimed, cv2.MORPH_OPEN, np.ones((tall, 2), np.uint8))
-    apart = cv2.morphologyEx(unclaimed & ~beside & 1, cv2.MORPH_OPEN, np.ones((2, 2), np.uint8))
-    left = flanks | apart
-    _, labels, stats, _ = cv2.connectedComponentsWithStats(left, connectivity=8)
+    left = _opened(unclaimed, (tall, 2)) | _opened(unclaimed & ~beside, (2, 2))
+    _, labels, stats, _ = cv2.connectedComponentsWithStats(left.astype(np.uint8), connectivity=8)
     size = np.maximum(stats[:, cv2.CC_STAT_HEIGHT], stats[:, cv2.CC_STAT_WIDTH])
     large = size >= _LEAST_MM * field.px_per_mm
     touching = np.zeros(len(stats), bool)
@@ -124,17 +122,23 @@ def _left_over(
     return np.where(keep[labels], labels, 0)
 
 
+def _opened(mask: np.ndarray, size: tuple[int, int]) -> np.ndarray:
+    """What of a mask holds a rectangle of so many rows and columns."""
+    return cv2.morphologyEx(mask.astype(np.uint8), cv2.MORPH_OPEN, np.ones(size, np.uint8)) > 0
+
+
 def _claimed(
     density: np.ndarray, paths: dict[int, Path], row0: int, col0: int, field: Field
 ) -> np.ndarray:
     """Ink that paths explain: under the pen all along, and whole runs that no other path enters."""
-    claimed = np.zeros(density.shape, np.uint8)
+    visited = np.zeros(density.shape, bool)
     row = np.arange(len(density))[:, None]
     spans = {m: (path.left - col0, path.span - row0) for m, path in paths.items()}
     for left, span in spans.values():
-        claimed[:, left : left + span.shape[1]] |= (row >= span[0]) & (row <= span[1])
+        visited[:, left : left + span.shape[1]] |= (row >= span[0]) & (row <= span[1])
     size = 2 * round(field.pen_mm / 2 * field.px_per_mm + 0.5) + 1
-    claimed = cv2.dilate(claimed, cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size)))
+    pen = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size))
+    claimed = cv2.dilate(visited.astype(np.uint8), pen) > 0
     for m, (left, span) in spans.items():
         part = slice(left, left + span.shape[1])
         run = run_at(np.ascontiguousarray(density[:, part]), span, _INK, 1)
@@ -146,7 +150,7 @@ def _claimed(
                 theirs, mine = other[:, a - start : b - start], run[:, a - left : b - left]
                 alone[a - left : b - left] &= (theirs[1] < mine[0]) | (theirs[0] > mine[1])
         claimed[:, part] |= alone & (row >= run[0] - 1) & (row <= run[1] + 1)
-    return claimed.astype(bool)
+    return claimed
 
 
 def _search(field: Field, place: _Place, paths: dict[int, Path]) -> tuple[Answer, ...]:
