@@ -13,6 +13,8 @@ import cv2
 import numpy as np
 import scipy as sp
 
+from digitize.comb import CLEAR, Comb, find_comb, trackable
+
 TILE_PX = 192
 STRIDE_PX = 96
 FFT_PX = 256
@@ -20,8 +22,6 @@ CONE = np.tan(np.deg2rad(40.0))  # a line family lies within this of its axis
 MIN_HZ = 1 / 75  # cycles per pixel: 5 mm at 15 px/mm
 HUMP = 15  # cells over which a hump of the spectrum is level
 STANDS_OUT = 2.5
-CLEAR = 5.0  # a peak counts from this many times the usual spectrum
-TOOTH = 0.12  # a harmonic is there from this share of the strongest peak
 USUAL_PAGE_MM = 260.0  # common practice: A4, Letter and strips; only to tell 1 mm from 5 mm
 SAME_SPACING = 0.2  # natural log: perspective changes the spacing less than this
 SPACINGS = 3  # distinct spacings considered per family
@@ -39,6 +39,15 @@ class Lattice:
     mm_per_cycle_y: float
     lines: str  # which lines were seen, in words
     score: float  # mean clearness of the followed peaks times the share of tiles
+
+
+@dataclass(frozen=True, eq=False)
+class _Vote:
+    """What one tile says: its number, the direction of its strongest peak, the comb along it."""
+
+    tile: int
+    direction: tuple[float, float]
+    comb: Comb
 
 
 @dataclass(frozen=True)
@@ -159,19 +168,20 @@ def _settle(
     clear = clear[height[clear] > CLEAR]
     # The strongest peaks may be edges of the sheet or of shadows: hear tiles of every strength.
     clear = clear[:: max(1, len(clear) // VOTERS)]
-    votes = []
+    votes: list[_Vote] = []
     for tile in clear:
         peak = (along.flat[strongest[tile]], other.flat[strongest[tile]])
         length = float(np.hypot(*peak))
         ray = np.arange(0.006, 0.49, 1 / 2048)
         profile = _sample(flat[tile], axis, ray * peak[0] / length, ray * peak[1] / length)
-        comb = _comb(ray, profile)
+        comb = find_comb(ray, profile)
         if comb is not None:
-            votes.append((tile, (peak[0] / length, peak[1] / length), *comb))
+            votes.append(_Vote(int(tile), (peak[0] / length, peak[1] / length), comb))
     if not votes:
         return []
-    spacing = np.array([v[2] for v in votes])
-    weight = np.minimum([v[3] for v in votes], 3 * np.median([v[3] for v in votes]))
+    spacing = np.array([vote.comb.spacing_px for vote in votes])
+    score = np.array([vote.comb.score for vote in votes])
+    weight = np.minimum(score, 3 * np.median(score))
     alike = np.abs(np.log(spacing[:, None] / spacing)) < SAME_SPACING
     families = []
     left = np.ones(len(votes), bool)
@@ -184,7 +194,7 @@ def _settle(
         voters = [v for v, inside in zip(votes, group, strict=True) if inside]
         share = float(weight[group].sum() / weight.sum()) + 1e-6
         for mm in (5.0, 1.0):
-            teeth = np.median([v[4] for v in voters], axis=0)
+            teeth = np.median([vote.comb.teeth for vote in voters], axis=0)
             px_per_mm = float(np.median(spacing[group])) / mm * factor
             evidence = _evidence(mm, teeth, px_per_mm, dpi, page_px) + 3 * np.log(share)
             families.append(_family(mm, teeth, px_per_mm, voters, evidence, spectra.shape))
@@ -195,70 +205,22 @@ def _family(
     mm: float,
     teeth: np.ndarray,
     px_per_mm: float,
-    voters: list[tuple[int, tuple[float, float], float, float, np.ndarray]],
+    voters: list[_Vote],
     evidence: float,
     shape: tuple[int, ...],
 ) -> _Family:
     """The hypothesis that a comb is that of `mm`, followed from its clearest tile."""
-    tile, direction, length_px, _, _ = max(voters, key=lambda v: v[3])
-    tooth = _trackable(teeth) if mm == 5 else 5
-    hz = (tooth if mm == 5 else 1) / length_px
-    row, col = np.unravel_index(tile, shape[:2])
+    clearest = max(voters, key=lambda vote: vote.comb.score)
+    tooth = trackable(teeth) if mm == 5 else 5
+    hz = (tooth if mm == 5 else 1) / clearest.comb.spacing_px
+    row, col = np.unravel_index(clearest.tile, shape[:2])
     return _Family(
         px_per_mm=px_per_mm,
         tooth=tooth,
         seed=(int(row), int(col)),
-        seed_hz=(direction[0] * hz, direction[1] * hz),
+        seed_hz=(clearest.direction[0] * hz, clearest.direction[1] * hz),
         evidence=float(evidence),
     )
-
-
-def _comb(ray: np.ndarray, profile: np.ndarray) -> tuple[float, float, np.ndarray] | None:
-    """Longest spacing whose harmonics explain the peaks of one profile.
-
-    Returns spacing in pixels, score, and the heights of the first ten harmonics.
-    """
-    at, _ = sp.signal.find_peaks(profile, height=CLEAR)
-    if len(at) == 0:
-        return None
-    at = at[profile[at] > 0.04 * profile[at].max()]
-    peak_hz, peak = ray[at], profile[at]
-    spacing = np.geomspace(2.6, 75, 700)[:, None]
-    order = peak_hz * spacing
-    nearest = np.round(order)
-    fits = (np.abs(order - nearest) / spacing < 0.0022 + 0.004 * peak_hz) & (nearest > 0)
-    explained = (fits * peak).sum(axis=1) / peak.sum()
-    claimed = np.arange(1, 11)
-    strong = fits & (peak > TOOTH * peak.max())
-    hit = (nearest[:, None, :] == claimed[:, None]) & strong[:, None, :]
-    possible = claimed <= np.maximum(0.45 * spacing, 1)
-    importance = possible / np.sqrt(claimed)
-    share = (hit.any(axis=2) * importance).sum(axis=1) / importance.sum(axis=1)
-    best = int(np.argmax(explained + 0.8 * share))
-    score = float(explained[best] + 0.8 * share[best]) * float(np.log(peak / CLEAR * np.e).sum())
-    refined = _refine_spacing(float(spacing[best, 0]), peak_hz, peak)
-    teeth_hz = np.arange(1, 11) / refined
-    teeth = np.array(
-        [profile[np.abs(ray - hz) < 0.003].max() if hz < 0.485 else 0.0 for hz in teeth_hz]
-    )
-    return refined, score, teeth
-
-
-def _refine_spacing(spacing: float, peak_hz: np.ndarray, weight: np.ndarray) -> float:
-    """Weighted least squares of the peaks against their order."""
-    order = np.round(peak_hz * spacing)
-    fits = (np.abs(peak_hz * spacing - order) / spacing < 0.004) & (order > 0)
-    if not fits.any():
-        return spacing
-    w, k, f = weight[fits], order[fits], peak_hz[fits]
-    return float(np.sum(w * k * k) / np.sum(w * k * f))
-
-
-def _trackable(teeth: np.ndarray) -> int:
-    """Which harmonic of 5 mm to follow: the 1 mm one where it shows."""
-    if teeth[4] >= max(0.25 * teeth[:6].max(), CLEAR):
-        return 5
-    return 1 + int(np.argmax(teeth[:3]))
 
 
 def _evidence(
