@@ -22,9 +22,9 @@ def profile(spacing_px: float, heights: dict[int, float], *, floor: float = 0.5)
     [
         {1: 20, 2: 18, 3: 16, 4: 14, 5: 40, 6: 10},  # 5 mm lines, and 1 mm lines in the fifth
         {2: 20, 3: 15, 4: 8, 5: 30},  # the first is lost in the shade of the page
-        {1: 12, 5: 60},
+        {1: 12, 2: 6, 5: 60},
     ],
-    ids=["all", "first missing", "first and fifth"],
+    ids=["all", "first missing", "fifth strongest"],
 )
 def test_spacing_is_that_of_the_first_harmonic(spacing_px, heights):
     comb = find_comb(RAY, profile(spacing_px, heights))
