@@ -35,6 +35,7 @@ class Answer:
 
     paths: dict[int, Path]
     prices: dict[int, float]
+    via: dict[int, tuple[tuple[int, int], ...]]  # points round which they were led
     total: float
 
 
@@ -155,8 +156,8 @@ def _claimed(
 
 def _search(field: Field, place: _Place, paths: dict[int, Path]) -> tuple[Answer, ...]:
     """The best answers found by leading one path after another round what is left over."""
-    prices = {m: _led(field, place, paths, m, None)[1] for m in paths}
-    first = _answer(field, place, paths, prices)
+    prices = {m: _led(field, place, paths, m, ())[1] for m in paths}
+    first = _answer(field, place, paths, prices, dict.fromkeys(paths, ()))
     beam, open_, seen = [first], [first], {_key(first)}
     for _ in range(_DEPTH):
         new = []
@@ -182,12 +183,16 @@ def _key(answer: Answer) -> bytes:
 
 
 def _answer(
-    field: Field, place: _Place, paths: dict[int, Path], prices: dict[int, float]
+    field: Field,
+    place: _Place,
+    paths: dict[int, Path],
+    prices: dict[int, float],
+    via: dict[int, tuple[tuple[int, int], ...]],
 ) -> Answer:
     """What these paths cost, ink left over included."""
     left = np.count_nonzero(_left_over(field, paths, place.rows, place.cols))
     left_mm = left / field.px_per_mm**2 / field.pen_mm
-    return Answer(paths, prices, sum(prices.values()) + _WORTH_PER_MM * left_mm)
+    return Answer(paths, prices, via, sum(prices.values()) + _WORTH_PER_MM * left_mm)
 
 
 def _changes(field: Field, place: _Place, answer: Answer) -> list[Answer]:
@@ -219,10 +224,11 @@ def _round(field: Field, place: _Place, answer: Answer, piece: np.ndarray) -> li
         for end in {int(np.argmin(rows[inside])), int(np.argmax(rows[inside]))}:
             if away[end] <= _TOUCH_MM * field.px_per_mm:
                 continue
-            via = int(rows[inside][end]), int(cols[inside][end])
+            point = int(rows[inside][end]), int(cols[inside][end])
+            via = (*(p for p in answer.via[m] if p[1] != point[1]), point)
             led, price = _led(field, place, answer.paths, m, via)
             paths, prices = answer.paths | {m: led}, answer.prices | {m: price}
-            changed.append(_answer(field, place, paths, prices))
+            changed.append(_answer(field, place, paths, prices, answer.via | {m: via}))
     if len({next(m for m in c.paths if c.paths[m] is not answer.paths[m]) for c in changed}) == 1:
         return [min(changed, key=lambda a: a.total)]  # nobody else's
     return changed
@@ -233,9 +239,9 @@ def _led(
     place: _Place,
     paths: dict[int, Path],
     m: int,
-    via: tuple[int, int] | None,
+    via: tuple[tuple[int, int], ...],
 ) -> tuple[Path, float]:
-    """Path m through a place, by a point if one is given, between the ends that it has."""
+    """Path m through a place, by the given points, between the ends that it has."""
     own = paths[m]
     ends = []
     for side, free in zip((0, -1), place.edges[m], strict=True):

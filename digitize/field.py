@@ -70,7 +70,7 @@ def walk(
     ends: tuple[np.ndarray, np.ndarray],
     *,
     others: tuple[Path, ...] = (),
-    via: tuple[int, int] | None = None,
+    via: tuple[tuple[int, int], ...] = (),
     extra: np.ndarray | None = None,
 ) -> tuple[Path, float]:
     """Cheapest path across a part of a field, and its price.
@@ -85,8 +85,8 @@ def walk(
         Price of beginning and of ending at each row of the part.
     others : tuple of Path
         Ways of other traces, whose ink may be crossed but not followed.
-    via : (int, int), optional
-        A row and column that the path must pass.
+    via : tuple of (int, int)
+        Rows and columns of points that the path must pass.
     extra : (rows,) float array, optional
         Bareness added to each row of the part.
     """
@@ -105,8 +105,8 @@ def walk(
     onward[:, known] += np.float32(_WALL) * ((row < low - 1) | (row > high + 1))
     if extra is not None:
         onward += extra.astype(np.float32)[:, None]
-    if via is not None:
-        away = np.abs(np.arange(*rows) - via[0]) > 1
-        onward[away, via[1] - cols[0]] += np.float32(_NEVER)
+    for at_row, at_col in via:
+        away = np.abs(np.arange(*rows) - at_row) > 1
+        onward[away, at_col - cols[0]] += np.float32(_NEVER)
     span, price = cheapest_path(bare, onward, *ends, field.px_per_mm)
     return Path(cols[0], span + rows[0]), float(price)
