@@ -12,6 +12,7 @@ import typer
 
 from digitize import CAUTION, program_version
 from digitize.console import console
+from digitize.formats import FORMATS
 from digitize.options import Options
 
 app = typer.Typer(
@@ -98,6 +99,32 @@ def page(
         failed = read_files(
             files, options, shown_on, folder=output, replace=replace, timings=timings
         )
+    raise typer.Exit(1 if failed else 0)
+
+
+@app.command()
+def export(
+    names: Annotated[list[Path], typer.Argument(help="Tracings: NAME.json, NAME.csv or NAME.")],
+    form: Annotated[
+        str, typer.Option("--as", help=f"Open format: {', '.join(FORMATS)}.", show_default=False)
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the files; else beside each tracing."),
+    ] = None,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier files.")] = False,
+) -> None:
+    """Write tracings in an open format for other systems.
+
+    Nothing is filled in: where nothing was read the format's own sign for it stands, and a format
+    without one refuses. Patient fields stay empty.
+    """
+    if form not in FORMATS:
+        raise typer.BadParameter(f"'{form}' is not known here: give {', '.join(FORMATS)}")
+    from digitize.formats.command import export_files
+
+    with console(len(names)) as shown_on:
+        failed = export_files(names, form, shown_on, folder=output, replace=replace)
     raise typer.Exit(1 if failed else 0)
 
 
