@@ -156,16 +156,15 @@ def _thin(runs: Runs, y_mm: float) -> bool:
 
 def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:
     """Drop the weaker of neighbours that are much closer than rows usually are."""
-    y, share = list(y), list(share)  # type: ignore[assignment]
     while len(y) > 2:
-        strong = np.array(y)[np.array(share) > 0.6 * max(share)]
-        usual = np.median(np.diff(strong)) if len(strong) > 1 else np.median(np.diff(y))
         gaps = np.diff(y)
+        strong = y[share > 0.6 * share.max()]
+        usual = np.median(np.diff(strong)) if len(strong) > 1 else np.median(gaps)
         close = int(np.argmin(gaps))
         if gaps[close] > 0.6 * usual:
             break
-        drop = close if share[close] < share[close + 1] else close + 1
-        del y[drop], share[drop]
+        weaker = close if share[close] < share[close + 1] else close + 1
+        y, share = np.delete(y, weaker), np.delete(share, weaker)
     return [float(v) for v in y]
 
 

@@ -1,6 +1,7 @@
 """The page flattened onto a square millimetre raster."""
 
 from dataclasses import dataclass
+from typing import TypeVar
 
 import cv2
 import numpy as np
@@ -12,6 +13,9 @@ from digitize.pages import Page
 MARGIN_MM = 32.0  # printing around the ruled area that belongs to the ECG: run, names of leads
 NODE_PX = 8  # the map is computed on every so many pixels and interpolated between
 MIN_PX_PER_MM = 2.8
+
+
+Places = TypeVar("Places", float, np.ndarray)
 
 
 @dataclass(frozen=True)
@@ -26,19 +30,19 @@ class Raster:
     top_mm: float  # y of the centre of row 0
     px_per_mm: float
 
-    def col(self, x_mm):  # type: ignore[no-untyped-def]
+    def col(self, x_mm: Places) -> Places:
         """Column (float) of a place x_mm; a number or an array."""
         return (x_mm - self.left_mm) * self.px_per_mm
 
-    def row(self, y_mm):  # type: ignore[no-untyped-def]
+    def row(self, y_mm: Places) -> Places:
         """Row (float) of a place y_mm; a number or an array."""
         return (y_mm - self.top_mm) * self.px_per_mm
 
-    def x_mm(self, col):  # type: ignore[no-untyped-def]
+    def x_mm(self, col: Places) -> Places:
         """Place x in millimetres of a column; a number or an array."""
         return self.left_mm + col / self.px_per_mm
 
-    def y_mm(self, row):  # type: ignore[no-untyped-def]
+    def y_mm(self, row: Places) -> Places:
         """Place y in millimetres of a row; a number or an array."""
         return self.top_mm + row / self.px_per_mm
 
