@@ -13,7 +13,7 @@ import numpy as np
 import scipy as sp
 import skimage as ski
 
-from digitize.contrast import grid_contrast
+from digitize.contrast import grid_contrasts
 from digitize.errors import NoGrid
 from digitize.lattice import find_lattice
 from digitize.options import Options
@@ -25,6 +25,7 @@ CELL_PX = 16  # phase is read on cells of this many (reduced) pixels
 MIN_CELLS = 30
 MIN_COHERENCE = 0.35
 MIN_SEEN = 0.08  # a lattice seen on less of the page is chance
+GOOD_RESIDUAL_MM = 0.025  # no other picture of the page need be tried
 MAX_RESIDUAL_MM = 0.12  # phase that scatters more follows no ruling
 MAX_PX_PER_MM = 60.0
 FAX_RATIOS = (204 / 98, 204 / 196, 204 / 391)  # ITU-T T.4 resolutions
@@ -75,22 +76,35 @@ def find_grid(page: Page, options: Options | None = None) -> Grid:
     """
     options = options or Options()
     reduced, factor = _reduce(page.pixels)
-    contrast = grid_contrast(reduced)
+    found: list[Grid] = []
+    for contrast in grid_contrasts(reduced):
+        grid = _ruled_grid(page, contrast, factor)
+        if grid is not None:
+            found.append(grid)
+            if grid.residual_mm < GOOD_RESIDUAL_MM:
+                break
+    if not found:
+        return _without_grid(page, options)
+    return min(found, key=lambda grid: grid.residual_mm)
+
+
+def _ruled_grid(page: Page, contrast: np.ndarray, factor: int) -> Grid | None:
+    """The map from a contrast picture's lattice, None where there is none to be trusted."""
     lattice = find_lattice(contrast, factor=factor, dpi=page.source.dpi)
     if lattice is None:
-        return _without_grid(page, options)
+        return None
     across = _read_phase(contrast, lattice.phase_x, lattice.mm_per_cycle_x)
     down = _read_phase(contrast, lattice.phase_y, lattice.mm_per_cycle_y)
     weight = np.minimum(across.weight, down.weight)
     seen = _largest_part(weight > MIN_COHERENCE)
     if np.mean(seen) < MIN_SEEN or np.count_nonzero(seen) < MIN_CELLS:
-        return _without_grid(page, options)
+        return None
     x_px, y_px = _cell_centres(weight.shape, factor)
     page_map, residual_mm = fit_page_map(
         x_px[seen], y_px[seen], across.mm[seen], down.mm[seen], weight[seen], page.pixels.shape[:2]
     )
     if residual_mm > MAX_RESIDUAL_MM or not _plausible(page_map.scale_px_per_mm(), page):
-        return _without_grid(page, options)
+        return None
     x_mm, y_mm = page_map.to_mm(x_px[seen], y_px[seen])
     half = CELL_PX * factor / 2 / np.mean(page_map.scale_px_per_mm())
     ruled = (x_mm.min() - half, y_mm.min() - half, x_mm.max() + half, y_mm.max() + half)

@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from digitize.contrast import grid_contrast
+from digitize.contrast import grid_contrasts
 from tests.digitize.drawn_ink import STRIP, drawn_strip
 
 SEEN_AS = {
@@ -24,7 +24,7 @@ def sampled(image: np.ndarray, drawn, x_mm: np.ndarray, y_mm: np.ndarray) -> np.
 @pytest.mark.parametrize("mode", SEEN_AS)
 def test_lines_stand_out_of_the_paper_between_them(mode):
     drawn = drawn_strip(SEEN_AS[mode])
-    contrast = grid_contrast(drawn.pixels)
+    contrast = next(grid_contrasts(drawn.pixels))
     assert contrast.shape == drawn.pixels.shape[:2]
     assert contrast.dtype == np.float32
     x_mm = np.arange(5.0, 95.0, 5.0)
@@ -38,7 +38,7 @@ def test_lines_stand_out_of_the_paper_between_them(mode):
 @pytest.mark.parametrize("mode", SEEN_AS)
 def test_a_black_trace_counts_no_more_than_a_grid_line(mode):
     drawn = drawn_strip(SEEN_AS[mode])
-    contrast = grid_contrast(drawn.pixels)
+    contrast = next(grid_contrasts(drawn.pixels))
     panel = drawn.truth.panels[0]
     trace = sampled(contrast, drawn, panel.x_mm, panel.y_mm)
     lines = sampled(contrast, drawn, np.arange(5.0, 95.0, 5.0), np.full(18, 12.5))
@@ -49,7 +49,7 @@ def test_shade_leaves_it_as_it_was():
     drawn = drawn_strip()
     cols = np.linspace(1.0, 0.6, drawn.pixels.shape[1])
     shaded = np.clip(drawn.pixels * cols[:, None], 0, 255).astype(np.uint8)
-    one, other = grid_contrast(drawn.pixels), grid_contrast(shaded)
+    one, other = next(grid_contrasts(drawn.pixels)), next(grid_contrasts(shaded))
     # Away from the picture's border, where the paper's own edge is seen.
     inner = (slice(40, -40), slice(40, -40))
     assert np.corrcoef(one[inner].ravel(), other[inner].ravel())[0, 1] > 0.95
@@ -58,5 +58,5 @@ def test_shade_leaves_it_as_it_was():
 def test_its_input_stays_as_it_was():
     pixels = drawn_strip().pixels.copy()
     before = pixels.copy()
-    grid_contrast(pixels)
+    list(grid_contrasts(pixels))
     np.testing.assert_array_equal(pixels, before)
