@@ -143,6 +143,20 @@ def _drop_outliers(cut: np.ndarray, raster_ms: np.ndarray) -> None:
     cut[far & ~few[:, None]] = np.nan
 
 
+def _mean(cut: np.ndarray) -> np.ndarray:
+    """Average over beats, (leads, n), that does not jump where a beat ends at its panel's edge.
+
+    Slopes are averaged and summed up from the fiducial point, where every beat of a lead is seen:
+    the same as averaging where all beats are there, and smooth where some are not.
+    """
+    middle = _BEFORE_MS
+    slope = quiet_mean(np.diff(cut, axis=2), axis=1)
+    start = quiet_mean(cut[:, :, middle], axis=1)[:, None]
+    after = start + np.cumsum(slope[:, middle:], axis=1)
+    before = start - np.cumsum(slope[:, :middle][:, ::-1], axis=1)[:, ::-1]
+    return np.concatenate([before, start, after], axis=1)
+
+
 def _mean_and_se(cut: np.ndarray, sigma: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Average over beats and its standard error, (leads, n) each.
 
@@ -150,8 +164,8 @@ def _mean_and_se(cut: np.ndarray, sigma: np.ndarray) -> tuple[np.ndarray, np.nda
     within 20 ms.
     """
     n = np.isfinite(cut).sum(axis=1)
-    mean = quiet_mean(cut, axis=1)
-    squares = np.nansum((cut - mean[:, None]) ** 2, axis=1)
+    mean = _mean(cut)
+    squares = np.nansum((cut - quiet_mean(cut, axis=1)[:, None]) ** 2, axis=1)
     width = round(40 / _RASTER_MS) | 1
     freedom = np.maximum(n - 1, 0).astype(float)
     pooled = sp.ndimage.uniform_filter1d(squares, width, axis=1) / np.maximum(

@@ -38,8 +38,9 @@ _TAIL_SD = 1.448
 _P_FRACTIONS = (0.2, 0.4)
 _CALM_MS = 30
 _NOISE_FACTOR = 3.0
+_MOST_NOISE = 1.5  # times the slope: what scatters more than that is a wave, as in flutter
 _SHORTEST_P_MS = 20
-_LEAST_SE_MS = 2.0  # the raster of the samples
+_LEAST_SE_MS = 1.5  # a boundary is a definition: no curve has a corner there
 
 
 @dataclass(frozen=True)
@@ -97,7 +98,7 @@ def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: in
     at = [leave(away, end, f * _QRS_DISTANCE_MV, -1, 40) for f in (1.0, 0.5, 2.0)]
     edge = _edge(leads, *at)
     return Edge(
-        edge.at_ms, math.hypot(edge.se_ms, abs(plain - corrected) / 4 if end == plain else 4)
+        edge.at_ms, math.hypot(edge.se_ms, abs(plain - corrected) / 4 if end == plain else 3)
     )
 
 
@@ -165,7 +166,7 @@ def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, E
     end_ms = min(float(2 * leads.time_ms[low] - leads.time_ms[half]), qrs_on_ms)
     if end_ms - onset.at_ms < _SHORTEST_P_MS:
         return None
-    return onset, Edge(end_ms, math.hypot(_LEAST_SE_MS, (low - half) / 2))
+    return onset, Edge(end_ms, math.hypot(_LEAST_SE_MS, (low - half) / 4))
 
 
 def _least(moving: np.ndarray, slope_mv_s: float) -> float:
@@ -173,9 +174,10 @@ def _least(moving: np.ndarray, slope_mv_s: float) -> float:
     level = sp.ndimage.uniform_filter1d(moving, _CALM_MS, mode="nearest")
     k = int(np.argmin(level))
     calm = moving[max(k - _CALM_MS // 2, 0) : k + _CALM_MS // 2]
-    return float(level[k] + max(slope_mv_s, _NOISE_FACTOR * calm.std()))
+    noise = min(_NOISE_FACTOR * float(calm.std()), _MOST_NOISE * slope_mv_s)
+    return float(level[k]) + max(slope_mv_s, noise)
 
 
 def _edge(leads: Leads, at: int, early: int, late: int) -> Edge:
     """Edge at a place; its error from where half and twice the distance would put it."""
-    return Edge(float(leads.time_ms[at]), math.hypot(_LEAST_SE_MS, abs(late - early) / 2))
+    return Edge(float(leads.time_ms[at]), math.hypot(_LEAST_SE_MS, abs(late - early) / 4))
