@@ -22,10 +22,10 @@ _AROUND_MM = 2.5  # paper taken in to each side of a piece
 _TOUCH_MM = 1.2  # a piece so near to a path may belong to it
 _SHORT_MM = 1.5  # a run of ink that stands out so little from its path holds no peak of its own
 _INK = 0.1  # of full ink, that still belongs to a run
-_BEAM = 8
+_BEAM = 6
 _DEPTH = 12
-_ANSWERS = 8
-_CLOSE = 12.0  # answers dearer than the best by more are not worth drawing
+_ANSWERS = 5
+_CLOSE = 5.0  # answers dearer than the best by more are not worth drawing
 _OUTSIDE = 1e3
 
 

@@ -110,7 +110,8 @@ def fit_line(
     damping = np.full(len(y), 0.01)
     for turn in range(rounds + 1):
         matrix, gradient, cost = normal_equations(y, *place, band, everywhere)
-        inverse = _inverse(_with_prior(matrix, 1 / spread))
+        if turn:
+            inverse = _inverse(_with_prior(matrix, 1 / spread))
         if turn == rounds:
             break
         if turn:

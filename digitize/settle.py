@@ -9,10 +9,11 @@ from digitize.crossing import Answer, find_answers, spliced, widened
 from digitize.field import Path
 from digitize.ink import Ink
 from digitize.pen import Pen
-from digitize.ways import Routes, Way, to_ways
+from digitize.ways import EDGE, Routes, Way, to_ways
 
 _END_MM = 0.5  # of each end of a place, where the lines begin out of nothing
 _OUTLIER = 4.0
+_FAIR = 1.8  # of cost for each pixel of ink: about what noise and the pen's own unevenness make
 _GAIN = 30.0  # of cost: as much as a few pixels of unexplained ink
 
 
@@ -76,6 +77,8 @@ def _best(answers: tuple[Answer, ...], routes: Routes, ink: Ink, pen: Pen, noise
     window = _window(answers, varied, routes, ink)
     judge = _Judge(routes, ink, pen, noise, tuple(varied), window)
     best = min(answers, key=judge.cost)
+    if judge.cost(best) < _FAIR * np.count_nonzero(ink.density[window] > EDGE):
+        return best
     for m in varied:
         for side in (0, 1):
             wider = widened(routes.field, best, m, side)

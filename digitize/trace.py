@@ -62,10 +62,11 @@ def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
     routes = find_routes(ink, layout)
     ways = to_ways(routes, routes.paths, places, ink.raster)
     pen = find_pen(ink, ways)
-    paths = settle(routes, ink, pen, max(ink.noise, _NOISE_FLOOR))
-    ways = to_ways(routes, paths, places, ink.raster)
     courses = [begin(way, *place, pen, ink) for way, place in zip(ways, places, strict=True)]
     pen, noise = _refined(pen, ways, courses, ink)
+    paths = settle(routes, ink, pen, noise)
+    ways = to_ways(routes, paths, places, ink.raster)
+    courses = [begin(way, *place, pen, ink) for way, place in zip(ways, places, strict=True)]
     lines: dict[int, Line] = {}
     crossed = [k for k, way in enumerate(ways) if way.shared.any()]
     for k in [*range(len(ways)), *crossed]:
