@@ -6,6 +6,7 @@ understood.
 """
 
 import datetime
+import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
@@ -130,6 +131,45 @@ def compare(
 
     failed = compare_files(files, dates, person, folder=output, replace=replace)
     raise typer.Exit(1 if failed else 0)
+
+
+@app.command()
+def overread(
+    files: Annotated[
+        list[Path],
+        typer.Argument(help="Scans, photos, PDFs; tracings (CSV, JSON); WFDB, EDF, DICOM, CSV."),
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for NAME.overread.json; else beside the file."),
+    ] = None,
+    port: Annotated[int, typer.Option(min=0, max=65535, help="Port; 0 takes a free one.")] = 0,
+    no_browser: Annotated[
+        bool, typer.Option("--no-browser", help="Print the address alone.")
+    ] = False,
+    sex: Annotated[str | None, typer.Option(help="male or female, where known.")] = None,
+    age: Annotated[float | None, typer.Option(help="Age in years, where known.")] = None,
+    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
+    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    layout: Annotated[str | None, typer.Option(help="Such as 3x4+1.")] = None,
+    px_per_mm: Annotated[
+        str | None, typer.Option(help="Scale of a page without grid, such as 11.8.")
+    ] = None,
+) -> None:
+    """Check, correct, measure and sign in the browser: a page that this machine serves to itself.
+
+    What a person does is kept in NAME.overread.json; the input is never touched.
+    """
+    options = _options(speed, gain, layout, None, None, None, px_per_mm, Options.max_megapixels)
+    person = _person(sex, age)
+    from digitize.errors import InputError
+    from measure.overread.serve import serve
+
+    try:
+        serve(files, options, person, folder=output, port=port, browser=not no_browser)
+    except InputError as error:
+        print(error, file=sys.stderr)
+        raise typer.Exit(1) from None
 
 
 def _dates(given: list[str] | None, count: int) -> list[str | None]:

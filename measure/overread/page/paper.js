@@ -1,0 +1,246 @@
+// The paper: picture, trace, panels and beats in millimetres; zoom and pan.
+
+import { picture } from "./api.js";
+import { pathOf, svg } from "./draw.js";
+
+const FULL_FROM_PX_PER_MM = 5; // screen pixels per mm from which the full picture is worth loading
+const CLOSEST_MM = 12, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
+
+export class Paper {
+  constructor(root, on) {
+    this.root = root;
+    this.on = on; // place(x, y), panel(number), beat(beat), edge(panel, side, x_mm)
+    this.layers = {};
+    for (const name of ["picture", "trace", "panels", "beats", "marks", "tool"]) {
+      this.layers[name] = svg("g", {});
+    }
+    const stripes = svg("path", { d: "M0 2L2 0", class: "hatch" });
+    const size = { id: "hatch", width: 2, height: 2, patternUnits: "userSpaceOnUse" };
+    root.replaceChildren(
+      svg("defs", {}, svg("pattern", size, stripes)), ...Object.values(this.layers));
+    this.view = "flat";
+    this.box = [0, 0, 100, 100];
+    this.pointers = new Map();
+    root.addEventListener("wheel", (event) => this.#wheel(event), { passive: false });
+    root.addEventListener("pointerdown", (event) => this.#down(event));
+    root.addEventListener("pointermove", (event) => this.#move(event));
+    root.addEventListener("pointerup", (event) => this.#up(event));
+    root.addEventListener("pointercancel", (event) => this.pointers.delete(event.pointerId));
+    new ResizeObserver(() => this.#frame()).observe(root);
+  }
+
+  open(number, ecg) {
+    this.number = number;
+    this.ecg = ecg;
+    this.#pictures();
+    this.fit();
+  }
+
+  show(ecg, selected, doubted) {
+    this.ecg = ecg;
+    const flat = this.view === "flat";
+    this.layers.trace.replaceChildren(...(flat ? ecg.panels.flatMap(traceOf) : []));
+    this.layers.panels.replaceChildren(
+      ...(flat ? ecg.panels.flatMap((panel) => this.#panel(panel, selected, doubted)) : []));
+    this.layers.beats.replaceChildren(...(flat ? this.#beats(ecg) : []));
+    if (!flat) this.layers.marks.replaceChildren();
+  }
+
+  fit(box) {
+    const paper = this.ecg.paper;
+    const whole = this.view === "flat" ? ruled(paper) : [0, 0, ...paper.scan.px];
+    this.box = [...(box ?? whole)];
+    this.#frame();
+  }
+
+  turn() {
+    this.view = this.view === "flat" ? "scan" : "flat";
+    this.#pictures();
+    this.fit();
+    return this.view;
+  }
+
+  strength(share) {
+    this.layers.trace.setAttribute("opacity", share);
+  }
+
+  blink(visible) {
+    this.layers.trace.setAttribute("visibility", visible ? "visible" : "hidden");
+  }
+
+  zoom(factor, x, y) {
+    const [left, top, width, height] = this.box;
+    const [atX, atY] = [x ?? left + width / 2, y ?? top + height / 2];
+    const least = this.view === "flat" ? CLOSEST_MM : CLOSEST_MM * 10;
+    const by = Math.max(factor, least / Math.max(width, height));
+    this.box = [atX - (atX - left) * by, atY - (atY - top) * by, width * by, height * by];
+    this.#frame();
+  }
+
+  pan(x, y) {
+    this.box[0] += x * this.box[2];
+    this.box[1] += y * this.box[3];
+    this.#frame();
+  }
+
+  // Bring a panel into view with some paper around it.
+  seek(number) {
+    const [left, top, right, bottom] = this.ecg.panels[number].box_mm;
+    this.fit([left - 8, top - 8, right - left + 16, bottom - top + 16]);
+  }
+
+  place(event) {
+    const point = new DOMPoint(event.clientX, event.clientY);
+    const { x, y } = point.matrixTransform(this.root.getScreenCTM().inverse());
+    return [x, y];
+  }
+
+  // Vertical bars on every averaged beat of a lead, at times in seconds of the recording.
+  evidence(marks) {
+    const bars = [];
+    for (const { lead, time_s } of marks) {
+      for (const panel of this.ecg.panels) {
+        const x = xOf(panel, time_s);
+        if (panel.lead !== lead || x < panel.box_mm[0] || x > panel.box_mm[2]) continue;
+        bars.push(svg("line", { class: "evidence", x1: x, x2: x,
+          y1: panel.baseline_mm - 9, y2: panel.baseline_mm + 9 }));
+      }
+    }
+    this.layers.marks.replaceChildren(...bars);
+  }
+
+  #pictures() {
+    const paper = this.ecg.paper;
+    const [x, y, width, height] = this.view === "flat" ? paper.flat.box : [0, 0, ...paper.scan.px];
+    const image = (size) => svg("image", { href: picture(this.number, this.view, size),
+      x, y, width, height, preserveAspectRatio: "none" });
+    this.layers.picture.replaceChildren(image("small"));
+    this.fine = () => this.layers.picture.append(image("full"));
+    this.#frame();
+  }
+
+  #frame() {
+    if (!this.ecg?.paper) return;
+    this.root.setAttribute("viewBox", this.box.join(" "));
+    const px = this.root.clientWidth / this.box[2];
+    const scale = this.view === "flat" ? 1 : this.ecg.paper.scan.px[0] / this.ecg.paper.flat.box[2];
+    if (this.fine && px * scale > FULL_FROM_PX_PER_MM) {
+      this.fine();
+      this.fine = null;
+    }
+  }
+
+  #panel(panel, selected, doubted) {
+    const [left, top, right, bottom] = panel.box_mm;
+    const parts = [];
+    const area = { x: left, y: top, width: right - left, height: bottom - top };
+    if (doubted.includes(panel.number)) parts.push(svg("rect", { class: "doubtbox", ...area }));
+    if (panel.number === selected) parts.push(svg("rect", { class: "selected", ...area }));
+    for (const [side, x] of [["left", left], ["right", right]]) {
+      const grip = panel.number === selected;
+      parts.push(svg("line", { class: grip ? "edge grip" : "edge", x1: x, x2: x,
+        y1: top, y2: bottom, "data-panel": panel.number, "data-side": grip ? side : null }));
+    }
+    const name = panel.lead + (panel.strip ? " strip" : "") + (panel.upside_down ? " ⇅" : "")
+      + ({ assumed: " ?", given: " (given)" }[panel.lead_source] ?? "");
+    parts.push(svg("text", { class: `name ${panel.lead_source}`, x: left + 1, y: top + 3.6,
+      "data-panel": panel.number }, name));
+    return parts;
+  }
+
+  #beats(ecg) {
+    const dots = [];
+    for (const beat of ecg.beats) {
+      for (const panel of ecg.panels.filter((p) => p.baseline_mm !== undefined)) {
+        const x = xOf(panel, beat.time_s);
+        if (x < panel.box_mm[0] || x > panel.box_mm[2]) continue;
+        const dot = svg("circle", { class: beat.averaged ? "heartbeat averaged" : "heartbeat",
+          cx: x, cy: panel.box_mm[3] - 2.2, r: 1.1, "data-beat": beat.time_s });
+        dot.append(svg("title", {}, `${beat.kind} beat at ${beat.time_s.toFixed(2)} s, `
+          + (beat.averaged ? "averaged" : "not averaged")));
+        dots.push(dot);
+      }
+    }
+    return dots;
+  }
+
+  #wheel(event) {
+    event.preventDefault();
+    this.zoom(Math.exp(event.deltaY * 0.0015), ...this.place(event));
+  }
+
+  #down(event) {
+    this.pointers.set(event.pointerId, event);
+    this.moved = false;
+    this.grip = event.target.dataset?.side ? { ...event.target.dataset } : null;
+    this.root.setPointerCapture(event.pointerId);
+    this.pressed = event.target;
+  }
+
+  #move(event) {
+    const before = this.pointers.get(event.pointerId);
+    if (!before) return this.on.hover(...this.place(event));
+    const apart = Math.hypot(event.clientX - before.clientX, event.clientY - before.clientY);
+    if (!this.moved && apart < 4) return undefined;
+    this.moved = true;
+    if (this.grip) {
+      const x = this.place(event)[0];
+      this.pressed.setAttribute("x1", x);
+      this.pressed.setAttribute("x2", x);
+      return undefined;
+    }
+    const [fromX, fromY] = this.place(before);
+    const [toX, toY] = this.place(event);
+    if (this.pointers.size === 2) {
+      const [other] = [...this.pointers].filter(([id]) => id !== event.pointerId).map(([, e]) => e);
+      const distance = (e) => Math.hypot(e.clientX - other.clientX, e.clientY - other.clientY);
+      this.zoom(distance(before) / Math.max(distance(event), 1), ...this.place(other));
+    } else {
+      this.box[0] -= toX - fromX;
+      this.box[1] -= toY - fromY;
+      this.#frame();
+    }
+    this.pointers.set(event.pointerId, event);
+    return undefined;
+  }
+
+  #up(event) {
+    this.pointers.delete(event.pointerId);
+    const [x, y] = this.place(event);
+    if (this.grip && this.moved) this.on.edge(Number(this.grip.panel), this.grip.side, x);
+    else if (!this.moved) this.on.click(x, y, this.pressed.dataset ?? {});
+    this.grip = null;
+  }
+}
+
+// The ruled area with some paper around it.
+function ruled({ ruled_mm: [left, top, right, bottom] }) {
+  return [left - AROUND_MM, top - AROUND_MM, right - left + 2 * AROUND_MM,
+    bottom - top + 2 * AROUND_MM];
+}
+
+export const xOf = (panel, time_s) =>
+  panel.box_mm[0] + (time_s - panel.start_s) * panel.speed_mm_s;
+
+function traceOf(panel) {
+  if (!panel.y_mm) return [];
+  const x = (k) => panel.box_mm[0] + k * panel.step_mm;
+  const doubtful = new Set(panel.doubtful);
+  const sure = panel.y_mm.map((y, k) => (doubtful.has(k) ? null : y));
+  const unsure = panel.y_mm.map((y, k) => (doubtful.has(k) ? y : null));
+  const parts = [svg("path", { class: "trace", d: pathOf(x, sure) })];
+  if (doubtful.size) parts.push(svg("path", { class: "trace doubtful", d: pathOf(x, unsure) }));
+  let first = null;
+  for (let k = 0; k <= panel.y_mm.length; k += 1) {
+    const missing = k < panel.y_mm.length && panel.y_mm[k] === null;
+    if (missing) first ??= k;
+    else if (first !== null) {
+      if (k - first >= SHORTEST_GAP) {
+        parts.push(svg("rect", { class: "missing", x: x(first), y: panel.baseline_mm - 2.5,
+          width: (k - first) * panel.step_mm, height: 5 }));
+      }
+      first = null;
+    }
+  }
+  return parts;
+}

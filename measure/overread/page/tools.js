@@ -1,0 +1,113 @@
+// Tools that work by places on the paper: strike out, redraw, calipers. Each is fed by clicks, or
+// by a cross that the arrow keys move and the space bar sets down.
+
+import { svg } from "./draw.js";
+
+export const TOOLS = {
+  strike: { label: "Strike out", key: "s", points: 2,
+    say: "Strike out: mark the beginning and the end of what cannot be read." },
+  redraw: { label: "Redraw", key: "d", points: Infinity,
+    say: "Redraw: mark points along the ink from left to right, then Enter." },
+  caliper: { label: "Calipers", key: "c", points: 2,
+    say: "Calipers: mark two places. Then m marches them along." },
+};
+
+export class Tool {
+  constructor(paper, done) {
+    this.paper = paper;
+    this.done = done; // (name, panel, points)
+    this.stop();
+  }
+
+  start(name) {
+    this.name = name;
+    this.points = [];
+    const [left, top, width, height] = this.paper.box;
+    this.cross = [left + width / 2, top + height / 2];
+    this.draw();
+  }
+
+  stop() {
+    this.name = null;
+    this.points = [];
+    this.marching = false;
+    this.paper.layers.tool.replaceChildren();
+  }
+
+  hover(x, y) {
+    if (!this.name) return;
+    this.cross = [x, y];
+    this.draw();
+  }
+
+  step(x, y) {
+    this.hover(this.cross[0] + x, this.cross[1] + y);
+  }
+
+  put(x = this.cross[0], y = this.cross[1]) {
+    const last = this.points.at(-1);
+    if (this.name === "redraw" && last && x <= last[0]) return "Points must run from left to right.";
+    if (this.points.length >= TOOLS[this.name].points) this.points = [];
+    this.points.push([x, y]);
+    this.marching = false;
+    this.draw();
+    return this.points.length === TOOLS[this.name].points ? this.finish() : null;
+  }
+
+  finish() {
+    if (this.points.length < 2) return "Two places are needed.";
+    const [x, y] = this.points[0];
+    const panel = panelAt(this.paper.ecg.panels, x, y);
+    if (!panel) return "That is beside every panel: mark within one.";
+    return this.done(this.name, panel, this.points);
+  }
+
+  march() {
+    this.marching = this.name === "caliper" && this.points.length === 2 && !this.marching;
+    this.draw();
+  }
+
+  draw(words) {
+    const parts = [], [x, y] = this.cross;
+    const cross = `M${x - 2} ${y}H${x + 2}M${x} ${y - 2}V${y + 2}`;
+    parts.push(svg("path", { class: "tooling", d: cross }));
+    if (this.name === "redraw") {
+      parts.push(svg("polyline", { class: "tooling", points: this.points.join(" ") }));
+    } else {
+      for (const [at] of this.points) parts.push(this.#bar(at));
+    }
+    for (const [px, py] of this.points) {
+      parts.push(svg("circle", { class: "tooling", cx: px, cy: py, r: 0.5 }));
+    }
+    if (this.name === "strike" && this.points.length === 1) {
+      const from = this.points[0][0];
+      parts.push(svg("rect", { class: "reach", x: Math.min(from, x), width: Math.abs(x - from),
+        y: this.paper.box[1], height: this.paper.box[3] }));
+    }
+    if (this.marching) parts.push(...this.#marched());
+    if (words) {
+      const [tx, ty] = this.points[1];
+      parts.push(svg("text", { class: "measure", x: tx + 1.5, y: ty - 1.5 }, words));
+    }
+    this.words = words ?? this.words;
+    this.paper.layers.tool.replaceChildren(...parts);
+  }
+
+  #bar(x) {
+    const [, top, , height] = this.paper.box;
+    return svg("line", { class: "tooling", x1: x, x2: x, y1: top, y2: top + height });
+  }
+
+  #marched() {
+    const [[a], [b]] = this.points;
+    const step = Math.abs(b - a), bars = [];
+    if (step < 0.5) return bars;
+    const [left, , width] = this.paper.box;
+    for (let x = Math.max(a, b) + step; x < left + width; x += step) bars.push(this.#bar(x));
+    for (let x = Math.min(a, b) - step; x > left; x -= step) bars.push(this.#bar(x));
+    return bars;
+  }
+}
+
+export const panelAt = (panels, x, y) => panels.find(({ box_mm: [left, top, right, bottom] }) =>
+  x >= left && x <= right && y >= top && y <= bottom);

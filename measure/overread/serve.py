@@ -1,0 +1,85 @@
+"""`measure overread`: the server of this machine, and the browser on its page."""
+
+import socket
+import sys
+import threading
+import webbrowser
+from collections.abc import Sequence
+from importlib.util import find_spec
+from pathlib import Path
+
+from digitize.errors import InputError
+from digitize.options import Options
+from measure.overread.worklist import Worklist
+from measure.reading import Person
+
+_NEEDED = ("starlette", "uvicorn")
+
+
+class CannotServe(InputError):  # noqa: N818 - it says what happened
+    """The page cannot be served on this machine."""
+
+
+def serve(
+    files: Sequence[Path],
+    options: Options,
+    person: Person,
+    *,
+    folder: Path | None = None,
+    port: int = 0,
+    browser: bool = True,
+) -> None:
+    """Serve the over-read page until it is interrupted.
+
+    Parameters
+    ----------
+    files : sequence of Path
+        The worklist.
+    options, person
+        What is known better than the pages say.
+    folder : Path, optional
+        Where the journals go; beside each file where it is not given.
+    port : int
+        0 takes any that is free.
+    browser : bool
+        Whether the default browser is opened; the address is printed in any case.
+
+    Raises
+    ------
+    CannotServe
+        A package is missing, or the port is taken.
+    """
+    absent = [name for name in _NEEDED if find_spec(name) is None]
+    if absent:
+        raise CannotServe(
+            f"the page needs {' and '.join(absent)}: pip install millivellum[overread]"
+        )
+    import uvicorn
+
+    from measure.overread.guard import HOST, Guard
+    from measure.overread.server import make_app
+
+    listener = _listener(HOST, port)
+    guard = Guard(listener.getsockname()[1])
+    worklist = Worklist(files, options, person, folder)
+    worklist.start()
+    print(f"Over-read page: {guard.address}", flush=True)
+    print("It answers on this machine alone. End it with Ctrl-C.", file=sys.stderr)
+    config = uvicorn.Config(
+        make_app(worklist, guard), log_level="error", server_header=False, ws="none"
+    )
+    if browser:
+        threading.Timer(0.3, webbrowser.open, (guard.address,)).start()
+    uvicorn.Server(config).run(sockets=[listener])
+
+
+def _listener(host: str, port: int) -> socket.socket:
+    """A socket that listens on this machine alone."""
+    listener = socket.socket()
+    listener.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
+    try:
+        listener.bind((host, port))
+    except (OSError, OverflowError):
+        listener.close()
+        raise CannotServe(f"port {port} cannot be used: give another with --port") from None
+    return listener
