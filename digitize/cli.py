@@ -5,6 +5,7 @@ Results go to stdout and files, everything else to stderr. Exit codes: 0 every p
 input could not be used, 2 the command was not understood.
 """
 
+import os
 from pathlib import Path
 from typing import Annotated
 
@@ -125,6 +126,54 @@ def export(
 
     with console(len(names)) as shown_on:
         failed = export_files(names, form, shown_on, folder=output, replace=replace)
+    raise typer.Exit(1 if failed else 0)
+
+
+@app.command()
+def archive(
+    folders: Annotated[list[Path], typer.Argument(help="Folders of scans, also in zip files.")],
+    store: Annotated[
+        Path, typer.Option("--to", help="Folder of results and catalogue.", show_default=False)
+    ],
+    again: Annotated[
+        str | None, typer.Option(help="failed: take up again what failed before.")
+    ] = None,
+    processes: Annotated[
+        int, typer.Option(min=1, help="Files read at the same time; else one per core.")
+    ] = os.cpu_count() or 1,
+    page_seconds: Annotated[
+        float, typer.Option(min=1, help="Give a page up after so long.")
+    ] = 120.0,
+    page_memory_mb: Annotated[
+        int, typer.Option(min=1024, help="Address space for one process.")
+    ] = 6144,
+    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
+    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    layout: Annotated[str | None, typer.Option(help="Layout of all pages, such as 3x4+1.")] = None,
+    max_megapixels: Annotated[
+        float, typer.Option(help="Refuse larger pages.")
+    ] = Options.max_megapixels,
+) -> None:
+    """Read every page under the folders into a store; started again, it continues.
+
+    Each page ends as good, needs a look, or failed with its reason. Sources are only read, and
+    printing outside the traces is covered on every picture in the store.
+    """
+    if again not in (None, "failed"):
+        raise typer.BadParameter(f"'{again}' is not known here: give failed")
+    try:
+        options = Options(
+            speed_mm_s=speed, gain_mm_mv=gain, layout=layout, max_megapixels=max_megapixels
+        )
+    except ValueError as error:
+        raise typer.BadParameter(str(error)) from None
+    from digitize.archive.reading import read_for_store
+    from digitize.archive.run import Limits, run_archive
+
+    limits = Limits(page_seconds, page_memory_mb, processes)
+    failed = run_archive(
+        folders, store, options, limits, read=read_for_store, again_failed=again == "failed"
+    )
     raise typer.Exit(1 if failed else 0)
 
 

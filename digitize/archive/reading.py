@@ -1,0 +1,73 @@
+"""One page read for the store: its files, and its row of the catalogue."""
+
+import io
+from collections.abc import Mapping
+
+import numpy as np
+from PIL import Image
+
+from digitize import program_version
+from digitize.archive.catalogue import GOOD, LOOK, PageRow
+from digitize.options import Options
+from digitize.overlay import draw_overlay
+from digitize.pages import Page
+from digitize.read import read_page
+from digitize.redact import cover
+from digitize.tracing import Tracing
+from digitize.tracing_files import tracing_files
+
+THUMB_PX = 560  # wide enough to see a trace that jumped a row
+
+
+def read_for_store(page: Page, options: Options) -> tuple[PageRow, Mapping[str, bytes]]:
+    """Return the row of a page and its files, ending to content.
+
+    Nothing of the printing outside the traces is kept: the overlay is drawn on a covered page.
+
+    Raises
+    ------
+    InputError
+        The page cannot be read.
+    """
+    stages = read_page(page, options)
+    tracing = stages.tracing
+    overlay = draw_overlay(cover(stages), tracing)
+    files = {
+        ".overlay.png": overlay,
+        ".thumb.jpg": _thumbnail(overlay),
+        **{name.removeprefix("x"): data for name, data in tracing_files(tracing, "x").items()},
+    }
+    return row_of(tracing), files
+
+
+def row_of(tracing: Tracing) -> PageRow:
+    """What the catalogue keeps of a tracing: good unless a check failed."""
+    failed = [check for check in tracing.checks if check.passed is False]
+    read = np.concatenate([np.isfinite(panel.mv) for panel in tracing.panels])
+    return PageRow(
+        page=tracing.source.page,
+        status=LOOK if failed else GOOD,
+        reason="; ".join(check.message for check in failed),
+        leads=len(tracing.leads),
+        layout=str(tracing.layout.value),
+        speed_mm_s=float(tracing.speed_mm_s.value),
+        speed_source=tracing.speed_mm_s.source,
+        gain_mm_mv=float(tracing.gain_mm_mv.value),
+        gain_source=tracing.gain_mm_mv.source,
+        timing=str(tracing.timing.value),
+        read_share=round(float(read.mean()), 4),
+        checks_failed=len(failed),
+        width_px=tracing.source.width_px,
+        height_px=tracing.source.height_px,
+        version=program_version(),
+    )
+
+
+def _thumbnail(overlay: bytes) -> bytes:
+    """A small picture of an overlay."""
+    with Image.open(io.BytesIO(overlay)) as image:
+        small = image.convert("RGB")
+    small.thumbnail((THUMB_PX, THUMB_PX))
+    buffer = io.BytesIO()
+    small.save(buffer, "JPEG", quality=70)
+    return buffer.getvalue()
