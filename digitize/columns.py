@@ -8,8 +8,10 @@ import numpy as np
 
 from digitize.marks import Mark
 from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent
+from digitize.sheet import Box
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
+TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
 
@@ -85,7 +87,9 @@ def _tail(away_mm: np.ndarray) -> float | None:
     return None
 
 
-def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, ...], float]:
+def column_spans(
+    breaks: Breaks, extent: Span, count: int, ticks: Sequence[Box] = ()
+) -> tuple[tuple[Span, ...], float]:
     """Divide the extent evenly into columns, then move to the breaks that the rows share.
 
     Parameters
@@ -96,6 +100,8 @@ def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, 
         From the first to the last ink of the traces.
     count : int
         Number of columns.
+    ticks : sequence of Box
+        Upright strokes that may separate columns.
 
     Returns
     -------
@@ -118,6 +124,11 @@ def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, 
             continue
         pull = np.where(near, broken - 0.05 * np.abs(x - expected), -np.inf)
         at = int(np.argmax(pull))
+        ticked, tick_mm = _ticked(ticks, expected, len(breaks.broken))
+        if broken[at] < 0.5 and ticked > 0.6:
+            shares.append(ticked)
+            edges.append((tick_mm, tick_mm))
+            continue
         shares.append(float(broken[at]))
         if broken[at] < 0.5:
             edges.append((expected, expected))
@@ -132,6 +143,17 @@ def column_spans(breaks: Breaks, extent: Span, count: int) -> tuple[tuple[Span, 
     rights = [*(edge[0] for edge in edges), extent.right_mm]
     spans = tuple(Span(a, b) for a, b in zip(lefts, rights, strict=True))
     return _even(spans, extent, shares), float(np.mean(shares))
+
+
+def _ticked(ticks: Sequence[Box], expected_mm: float, rows: int) -> tuple[float, float]:
+    """Share of rows, at most 1, that have a tick at one place near an edge, and that place."""
+    x = np.array([(tick.left_mm + tick.right_mm) / 2 for tick in ticks])
+    x = x[np.abs(x - expected_mm) < SEARCH_MM] if len(x) else x
+    if len(x) == 0:
+        return 0.0, expected_mm
+    together = np.abs(x[:, None] - x) < TICKS_APART_MM
+    at = int(np.argmax(together.sum(axis=1)))
+    return min(float(together[at].sum()) / max(rows, 2), 1.0), float(np.median(x[together[at]]))
 
 
 def _even(spans: tuple[Span, ...], extent: Span, shares: list[float]) -> tuple[Span, ...]:

@@ -6,7 +6,7 @@ trace touches are then looked for at that place alone.
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -46,6 +46,7 @@ class LabelFit:
     offset_mm: tuple[float, float] | None
     right_aligned: bool
     boxes: tuple[Box, ...]
+    inner_offset_mm: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True)
@@ -99,13 +100,18 @@ def _fit_aligned(
     if not chosen:
         return LabelFit(0.0, {}, None, right, ())
     read = {(pair.slot.row, pair.slot.column): _likeliest(posterior(pair.word)) for pair in chosen}
-    offset = None
-    if len(chosen) > 1:
-        offset = (
-            float(np.median([pair.dx_mm for pair in chosen])),
-            float(np.median([pair.dy_mm for pair in chosen])),
-        )
-    return LabelFit(score, read, offset, right, tuple(pair.word.box for pair in chosen))
+    boxes = tuple(pair.word.box for pair in chosen)
+    first = _usual_place([pair for pair in chosen if pair.slot.column == 0])
+    inner = _usual_place([pair for pair in chosen if pair.slot.column > 0])
+    return LabelFit(score, read, first, right, boxes, inner)
+
+
+def _usual_place(pairs: Sequence[_Pair]) -> tuple[float, float] | None:
+    """Median place of some readings relative to the starts, None where fewer than two agree."""
+    if len(pairs) < 2:
+        return None
+    dx, dy = ([p.dx_mm for p in pairs], [p.dy_mm for p in pairs])
+    return float(np.median(dx)), float(np.median(dy))
 
 
 def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair], float]:
@@ -165,13 +171,20 @@ def _one_each(pairs: Sequence[_Pair]) -> tuple[float, list[_Pair]]:
     return sum(pair.gain for pair in chosen), chosen
 
 
-def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot]) -> LabelFit:
-    """Read the place of each slot's name that was not read, where the others say it must be."""
+def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot], aside_mm: float = 0.0) -> LabelFit:
+    """Read the place of each slot's name that was not read, where the others say it must be.
+
+    `aside_mm` is how far calibration marks push the traces of the first column to the right: names
+    left of the marks stand so much further from their traces than in the other columns.
+    """
     missing = [slot for slot in slots if (slot.row, slot.column) not in fit.names]
-    if fit.offset_mm is None or not missing:
+    places = _places(fit, aside_mm)
+    if places is None or not missing:
         return fit
     height = float(np.median([box.bottom_mm - box.top_mm for box in fit.boxes]))
-    boxes = [_expected_box(slot, fit, height) for slot in missing]
+    boxes = [
+        _expected_box(slot, places[slot.column > 0], fit.right_aligned, height) for slot in missing
+    ]
     score, names = fit.score, dict(fit.names)
     for slot, word in zip(missing, read_boxes(ink, boxes), strict=True):
         post = posterior(word)
@@ -179,13 +192,24 @@ def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot]) -> LabelFit:
             continue
         score += min(max(_gain(slot, post), -1.0), 2.0)
         names[slot.row, slot.column] = _likeliest(post)
-    return LabelFit(score, names, fit.offset_mm, fit.right_aligned, fit.boxes)
+    return replace(fit, score=score, names=names)
 
 
-def _expected_box(slot: Slot, fit: LabelFit, height_mm: float) -> Box:
-    assert fit.offset_mm is not None
-    dx, dy = fit.offset_mm
+def _places(
+    fit: LabelFit, aside_mm: float
+) -> tuple[tuple[float, float], tuple[float, float]] | None:
+    """Place of the names in the first column and in the others, one guessed from the other."""
+    first, inner = fit.offset_mm, fit.inner_offset_mm
+    if first is not None and inner is None:
+        inner = (first[0] + aside_mm, first[1]) if first[0] < -0.5 * aside_mm else first
+    if inner is not None and first is None:
+        first = (inner[0] - aside_mm, inner[1]) if inner[0] < 0 else inner
+    return None if first is None or inner is None else (first, inner)
+
+
+def _expected_box(slot: Slot, place: tuple[float, float], right: bool, height_mm: float) -> Box:
+    dx, dy = place
     width = height_mm * 0.75 * max(len(slot.name or "V1"), 1.5)
-    left = slot.x_mm + dx - (width if fit.right_aligned else 0.0)
+    left = slot.x_mm + dx - (width if right else 0.0)
     top = slot.y_mm + dy - height_mm / 2
     return Box(left, top, left + width, top + height_mm)

@@ -129,8 +129,10 @@ def find_layout(
     marks = [m for row in rows.rows for m in marks_of_row(row, marks, rows.pitch_mm)]
     rows = _at_zero_line(rows, marks)
     scale = find_scale(printing, rows, marks, options)
+    with_marks = trace_extent(rows)
     rows = without_marks(rows, marks)
     extent = trace_extent(rows)
+    aside_mm = extent.left_mm - with_marks.left_mm
     hypotheses = _weigh(printing, rows, extent, scale, options)
     if not hypotheses:
         raise NoTrace(
@@ -138,7 +140,7 @@ def find_layout(
             "give --layout, or crop the page to the tracing"
         )
     hypotheses = [
-        replace(h, labels=look_again(ink, h.labels, h.slots)) for h in hypotheses[:3]
+        replace(h, labels=look_again(ink, h.labels, h.slots, aside_mm)) for h in hypotheses[:3]
     ] + hypotheses[3:]
     hypotheses.sort(key=lambda h: -h.score)
     best = hypotheses[0]
@@ -172,6 +174,7 @@ def _weigh(
     """All arrangements with the page's number of rows, the likeliest first."""
     found = []
     breaks = row_breaks(rows)
+    ticks = [box for box in (*printing.letters, *rows.uprights) if _upright(box)]
     for first, part, doubt in _row_choices(rows):
         for template in TEMPLATES:
             strips = len(part.rows) - template.rows
@@ -180,7 +183,7 @@ def _weigh(
             if options.layout not in (None, _full_name(template, strips)):
                 continue
             short = breaks.of(first, first + template.rows)
-            spans, shared = column_spans(short, extent, template.columns)
+            spans, shared = column_spans(short, extent, template.columns, ticks)
             slots = tuple(_slots(template, strips, spans, part))
             labels = fit_labels(printing.words, slots, part.pitch_mm)
             seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
@@ -191,6 +194,11 @@ def _weigh(
             other = template.prior - strips_cost + length + evidence - doubt
             found.append(_Hypothesis(template, strips, part, spans, slots, labels, other))
     return sorted(found, key=lambda h: -h.score)
+
+
+def _upright(box: Box) -> bool:
+    """Whether a piece of ink is a plain upright stroke, as separators are."""
+    return box.right_mm - box.left_mm < 0.35 * (box.bottom_mm - box.top_mm)
 
 
 def _row_choices(rows: Rows) -> list[tuple[int, Rows, float]]:
