@@ -18,12 +18,14 @@ from digitize.errors import NoGrid
 from digitize.grid import Grid
 from digitize.ink import Ink, solid_ink
 from digitize.marks import HEIGHTS_MM, WIDTHS_MM, Mark, find_marks
+from digitize.options import Options
 from digitize.pagemap import PageMap
 from digitize.pages import Page
 from digitize.resolutions import LONG_SIDE_MM, Resolution, possible_resolutions, same_scale
 from digitize.rows import find_rows
 from digitize.sheet import Raster
-from digitize.tilt import find_slope
+from digitize.tilt import find_lie
+from digitize.tracing import Origin
 
 TRIAL_PX_PER_MM = 8.0  # of the picture in which marks are looked for
 MOST_TRIALS = 4
@@ -35,7 +37,7 @@ FITS_NONE = 0.22  # natural log: a mark this far from every usual size is none
 ALIKE = 0.04  # natural log: scatter of such marks, and their width against their height
 LADDER_PX_PER_MM = (4.0, 5.6, 7.8, 11.0, 15.4, 21.5)  # find_marks allows a fifth either way
 STANDARD_MM = (5.0, 10.0)  # width and height of a mark at 25 mm/s and 10 mm/mV
-SE_BY_MARKS, SE_BY_TWO, SE_BY_SIZE = 0.01, 0.02, 0.03  # relative; rules of thumb
+SE_GIVEN, SE_BY_MARKS, SE_BY_TWO, SE_BY_SIZE = 0.01, 0.01, 0.02, 0.03  # relative; rules of thumb
 
 _ADVICE = (
     "give --px-per-mm (and --speed and --gain if they are not 25 mm/s and 10 mm/mV), "
@@ -63,12 +65,14 @@ class _Trial:
     size_mm: tuple[float, float]
 
 
-def find_plain_scale(page: Page) -> Grid:
-    """Return the millimetre map of a page on which no ruling was found.
+def find_plain_scale(page: Page, options: Options | None = None) -> Grid:
+    """Return the millimetre map of a page on which no ruling was found, its tilt taken out.
 
     Parameters
     ----------
     page : Page
+    options : Options
+        `px_per_mm` given by a person goes before all that the page says.
 
     Raises
     ------
@@ -77,6 +81,9 @@ def find_plain_scale(page: Page) -> Grid:
     """
     dark = _dark(page)
     rows, cols = dark.shape
+    if options is not None and options.px_per_mm is not None:
+        scale = Resolution(*options.px_per_mm, ("pixels per millimetre given",))
+        return _grid(_Heard(scale, ENOUGH, scale.reasons, SE_GIVEN), _try(dark, scale), "given")
     scales = possible_resolutions(cols, rows, page.source.dpi, bilevel=page.bilevel)
     # Of a page with shades a faint grid may only have been missed: its size alone is not believed.
     most = ENOUGH if page.bilevel or page.drawing is not None else ENOUGH - 1
@@ -97,7 +104,7 @@ def find_plain_scale(page: Page) -> Grid:
                 "no ruled grid found, and the page contradicts itself "
                 f"({best.reasons[0]}, but {other.reasons[0]}): {_ADVICE}"
             )
-    return _grid(best, _try(dark, best.scale))
+    return _grid(best, _try(dark, best.scale), "found")
 
 
 def _dark(page: Page) -> np.ndarray:
@@ -133,13 +140,10 @@ def _hear(scale: Resolution, trial: _Trial, most_by_size: int) -> _Heard:
 def _try(dark: np.ndarray, scale: Resolution) -> _Trial:
     """The page at a scale, level, turned so that most calibration marks stand upright."""
     ink = _ink(dark, *_map(dark.shape, scale, 0.0), scale)
-    inked = solid_ink(ink)
-    across, down = find_slope(inked), find_slope(inked.T)
-    sideways = down.clearness > across.clearness
-    tilt = -np.arctan(down.rows_per_col) if sideways else np.arctan(across.rows_per_col)
-    homography, size_mm = _map(dark.shape, scale, float(tilt))
+    lie = find_lie(solid_ink(ink), TRIAL_PX_PER_MM)
+    homography, size_mm = _map(dark.shape, scale, lie.tilt)
     ink = _ink(dark, homography, size_mm, scale)
-    turned = [_turned(ink, quarters) for quarters in ((1, 3) if sideways else (0, 2))]
+    turned = [_turned(ink, quarters) for quarters in ((1, 3) if lie.sideways else (0, 2))]
     marks = [find_marks(one) for one in turned]
     best = int(len(marks[1]) > len(marks[0]))
     return _Trial(turned[best], marks[best], homography, size_mm)
@@ -229,11 +233,11 @@ def _marks_alone(dark: np.ndarray) -> list[_Heard]:
     return heard
 
 
-def _grid(best: _Heard, trial: _Trial) -> Grid:
+def _grid(best: _Heard, trial: _Trial, source: Origin) -> Grid:
     extent = (0.0, 0.0, *trial.size_mm)
     return Grid(
         page_map=PageMap(trial.homography, np.zeros((2, 4, 4)), extent),
-        source="found",
+        source=source,
         method=f"no grid; {', '.join(best.reasons)}",
         px_per_mm=(best.scale.across, best.scale.down),
         scale_se=best.se,

@@ -12,10 +12,11 @@ from digitize.calibrate import to_panels
 from digitize.checks import find_checks
 from digitize.drawn_traces import drawn_strokes
 from digitize.drawn_words import drawn_printing
-from digitize.errors import InputError, ProgramFault, at
+from digitize.errors import InputError, NoGrid, ProgramFault, at
 from digitize.evidence import require_ecg
 from digitize.geometry import to_geometry
 from digitize.grid import Grid, find_grid
+from digitize.gridless import find_plain_scale
 from digitize.ink import Ink, find_ink
 from digitize.layout import Layout, find_layout
 from digitize.marks import find_marks
@@ -94,9 +95,14 @@ def read_page(
 
 
 def _grid(page: Page, options: Options) -> Grid:
-    """The ruling that a document draws, else the one that the picture shows."""
+    """The ruling that a document draws, else that of the picture, else what tells the scale."""
     ruling = find_ruling(page.drawing, page.pixels.shape[:2]) if page.drawing else None
-    return ruling or find_grid(page, options)
+    if ruling is not None:
+        return ruling
+    try:
+        return find_grid(page)
+    except NoGrid:
+        return find_plain_scale(page, options)
 
 
 def _printing(page: Page, grid: Grid, ink: Ink) -> Printing:

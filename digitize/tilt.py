@@ -1,64 +1,96 @@
-"""How far the traces of a page are off level, from its ink alone.
+"""How the traces of a page lie: along it or down it, and how far off level, from the ink alone.
 
-Pens leave short runs of ink on every column. Sheared by the right slope, the middles of these runs
-gather on few heights, where the traces spend their time (a Radon transform of the baselines).
+Pens leave short runs of ink across their way. Sheared by the right slope the middles of level runs
+gather on few heights, where the traces spend their time, and those of upright strokes on few
+places: rows show the same instant, so QRS complexes stand above one another, as do calibration
+marks and separators (both are Radon transforms). Baselines wander, upright strokes do not: they
+are heard first.
 """
 
 from dataclasses import dataclass
 
+import cv2
 import numpy as np
 import scipy as sp
 
 STEEPEST = 0.09  # 5 degrees
-THICKEST = 1 / 100  # of the page's height: longer runs are flanks, letters, bars
+THICKEST = 1 / 100  # of the page: longer runs are no pen's line seen across
 MOST_RUNS = 60_000
+FEWEST_RUNS = 100
 FIRST_STEP, LAST_STEP = 2e-3, 1e-4
-BIN_PX = 1.0
+UPRIGHT_MM = 2.5  # of ink straight up: letters are smaller
+STANDS_OUT = 1.25  # best slope over the usual one
 
 
 @dataclass(frozen=True)
-class Slope:
-    """Rows down per column along the traces, and how clearly they gather on few heights."""
+class Lie:
+    """Clockwise tilt of the paper in radians, and whether the traces run down the page."""
 
-    rows_per_col: float
-    clearness: float
+    tilt: float
+    sideways: bool
 
 
-def find_slope(inked: np.ndarray) -> Slope:
-    """Return the slope of the traces of a page, which run from left to right.
+def find_lie(inked: np.ndarray, px_per_mm: float) -> Lie:
+    """Return how the traces of a page lie.
 
     Parameters
     ----------
-    inked : (rows, cols) array of bool or 0 and 1
+    inked : (rows, cols) uint8 array
+        1 where there is ink, pixels square.
+    px_per_mm : float
     """
-    x, y = _short_runs(inked)
-    if len(x) < 100:
-        return Slope(0.0, 0.0)
-    best, reach, step = 0.0, STEEPEST, FIRST_STEP
-    while step >= LAST_STEP:
-        slopes = best + np.arange(-reach, reach + step / 2, step)
-        # A coarse step blurs what a fine one sees: bins as wide as the page moves in one step.
-        bin_px = max(BIN_PX, step * inked.shape[1] / 4)
-        gathered = np.array([_gathered(x, y, slope, bin_px) for slope in slopes])
-        best, reach, step = float(slopes[np.argmax(gathered)]), 2 * step, step / 4
-    return Slope(best, _gathered(x, y, best, BIN_PX))
+    level = _short_runs(inked)
+    sideways = _clearness(_short_runs(inked.T)) > _clearness(level)
+    if sideways:
+        inked = np.ascontiguousarray(inked.T)
+        level = _short_runs(inked)
+    tall = np.ones((round(UPRIGHT_MM * px_per_mm), 1), np.uint8)
+    upright = _short_runs(cv2.morphologyEx(inked, cv2.MORPH_OPEN, tall).T)
+    across, over = _best_slope(upright)
+    # An upright stroke leans against the tilt: x falls where a level line's y rises.
+    slope = -across if over > STANDS_OUT else _best_slope(level)[0]
+    return Lie(float(np.arctan(-slope if sideways else slope)), sideways)
 
 
 def _short_runs(inked: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Middles (x, y) of the short runs of ink on columns, evenly thinned out."""
+    """Middles of the short runs of ink on columns: column, row; evenly thinned out."""
     padded = np.pad(inked.astype(np.int8), ((1, 1), (0, 0)))
-    change = np.diff(padded, axis=0)
-    first_x, first = np.nonzero(change.T == 1)
-    _, last = np.nonzero(change.T == -1)
+    change = np.diff(padded, axis=0).T
+    col, first = np.nonzero(change == 1)
+    last = np.nonzero(change == -1)[1]
     short = last - first <= max(3, THICKEST * inked.shape[0])
-    x, y = first_x[short], (first + last)[short] / 2 - 0.5
-    every = max(1, len(x) // MOST_RUNS)
-    return x[::every].astype(float), y[::every]
+    col, row = col[short], (first + last)[short] / 2 - 0.5
+    every = max(1, len(col) // MOST_RUNS)
+    return col[::every].astype(float), row[::every]
 
 
-def _gathered(x: np.ndarray, y: np.ndarray, slope: float, bin_px: float) -> float:
-    """How unevenly the runs are spread over heights: 1 for an even spread."""
-    height = y - slope * x
-    count, _ = np.histogram(height, np.arange(height.min(), height.max() + 2 * bin_px, bin_px))
+def _clearness(runs: tuple[np.ndarray, np.ndarray]) -> float:
+    """How clearly runs gather at their best slope."""
+    return _gathered(runs, _best_slope(runs)[0])
+
+
+def _best_slope(runs: tuple[np.ndarray, np.ndarray]) -> tuple[float, float]:
+    """The slope at which runs gather most, and how much more than at the usual slope."""
+    if len(runs[0]) < FEWEST_RUNS:
+        return 0.0, 0.0
+    slopes = np.arange(-STEEPEST, STEEPEST + FIRST_STEP / 2, FIRST_STEP)
+    gathered = np.array([_gathered(runs, slope, bin_px=3.0) for slope in slopes])
+    best, step = float(slopes[np.argmax(gathered)]), FIRST_STEP
+    if abs(best) > STEEPEST - FIRST_STEP:  # it rises beyond the end: the slope of something else
+        return 0.0, 0.0
+    while step > LAST_STEP:
+        near = best + np.arange(-5, 6) * step / 4
+        step /= 4
+        best = float(near[np.argmax([_gathered(runs, slope) for slope in near])])
+    usual = np.median([_gathered(runs, slope) for slope in slopes[::5]])
+    return best, _gathered(runs, best) / float(usual)
+
+
+def _gathered(runs: tuple[np.ndarray, np.ndarray], slope: float, bin_px: float = 1.5) -> float:
+    """How unevenly the sheared runs are spread: 1 for an even spread."""
+    if len(runs[0]) < FEWEST_RUNS:
+        return 0.0
+    place = runs[1] - slope * runs[0]
+    count, _ = np.histogram(place, np.arange(place.min(), place.max() + 2 * bin_px, bin_px))
     smooth = sp.ndimage.gaussian_filter1d(count.astype(float), 1.0)
     return float(np.mean(smooth**2) / max(np.mean(smooth) ** 2, 1e-9))
