@@ -177,6 +177,26 @@ def archive(
     raise typer.Exit(1 if failed else 0)
 
 
+@app.command()
+def redact(
+    files: Annotated[list[Path], typer.Argument(help="Scans, faxes, photos.")],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the copies; else beside each file."),
+    ] = None,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier copies.")] = False,
+) -> None:
+    """Write NAME.redacted.png: all printing covered but lead names and the run, no metadata.
+
+    Writing that runs through a trace may stay: look at each copy before you pass it on.
+    """
+    from digitize.redact_command import redact_files
+
+    with console(len(files)) as shown_on:
+        failed = redact_files(files, Options(), shown_on, folder=output, replace=replace)
+    raise typer.Exit(1 if failed else 0)
+
+
 def _names(text: str | None) -> tuple[str, ...] | None:
     """Lead names out of a list with commas."""
     return None if text is None else tuple(name.strip() for name in text.split(","))

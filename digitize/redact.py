@@ -1,11 +1,14 @@
-"""A page with everything covered but the traces, their grid and what calibrates them.
+"""A page with everything covered but the traces, their grid and what names and calibrates them.
 
-What may stay is listed, rather than what must go: the panels, the pen's own path, the calibration
-marks. All else takes the colour of the paper, whether or not anything was recognised there.
-Within the panels, pieces of ink that have the size of letters and lie off the traces are covered.
+What may stay is listed, rather than what must go: the panels, the pen's own path, calibration
+marks, lead names, a line that holds the run ("25 mm/s 10 mm/mV") and nothing else. All else takes
+the colour of the paper, whether or not anything was recognised there. Within the panels, pieces of
+ink that have the size of letters and lie off the traces are covered.
 """
 
-import dataclasses
+import re
+from collections.abc import Collection
+from dataclasses import astuple, replace
 
 import cv2
 import numpy as np
@@ -15,36 +18,68 @@ from digitize.pagemap import PageMap
 from digitize.pages import Page
 from digitize.read import Stages
 from digitize.tracing import Panel
+from digitize.words import SPELLINGS, read_printing
 
 _BESIDE_TRACE_MM = 1.2  # kept on each side of the path: pen, blur and the step of the map
 _AROUND_LETTER_MM = 0.4
 _AROUND_MARK_MM = 1.0
+_RUN = re.compile(r"(?:\d{1,3}(?!\d)|[\s.,;:~*/|()-]|mm|cm|mv|hz|sec|s)+", re.IGNORECASE)
+_UNIT = re.compile(r"mm|hz", re.IGNORECASE)
+_SURE, _SHORTEST = 0.8, 4  # mean letter probability and letters of a line that counts
 _STEPS = 24  # of an edge that the map may bend
 
 
 def cover(stages: Stages) -> Page:
     """Return the upright page of a reading with its printing covered.
 
-    Printed lead names and the printed run are covered too; the tracing holds what they said. The
-    drawing of a vector page is left out, for it holds its text.
+    The drawing of a vector page is left out, for it holds its text. Writing that runs through a
+    trace stays where it touches the pen's path: a person looks at the result.
     """
     page, tracing = stages.page, stages.tracing
     page_map = page_map_of(tracing.geometry)
-    shape = page.pixels.shape[:2]
-    boxes, path = np.zeros(shape, np.uint8), np.zeros(shape, np.uint8)
-    letters = np.zeros(shape, np.uint8)
+    boxes, kept, letters = (np.zeros(page.pixels.shape[:2], np.uint8) for _ in range(3))
     for panel, fact in zip(tracing.panels, tracing.geometry["panels"], strict=True):
         _fill(boxes, page_map, panel.box_mm, 0.0)
-        _follow(path, page_map, panel, fact)
+        _follow(kept, page_map, panel, fact)
     for mark in tracing.geometry["marks_mm"]:
-        _fill(path, page_map, tuple(mark), _AROUND_MARK_MM)
-    for word in stages.layout.words:
-        box = (word.left_mm, word.top_mm, word.right_mm, word.bottom_mm)
-        _fill(letters, page_map, box, _AROUND_LETTER_MM)
-    kept = (path > 0) | ((boxes > 0) & (letters == 0))
+        _fill(kept, page_map, tuple(mark), _AROUND_MARK_MM)
+    printing = read_printing(stages.ink)
+    for letter in printing.letters:
+        _fill(letters, page_map, astuple(letter), _AROUND_LETTER_MM)
+    for word in (*printing.words, *printing.lines):
+        if names_lead(word.text, tracing.leads) or states_run(word.text):
+            _fill(kept, page_map, astuple(word.box), _AROUND_LETTER_MM)
+    stays = (kept > 0) | ((boxes > 0) & (letters == 0))
     pixels = page.pixels.copy()
-    pixels[~kept] = _paper(page.pixels, boxes > 0)
-    return dataclasses.replace(page, pixels=pixels, drawing=None)
+    pixels[~stays] = _paper(page.pixels, boxes > 0)
+    return replace(page, pixels=pixels, drawing=None)
+
+
+def names_lead(text: str, leads: Collection[str]) -> bool:
+    """Whether a word is the name of a lead that is on the page, and nothing else."""
+    return any(text.strip() in SPELLINGS.get(lead, (lead,)) for lead in leads)
+
+
+def states_run(text: str) -> bool:
+    """Whether a line states speed, gain or bandwidth and nothing else: no long number, no word."""
+    return _RUN.fullmatch(text) is not None and _UNIT.search(text) is not None
+
+
+def leftover(stages: Stages) -> list[str]:
+    """Lines of a page read again after it was covered that are neither lead names nor the run.
+
+    Readings that are unsure, or shorter than a word, are no lines: the recogniser sees letters in
+    the teeth of a trace.
+    """
+    leads = stages.tracing.leads
+    return [
+        line.text
+        for line in read_printing(stages.ink).lines
+        if line.score > _SURE
+        and len(line.text.replace(" ", "")) >= _SHORTEST
+        and not states_run(line.text)
+        and not all(names_lead(word, leads) for word in line.text.split())
+    ]
 
 
 def _paper(pixels: np.ndarray, inside: np.ndarray) -> np.ndarray:

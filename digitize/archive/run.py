@@ -133,8 +133,9 @@ def make_plan(
 
 
 def options_key(options: Options) -> str:
-    """A short name for options that change the result."""
-    text = json.dumps(asdict(options), sort_keys=True)
+    """A short name for the options that change a result: not the limit, which only refuses."""
+    values = {k: v for k, v in asdict(options).items() if k != "max_megapixels"}
+    text = json.dumps(values, sort_keys=True)
     return hashlib.sha256(text.encode()).hexdigest()[:16]
 
 
@@ -204,7 +205,8 @@ class _Run:
 
     def _start(self, source: Source, path: Path, done: set[int]) -> None:
         memory_mb = self.limits.memory_mb
-        task = Task(path, source.name, self.options, frozenset(done), memory_mb, self.read)
+        name = source.sha256 + Path(source.name).suffix.lower()
+        task = Task(path, name, self.options, frozenset(done), memory_mb, self.read)
         process, pipe = start(task)
         self._jobs[pipe] = _Job(source, path, process, done, time.monotonic())
 

@@ -31,7 +31,7 @@ class Task:
     """What one process is to do: the pages of a file but those that are done."""
 
     path: Path
-    name: str  # of the source, which may be a member of a zip file
+    name: str  # of the source in its results: by content, for its own may name a patient
     options: Options
     done: frozenset[int]
     memory_mb: int
