@@ -125,7 +125,7 @@ def column_spans(
         pull = np.where(near, broken - 0.05 * np.abs(x - expected), -np.inf)
         at = int(np.argmax(pull))
         ticked, tick_mm = _ticked(ticks, expected, len(breaks.broken))
-        if broken[at] < 0.5 and ticked > 0.6:
+        if broken[at] < 0.5 and ticked > 0.8:
             shares.append(ticked)
             edges.append((tick_mm, tick_mm))
             continue
@@ -147,13 +147,16 @@ def column_spans(
 
 def _ticked(ticks: Sequence[Box], expected_mm: float, rows: int) -> tuple[float, float]:
     """Share of rows, at most 1, that have a tick at one place near an edge, and that place."""
-    x = np.array([(tick.left_mm + tick.right_mm) / 2 for tick in ticks])
-    x = x[np.abs(x - expected_mm) < SEARCH_MM] if len(x) else x
-    if len(x) == 0:
-        return 0.0, expected_mm
-    together = np.abs(x[:, None] - x) < TICKS_APART_MM
-    at = int(np.argmax(together.sum(axis=1)))
-    return min(float(together[at].sum()) / max(rows, 2), 1.0), float(np.median(x[together[at]]))
+    places = [((t.left_mm + t.right_mm) / 2, t.top_mm) for t in ticks]
+    places = sorted(p for p in places if abs(p[0] - expected_mm) < SEARCH_MM)
+    best, best_mm = 0, expected_mm
+    for x, _ in places:
+        column = [p for p in places if abs(p[0] - x) < TICKS_APART_MM]
+        heights = np.sort([y for _, y in column])
+        count = 1 + int(np.sum(np.diff(heights) > 3.0))  # strokes of one letter stand level
+        if count > best:
+            best, best_mm = count, float(np.median([x for x, _ in column]))
+    return min(best / max(rows, 2), 1.0), best_mm
 
 
 def _even(spans: tuple[Span, ...], extent: Span, shares: list[float]) -> tuple[Span, ...]:

@@ -5,8 +5,6 @@ from collections.abc import Iterator
 import cv2
 import numpy as np
 
-BLOCK_PX = 16
-
 
 def grid_contrasts(pixels: np.ndarray) -> Iterator[np.ndarray]:
     """Yield contrast pictures of a page, float32 (rows, cols), the best-behaved first.
@@ -14,8 +12,7 @@ def grid_contrasts(pixels: np.ndarray) -> Iterator[np.ndarray]:
     Lines are positive, the local strength is even. Any grid shows in the darkness, which is
     clipped so that the ink above the grid's own level does not count. A coloured grid shows in the
     chroma too (largest less smallest channel), where black ink does not; but JPEG stores chroma at
-    half the resolution and in blocks whose edges beat with the lines, so that comes second. Last
-    comes the darkness without what such blocks may have left in it.
+    half the resolution and in blocks whose edges beat with the lines, so that comes second.
 
     Parameters
     ----------
@@ -29,21 +26,6 @@ def grid_contrasts(pixels: np.ndarray) -> Iterator[np.ndarray]:
         chroma = pixels.max(axis=2).astype(np.float32) - pixels.min(axis=2)
         limit = 4 * np.quantile(chroma[::4, ::4], 0.75) + 8  # coloured stamps and edges
         yield _even(np.minimum(chroma, limit)) + darkness
-    yield _without_blocks(darkness)
-
-
-def _without_blocks(contrast: np.ndarray) -> np.ndarray:
-    """The contrast with what repeats every 16 pixels taken away.
-
-    JPEG codes blocks of 8 pixels, colour often of 16 (ITU-T T.81): their edges are a lattice of
-    their own, which beats with a faint grid of nearly the same spacing. A grid that is truly
-    spaced so would go too, so this is for pictures that show no grid as they are.
-    """
-    rows, cols = (n // BLOCK_PX for n in contrast.shape)
-    cut = contrast[: rows * BLOCK_PX, : cols * BLOCK_PX]
-    block = cut.reshape(rows, BLOCK_PX, cols, BLOCK_PX).mean(axis=(0, 2))
-    tiled = np.tile(block, (rows + 1, cols + 1))
-    return contrast - tiled[: contrast.shape[0], : contrast.shape[1]]
 
 
 def _clipped_darkness(grey: np.ndarray) -> np.ndarray:

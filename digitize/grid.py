@@ -27,6 +27,7 @@ MIN_COHERENCE = 0.35
 MIN_SEEN = 0.08  # a lattice seen on less of the page is chance
 GOOD_RESIDUAL_MM = 0.025  # no other picture of the page need be tried
 MAX_RESIDUAL_MM = 0.12  # phase that scatters more follows no ruling
+OUT_OF_SQUARE = 0.12  # natural log: perspective stretches a page no more than this
 MAX_PX_PER_MM = 60.0
 FAX_RATIOS = (204 / 98, 204 / 196, 204 / 391)  # ITU-T T.4 resolutions
 
@@ -127,7 +128,7 @@ def _plausible(px_per_mm: tuple[float, float], page: Page) -> bool:
     if max(px_per_mm) > MAX_PX_PER_MM:
         return False
     ratio = px_per_mm[0] / px_per_mm[1]
-    return any(abs(np.log(ratio / r)) < 0.2 for r in (*usual, *(1 / r for r in usual)))
+    return any(abs(np.log(ratio / r)) < OUT_OF_SQUARE for r in (*usual, *(1 / r for r in usual)))
 
 
 def _reduce(pixels: np.ndarray) -> tuple[np.ndarray, int]:
