@@ -22,6 +22,7 @@ def _samples(ms: float) -> int:
 
 
 _BAND_HZ = (6.0, 28.0)  # steep parts of a QRS, wide ones too, rather than of P and T
+_SHARP_HZ = (15.0, 40.0)  # a T wave has hardly anything here, however tall
 _ENVELOPE_MS = 100
 _WINDOW_S = 2.0  # holds at least one beat from 30/min
 _LEAST_SHARE = 0.30  # of the usual QRS activity
@@ -32,6 +33,7 @@ _REFRACTORY_MS = 220
 _T_WITHIN_MS = 420  # a smaller, slower hump this soon after a QRS is its T wave
 _P_WITHIN_MS = 320  # before the middle of its QRS
 _WAVE_SHARE = 0.55  # of the activity of its QRS
+_SHARP_SHARE = 0.25
 _SPIKE_BEFORE_MS = (180, -20)  # a pacing spike stands at most this far before the middle of its QRS
 _SHAPE_MS = (110, 150)  # window around the beat in which shapes are compared
 _LAGS = _samples(80)  # the middle of a wide QRS may be put at either of two humps
@@ -85,8 +87,7 @@ def find_beats(tracing: Tracing) -> Beats:
     start_s, mv = _on_one_raster(tracing)
     spike_s = start_s + find_spikes(mv) / FS_HZ
     start_s, mv = _on_one_raster(tracing, spike_s)
-    activity = _activity(mv)
-    at = _peaks(activity)
+    at = _peaks(_activity(mv, _BAND_HZ), _activity(mv, _SHARP_HZ))
     if len(at) == 0:
         raise NoTrace(f"{tracing.source.file_name}: no beat stands out in any lead.")
     time_s = start_s + at / FS_HZ
@@ -114,7 +115,7 @@ def _on_one_raster(tracing: Tracing, spike_s: np.ndarray | None = None) -> tuple
     return start_s, mv
 
 
-def _activity(mv: np.ndarray) -> np.ndarray:
+def _activity(mv: np.ndarray, band_hz: tuple[float, float]) -> np.ndarray:
     """Activity at each moment, (n,): 1 at a usual QRS, whichever panels are visible.
 
     Energies add, so that leads with a large QRS lead where another shows P waves as steep as its
@@ -127,7 +128,7 @@ def _activity(mv: np.ndarray) -> np.ndarray:
         if seen.sum() < 0.4 * FS_HZ:
             continue
         first, last = np.flatnonzero(seen)[[0, -1]]
-        envelope = _envelope(row[first : last + 1])
+        envelope = _envelope(row[first : last + 1], band_hz)
         scale, contrast = _scale_and_contrast(envelope)
         if scale > 0:
             inside = seen[first : last + 1]
@@ -137,12 +138,12 @@ def _activity(mv: np.ndarray) -> np.ndarray:
     return np.sqrt(total / usual)
 
 
-def _envelope(row: np.ndarray) -> np.ndarray:
-    """Smoothed size of the steep part of one panel."""
+def _envelope(row: np.ndarray, band_hz: tuple[float, float]) -> np.ndarray:
+    """Smoothed size of one panel within a band of frequencies."""
     index = np.arange(len(row))
     seen = np.isfinite(row)
     bridged = np.interp(index, index[seen], row[seen])
-    sos = sp.signal.butter(2, _BAND_HZ, "bandpass", fs=FS_HZ, output="sos")
+    sos = sp.signal.butter(2, band_hz, "bandpass", fs=FS_HZ, output="sos")
     steep = sp.signal.sosfiltfilt(sos, bridged, padtype="even", padlen=min(len(row) - 1, 100))
     window = sp.signal.windows.hann(_samples(2 * _ENVELOPE_MS))
     return np.sqrt(np.maximum(np.convolve(steep**2, window / window.sum(), "same"), 0))
@@ -157,12 +158,12 @@ def _scale_and_contrast(envelope: np.ndarray) -> tuple[float, float]:
     return scale, min(scale / (rest + 1e-6), 50.0) ** 2
 
 
-def _peaks(activity: np.ndarray) -> np.ndarray:
+def _peaks(activity: np.ndarray, sharp: np.ndarray) -> np.ndarray:
     """Sample numbers of the QRS complexes within the activity."""
     at, _ = sp.signal.find_peaks(activity, height=_LEAST_IN_GAP, distance=_samples(80))
     at = _without_refractory(activity, at)
     strong = at[activity[at] >= _LEAST_SHARE]
-    strong = _without_p_and_t(activity, strong)
+    strong = _without_p_and_t(activity, sharp, strong)
     return _with_overdue(activity, strong, at)
 
 
@@ -175,13 +176,13 @@ def _without_refractory(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
     return np.array(sorted(kept), dtype=int)
 
 
-def _without_p_and_t(activity: np.ndarray, at: np.ndarray) -> np.ndarray:
+def _without_p_and_t(activity: np.ndarray, sharp: np.ndarray, at: np.ndarray) -> np.ndarray:
     """Peaks without the lower ones that stand to a QRS as its P or T wave does."""
     kept: list[int] = []
     for k in at[np.argsort(-activity[at], kind="stable")]:
         is_wave = any(
             -_samples(_P_WITHIN_MS) <= k - qrs <= _samples(_T_WITHIN_MS)
-            and activity[k] < _WAVE_SHARE * activity[qrs]
+            and (activity[k] < _WAVE_SHARE * activity[qrs] or sharp[k] < _SHARP_SHARE * sharp[qrs])
             for qrs in kept
         )
         if not is_wave:
