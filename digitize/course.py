@@ -14,7 +14,8 @@ from digitize.ways import Way
 BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
 _BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
 _STRETCH_MM = 6.0
-_MISPLACED = 0.7  # half of the power of the shaking
+_TOUCHES = 0.3  # of an edge's weight, below which a node does not hold it
+_HIDDEN_POWER = 2.5  # two independent shakings, and some for nodes that are hidden in part
 _NEAR_MM = 0.4  # ink so far from the start must be explained
 
 
@@ -125,8 +126,8 @@ def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
     Where a trace shakes faster than the nib is wide, only the envelope of the shaking is printed.
     Ink thicker than the line draws it tells its range: about ten nodes lie under a nib, and the
     range of ten normal deviates is three standard deviations. Where the line itself shakes to
-    fill the ink, it does so with the right strength, but each turn of it is as likely as not at
-    another place.
+    fill the ink, it does so with the right strength, but nodes that touch neither edge of the ink
+    could as well stand elsewhere: they are wrong by the power of two independent shakings.
     """
     step = course.x[1] - course.x[0]
     inked = np.isfinite(course.y)
@@ -136,11 +137,17 @@ def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
     # the median over a stretch longer than two QRS complexes is not moved by one
     stretch = 2 * round(_STRETCH_MM / STEP_MM / 2) + 1
     usual = 1.4826 * sp.ndimage.median_filter(shaking, stretch, mode="nearest")
-    edge, _, _ = envelope(y, step, pen.width_px / 2, 0)
+    edge, node, share = envelope(y, step, pen.width_px / 2, 0)
+    touching = np.zeros(len(y))
+    for side in range(2):
+        np.add.at(touching, node[side], 1 - share[side])
+        np.add.at(touching, node[side] + 1, share[side])
+    hidden = sp.ndimage.uniform_filter1d((touching < _TOUCHES).astype(float), 2 * under - 1)
+    misplaced = _HIDDEN_POWER**0.5 * np.sqrt(hidden) * usual
     cols = way.col0 + np.arange(way.edges.shape[1])
     seen = np.isfinite(way.edges[0]) & ~way.shared
     if not seen.any():
-        return _MISPLACED * usual
+        return misplaced
     thick = np.interp(course.x, cols[seen], (way.edges[1] - way.edges[0])[seen])
     excess = sp.ndimage.median_filter(thick - (edge[1] - edge[0]), 2 * under + 1, mode="nearest")
-    return np.hypot(_MISPLACED * usual, np.maximum(excess, 0) / 3)
+    return np.hypot(misplaced, np.maximum(excess, 0) / 3)
