@@ -5,7 +5,6 @@ level stretches of a page, laid upon one another by the middle of the ink, show 
 than one column of pixels does.
 """
 
-
 import numpy as np
 import scipy as sp
 
