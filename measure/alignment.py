@@ -17,7 +17,7 @@ from measure.edges import qrs_edges
 
 ALIGN_MS = (-120, 160)  # the QRS, whose shape aligns
 QRS_MS = (-90, 110)  # this much of a beat must be visible, or the QRS counts as cut
-_SHIFTS_MS = np.arange(-50.0, 50.5, 1.0)
+_SHIFTS_MS = np.arange(-90.0, 90.5, 1.0)  # a beat may be found at either peak of a notched R
 _ROUNDS = 3
 _MEDOIDS = 3
 _COMMON = 0.75
@@ -169,8 +169,10 @@ def _costs(slope: np.ndarray, reference: np.ndarray, places: np.ndarray) -> np.n
 
 def _vertex(cost: np.ndarray, k: int) -> float:
     """Shift at the minimum of a parabola through the lowest cost and its neighbours."""
+    if np.ptp(cost) == 0:
+        return 0.0
     if not 0 < k < len(cost) - 1:
-        return float(_SHIFTS_MS[k]) if k > 0 else 0.0
+        return float(_SHIFTS_MS[k])
     left, middle, right = cost[k - 1 : k + 2]
     bend = left - 2 * middle + right
     return float(_SHIFTS_MS[k] + (0.5 * (left - right) / bend if bend > 0 else 0))
