@@ -6,6 +6,7 @@ understood.
 """
 
 import datetime
+import os
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -13,6 +14,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from digitize import CAUTION, program_version
+from digitize.errors import InputError
 from digitize.options import Options
 
 if TYPE_CHECKING:
@@ -170,6 +172,61 @@ def overread(
     except InputError as error:
         print(error, file=sys.stderr)
         raise typer.Exit(1) from None
+
+
+@app.command()
+def archive(
+    store: Annotated[Path, typer.Argument(help="A store that digitize archive has filled.")],
+    processes: Annotated[
+        int, typer.Option(min=1, help="Pages measured at the same time; else one per core.")
+    ] = os.cpu_count() or 1,
+    again: Annotated[bool, typer.Option("--again", help="Measure anew what was measured.")] = False,
+) -> None:
+    """Measure every page of a store: NAME.reading.json, and rows to ask with `measure find`.
+
+    Started again, it continues. Sex and age are not known here, so that thresholds that depend on
+    them may stay undecided.
+    """
+    from measure.archive import measure_archive
+
+    raise typer.Exit(1 if measure_archive(store, processes=processes, again=again) else 0)
+
+
+@app.command()
+def find(
+    store: Annotated[Path, typer.Argument(help="A store that was measured.")],
+    where: Annotated[
+        str | None, typer.Option(help="Such as: qrs_ms >= 150 and lbbb_strict = 'met'")
+    ] = None,
+    sort: Annotated[
+        str | None, typer.Option(help="Name to sort by; -NAME for the largest first.")
+    ] = None,
+    columns: Annotated[
+        str | None, typer.Option(help="Further names to show, such as qtc_bazett_ms,rr_ms.")
+    ] = None,
+    to: Annotated[str, typer.Option(help="csv, or count for the number of pages alone.")] = "csv",
+) -> None:
+    """List the pages of a store that a question is true of; the store is only read.
+
+    Names are those of the readings: intervals (qrs_ms, qrs_ms_se), findings ('met', 'not met',
+    'undecided') and what is known of the page (status, layout). "is missing" asks for what could
+    not be measured. A match is no diagnosis: look at the page.
+    """
+    if to not in ("csv", "count"):
+        raise typer.BadParameter(f"'{to}' is not known here: give csv or count")
+    from measure.find import Question, QuestionError, to_csv, understand
+    from measure.find import find as find_pages
+
+    try:
+        question = Question() if where is None else understand(where)
+        more = () if columns is None else tuple(name.strip() for name in columns.split(","))
+        names, rows = find_pages(store, question, sort=sort, columns=more)
+    except QuestionError as error:
+        raise typer.BadParameter(str(error)) from None
+    except InputError as error:
+        print(error, file=sys.stderr)
+        raise typer.Exit(1) from None
+    print(to_csv(names, rows) if to == "csv" else len(rows), end="" if to == "csv" else "\n")
 
 
 def _dates(given: list[str] | None, count: int) -> list[str | None]:
