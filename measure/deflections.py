@@ -12,6 +12,8 @@ from dataclasses import dataclass
 import numpy as np
 import scipy as sp
 
+_SMALLEST_MV = 0.02  # CSE working party (from memory)
+_NOISE_FACTOR = 3.0  # a deflection must also be this many standard errors high
 _SHORTEST_MS = 6  # CSE working party (from memory)
 _LARGE_MV = 0.5  # from here a wave is written with a capital letter (common practice)
 _LEAST_NOTCH_MV = 0.02  # as for a deflection
@@ -50,7 +52,7 @@ class Notch:
 
 
 def find_deflections(
-    time_ms: np.ndarray, mv: np.ndarray, se_mv: float, smallest_mv: float
+    time_ms: np.ndarray, mv: np.ndarray, se_mv: np.ndarray
 ) -> tuple[Deflection, ...]:
     """Return the waves of one QRS in order.
 
@@ -60,24 +62,23 @@ def find_deflections(
         Time after the overall QRS onset, from the onset to the offset, in steps of 1 ms.
     mv : ndarray, (n,)
         The lead about its level at the QRS onset.
-    se_mv : float
-        Standard error of an amplitude.
-    smallest_mv : float
-        Amplitude from which a deflection counts.
+    se_mv : ndarray, (n,)
+        Standard error of an amplitude at each place: beats differ more at the top of a tall R
+        than where a small q begins.
 
     References
     ----------
     CSE working party: 20 uV and 6 ms; the turning point as in IEC 60601-2-51 annex GG (both from
     memory).
     """
-    spans = [s for s in _one_sided(mv) if _counts(mv, s, smallest_mv)]
+    spans = [s for s in _one_sided(mv) if _counts(mv, s, smallest(se_mv))]
     spans = _joined(mv, spans)
     names = _names([float(mv[s][0] > 0) for s in _peaks(mv, spans)])
     return tuple(
         Deflection(
             name=name,
             amplitude_mv=float(mv[peak][0]),
-            se_mv=se_mv,
+            se_mv=float(se_mv[peak][0]),
             onset_ms=float(time_ms[start]),
             peak_ms=float(time_ms[peak][0]),
             offset_ms=float(time_ms[min(stop, len(time_ms) - 1)]),
@@ -85,6 +86,11 @@ def find_deflections(
         )
         for name, (start, stop), peak in zip(names, spans, _peaks(mv, spans), strict=True)
     )
+
+
+def smallest(se_mv: np.ndarray) -> np.ndarray:
+    """Amplitude in mV from which a deflection counts: the published one, or clear of the noise."""
+    return np.maximum(_SMALLEST_MV, _NOISE_FACTOR * se_mv)
 
 
 def letters(deflections: Sequence[Deflection], notches: Sequence[Notch]) -> str:
@@ -102,7 +108,7 @@ def letters(deflections: Sequence[Deflection], notches: Sequence[Notch]) -> str:
 
 
 def find_notches(
-    time_ms: np.ndarray, mv: np.ndarray, se_mv: float, deflections: Sequence[Deflection]
+    time_ms: np.ndarray, mv: np.ndarray, se_mv: np.ndarray, deflections: Sequence[Deflection]
 ) -> tuple[Notch, ...]:
     """Return the notches and slurs within each deflection, in order of time."""
     slope = sp.signal.savgol_filter(mv, min(_SLOPE_MS, len(mv) - 1 | 1), 2, deriv=1)
@@ -112,8 +118,8 @@ def find_notches(
         if stop - start > 2 * _SHORTEST_MS:
             sign = 1 if wave.amplitude_mv > 0 else -1
             part = slice(int(start), int(stop) + 1)
-            found += _turns(time_ms[part], sign * mv[part], se_mv)
-            found += _slurs(time_ms[part], sign * mv[part], sign * slope[part], se_mv)
+            found += _turns(time_ms[part], sign * mv[part], se_mv[part])
+            found += _slurs(time_ms[part], sign * mv[part], sign * slope[part], se_mv[part])
     return tuple(sorted(found, key=lambda n: n.peak_ms))
 
 
@@ -123,14 +129,14 @@ def _one_sided(mv: np.ndarray) -> list[tuple[int, int]]:
     return list(zip([0, *ends.tolist()], [*ends.tolist(), len(mv)], strict=True))
 
 
-def _counts(mv: np.ndarray, span: tuple[int, int], smallest_mv: float) -> bool:
+def _counts(mv: np.ndarray, span: tuple[int, int], smallest_mv: np.ndarray) -> bool:
     """Whether a stretch is high and long enough, and turns before the QRS is over."""
     start, stop = span
     height = np.abs(mv[start:stop])
-    if stop - start < _SHORTEST_MS or height.max() < smallest_mv:
+    peak = int(np.argmax(height))
+    if stop - start < _SHORTEST_MS or height[peak] < smallest_mv[start + peak]:
         return False
-    after_peak = height[int(np.argmax(height)) :]
-    return stop < len(mv) or bool(height.max() - after_peak.min() >= smallest_mv)
+    return stop < len(mv) or bool(height[peak] - height[peak:].min() >= smallest_mv[start + peak])
 
 
 def _joined(mv: np.ndarray, spans: Sequence[tuple[int, int]]) -> list[tuple[int, int]]:
@@ -162,26 +168,32 @@ def _names(upward: Sequence[float]) -> list[str]:
     return names
 
 
-def _turns(time_ms: np.ndarray, mv: np.ndarray, se_mv: float) -> list[Notch]:
+def _turns(time_ms: np.ndarray, mv: np.ndarray, se_mv: np.ndarray) -> list[Notch]:
     """Valleys between two tops of a wave that points upward."""
     valleys, about = sp.signal.find_peaks(-mv, prominence=_LEAST_NOTCH_MV)
-    least_mv = max(_LEAST_NOTCH_MV, _LEAST_NOTCH_SE * se_mv)
     notches = []
     for k, depth in zip(valleys, about["prominences"], strict=True):
         before = int(np.argmax(mv[: k + 1]))
+        least_mv = max(_LEAST_NOTCH_MV, _LEAST_NOTCH_SE * float(se_mv[k]))
         # The nearer top before the valley is where the notch begins.
         tops, _ = sp.signal.find_peaks(mv[: k + 1], prominence=0.5 * least_mv)
         onset = int(tops[-1]) if len(tops) else before
         if depth >= least_mv:
             notches.append(
                 Notch(
-                    "notch", float(time_ms[onset]), float(time_ms[k]), float(depth), depth / se_mv
+                    "notch",
+                    float(time_ms[onset]),
+                    float(time_ms[k]),
+                    float(depth),
+                    float(depth / se_mv[k]),
                 )
             )
     return notches
 
 
-def _slurs(time_ms: np.ndarray, mv: np.ndarray, slope: np.ndarray, se_mv: float) -> list[Notch]:
+def _slurs(
+    time_ms: np.ndarray, mv: np.ndarray, slope: np.ndarray, se_mv: np.ndarray
+) -> list[Notch]:
     """Places where a rising or falling limb slows down and speeds up again."""
     slurs = []
     for sign in (1, -1):
@@ -195,7 +207,7 @@ def _slurs(time_ms: np.ndarray, mv: np.ndarray, slope: np.ndarray, se_mv: float)
 
 
 def _slur_at(
-    k: int, time_ms: np.ndarray, mv: np.ndarray, speed: np.ndarray, se_mv: float
+    k: int, time_ms: np.ndarray, mv: np.ndarray, speed: np.ndarray, se_mv: np.ndarray
 ) -> Notch | None:
     """The slur whose slowest place is `k`: its depth is the trace's way off the straight chord."""
     limb = speed > 0
@@ -208,6 +220,6 @@ def _slur_at(
     chord = np.interp(np.arange(left, right + 1), [left, right], [mv[left], mv[right]])
     off = mv[left : right + 1] - chord
     depth = float(off.max() - off.min())
-    if depth < max(_LEAST_NOTCH_MV, _LEAST_NOTCH_SE * se_mv):
+    if depth < max(_LEAST_NOTCH_MV, _LEAST_NOTCH_SE * float(se_mv[k])):
         return None
-    return Notch("slur", float(time_ms[left]), float(time_ms[k]), depth, depth / se_mv)
+    return Notch("slur", float(time_ms[left]), float(time_ms[k]), depth, depth / float(se_mv[k]))
