@@ -66,6 +66,8 @@ def cut_out(
     inked = np.isfinite(way.edges[0])
     cols = np.arange(len(inked))
     top, bottom = (np.interp(cols, cols[inked], side[inked]) for side in way.edges)
+    line = np.interp(way.col0 + cols, courses[k].x, _filled(courses[k].y))
+    top, bottom = np.minimum(top, line), np.maximum(bottom, line)
     margin = near + 2 * pen.width_px
     row0 = max(int(top.min() - margin), 0)
     row1 = min(int(bottom.max() + margin) + 1, len(ink.density))
@@ -93,10 +95,16 @@ def cut_out(
     return Cut(row0, col0, View(image.astype(np.float32), other, rows.astype(np.int64), noise))
 
 
+def _filled(y: np.ndarray) -> np.ndarray:
+    """Heights with the gaps bridged."""
+    inked = np.isfinite(y)
+    nodes = np.arange(len(y))
+    return np.interp(nodes, nodes[inked], y[inked])
+
+
 def fit(cut: Cut, course: Course, pen: Pen, rounds: int = ROUNDS) -> Line:
     """Fit a line from where its course begins."""
-    inked = np.isfinite(course.y)
-    y = np.interp(course.x, course.x[inked], course.y[inked]) - cut.row0
+    y = _filled(course.y) - cut.row0
     return fit_line(cut.view, y, course.x[0] - cut.col0, course.x[1] - course.x[0], pen, rounds)
 
 
@@ -130,8 +138,7 @@ def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
     could as well stand elsewhere: they are wrong by the power of two independent shakings.
     """
     step = course.x[1] - course.x[0]
-    inked = np.isfinite(course.y)
-    y = np.interp(course.x, course.x[inked], course.y[inked])
+    y = _filled(course.y)
     under = 2 * max(round(pen.width_px / step / 2), 1) + 1
     shaking = np.abs(y - sp.ndimage.uniform_filter1d(y, under, mode="nearest"))
     # the median over a stretch longer than two QRS complexes is not moved by one

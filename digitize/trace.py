@@ -5,6 +5,7 @@ the start of a fit of the pen line itself. The strokes of all other traces are d
 that where two cross, or where the next column begins, each has to explain only its own ink.
 """
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,7 +18,8 @@ from digitize.nib import find_pen, refine_pen
 from digitize.pen import Pen
 from digitize.settle import settle
 from digitize.sheet import Raster
-from digitize.ways import Way, find_routes, to_ways
+from digitize.uncross import uncross
+from digitize.ways import Routes, Way, find_routes, to_ways
 
 _SAMPLE = 4  # traces on which the pen is refined
 _NOISE_FLOOR = 0.02  # of coverage: pen pressure, paper fibre, 8-bit levels
@@ -68,15 +70,37 @@ def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
     ways = to_ways(routes, paths, places, ink.raster)
     courses = [begin(way, *place, pen, ink) for way, place in zip(ways, places, strict=True)]
     lines: dict[int, Line] = {}
-    crossed = [k for k, way in enumerate(ways) if way.shared.any()]
-    for k in [*range(len(ways)), *crossed]:
+    crossed = {k for k, way in enumerate(ways) if way.shared.any()}
+    _fit_all(range(len(ways)), lines, ways, courses, pen, ink, noise)
+    if crossed:
+        courses, changed = uncross(courses, _known(routes, ink.raster), pen.width_px)
+        _fit_all(sorted(crossed | changed), lines, ways, courses, pen, ink, noise)
+    return tuple(
+        _stroke(k, lines.get(k), ways, courses, pen, ink) for k in range(len(layout.panels))
+    )
+
+
+def _fit_all(
+    which: Iterable[int],
+    lines: dict[int, Line],
+    ways: tuple[Way, ...],
+    courses: list[Course],
+    pen: Pen,
+    ink: Ink,
+    noise: float,
+) -> None:
+    """Fit one line after another beside all others as they then stand, in place."""
+    for k in which:
         if courses[k].inked:
             cut = cut_out(k, ways, courses, pen, ink, noise)
             lines[k] = fit(cut, courses[k], pen)
             courses[k] = placed(lines[k], cut, courses[k])
-    return tuple(
-        _stroke(k, lines.get(k), ways, courses, pen, ink) for k in range(len(layout.panels))
-    )
+
+
+def _known(routes: Routes, raster: Raster) -> list[np.ndarray]:
+    """Columns of the raster in which each trace stands beyond doubt."""
+    x = raster.col(routes.field.x_mm)
+    return [x[anchor[0] >= 0] for anchor in routes.anchors]
 
 
 def redraw(strokes: tuple[Stroke, ...], raster: Raster, shape: tuple[int, int]) -> np.ndarray:
