@@ -11,14 +11,13 @@ import numpy as np
 
 from measure.average import DominantBeat
 from measure.boundaries import Boundaries, Edges
-from measure.deflections import Deflection, Notch, find_deflections, find_notches, letters
+from measure.deflections import Deflection, Notch, find_deflections, find_notches, letters, smallest
+from measure.levelled import LevelledLead, about_level
 from measure.quantity import Quantity, missing
 
 __all__ = ["Deflection", "LeadWaves", "Notch", "measure_waves"]
 
-_SMALLEST_MV = 0.02  # CSE working party (from memory)
-_NOISE_FACTOR = 3.0  # a deflection must also be this many standard errors high
-_LEVEL_MS = 12  # before the QRS onset
+_START_MS = 20  # where a q or a small r begins
 _ST_AFTER_J_MS = (0, 40, 60, 80)
 _ST_HALF_WIDTH_MS = 4
 _T_FROM_J_MS = 60
@@ -28,8 +27,9 @@ _T_FROM_J_MS = 60
 class LeadWaves:
     """Everything measured within one lead of the dominant beat.
 
-    `smallest_mv` is the amplitude from which a deflection counts in this lead: the published
-    limit, or more where the noise asks for it; it is what an absent q was compared with.
+    `smallest_mv` is the amplitude from which a deflection at the start of the QRS counts in this
+    lead: the published limit, or more where the noise asks for it; it is what an absent q was
+    compared with.
     `st_mv` is keyed by ms after the J point: 0, 40, 60, 80. `qrs_complete` is False where the
     edge of the panel cuts the QRS.
     """
@@ -52,78 +52,45 @@ class LeadWaves:
         return next((d for d in self.deflections if d.name == name), None)
 
 
-@dataclass(frozen=True, eq=False)
-class _Lead:
-    """One averaged lead about its level at the QRS onset, with what its numbers come from."""
-
-    name: str
-    time_ms: np.ndarray  # after the fiducial point
-    mv: np.ndarray
-    se_mv: np.ndarray
-    beats: int
-    level_se_mv: float
-
-    def quantity(self, value: float, se: float, unit: str = "mV") -> Quantity:
-        return Quantity(float(value), float(se), unit, (self.name,), self.beats)
-
-    def inside(self, from_ms: float, to_ms: float) -> slice:
-        start, stop = np.searchsorted(self.time_ms, [from_ms, to_ms + 0.5])
-        return slice(int(start), int(stop))
-
-
 def measure_waves(beat: DominantBeat, boundaries: Boundaries) -> dict[str, LeadWaves]:
     """Return the waves of every lead of the tracing, keyed by lead."""
     overall = boundaries.overall
     return {
-        name: _waves_of(_about_level(beat, k, overall), overall, boundaries.by_lead[name])
+        name: _waves_of(
+            about_level(beat, k, overall.qrs_on_ms.value), overall, boundaries.by_lead[name]
+        )
         if beat.beats[k] > 0 and overall.qrs_on_ms.known
         else _nothing(name)
         for k, name in enumerate(beat.leads)
     }
 
 
-def _about_level(beat: DominantBeat, row: int, overall: Edges) -> _Lead:
-    onset = int(np.searchsorted(beat.time_ms, overall.qrs_on_ms.value))
-    before = slice(max(onset - _LEVEL_MS, 0), onset + 1)
-    mv, se_mv = beat.mv[row], beat.se_mv[row]
-    # Noise within 12 ms is much the same noise, so that averaging the level gains little.
-    return _Lead(
-        beat.leads[row],
-        beat.time_ms,
-        mv - np.nanmean(mv[before]),
-        se_mv,
-        beat.beats[row],
-        float(np.nanmean(se_mv[before])) / 2,
-    )
-
-
-def _waves_of(lead: _Lead, overall: Edges, own: Edges) -> LeadWaves:
+def _waves_of(lead: LevelledLead, overall: Edges, own: Edges) -> LeadWaves:
     onset_ms, offset_ms = overall.qrs_on_ms.value, overall.qrs_off_ms.value
     qrs = lead.inside(onset_ms, offset_ms)
     time_ms, mv = lead.time_ms[qrs] - onset_ms, lead.mv[qrs]
-    noise_mv = float(np.hypot(np.nanmedian(lead.se_mv[qrs]), lead.level_se_mv))
-    smallest_mv = max(_SMALLEST_MV, _NOISE_FACTOR * noise_mv)
-    deflections = find_deflections(time_ms, mv, noise_mv, smallest_mv)
-    notches = find_notches(time_ms, mv, noise_mv, deflections)
-    area_se = lead.level_se_mv * (offset_ms - onset_ms) + noise_mv * np.sqrt(len(mv))
+    se_mv = lead.se_mv[qrs]
+    deflections = find_deflections(time_ms, mv, se_mv)
+    notches = find_notches(time_ms, mv, lead.bend_se_mv[qrs], deflections)
+    area_se = float(se_mv.mean()) * (offset_ms - onset_ms)  # as if all errors had one sign
     return LeadWaves(
         lead=lead.name,
         shape=letters(deflections, notches),
         deflections=deflections,
         notches=notches,
-        r_peak_time_ms=_r_peak_time(lead, deflections, own, onset_ms, noise_mv),
+        r_peak_time_ms=_r_peak_time(lead, deflections, own, onset_ms),
         net_area_mv_ms=lead.quantity(mv.sum() * (time_ms[1] - time_ms[0]), area_se, "mV ms"),
         st_mv={after: _st(lead, offset_ms + after) for after in _ST_AFTER_J_MS},
         t_mv=_t_wave(lead, overall),
         p_mv=_p_wave(lead, overall),
-        smallest_mv=smallest_mv,
+        smallest_mv=float(smallest(np.median(se_mv[:_START_MS]))),
         qrs_complete=True,
         beats=lead.beats,
     )
 
 
 def _r_peak_time(
-    lead: _Lead, deflections: tuple[Deflection, ...], own: Edges, onset_ms: float, noise_mv: float
+    lead: LevelledLead, deflections: tuple[Deflection, ...], own: Edges, onset_ms: float
 ) -> Quantity:
     """Time of the last R's highest point after the lead's own onset; flat tops are unsure."""
     upward = [d for d in deflections if d.amplitude_mv > 0]
@@ -131,29 +98,29 @@ def _r_peak_time(
         return missing("ms", f"there is no R wave in {lead.name}")
     last = upward[-1]
     span = lead.inside(onset_ms + last.onset_ms, onset_ms + last.offset_ms)
-    near_top = np.count_nonzero(lead.mv[span] > last.amplitude_mv - noise_mv)
+    near_top = np.count_nonzero(lead.mv[span] > last.amplitude_mv - last.se_mv)
     onset = own.qrs_on_ms
     return lead.quantity(
         last.peak_ms + onset_ms - onset.value, np.hypot(onset.se, near_top / 4), "ms"
     )
 
 
-def _st(lead: _Lead, at_ms: float) -> Quantity:
+def _st(lead: LevelledLead, at_ms: float) -> Quantity:
     near = lead.inside(at_ms - _ST_HALF_WIDTH_MS, at_ms + _ST_HALF_WIDTH_MS)
     if not np.isfinite(lead.mv[near]).all() or near.stop == near.start:
         return missing("mV", "the ST segment is not visible here")
-    se = np.hypot(lead.se_mv[near].mean(), lead.level_se_mv)
+    se = lead.se_mv[near].mean()
     return lead.quantity(lead.mv[near].mean(), se)
 
 
-def _t_wave(lead: _Lead, overall: Edges) -> Quantity:
+def _t_wave(lead: LevelledLead, overall: Edges) -> Quantity:
     if not overall.t_off_ms.known:
         return missing("mV", "no end of the T wave can be seen")
     from_ms = overall.qrs_off_ms.value + _T_FROM_J_MS
     return _peak(lead, from_ms, overall.t_off_ms.value, lead.mv, "the T wave is not visible here")
 
 
-def _p_wave(lead: _Lead, overall: Edges) -> Quantity:
+def _p_wave(lead: LevelledLead, overall: Edges) -> Quantity:
     if not overall.p_on_ms.known:
         return missing("mV", overall.p_on_ms.reason or "no P wave")
     ends_ms = [overall.p_on_ms.value, overall.p_off_ms.value]
@@ -162,19 +129,21 @@ def _p_wave(lead: _Lead, overall: Edges) -> Quantity:
     return _peak(lead, start_ms, end_ms, lead.mv - line, "the P wave is not visible here")
 
 
-def _level_at(lead: _Lead, at_ms: float) -> float:
+def _level_at(lead: LevelledLead, at_ms: float) -> float:
     near = lead.mv[lead.inside(at_ms - _ST_HALF_WIDTH_MS, at_ms + _ST_HALF_WIDTH_MS)]
     return float(near.mean()) if len(near) else float("nan")
 
 
-def _peak(lead: _Lead, from_ms: float, to_ms: float, mv: np.ndarray, reason: str) -> Quantity:
+def _peak(
+    lead: LevelledLead, from_ms: float, to_ms: float, mv: np.ndarray, reason: str
+) -> Quantity:
     """Signed value furthest from zero between two times."""
     span = lead.inside(from_ms, to_ms)
     part = mv[span]
     if len(part) == 0 or not np.isfinite(part).all():
         return missing("mV", reason)
     k = int(np.argmax(np.abs(part)))
-    return lead.quantity(part[k], np.hypot(lead.se_mv[span][k], lead.level_se_mv))
+    return lead.quantity(part[k], lead.se_mv[span][k])
 
 
 def _nothing(name: str) -> LeadWaves:
@@ -190,7 +159,7 @@ def _nothing(name: str) -> LeadWaves:
         st_mv=dict.fromkeys(_ST_AFTER_J_MS, gap),
         t_mv=gap,
         p_mv=gap,
-        smallest_mv=_SMALLEST_MV,
+        smallest_mv=float(smallest(np.array(0.0))),
         qrs_complete=False,
         beats=0,
     )
