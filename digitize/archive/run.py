@@ -150,11 +150,6 @@ class _Job:
     since: float
     opened: int = 0  # the last page that it could open
 
-    @property
-    def page(self) -> int:
-        """The page it is at: the one that is open, or the next where that one is done."""
-        return self.opened if self.opened and self.opened not in self.done else self.opened + 1
-
 
 @dataclass
 class _Run:
@@ -232,13 +227,14 @@ class _Run:
         job.process.kill()
         job.process.join()
         pipe.close()
-        if job.page not in job.done:
-            self._keep(job, PageDone(PageRow(job.page, FAILED, reason), {}))
+        if job.opened and job.opened not in job.done:
+            self._keep(job, PageDone(PageRow(job.opened, FAILED, reason), {}))
             self._start(job.source, job.path, job.done)
             return
-        # It ended again where one had ended before: there is no way to the pages behind.
-        reason = "this page and any after it cannot be reached behind one that cannot be opened"
-        self._keep(job, PageDone(PageRow(max(job.done) + 1, FAILED, reason), {}))
+        # It could not open the next page, and there is no way to those behind it.
+        page = job.opened + 1 if job.opened + 1 not in job.done else max(job.done) + 1
+        reason += "; pages behind it, if there are any, cannot be reached"
+        self._keep(job, PageDone(PageRow(page, FAILED, reason), {}))
         self._finish(job)
 
     def _keep(self, job: _Job, page: PageDone) -> None:

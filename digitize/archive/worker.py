@@ -46,7 +46,7 @@ class PageDone:
     files: Mapping[str, bytes]
 
 
-# number of the page that is open, a page done, the end of the file
+# number of the page that is open (0: none yet), a page done, the end of the file
 Message = int | PageDone | None
 
 
@@ -66,6 +66,7 @@ def _work(task: Task, pipe: Connection) -> None:
     """The life of the process."""
     _be_silent()
     threading.Thread(target=_end_with_parent, args=(pipe,), daemon=True).start()
+    pipe.send(0)  # the time of the first page begins when the libraries are loaded
     limit = task.memory_mb * MIB
     resource.setrlimit(resource.RLIMIT_AS, (limit, limit))
     resource.setrlimit(resource.RLIMIT_CORE, (0, 0))  # a core file would hold the page
