@@ -2,14 +2,9 @@
 
 import io
 from functools import lru_cache
-from typing import TYPE_CHECKING
 
 import numpy as np
 
-if TYPE_CHECKING:
-    from digitize.read import Stages
-
-VIEWS = ("flat", "scan")
 SIZES = {"small": 1600, "full": 1 << 20}  # longest side in pixels
 _QUALITY = {"small": 80, "full": 88}
 
@@ -17,9 +12,9 @@ _QUALITY = {"small": 80, "full": 88}
 class Pictures:
     """Pictures of one page, made when they are first asked for."""
 
-    def __init__(self, stages: "Stages | None") -> None:
-        """`stages` is None where there is no page."""
-        self._stages = stages
+    def __init__(self, scan: np.ndarray | None = None, flat: np.ndarray | None = None) -> None:
+        """Pixels as scanned and flattened, (rows, cols) or (rows, cols, 3); None: no such view."""
+        self._pixels = {"scan": scan, "flat": flat}
         self.jpeg = lru_cache(maxsize=None)(self._jpeg)
 
     def _jpeg(self, view: str, size: str) -> bytes:
@@ -28,17 +23,12 @@ class Pictures:
         Raises
         ------
         KeyError
-            There is no page, or no such view or size.
+            There is no such view or size.
         """
-        if self._stages is None or view not in VIEWS:
+        pixels = self._pixels[view]
+        if pixels is None:
             raise KeyError(view)
-        return _encoded(self.pixels(view), SIZES[size], _QUALITY[size])
-
-    def pixels(self, view: str) -> np.ndarray:
-        """The pixels of a view, (rows, cols) or (rows, cols, 3)."""
-        if self._stages is None:
-            raise KeyError(view)
-        return self._stages.sheet.pixels if view == "flat" else self._stages.page.pixels
+        return _encoded(pixels, SIZES[size], _QUALITY[size])
 
 
 def _encoded(pixels: np.ndarray, longest_px: int, quality: int) -> bytes:

@@ -21,6 +21,7 @@ from digitize.errors import InputError
 from measure.overread.corrections import Refused, from_plain
 from measure.overread.export import EXPORTS, export
 from measure.overread.guard import Guard
+from measure.overread.scale import scale_from
 from measure.overread.session import Session
 from measure.overread.view import overview
 from measure.overread.worklist import Entry, Worklist
@@ -53,6 +54,9 @@ def make_app(worklist: Worklist, guard: Guard) -> Starlette:
 
     async def ecg(request: Request) -> Response:
         entry = _entry(request, entries)
+        if entry is not None and entry.state == "no scale" and entry.source is not None:
+            size = [entry.source.width_px, entry.source.height_px]
+            return JSONResponse({"unscaled": size, "message": entry.message, "name": entry.name})
         if entry is None or entry.session is None:
             return _no("This ECG is not ready.", 404)
         tab = request.query_params.get("tab", "")
@@ -74,14 +78,13 @@ def make_app(worklist: Worklist, guard: Guard) -> Starlette:
 
     async def change(request: Request) -> Response:
         entry, name = _entry(request, entries), request.path_params["change"]
+        wish = await _wish(request)
+        if wish is None:
+            return _no("The request is not complete.", 400)
+        if entry is not None and name == "scale" and entry.state == "no scale":
+            return _scaled(worklist, entry, wish)
         if entry is None or entry.session is None or name not in (*_CHANGES, "release"):
             return _no("This ECG is not ready.", 404)
-        try:
-            wish = await request.json()
-        except (json.JSONDecodeError, UnicodeDecodeError, RecursionError):
-            wish = None
-        if not isinstance(wish, dict):
-            return _no("The request is not complete.", 400)
         if name == "release":  # the tab is being closed: the next one that opens has the pen
             entry.tab = "" if wish.get("tab") == entry.tab else entry.tab
             return Response(status_code=204)
@@ -106,6 +109,29 @@ def make_app(worklist: Worklist, guard: Guard) -> Starlette:
         Route("/ecgs/{number:int}/{change}", change, methods=["POST"]),
     ]
     return Starlette(routes=routes, middleware=[Middleware(BaseHTTPMiddleware, dispatch=guard)])
+
+
+async def _wish(request: Request) -> dict[str, Any] | None:
+    """What a request asks for; None where it is no JSON object."""
+    try:
+        wish = await request.json()
+    except (json.JSONDecodeError, UnicodeDecodeError, RecursionError):
+        return None
+    return wish if isinstance(wish, dict) else None
+
+
+def _scaled(worklist: Worklist, entry: Entry, wish: Mapping[str, Any]) -> Response:
+    """Send a page without grid back to be read with the scale that was shown on it."""
+    assert entry.source is not None
+    try:
+        points = [[float(v) for v in point] for point in wish["points"]]
+        scale = scale_from(points, float(wish["mm"]), entry.source.dpi)
+    except Refused as refused:
+        return _no(str(refused), 422)
+    except (KeyError, TypeError, ValueError):
+        return _no("The request is not complete.", 400)
+    worklist.read_with_scale(entry, scale)
+    return JSONResponse({"reading": True})
 
 
 def _correct(session: Session, wish: Mapping[str, Any]) -> None:

@@ -173,6 +173,7 @@ class Session:
             "version": program_version(),
             "notice": NOTICE,
             "source": plain(self.automatic.tracing.source),
+            "px_per_mm": plain(self.automatic.tracing.options.get("px_per_mm")),
             "corrections": [plain(step.plain) for step in steps],
             "undone": [plain(step.plain) for step in undone],
             "signatures": list(signatures),
@@ -198,6 +199,15 @@ class Session:
         except (OSError, ValueError, KeyError, TypeError):
             message = "it cannot be read as an over-reading: move it away to begin anew"
             raise at(UnreadableFile(message), self._journal.name) from None
+
+
+def scale_kept(journal: Path) -> tuple[float, float] | None:
+    """The scale that a person gave to a page without grid when its journal was begun."""
+    try:
+        across, down = json.loads(journal.read_text(encoding="utf-8"))["px_per_mm"]
+        return float(across), float(down)
+    except (OSError, ValueError, KeyError, TypeError):
+        return None  # none was given; what is wrong with a journal is said when it is taken up
 
 
 def _step(entry: Mapping[str, Any]) -> Step:

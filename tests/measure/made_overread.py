@@ -59,7 +59,8 @@ def worklist(folder: Path, chain: Chain) -> Worklist:
     """A worklist of one ECG that is ready."""
     made = Worklist([folder / "ecg.png"], Options(), Person(), None)
     (entry,) = made.entries
-    entry.session, entry.pictures = session(chain, folder), Pictures(chain.stages)
+    pixels = chain.stages and (chain.stages.page.pixels, chain.stages.sheet.pixels)
+    entry.session, entry.pictures = session(chain, folder), Pictures(*(pixels or ()))
     entry.state = "ready"
     return made
 

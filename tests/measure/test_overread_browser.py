@@ -14,7 +14,11 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from PIL import Image
 
+from digitize.options import Options
+from measure.overread.worklist import Worklist
+from measure.reading import Person
 from tests.measure.made_overread import digital_chain, page_chain, serving, worklist
 
 sync_api = pytest.importorskip("playwright.sync_api", reason="playwright is not installed")
@@ -301,6 +305,38 @@ def test_a_killed_server_loses_nothing_that_was_answered(browser, tmp_path):
         page.wait_for_selector("#intervals tr")
         assert milliseconds(page) == before + 10
         page.close()
+
+
+def test_two_places_give_the_scale_of_a_page_without_grid(browser, tmp_path):
+    made = bare_page(tmp_path)
+    with serving(made) as guard:
+        page = browser.new_page(viewport=LAPTOP)
+        page.goto(guard.address)
+        page.wait_for_function(
+            "() => document.getElementById('said').innerText.startsWith('No grid')"
+        )
+        a, e, f = page.evaluate(
+            "() => (({a, e, f}) => [a, e, f])(document.getElementById('paper').getScreenCTM())"
+        )
+        for x_px in (100, 900):
+            page.mouse.click(x_px * a + e, 300 * a + f)
+        page.fill("#distance", "100")
+        page.press("#distance", "Enter")
+        page.wait_for_function("() => document.getElementById('state').innerText.includes('wait')")
+        page.close()
+    _, options = made.wanted.get_nowait()
+    # 800 pixels are 100 mm; a fax has half as many down, and a click is sure to a screen pixel
+    assert options.px_per_mm == pytest.approx((8.0, 4.0), rel=0.005)
+
+
+def bare_page(folder):
+    """A worklist of one white fax page without any grid, read as far as it goes."""
+    image = Image.fromarray(np.full((600, 1000), 255, np.uint8))
+    image.save(folder / "bare.png", dpi=(200, 100))
+    made = Worklist([folder / "bare.png"], Options(), Person(), None)
+    made.read_next(*made.wanted.get())
+    assert made.entries[0].state == "no scale"
+    return made
 
 
 @contextlib.contextmanager

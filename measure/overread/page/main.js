@@ -34,7 +34,7 @@ const ACTIONS = [
   ["-", "Farther", () => paper.zoom(1.25)],
   ["m", "March the calipers", () => tool.march()],
   ["?", "Keys", () => byId("keys").showModal()],
-  ...Object.entries(TOOLS).map(([name, { key, label }]) => [key, label, () => take(name)]),
+  ...Object.entries(TOOLS).filter(([name]) => name !== "scale").map(([name, { key, label }]) => [key, label, () => take(name)]),
 ];
 const ALSO = [["arrows", "Move the paper; in a tool, its cross (Shift: finely)"],
   ["space", "Set a point of the tool"], ["Enter", "Finish the redrawn stretch"],
@@ -53,6 +53,7 @@ function useBeat(time_s) {
 }
 
 function used(name, panel, points) {
+  if (name === "scale") return askDistance(points);
   const xs = points.map(([x]) => x);
   if (name === "strike") {
     correct({ kind: "strike out", panel: panel.number, left_mm: Math.min(...xs),
@@ -64,6 +65,40 @@ function used(name, panel, points) {
   }
   take(null);
   return null;
+}
+
+// A page without grid: two places, and how far apart a person knows them to be.
+function unscaled(number, ecg) {
+  state.ecg = { panels: [], beats: [], doubts: [], corrections: [], paper: {
+    scan: { px: ecg.unscaled } } };
+  byId("state").textContent = `${ecg.message}. Or show the scale here.`;
+  paper.open(number, state.ecg);
+  tool.start("scale");
+  byId("paper").classList.add("tool");
+  byId("paper").focus();
+  say(TOOLS.scale.say);
+}
+
+function askDistance(points) {
+  const input = html("input", { id: "distance", inputmode: "decimal", size: 6 });
+  const form = html("form", {}, html("label", { for: "distance" },
+    "Their distance in mm (10 s at 25 mm/s are 250, a mark of 1 mV at 10 mm/mV is 10): "), input,
+  html("button", { type: "submit" }, "Read the page"));
+  form.addEventListener("submit", async (event) => {
+    event.preventDefault();
+    try {
+      await api.change(state.number, "scale", { points, mm: input.value });
+    } catch (error) {
+      return say(error.message);
+    }
+    tool.stop();
+    Object.assign(state, { number: null, ecg: null });
+    warn("");
+    return poll();
+  });
+  warn(form);
+  input.focus();
+  return "";
 }
 
 // What lies between the legs of the calipers, on the scale of the panel under the first.
@@ -190,13 +225,17 @@ async function open(number, take = false) {
   state.number = number;
   const ecg = await api.open(number, take);
   Object.assign(state, { panel: null, doubt: -1 });
+  if (ecg.unscaled) return unscaled(number, ecg);
   byId("paper").toggleAttribute("hidden", !ecg.paper);
   byId("tools").toggleAttribute("hidden", !ecg.paper);
   if (ecg.paper) paper.open(number, ecg);
   show(ecg);
   warn("");
-  if (!ecg.pen) elsewhere("This ECG is open in another tab. You can look; to change it, take the pen over.");
+  if (ecg.pen) return;
+  elsewhere("This ECG is open in another tab. You can look; to change it, take the pen over.");
 }
+
+const usable = (how) => how === "ready" || how === "no scale";
 
 // The worklist is asked again until everything is read.
 async function poll() {
@@ -208,11 +247,11 @@ async function poll() {
   }
   const chosen = state.number ?? 0;
   byId("worklist").replaceChildren(...list.map(({ name, state: how, stage, message }, k) =>
-    html("option", { value: k, selected: k === chosen, disabled: how !== "ready" },
+    html("option", { value: k, selected: k === chosen, disabled: !usable(how) },
       how === "ready" ? name : `${name}: ${message || stage || how}`)));
   const busy = list.some(({ state: how }) => how === "waiting" || how === "reading");
   if (state.number === null) {
-    const first = list.findIndex(({ state: how }) => how === "ready");
+    const first = list.findIndex(({ state: how }) => usable(how));
     if (first >= 0) await open(first);
     else byId("state").textContent = list.map((e) => `${e.name}: ${e.message || e.stage || e.state}`).join(" · ");
   }

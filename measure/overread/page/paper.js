@@ -4,7 +4,7 @@ import { picture } from "./api.js";
 import { pathOf, svg } from "./draw.js";
 
 const FULL_FROM_PX_PER_MM = 5; // screen pixels per mm from which the full picture is worth loading
-const CLOSEST_MM = 12, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
+const CLOSEST_MM = 12, TYPICAL_MM = 280, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
 
 export class Paper {
   constructor(root, on) {
@@ -32,6 +32,7 @@ export class Paper {
   open(number, ecg) {
     this.number = number;
     this.ecg = ecg;
+    this.view = ecg.paper.flat ? "flat" : "scan";
     this.#pictures();
     this.fit();
   }
@@ -110,7 +111,8 @@ export class Paper {
   }
 
   #pictures() {
-    const paper = this.ecg.paper;
+    const { paper } = this.ecg;
+    for (const name of ["trace", "panels", "beats", "marks"]) this.layers[name].replaceChildren();
     const [x, y, width, height] = this.view === "flat" ? paper.flat.box : [0, 0, ...paper.scan.px];
     const image = (size) => svg("image", { href: picture(this.number, this.view, size),
       x, y, width, height, preserveAspectRatio: "none" });
@@ -123,7 +125,8 @@ export class Paper {
     if (!this.ecg?.paper) return;
     this.root.setAttribute("viewBox", this.box.join(" "));
     const px = this.root.clientWidth / this.box[2];
-    const scale = this.view === "flat" ? 1 : this.ecg.paper.scan.px[0] / this.ecg.paper.flat.box[2];
+    const across = this.ecg.paper.flat?.box[2] ?? TYPICAL_MM;
+    const scale = this.view === "flat" ? 1 : this.ecg.paper.scan.px[0] / across;
     if (this.fine && px * scale > FULL_FROM_PX_PER_MM) {
       this.fine();
       this.fine = null;

@@ -10,6 +10,8 @@ export const TOOLS = {
     say: "Redraw: mark points along the ink from left to right, then Enter." },
   caliper: { label: "Calipers", key: "c", points: 2,
     say: "Calipers: mark two places. Then m marches them along." },
+  scale: { label: "Scale", key: "s", points: 2,
+    say: "No grid was found. Mark two places whose distance you know, then type it." },
 };
 
 export class Tool {
@@ -31,6 +33,7 @@ export class Tool {
     this.name = null;
     this.points = [];
     this.marching = false;
+    this.words = "";
     this.paper.layers.tool.replaceChildren();
   }
 
@@ -50,6 +53,7 @@ export class Tool {
     if (this.points.length >= TOOLS[this.name].points) this.points = [];
     this.points.push([x, y]);
     this.marching = false;
+    this.words = "";
     this.draw();
     return this.points.length === TOOLS[this.name].points ? this.finish() : null;
   }
@@ -58,7 +62,7 @@ export class Tool {
     if (this.points.length < 2) return "Two places are needed.";
     const [x, y] = this.points[0];
     const panel = panelAt(this.paper.ecg.panels, x, y);
-    if (!panel) return "That is beside every panel: mark within one.";
+    if (!panel && this.name !== "scale") return "That is beside every panel: mark within one.";
     return this.done(this.name, panel, this.points);
   }
 
@@ -67,9 +71,11 @@ export class Tool {
     this.draw();
   }
 
-  draw(words) {
+  draw(words = this.words) {
+    this.words = words;
     const parts = [], [x, y] = this.cross;
-    const cross = `M${x - 2} ${y}H${x + 2}M${x} ${y - 2}V${y + 2}`;
+    const arm = this.paper.box[2] / 100;
+    const cross = `M${x - arm} ${y}H${x + arm}M${x} ${y - arm}V${y + arm}`;
     parts.push(svg("path", { class: "tooling", d: cross }));
     if (this.name === "redraw") {
       parts.push(svg("polyline", { class: "tooling", points: this.points.join(" ") }));
@@ -77,7 +83,7 @@ export class Tool {
       for (const [at] of this.points) parts.push(this.#bar(at));
     }
     for (const [px, py] of this.points) {
-      parts.push(svg("circle", { class: "tooling", cx: px, cy: py, r: 0.5 }));
+      parts.push(svg("circle", { class: "tooling", cx: px, cy: py, r: arm / 3 }));
     }
     if (this.name === "strike" && this.points.length === 1) {
       const from = this.points[0][0];
@@ -89,7 +95,6 @@ export class Tool {
       const [tx, ty] = this.points[1];
       parts.push(svg("text", { class: "measure", x: tx + 1.5, y: ty - 1.5 }, words));
     }
-    this.words = words ?? this.words;
     this.paper.layers.tool.replaceChildren(...parts);
   }
 
