@@ -230,7 +230,10 @@ if __name__ == "__main__":
 
 
 def test_killed_again_and_again_no_page_is_lost_or_doubled(scans, store, tmp_path):
-    """Kills at seeded moments, `MILLIVELLUM_KILLS` asks for more; files stand where rows say, and each page has one row."""
+    """Kills at seeded moments, more of them where `MILLIVELLUM_KILLS` asks for it.
+
+    After each, files stand where rows say; at the end every page has one row.
+    """
     for number in range(12):
         made.save(scans / f"{number}.tiff", *[made.SLOW] * 10, number=number)
     program = tmp_path / "program.py"
