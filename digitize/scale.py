@@ -96,8 +96,8 @@ def _gain(
                 f"gain printed as {_listed(printed)} mm/mV, but the calibration marks are "
                 f"{_listed(sorted(every))} mm high; the marks were used"
             )
-            return Known(limb, "found", _spread(marks))
-        return Known(limb, "printed" if printed else "found", _spread(marks))
+            return Known(limb, "found", _spread(marks, limb))
+        return Known(limb, "printed" if printed else "found", _spread(marks, limb))
     if printed:
         return Known(printed[0], "printed")
     notes.append(
@@ -132,17 +132,23 @@ def _usual(values: np.ndarray, usual: Sequence[float]) -> tuple[float, float] | 
     if len(values) == 0:
         return None
     middle = float(np.median(values))
-    nearest = min(usual, key=lambda u: abs(np.log(middle / u)))
+    nearest = _nearest(middle, usual)
     if abs(middle / nearest - 1) > NEAR:
         return None
     return nearest, float(np.std(values) / np.sqrt(len(values)))
 
 
-def _spread(marks: Sequence[Mark]) -> float | None:
-    heights = np.array([m.height_mm for m in marks])
-    if len(heights) < 2:
+def _spread(marks: Sequence[Mark], gain_mm_mv: float) -> float | None:
+    """Standard error of a gain from the scatter of all marks, each about its own usual height."""
+    off = np.array([m.height_mm / _nearest(m.height_mm, GAINS_MM_MV) for m in marks])
+    if len(off) < 2:
         return None
-    return float(1.4826 * np.median(np.abs(heights - np.median(heights))) / np.sqrt(len(heights)))
+    scatter = 1.4826 * float(np.median(np.abs(off - np.median(off))))
+    return scatter * gain_mm_mv / float(np.sqrt(len(off)))
+
+
+def _nearest(value: float, usual: Sequence[float]) -> float:
+    return min(usual, key=lambda u: abs(np.log(value / u)))
 
 
 def _listed(values: Sequence[float]) -> str:
