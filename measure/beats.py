@@ -34,6 +34,7 @@ _T_WITHIN_MS = 420  # a smaller, slower hump this soon after a QRS is its T wave
 _P_WITHIN_MS = 320  # before the middle of its QRS
 _WAVE_SHARE = 0.55  # of the activity of its QRS
 _SHARP_SHARE = 0.25
+_LEAST_PACED = 0.2  # share of the beats: ragged ink makes a jump look like a spike now and then
 _SPIKE_BEFORE_MS = (180, -20)  # a pacing spike stands at most this far before the middle of its QRS
 _SHAPE_MS = (110, 150)  # window around the beat in which shapes are compared
 _LAGS = _samples(80)  # the middle of a wide QRS may be put at either of two humps
@@ -206,10 +207,10 @@ def _with_overdue(activity: np.ndarray, strong: np.ndarray, weak: np.ndarray) ->
 
 
 def _after_spikes(time_s: np.ndarray, spike_s: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Which beats follow a spike, and the spikes; a single paced beat is not believed."""
+    """Which beats follow a spike, and the spikes; a paced beat here or there is not believed."""
     lag_ms = 1000 * (time_s[:, None] - spike_s[None, :])
     paced = ((lag_ms <= _SPIKE_BEFORE_MS[0]) & (lag_ms >= _SPIKE_BEFORE_MS[1])).any(axis=1)
-    if paced.sum() < 2:
+    if paced.sum() < max(2, _LEAST_PACED * len(time_s)):
         return np.zeros(len(time_s), bool), np.array([])
     return paced, spike_s
 

@@ -111,6 +111,8 @@ def find_notches(
     time_ms: np.ndarray, mv: np.ndarray, se_mv: np.ndarray, deflections: Sequence[Deflection]
 ) -> tuple[Notch, ...]:
     """Return the notches and slurs within each deflection, in order of time."""
+    if not np.isfinite(mv).all():
+        return ()  # a gap within the QRS hides notches and makes others
     slope = sp.signal.savgol_filter(mv, min(_SLOPE_MS, len(mv) - 1 | 1), 2, deriv=1)
     found: list[Notch] = []
     for wave in deflections:

@@ -13,6 +13,7 @@ from collections.abc import Callable, Sequence
 from fractions import Fraction
 from pathlib import Path
 from types import ModuleType
+from typing import Any
 
 import numpy as np
 import scipy as sp
@@ -178,7 +179,25 @@ def _read_dicom(path: Path) -> Tracing:
     ]
     names = [_dicom_lead(str(ch.ChannelSourceSequence[0].CodeMeaning)) for ch in channels]
     values = dataset.waveform_array(longest) * [_mv_per(unit, path) for unit in units]
+    values[_padding(group)] = np.nan
     return _tracing(values, names, float(group.SamplingFrequency), path)
+
+
+def _padding(group: Any) -> np.ndarray:
+    """Samples of a waveform group that stand for none, (samples, channels), by (5400,100A)."""
+    if "WaveformPaddingValue" not in group:
+        return np.zeros(
+            (int(group.NumberOfWaveformSamples), len(group.ChannelDefinitionSequence)), bool
+        )
+    kind = {"SS": "<i2", "US": "<u2", "SB": "<i1", "UB": "<u1", "SL": "<i4", "UL": "<u4"}
+    dtype = np.dtype(kind[group.WaveformSampleInterpretation])
+    stored = np.frombuffer(group.WaveformData, dtype)
+    channels = int(group.NumberOfWaveformChannels)
+    stored = stored[: int(group.NumberOfWaveformSamples) * channels].reshape(-1, channels)
+    padding = group.WaveformPaddingValue
+    if isinstance(padding, bytes):
+        padding = np.frombuffer(padding[: dtype.itemsize], dtype)[0]
+    return stored == padding
 
 
 def _dicom_lead(meaning: str) -> str:

@@ -7,6 +7,7 @@ import pydicom.data
 import pytest
 
 from digitize.errors import NoTrace, UnreadableFile
+from digitize.formats import export
 from measure.sources import read_digital, tracing_from_samples
 
 
@@ -123,3 +124,18 @@ def test_dicom_waveform_of_pydicom() -> None:
     # Einthoven: the recorder's own samples keep it within one step of 1.25 uV per lead
     rest = tracing.lead("II").mv - tracing.lead("I").mv - tracing.lead("III").mv
     assert np.abs(rest).max() < 0.003
+
+
+def test_padding_of_a_dicom_waveform_is_a_gap(tmp_path: Path) -> None:
+    """DICOM PS3.3 C.10.9: Waveform Padding Value (5400,100A) stands for no sample."""
+    mv = np.stack([sine(500.0), sine(500.0)], axis=1)
+    mv[:900, 1] = np.nan
+    tracing = tracing_from_samples(mv, ["II", "V1"], 500.0)
+    ((name, content),) = export(tracing, "gap", "dicom").items()
+    path = tmp_path / name
+    path.write_bytes(content)
+    read_back = read_digital(path)
+    # Next to a gap resampling and rounding may touch a few samples; 1 uV steps elsewhere.
+    assert np.isnan(read_back.lead("V1").mv[:890]).all()
+    np.testing.assert_allclose(read_back.lead("V1").mv[910:1990], mv[910:1990, 1], atol=0.002)
+    np.testing.assert_allclose(read_back.lead("II").mv[10:1990], mv[10:1990, 0], atol=0.002)
