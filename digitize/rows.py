@@ -135,14 +135,14 @@ def _row_heights(runs: Runs) -> list[float]:
     peaks, _ = sp.signal.find_peaks(wide, distance=LEAST_PITCH_MM / BIN_MM)
     strong = peaks[wide[peaks] > 0.1 * wide.max(initial=0.0)]
     y = bins[strong] + BIN_MM / 2
-    share = np.array([_coverage(runs, height) for height in y])
+    share = np.array([coverage_mm(runs, height) for height in y])
     thin = np.array([_thin(runs, height) for height in y], bool)
     keep = thin & (share > 0.35 * share.max(initial=0.0))
     y, share = y[keep], share[keep]
     return _spaced(y, share)
 
 
-def _coverage(runs: Runs, y_mm: float) -> float:
+def coverage_mm(runs: Runs, y_mm: float) -> float:
     """Length in mm over which a run of ink lies within 3 mm of a height."""
     near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
     return float(len(np.unique(runs.x_mm[near]))) * STEP_MM

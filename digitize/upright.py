@@ -1,17 +1,17 @@
 """Which way up the page is.
 
-Rows of trace gather the ink on a few heights, which tells upright from sideways; lead names can
-only be read the right way up, which tells upright from upside down.
+Traces that run across the page leave ink on nearly every column of their rows, seen sideways they
+do not; lead names can only be read the right way up.
 """
 
 from dataclasses import replace
 
 import numpy as np
-import scipy as sp
 
 from digitize.ink import Ink
 from digitize.labels import posterior
 from digitize.pages import Page
+from digitize.rows import coverage_mm, find_rows
 from digitize.words import Printing, Word, read_printing
 
 CLEAR = 0.9
@@ -28,14 +28,15 @@ def find_turn(ink: Ink, printing: Printing) -> int:
     """
     if _names(printing.words) >= ENOUGH:
         return 0
-    ruled = _ruled_part(ink)
-    sideways = _concentration(ruled, axis=0) > _concentration(ruled, axis=1)
-    turns = (90, 270) if sideways else (180,)
-    read = {turn: _names(read_printing(_turned(ink, turn)).words) for turn in turns}
-    if not sideways:
-        read[0] = _names(printing.words)
+    sideways = _row_share(_turned(_ruled_part(ink), 90)) > _row_share(_ruled_part(ink))
+    read = {0: _names(printing.words)}
+    # The likelier turns first; where no names are read there, the others may show them.
+    for turns in ((90, 270), (180,)) if sideways else ((180,), (90, 270)):
+        read |= {turn: _names(read_printing(_turned(ink, turn)).words) for turn in turns}
+        if max(read.values()) >= ENOUGH:
+            break
     best = max(read, key=lambda turn: read[turn])
-    others = max((n for turn, n in read.items() if turn != best), default=0)
+    others = max(n for turn, n in read.items() if turn != best)
     if read[best] > others:
         return best
     return 90 if sideways else 0
@@ -50,19 +51,20 @@ def turn_page(page: Page, turn_deg: int) -> Page:
     return replace(page, pixels=pixels, source=replace(page.source, dpi=dpi))
 
 
-def _ruled_part(ink: Ink) -> np.ndarray:
-    """Density within the ruled area, away from the edges of the sheet and what lies beside it."""
+def _ruled_part(ink: Ink) -> Ink:
+    """The ruled area, away from the edges of the sheet and what lies beside it."""
     left, top, right, bottom = ink.ruled_mm
     rows = slice(max(int(ink.raster.row(top + 5)), 0), max(int(ink.raster.row(bottom - 5)), 1))
     cols = slice(max(int(ink.raster.col(left + 5)), 0), max(int(ink.raster.col(right - 5)), 1))
-    return np.where(ink.hidden, 0, ink.density)[rows, cols]
+    return replace(ink, density=ink.density[rows, cols], hidden=ink.hidden[rows, cols])
 
 
-def _concentration(density: np.ndarray, axis: int) -> float:
-    """How unevenly ink is spread over lines along an axis: rows of trace gather it."""
-    profile = np.maximum(density, 0).sum(axis=axis)
-    profile = sp.ndimage.gaussian_filter1d(profile, 8.0)
-    return float(np.mean(profile**2) / max(np.mean(profile) ** 2, 1e-9))
+def _row_share(ink: Ink) -> float:
+    """Mean share of the width over which the rows of trace that are seen have ink."""
+    rows = find_rows(ink, ())
+    wide_mm = ink.density.shape[1] / ink.raster.px_per_mm
+    inked = [coverage_mm(rows.runs, row.y_mm) for row in rows.rows]
+    return float(np.mean(inked)) / wide_mm if inked else 0.0
 
 
 def _names(words: tuple[Word, ...]) -> int:
