@@ -23,6 +23,9 @@ _REACH_MM = 45.0  # a trace may stray so far from its usual height: 4.5 mV at 10
 _ENTRY_PER_MM = 0.05  # price of starting away from the usual height of the trace
 _ENTRY_FREE_MM = 5.0
 _ASTRAY_PER_MM = 2e-3 / 6  # bareness for each millimetre off that height
+_ASTRAY_PER_ROW = 0.3  # and for each row's distance beyond the reach of its own
+_OWN_ROWS = 0.6  # of a row's distance to each side
+_ROW_MM = 25.0  # distance of rows where there is one only; common practice
 _HALF_PEN_MM = 0.25  # ink about a path that is surely its own
 _SWEEPS = 2
 EDGE = 0.5  # density at the edge of a full stroke
@@ -59,7 +62,8 @@ def find_routes(ink: Ink, layout: Layout) -> Routes:
     field = to_field(clear, ink.raster)
     anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
     field = replace(field, pen_mm=_thickness_mm(field, anchors))
-    paths = [_search(field, p, a) for p, a in zip(panels, anchors, strict=True)]
+    row_mm = _row_distance_mm(panels)
+    paths = [_search(field, p, a, row_mm) for p, a in zip(panels, anchors, strict=True)]
     return Routes(field, clear, anchors, _apart(field, paths, panels, anchors))
 
 
@@ -83,6 +87,12 @@ def to_ways(
     ]
     slack = round(raster.px_per_mm / routes.field.px_per_mm)
     return tuple(_way(k, fine, routes.clear, raster.px_per_mm, slack) for k in range(len(fine)))
+
+
+def _row_distance_mm(panels: tuple[PanelPlace, ...]) -> float:
+    """Usual distance of the rows."""
+    levels = np.array(sorted({panel.row: panel.baseline_mm for panel in panels}.values()))
+    return max(float(np.median(np.diff(levels))), 5.0) if len(levels) > 1 else _ROW_MM
 
 
 def _thickness_mm(field: Field, anchors: list[np.ndarray]) -> float:
@@ -114,7 +124,11 @@ def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
 
 
 def _search(
-    field: Field, panel: PanelPlace, anchor: np.ndarray, others: tuple[Path, ...] = ()
+    field: Field,
+    panel: PanelPlace,
+    anchor: np.ndarray,
+    row_mm: float,
+    others: tuple[Path, ...] = (),
 ) -> Path:
     """Path of one panel from its left to its right edge."""
     reach_mm = panel.baseline_mm - _REACH_MM, panel.baseline_mm + _REACH_MM
@@ -125,6 +139,7 @@ def _search(
     entry = _ENTRY_PER_MM * np.maximum(off_mm - _ENTRY_FREE_MM, 0)
     rows, cols = (int(top), int(bottom)), (left, right)
     astray = _ASTRAY_PER_MM * off_mm
+    astray += _ASTRAY_PER_ROW * np.maximum(off_mm / row_mm - _OWN_ROWS, 0)
     return walk(field, rows, cols, anchor, (entry, entry), others=others, extra=astray)[0]
 
 
@@ -135,13 +150,13 @@ def _apart(
     anchors: list[np.ndarray],
 ) -> list[Path]:
     """Paths searched again until none follows another's ink, or twice."""
-    half = round(_HALF_PEN_MM * field.px_per_mm)
+    half, row_mm = round(_HALF_PEN_MM * field.px_per_mm), _row_distance_mm(panels)
     paths = list(paths)
     for _ in range(_SWEEPS):
         again = [k for k in range(len(paths)) if _overlap(k, paths, half)]
         for k in again:
             others = tuple(paths[:k] + paths[k + 1 :])
-            paths[k] = _search(field, panels[k], anchors[k], others)
+            paths[k] = _search(field, panels[k], anchors[k], row_mm, others)
         if not again:
             break
     return paths
