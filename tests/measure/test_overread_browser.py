@@ -8,8 +8,11 @@ import json
 import os
 import re
 import signal
+import socket
 import subprocess
 import sys
+import time
+import urllib.parse
 from pathlib import Path
 
 import numpy as np
@@ -347,9 +350,25 @@ def command(folder):
     env = {**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])}
     with subprocess.Popen(line, stdout=subprocess.PIPE, text=True, env=env) as server:
         try:
-            yield server, server.stdout.readline().split()[-1]
+            address = server.stdout.readline().split()[-1]
+            _wait_until_open(address)
+            yield server, address
         finally:
             server.kill()
+
+
+def _wait_until_open(address, seconds=30.0):
+    """The address is told just before the server listens."""
+    place = urllib.parse.urlsplit(address)
+    until = time.monotonic() + seconds
+    while True:
+        try:
+            socket.create_connection((place.hostname, place.port), timeout=1.0).close()
+            return
+        except OSError:
+            if time.monotonic() > until:
+                raise
+            time.sleep(0.1)
 
 
 def write_csv(path):
