@@ -29,7 +29,6 @@ _STEPS = 4  # Gauss-Newton steps in each
 _SETTLED_PX = 0.2
 STEP_MM = 0.05  # of paper between nodes: 2 ms at 25 mm/s
 _LEAST_MM, _MOST_MM = 0.03, 0.1  # second differences of an ECG, 3 and 10 uV, to begin with
-_TRUSTED = 0.2  # of the start's own bends: a pacing spike has them, a start in hidden ink too
 _FLOOR_PX2 = 1e-3  # no second difference is expected below 0.03 px: finer than any ink shows
 _NEIGHBOURS = 4  # nodes to each side that share one prior strength
 _WORSE = 0.2  # rise of the local cost, in squared standard deviations, that undoes a step
@@ -106,9 +105,8 @@ def fit_line(
         return sp.ndimage.maximum_filter1d(cols, window + 2)
 
     everywhere = np.ones(view.image.shape[1], bool)
-    bends = _mean_near(_curvature(y) ** 2)
-    usual = np.minimum(bends, (_MOST_MM * step_px / STEP_MM) ** 2)
-    spread = np.maximum(usual, _TRUSTED * bends) + (_LEAST_MM * step_px / STEP_MM) ** 2
+    start = np.minimum(_mean_near(_curvature(y) ** 2), (_MOST_MM * step_px / STEP_MM) ** 2)
+    spread = start + (_LEAST_MM * step_px / STEP_MM) ** 2
     damping = np.full(len(y), 0.01)
     for turn in range(rounds + 1):
         matrix, gradient, cost = normal_equations(y, *place, band, everywhere)
