@@ -24,11 +24,14 @@ class DrawnLine:
 
 @dataclass(frozen=True)
 class DrawnWord:
-    """A word of the document's own text: exact letters, the box of its glyphs, its direction."""
+    """A word of the document's own text: exact letters, the box of its glyphs, its direction.
+
+    `turn_deg` is how far clockwise it is turned from upright: 0, 90, 180, 270; None: aslant.
+    """
 
     text: str
     box_px: tuple[float, float, float, float]  # left, top, right, bottom
-    upright: bool
+    turn_deg: int | None
 
 
 @dataclass(frozen=True, eq=False)
@@ -43,10 +46,7 @@ class Drawing:
     unit_px_per_mm: float
 
     def turned(self, turn_deg: int, shape: tuple[int, int]) -> "Drawing":
-        """The drawing on the page turned clockwise by 90, 180 or 270 degrees.
-
-        Its words stand sideways then, as they did on the page before they could be read.
-        """
+        """The drawing on a page of (rows, cols) turned clockwise by 90, 180 or 270 degrees."""
         rows, cols = shape
         turn, shift = {
             90: ([[0, -1], [1, 0]], (rows - 1, 0)),
@@ -57,4 +57,10 @@ class Drawing:
         lines = tuple(
             replace(line, points_px=line.points_px @ matrix.T + offset) for line in self.lines
         )
-        return replace(self, lines=lines, words=())
+        words = []
+        for word in self.words:
+            corners = np.array([word.box_px[:2], word.box_px[2:]]) @ matrix.T + offset
+            (left, top), (right, bottom) = np.sort(corners, axis=0).tolist()
+            own = None if word.turn_deg is None else (word.turn_deg + turn_deg) % 360
+            words.append(DrawnWord(word.text, (left, top, right, bottom), own))
+        return replace(self, lines=lines, words=tuple(words))

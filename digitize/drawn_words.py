@@ -16,7 +16,7 @@ def drawn_printing(drawing: Drawing, grid: Grid) -> Printing | None:
 
     Names may be missing from the text although the page shows them: they may be drawn as lines.
     """
-    words = [_word(word, grid) for word in drawing.words if word.upright]
+    words = [_word(word, grid) for word in drawing.words if word.turn_deg == 0]
     if not any(max(word.names.values()) == 0 for word in words):
         return None
     return Printing(

@@ -10,7 +10,7 @@ import pypdfium2.raw as pdfium_c
 
 from digitize.drawing import DrawnWord
 
-_TURNED = 0.02  # slope from which text counts as turned
+_ASLANT_DEG = 1.5  # off the nearest quarter turn
 _WORD_GAP, _WORD_OVERLAP = 0.35, 0.4  # of the letter height: letters of one word
 
 Frame = tuple[float, float, float, float]  # left, top, right, bottom
@@ -26,21 +26,21 @@ def words_of(page: pdfium.PdfPage, to_px: tuple[float, ...]) -> Iterator[DrawnWo
         The matrix a b c d e f from page space to pixels.
     """
     text = page.get_textpage()
-    word, box, upright = "", (0.0, 0.0, 0.0, 0.0), True
+    word, box, turn_deg = "", (0.0, 0.0, 0.0, 0.0), None
     for k in range(text.count_chars()):
         letter = chr(pdfium_c.FPDFText_GetUnicode(text, k))
         own = _letter_box(text, k, to_px)
-        level = _is_level(text, k, to_px)
-        if word and (letter.isspace() or not _follows(box, own) or level != upright):
-            yield DrawnWord(word, box, upright)
+        own_turn = _turn_deg(text, k, to_px)
+        if word and (letter.isspace() or not _follows(box, own, turn_deg) or own_turn != turn_deg):
+            yield DrawnWord(word, box, turn_deg)
             word = ""
         if letter.isspace() or not letter.isprintable():
             continue
-        upright = level
+        turn_deg = own_turn
         box = _around(box, own) if word else own
         word += letter
     if word:
-        yield DrawnWord(word, box, upright)
+        yield DrawnWord(word, box, turn_deg)
     text.close()
 
 
@@ -53,23 +53,24 @@ def _letter_box(text: pdfium.PdfTextPage, k: int, to_px: tuple[float, ...]) -> F
     return float(x0), float(y0), float(x1), float(y1)
 
 
-def _is_level(text: pdfium.PdfTextPage, k: int, to_px: tuple[float, ...]) -> bool:
-    """Whether a letter stands upright on the rendered page."""
-    angle = pdfium_c.FPDFText_GetCharAngle(text, k)
-    a, b, c, d, _, _ = to_px
-    across, down = (
-        (a * math.cos(angle) + c * math.sin(angle)),
-        (b * math.cos(angle) + d * math.sin(angle)),
-    )
-    return across > 0 and abs(down) < _TURNED * across
+def _turn_deg(text: pdfium.PdfTextPage, k: int, to_px: tuple[float, ...]) -> int | None:
+    """How far clockwise a letter is turned on the rendered page, in quarter turns."""
+    m = pdfium_c.FS_MATRIX()
+    pdfium_c.FPDFText_GetMatrix(text, k, m)
+    across, down = to_px[0] * m.a + to_px[2] * m.b, to_px[1] * m.a + to_px[3] * m.b
+    turn_deg = math.degrees(math.atan2(down, across))
+    quarter = round(turn_deg / 90) * 90
+    return quarter % 360 if abs(turn_deg - quarter) < _ASLANT_DEG else None
 
 
-def _follows(word: Frame, letter: Frame) -> bool:
+def _follows(word: Frame, letter: Frame, turn_deg: int | None) -> bool:
     """Whether a letter stands next to a word on its line."""
-    high = max(word[3] - word[1], letter[3] - letter[1])
-    overlap = min(word[3], letter[3]) - max(word[1], letter[1])
-    gap = letter[0] - word[2]
-    low = min(word[3] - word[1], letter[3] - letter[1])
+    along, over = (1, 0) if turn_deg in (90, 270) else (0, 1)
+    high = max(word[over + 2] - word[over], letter[over + 2] - letter[over])
+    low = min(word[over + 2] - word[over], letter[over + 2] - letter[over])
+    overlap = min(word[over + 2], letter[over + 2]) - max(word[over], letter[over])
+    backward = turn_deg in (180, 270)
+    gap = word[along] - letter[along + 2] if backward else letter[along] - word[along + 2]
     return bool(overlap >= _WORD_OVERLAP * low and -high < gap < _WORD_GAP * high)
 
 

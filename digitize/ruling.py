@@ -15,7 +15,8 @@ from digitize.pagemap import PageMap
 
 LONG = 0.12  # of the page: shorter straight lines are no ruling
 LEVEL = 1e-3  # slope of a line that runs along the page
-FEWEST = 8  # lines of a comb
+FEWEST, FEWEST_ALONG = 8, 20  # lines of a comb, and of the longer one: tables have fewer columns
+SQUARE = 0.05  # natural log of the two scales: elsewhere 5 mm is not the same both ways
 ON_COMB = 0.03  # of the spacing
 EVEN = 0.6  # share of the long lines that must stand on the comb
 SPACINGS_MM = (1.0, 5.0, 10.0)  # of ruled lines, common practice
@@ -41,10 +42,12 @@ def find_ruling(drawing: Drawing, page_shape: tuple[int, int]) -> Grid | None:
     """
     upright, level = _long_lines(drawing, page_shape)
     across, down = _comb(upright), _comb(level)
-    if across is None or down is None:
+    if across is None or down is None or max(len(upright), len(level)) < FEWEST_ALONG:
         return None
     mm = _spacings_mm(across, down, drawing.unit_px_per_mm)
     scale = across.spacing_px / mm[0], down.spacing_px / mm[1]
+    if abs(np.log(scale[0] / scale[1])) > SQUARE:
+        return None
     # The origin moves next to the top left corner; 5 mm lines stay at multiples of five.
     start = [
         comb.first_px - 5 * px_per_mm * np.floor(comb.first_px / (5 * px_per_mm))

@@ -8,6 +8,7 @@ from pathlib import Path
 
 import matplotlib as mpl
 import numpy as np
+import pypdfium2 as pdfium
 import pytest
 from matplotlib.backends.backend_pdf import FigureCanvasPdf
 from matplotlib.figure import Figure
@@ -98,4 +99,14 @@ def test_a_page_printed_smaller_has_the_same_millivolts(tmp_path: Path) -> None:
     truth = plot(tmp_path / "small.pdf", size=0.75)
     stages = read(tmp_path / "small.pdf")
     assert stages.grid.px_per_mm == pytest.approx((0.75 * 300 / 25.4,) * 2, rel=2e-3)
+    assert worst_db(stages, truth) > 60
+
+
+def test_a_page_turned_sideways_is_turned_back(tmp_path: Path) -> None:
+    truth = plot(tmp_path / "plot.pdf")
+    with pdfium.PdfDocument(tmp_path / "plot.pdf") as document:
+        document[0].set_rotation(90)
+        document.save(tmp_path / "turned.pdf")
+    stages = read(tmp_path / "turned.pdf")
+    assert stages.tracing.geometry["turn_deg"] == 270
     assert worst_db(stages, truth) > 60

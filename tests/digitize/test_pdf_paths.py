@@ -133,7 +133,7 @@ def test_words_come_with_the_box_that_is_seen() -> None:
     text = b"BT /F 20 Tf 1 0 0 1 30 60 Tm (aVR  V1) Tj ET "
     words = drawing_of(opened(text + b"0 0 m 1 0 l S")).words
     assert [word.text for word in words] == ["aVR", "V1"]
-    assert all(word.upright for word in words)
+    assert [word.turn_deg for word in words] == [0, 0]
     grey = opened(text).render(scale=SCALE).to_numpy().mean(axis=2)
     rows, cols = np.nonzero(grey < 200)
     left, top = words[0].box_px[:2]
@@ -143,9 +143,16 @@ def test_words_come_with_the_box_that_is_seen() -> None:
     np.testing.assert_allclose([left, top, right, bottom], seen, atol=1.5)
 
 
-def test_sideways_text_is_not_upright() -> None:
-    words = drawing_of(opened(b"BT /F 20 Tf 0 1 -1 0 60 30 Tm (aVR) Tj ET " + LINE)).words
-    assert [word.upright for word in words][:1] == [False]
+@pytest.mark.parametrize(
+    ("matrix", "turn_deg"),
+    [(b"0 1 -1 0", 270), (b"-1 0 0 -1", 180), (b"0 -1 1 0", 90), (b"1 0.3 -0.3 1", None)],
+)
+def test_words_know_how_they_are_turned(matrix: bytes, turn_deg: int | None) -> None:
+    text = b"BT /F 20 Tf %s 90 70 Tm (aVR) Tj ET " % matrix
+    words = drawing_of(opened(text + LINE)).words
+    assert words[0].turn_deg == turn_deg
+    if turn_deg is not None:
+        assert [word.text for word in words] == ["aVR"]
 
 
 @pytest.mark.parametrize("turn_deg", [90, 180, 270])
@@ -157,3 +164,11 @@ def test_turned_drawing_follows_its_pixels(turn_deg: int) -> None:
     turned = drawing.turned(turn_deg, pixels.shape)
     want_row, want_col = np.argwhere(np.rot90(pixels, -turn_deg // 90))[0]
     np.testing.assert_allclose(turned.lines[0].points_px[0], [want_col, want_row], atol=0.51)
+
+
+def test_words_stand_upright_once_the_page_is_turned() -> None:
+    drawing = drawing_of(opened(b"BT /F 20 Tf 0 1 -1 0 90 70 Tm (aVR) Tj ET " + LINE))
+    turned = drawing.turned(90, (600, 800))
+    assert turned.words[0].turn_deg == 0
+    left, top, right, bottom = turned.words[0].box_px
+    assert right - left > bottom - top > 0

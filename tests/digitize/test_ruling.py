@@ -66,4 +66,6 @@ def test_uneven_or_few_lines_are_no_ruling() -> None:
     levels = [line(30, y, 1660, y) for y in rng.uniform(0, 1200, 40)]
     assert find_ruling(drawing(uneven + levels), SHAPE) is None
     assert find_ruling(drawing(ruled(400.0, 400.0)), SHAPE) is None
+    assert find_ruling(drawing(ruled(110.0, 110.0)), SHAPE) is None  # 15 columns: a table
+    assert find_ruling(drawing(ruled(40.0, 59.0)), SHAPE) is None  # what is 5 mm here?
     assert find_ruling(drawing([]), SHAPE) is None
