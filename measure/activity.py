@@ -7,6 +7,7 @@ away from its baseline by more than a deflection must have to count.
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 import scipy as sp
@@ -34,9 +35,8 @@ class Leads:
 
     def slopes(self, width_ms: int) -> np.ndarray:
         """Slope of each lead in mV/s from a parabola over `width_ms`, (leads, n)."""
-        return 1000 * sp.signal.savgol_filter(
-            self.mv, width_ms | 1, 2, deriv=1, axis=1, mode="nearest"
-        )
+        kernel = _parabola_slope(width_ms | 1)
+        return 1000 * sp.ndimage.convolve1d(self.mv, kernel, axis=1, mode="nearest")
 
     def size(self, values: np.ndarray) -> np.ndarray:
         """Weighted root mean square over the leads measured at each moment, (n,).
@@ -47,8 +47,8 @@ class Leads:
         weight = np.where(self.seen, self.weight[:, None], 0)
         squares = weight * values**2
         several = self.seen.sum(axis=0) >= _SEVERAL
-        most = np.argmax(squares, axis=0)[None, :]
-        left_out = [np.take_along_axis(a, most, axis=0)[0] for a in (squares, weight)]
+        most = np.argmax(squares, axis=0), np.arange(squares.shape[1])
+        left_out = squares[most], weight[most]
         total = squares.sum(axis=0) - np.where(several, left_out[0], 0)
         return np.sqrt(total / np.maximum(weight.sum(axis=0) - several * left_out[1], 1e-9))
 
@@ -60,6 +60,12 @@ class Leads:
     def distance(self, level: np.ndarray) -> np.ndarray:
         """Root mean square distance in mV of the leads from their levels, (n,)."""
         return self.size(self.mv - level)
+
+
+@cache
+def _parabola_slope(width: int) -> np.ndarray:
+    """Weights of the slope of a parabola through `width` samples, for a convolution."""
+    return sp.signal.savgol_coeffs(width, 2, deriv=1)
 
 
 def leads_of(time_ms: np.ndarray, mv: np.ndarray, chosen: Sequence[int] | None = None) -> Leads:

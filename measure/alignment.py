@@ -31,7 +31,7 @@ class Strip:
     start_s: float
     fs_hz: float
     spline: np.ndarray  # cubic B-spline coefficients of the bridged samples, (n,)
-    seen: np.ndarray  # 1.0 where there is a sample, (n,)
+    seen: np.ndarray  # True where there is a sample, (n,)
 
 
 def strip_of(panel: Panel, mv: np.ndarray) -> Strip:
@@ -40,7 +40,7 @@ def strip_of(panel: Panel, mv: np.ndarray) -> Strip:
     seen = np.isfinite(mv)
     bridged = np.interp(index, index[seen], mv[seen]) if seen.any() else np.zeros(len(mv))
     spline = sp.ndimage.spline_filter1d(bridged, order=3, mode="nearest")
-    return Strip(panel.start_s, panel.fs_hz, spline, seen.astype(float))
+    return Strip(panel.start_s, panel.fs_hz, spline, seen)
 
 
 def cut_beats(strips: Sequence[Strip], at_s: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:
@@ -59,14 +59,15 @@ def align_beats(
     Beats that show the same leads (a column) are aligned by all of them, then moved as one.
     """
     shift_ms = np.zeros(len(at_s))
-    seen = np.isfinite(cut_beats(strips, at_s, raster_ms)).any(axis=2)
+    near_ms = raster_ms[_near(raster_ms, 1)]
+    seen = np.isfinite(cut_beats(strips, at_s, near_ms)).any(axis=2)
     _, column = np.unique(seen, axis=1, return_inverse=True)
     averages = []
     for number in range(int(column.max()) + 1):
         members = np.flatnonzero(column == number)
         for turn in range(_ROUNDS):
-            cut = cut_beats(strips, at_s[members] + shift_ms[members] / 1000, raster_ms)
-            shift_ms[members] += _shifts(cut, raster_ms, medoid=turn == 0)
+            cut = cut_beats(strips, at_s[members] + shift_ms[members] / 1000, near_ms)
+            shift_ms[members] += _shifts(cut, near_ms, medoid=turn == 0)
             shift_ms[members] -= np.median(shift_ms[members])
         cut = cut_beats(strips, at_s[members] + shift_ms[members] / 1000, raster_ms)
         averages.append(quiet_mean(cut, axis=1))
@@ -118,13 +119,16 @@ def quiet_mean(values: np.ndarray, axis: int) -> np.ndarray:
 def _cut(strip: Strip, at_s: np.ndarray, raster_ms: np.ndarray) -> np.ndarray:
     """One lead around each beat, (beats, n)."""
     at = (at_s[:, None] + raster_ms[None, :] / 1000 - strip.start_s) * strip.fs_hz
-    values = sp.ndimage.map_coordinates(
-        strip.spline, at[None], order=3, mode="nearest", prefilter=False
-    )
-    index = np.arange(len(strip.seen))
-    values[np.interp(at, index, strip.seen, left=0, right=0) < 1 - 1e-9] = np.nan
+    left, right = np.floor(at).astype(int), np.ceil(at).astype(int)
+    last = len(strip.seen) - 1
+    seen = (left >= 0) & (right <= last)
+    seen &= strip.seen[np.clip(left, 0, last)] & strip.seen[np.clip(right, 0, last)]
     qrs = (raster_ms >= QRS_MS[0]) & (raster_ms <= QRS_MS[1])
-    values[~np.isfinite(values[:, qrs]).all(axis=1)] = np.nan
+    seen &= seen[:, qrs].all(axis=1, keepdims=True)
+    values = np.full(at.shape, np.nan)
+    values[seen] = sp.ndimage.map_coordinates(
+        strip.spline, at[seen][None], order=3, mode="nearest", prefilter=False
+    )
     return values
 
 
@@ -144,27 +148,48 @@ def _shifts(cut: np.ndarray, raster_ms: np.ndarray, *, medoid: bool) -> np.ndarr
     The reference is the average, or at first, when the average is still blurred, that one of a
     few beats which the others fit best.
     """
-    inside = (raster_ms >= ALIGN_MS[0]) & (raster_ms <= ALIGN_MS[1])
-    places = np.flatnonzero(inside)
-    slope = np.diff(cut, axis=2)
+    slope = np.diff(cut, axis=2)[:, :, _near(raster_ms)]
+    inner = slice(-int(_SHIFTS_MS[0]), slope.shape[2] - int(_SHIFTS_MS[-1]))
     if medoid:
         tried = np.unique(np.linspace(0, cut.shape[1] - 1, _MEDOIDS + 2).astype(int)[1:-1])
-        references = [slope[:, k : k + 1, places] for k in tried]
+        references = [slope[:, k, inner] for k in tried]
     else:
-        references = [quiet_mean(slope[:, :, places], axis=1)[:, None, :]]
-    costs = [_costs(slope, reference, places) for reference in references]
-    cost = min(costs, key=lambda c: float(c.min(axis=1).sum()))
+        references = [quiet_mean(slope[:, :, inner], axis=1)]
+    cost = min(_costs(slope, references), key=lambda c: float(c.min(axis=1).sum()))
     best = np.argmin(cost, axis=1)
     return np.array([_vertex(row, k) for row, k in zip(cost, best, strict=True)])
 
 
-def _costs(slope: np.ndarray, reference: np.ndarray, places: np.ndarray) -> np.ndarray:
-    """Squared difference of each beat from the reference at each shift, (beats, shifts)."""
-    steps = _SHIFTS_MS.astype(int)  # the raster's step is 1 ms
-    return np.stack(
-        [np.nansum((slope[:, :, places + step] - reference) ** 2, axis=(0, 2)) for step in steps],
-        axis=1,
-    )
+def _near(raster_ms: np.ndarray, beyond_ms: float = 0) -> slice:
+    """The places at which a beat may be looked at while it is shifted; the step is 1 ms."""
+    low_ms, high_ms = ALIGN_MS[0] + _SHIFTS_MS[0], ALIGN_MS[1] + _SHIFTS_MS[-1] + beyond_ms
+    start, stop = np.searchsorted(raster_ms, [low_ms - 0.5, high_ms + 0.5])
+    return slice(int(start), int(stop))
+
+
+def _costs(slope: np.ndarray, references: Sequence[np.ndarray]) -> list[np.ndarray]:
+    """Squared difference of each beat from each reference at each shift, (beats, shifts).
+
+    Over the places p that both show, the sum of (slope[p + shift] - reference[p]) squared is three
+    correlations, which are products of spectra. `slope` is (leads, beats, n) and holds the places
+    at every shift, a reference (leads, n - shifts + 1).
+    """
+    size = sp.fft.next_fast_len(slope.shape[2], real=True)
+    beats = [sp.fft.rfft(part, size) for part in _squares_values_ones(slope)]
+    costs = []
+    for reference in references:
+        squares, values, ones = (
+            sp.fft.rfft(part, size).conj()[:, None] for part in _squares_values_ones(reference)
+        )
+        spectrum = beats[0] * ones - 2 * beats[1] * values + beats[2] * squares
+        costs.append(sp.fft.irfft(spectrum.sum(axis=0), size)[:, : len(_SHIFTS_MS)])
+    return costs
+
+
+def _squares_values_ones(values: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Squares, values, and 1 for each value; 0 where there is none."""
+    filled = np.nan_to_num(values)
+    return filled**2, filled, np.isfinite(values).astype(float)
 
 
 def _vertex(cost: np.ndarray, k: int) -> float:

@@ -8,6 +8,7 @@ and by timing.
 
 import itertools
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 import scipy as sp
@@ -124,30 +125,43 @@ def _activity(mv: np.ndarray, band_hz: tuple[float, float]) -> np.ndarray:
     """
     total = np.zeros(mv.shape[1])
     usual = np.full(mv.shape[1], 1e-9)
-    for row in mv:
-        seen = np.isfinite(row)
-        if seen.sum() < 0.4 * FS_HZ:
-            continue
-        first, last = np.flatnonzero(seen)[[0, -1]]
-        envelope = _envelope(row[first : last + 1], band_hz)
-        scale, contrast = _scale_and_contrast(envelope)
-        if scale > 0:
-            inside = seen[first : last + 1]
-            envelope = np.minimum(envelope, _MOST * scale)
-            total[first : last + 1] += np.where(inside, contrast * envelope**2, 0)
-            usual[first : last + 1] += np.where(inside, contrast * scale**2, 0)
+    for (first, stop), rows in _by_extent(mv).items():
+        panels = mv[rows, first:stop]
+        for envelope, seen in zip(_envelopes(panels, band_hz), np.isfinite(panels), strict=True):
+            scale, contrast = _scale_and_contrast(envelope)
+            if scale > 0:
+                height = np.minimum(envelope, _MOST * scale)
+                total[first:stop] += np.where(seen, contrast * height**2, 0)
+                usual[first:stop] += np.where(seen, contrast * scale**2, 0)
     return np.sqrt(total / usual)
 
 
-def _envelope(row: np.ndarray, band_hz: tuple[float, float]) -> np.ndarray:
-    """Smoothed size of one panel within a band of frequencies."""
-    index = np.arange(len(row))
-    seen = np.isfinite(row)
-    bridged = np.interp(index, index[seen], row[seen])
-    sos = sp.signal.butter(2, band_hz, "bandpass", fs=FS_HZ, output="sos")
-    steep = sp.signal.sosfiltfilt(sos, bridged, padtype="even", padlen=min(len(row) - 1, 100))
-    window = sp.signal.windows.hann(_samples(2 * _ENVELOPE_MS))
-    return np.sqrt(np.maximum(np.convolve(steep**2, window / window.sum(), "same"), 0))
+def _by_extent(mv: np.ndarray) -> dict[tuple[int, int], list[int]]:
+    """Rows by where they begin and end; those too short to show a beat are left out."""
+    rows: dict[tuple[int, int], list[int]] = {}
+    for number, seen in enumerate(np.isfinite(mv)):
+        if seen.sum() >= 0.4 * FS_HZ:
+            first, last = np.flatnonzero(seen)[[0, -1]]
+            rows.setdefault((int(first), int(last) + 1), []).append(number)
+    return rows
+
+
+def _envelopes(panels: np.ndarray, band_hz: tuple[float, float]) -> np.ndarray:
+    """Smoothed size of each panel within a band of frequencies, (panels, n)."""
+    index = np.arange(panels.shape[1])
+    known = np.isfinite(panels)
+    bridged = [np.interp(index, index[k], row[k]) for row, k in zip(panels, known, strict=True)]
+    pad = min(panels.shape[1] - 1, 100)
+    steep = sp.signal.sosfiltfilt(_band(band_hz), np.array(bridged), padtype="even", padlen=pad)
+    window = sp.signal.windows.hann(_samples(2 * _ENVELOPE_MS))[None]
+    energy = sp.signal.fftconvolve(steep**2, window / window.sum(), "same", axes=1)
+    return np.sqrt(np.maximum(energy, 0))
+
+
+@cache
+def _band(band_hz: tuple[float, float]) -> np.ndarray:
+    """Second-order sections of the filter that lets a band pass."""
+    return sp.signal.butter(2, band_hz, "bandpass", fs=FS_HZ, output="sos")
 
 
 def _scale_and_contrast(envelope: np.ndarray) -> tuple[float, float]:

@@ -62,8 +62,9 @@ def _root_of_squares(mv: np.ndarray) -> np.ndarray:
 
 def _median_level(mv: np.ndarray) -> np.ndarray:
     """Running median wider than a spike: what is left of the trace when spikes are gone."""
-    filled = np.nan_to_num(mv)
-    return sp.ndimage.median_filter(filled, size=(1, 2 * _samples(_NARROW_MS) + 1))
+    width = 2 * _samples(_NARROW_MS) + 1
+    # Row by row: the one-dimensional filter is several times quicker.
+    return np.array([sp.ndimage.median_filter(row, size=width) for row in np.nan_to_num(mv)])
 
 
 def _steepest(step: np.ndarray, from_ms: float, to_ms: float) -> np.ndarray:

@@ -1,12 +1,13 @@
 """The whole reading: every stage in turn, and what a person must be told."""
 
 import time
+from collections.abc import Callable
 from dataclasses import replace
 
 import pytest
 
 from digitize.errors import NoTrace
-from digitize.tracing import Check, Known
+from digitize.tracing import Check, Known, Tracing
 from measure.reading import Person, read
 from tests.drawn.heart import HeartSpec
 from tests.measure.model import as_page, digital
@@ -91,10 +92,16 @@ def test_inputs_are_not_altered() -> None:
         assert (panel.mv == mv).all()
 
 
-def test_a_reading_takes_a_fraction_of_a_second() -> None:
-    tracing = digital(HeartSpec(seed=93))
+@pytest.mark.parametrize("change", [lambda tracing: tracing, as_page], ids=["digital", "page"])
+def test_a_reading_takes_a_fraction_of_a_second(change: Callable[[Tracing], Tracing]) -> None:
+    tracing = change(digital(HeartSpec(seed=93)))
     read(tracing)
+    # Processor time, and the best of several runs: other processes on the same core empty its
+    # caches, which makes one run slower by half, but never makes one quicker.
+    assert min(_seconds(tracing) for _ in range(7)) < 0.3  # what was asked for, on one core
+
+
+def _seconds(tracing: Tracing) -> float:
     start = time.process_time()
     read(tracing)
-    # asked for: 0.3 s on one core; twice that here, since other processes share the machine
-    assert time.process_time() - start < 0.6
+    return time.process_time() - start
