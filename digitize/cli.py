@@ -75,6 +75,9 @@ def page(
     timings: Annotated[
         bool, typer.Option("--timings", help="Print how long each stage took (stderr).")
     ] = False,
+    explain: Annotated[
+        bool, typer.Option("--explain", help="Write NAME.explain-*.png, one for each stage.")
+    ] = False,
 ) -> None:
     """Read each page of each file: NAME.csv, NAME.json and NAME.overlay.png.
 
@@ -98,7 +101,13 @@ def page(
 
     with console(len(files)) as shown_on:
         failed = read_files(
-            files, options, shown_on, folder=output, replace=replace, timings=timings
+            files,
+            options,
+            shown_on,
+            folder=output,
+            replace=replace,
+            timings=timings,
+            explain=explain,
         )
     raise typer.Exit(1 if failed else 0)
 

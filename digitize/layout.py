@@ -73,6 +73,7 @@ class Layout:
     marks: tuple[Box, ...]  # calibration marks: not part of any trace
     words: tuple[Box, ...]  # printing on or near the traces: not part of any trace
     notes: tuple[str, ...] = ()
+    considered: tuple[tuple[str, float], ...] = ()  # layouts with top row, log odds; best first
 
 
 @dataclass(frozen=True)
@@ -94,6 +95,11 @@ class _Hypothesis:
     @property
     def name(self) -> str:
         return _full_name(self.template, self.strips)
+
+    @property
+    def described(self) -> str:
+        """Its name, and the leads of its first row to tell it from others of that name."""
+        return f"{self.name} ({', '.join(self.template.leads[0])})"
 
 
 def find_layout(
@@ -155,6 +161,7 @@ def find_layout(
         marks=tuple(mark_box(m, 1.0) for m in marks),
         words=printing.letters,
         notes=(*scale.notes, *_notes(best, margin, panels, hypotheses)),
+        considered=tuple((h.described, round(h.score, 2)) for h in hypotheses),
     )
 
 
@@ -314,10 +321,8 @@ def _notes(
 ) -> list[str]:
     notes = []
     if margin < SURE and len(hypotheses) > 1:
-        other = hypotheses[1]
-        first = ", ".join(lead for row in other.template.leads[:1] for lead in row)
         notes.append(
-            f"layout {best.name} is little likelier than {other.name} (top row {first}); "
+            f"layout {best.described} is little likelier than {hypotheses[1].described}; "
             "look at the lead names, or give --layout"
         )
     assumed = [p.lead for p in panels if p.lead_source == "assumed"]

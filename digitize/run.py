@@ -5,6 +5,7 @@ from pathlib import Path
 from digitize import CAUTION
 from digitize.console import Console
 from digitize.errors import InputError, OutputExists, at, shown
+from digitize.explain import PICTURES, draw_stage
 from digitize.options import Options
 from digitize.overlay import draw_overlay
 from digitize.read import Stages, read_stages
@@ -13,6 +14,7 @@ from digitize.tracing import Known
 from digitize.tracing_files import output_stem, tracing_files
 
 OVERLAY_ENDING = ".overlay.png"
+EXPLAINED = ".explain-"
 
 
 def read_files(
@@ -23,13 +25,14 @@ def read_files(
     folder: Path | None = None,
     replace: bool = False,
     timings: bool = False,
+    explain: bool = False,
 ) -> int:
     """Read every page of every file and write its CSV, JSON and overlay.
 
     Parameters
     ----------
     files : list of Path
-        Overlays among them are left out: they are results.
+        Pictures that this program drew are left out: they are results.
     options : Options
         What a person knows better than the pages.
     console : Console
@@ -40,6 +43,8 @@ def read_files(
         Whether earlier results may be replaced.
     timings : bool
         Whether to say how long each stage took.
+    explain : bool
+        Whether to write one picture per stage as well.
 
     Returns
     -------
@@ -56,8 +61,8 @@ def read_files(
 
     for file in files:
         console.begin(shown(file.name))
-        if file.name.endswith(OVERLAY_ENDING):
-            console.line(f"{shown(file.name)}: left out, an overlay is a result and not a scan")
+        if file.name.endswith(OVERLAY_ENDING) or EXPLAINED in file.name:
+            console.line(f"{shown(file.name)}: left out, it is a result and not a scan")
             console.end()
             continue
         try:
@@ -65,7 +70,11 @@ def read_files(
                 console.stage("files")
                 try:
                     stem = _write(
-                        stages, file.parent if folder is None else folder, written, replace
+                        stages,
+                        file.parent if folder is None else folder,
+                        written,
+                        replace=replace,
+                        explain=explain,
                     )
                 except InputError as error:
                     fail(at(error, file.name, stages.page.source.page))
@@ -82,15 +91,21 @@ def read_files(
     return failed
 
 
-def _write(stages: Stages, folder: Path, written: set[Path], replace: bool) -> Path:
-    """Write the three files of a page; their common name, which is added to `written`."""
+def _write(
+    stages: Stages, folder: Path, written: set[Path], *, replace: bool, explain: bool
+) -> Path:
+    """Write the files of a page; their common name, which is added to `written`."""
     stem = folder / output_stem(stages.page.source)
     if stem in written:
         raise OutputExists("another file of the same name was read before it: use -o")
     files = {folder / name: data for name, data in tracing_files(stages.tracing, stem.name).items()}
     overlay = folder / f"{stem.name}{OVERLAY_ENDING}"
-    refuse_existing([overlay, *files], replace=replace)  # before the drawing, which takes time
-    write_files({overlay: draw_overlay(stages.page, stages.tracing), **files}, replace=replace)
+    wanted = {folder / f"{stem.name}{EXPLAINED}{name}.png": name for name in PICTURES if explain}
+    # Before the drawing, which takes time.
+    refuse_existing([overlay, *wanted, *files], replace=replace)
+    pictures = {path: draw_stage(stages, name) for path, name in wanted.items()}
+    overlay_png = draw_overlay(stages.page, stages.tracing)
+    write_files({**pictures, overlay: overlay_png, **files}, replace=replace)
     written.add(stem)
     return stem
 

@@ -20,6 +20,7 @@ from digitize import CAUTION
 from digitize.checks import find_checks
 from digitize.cli import app
 from digitize.errors import NoGrid
+from digitize.explain import PICTURES
 from digitize.geometry import to_geometry
 from digitize.read import Stages
 from digitize.tracing import Known
@@ -111,6 +112,22 @@ def test_pages_of_one_file_get_names_of_their_own(tmp_path, stages):
         "chart.csv",
         "chart.p3.csv",
     ]
+
+
+def test_pictures_of_the_stages_are_written_only_when_asked_for(chart, monkeypatch):
+    monkeypatch.setattr("digitize.run.draw_stage", lambda stages, name: name.encode())
+    assert run(chart, "--explain").exit_code == 0
+    pictures = [chart.with_name(f"chart.explain-{name}.png") for name in PICTURES]
+    assert names(chart.parent) == sorted(["chart.png", *RESULTS, *(p.name for p in pictures)])
+    assert pictures[0].read_bytes() == b"1-grid"
+    # Results are not taken for scans, and not written over.
+    assert "chart.explain-1-grid.png: left out" in run(pictures[0]).stderr
+    for name in RESULTS:
+        (chart.parent / name).unlink()
+    again = run(chart, "--explain")
+    assert again.exit_code == 1
+    assert "is there already" in again.stderr
+    assert not any((chart.parent / name).exists() for name in RESULTS)
 
 
 def test_timings_go_to_stderr(chart):
