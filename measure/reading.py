@@ -72,11 +72,11 @@ def read(tracing: Tracing, person: Person | None = None) -> Reading:
         waves=waves,
         intervals=intervals,
         findings=judge(waves, boundaries, intervals, rhythm, beat, person),
-        cautions=_cautions(tracing, beats, beat),
+        cautions=cautions_of(tracing, beats, beat),
     )
 
 
-def _cautions(tracing: Tracing, beats: Beats, beat: DominantBeat) -> tuple[str, ...]:
+def cautions_of(tracing: Tracing, beats: Beats, beat: DominantBeat) -> tuple[str, ...]:
     """What a person must know before using the numbers."""
     cautions = list(_ALWAYS)
     cautions += [f"Check by eye: {check.message}" for check in tracing.checks if not check.passed]

@@ -30,7 +30,7 @@ from measure.overread.corrections import (
     in_force,
 )
 from measure.quantity import Quantity
-from measure.reading import Person, Reading, _cautions
+from measure.reading import Person, Reading, cautions_of
 from measure.rhythm import describe_rhythm
 from measure.waves import measure_waves
 
@@ -178,5 +178,5 @@ def _read_on(
         waves=waves,
         intervals=intervals,
         findings=judge(waves, boundaries, intervals, rhythm, beat, person),
-        cautions=_cautions(tracing, beats, beat),
+        cautions=cautions_of(tracing, beats, beat),
     )

@@ -14,6 +14,7 @@ from digitize.checks import find_checks
 from digitize.layout import Layout, PanelPlace
 from digitize.options import Options
 from digitize.read import Stages, to_tracing
+from digitize.refit import refit
 from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke
 from digitize.tracing import Known, Tracing
@@ -31,7 +32,6 @@ from measure.overread.corrections import (
     StrikeOut,
     Swap,
 )
-from measure.overread.refit import refit
 
 _JOINED_MM = 0.15  # nodes of one line stand 0.05 mm apart: more than this between two is a gap
 _STRUCK = "a stretch was struck out by a person"

@@ -18,10 +18,10 @@ from starlette.responses import JSONResponse, Response
 from starlette.routing import Route
 
 from digitize.errors import InputError
+from digitize.two_places import scale_from
 from measure.overread.corrections import Refused, from_plain
 from measure.overread.export import EXPORTS, export
 from measure.overread.guard import Guard
-from measure.overread.scale import scale_from
 from measure.overread.session import Session
 from measure.overread.view import overview
 from measure.overread.worklist import Entry, Worklist
@@ -126,8 +126,8 @@ def _scaled(worklist: Worklist, entry: Entry, wish: Mapping[str, Any]) -> Respon
     try:
         points = [[float(v) for v in point] for point in wish["points"]]
         scale = scale_from(points, float(wish["mm"]), entry.source.dpi)
-    except Refused as refused:
-        return _no(str(refused), 422)
+    except InputError as error:
+        return _no(str(error), 422)
     except (KeyError, TypeError, ValueError):
         return _no("The request is not complete.", 400)
     worklist.read_with_scale(entry, scale)

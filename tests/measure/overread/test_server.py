@@ -4,7 +4,7 @@ import json
 
 import pytest
 
-from tests.measure.made_overread import digital_chain, serving, worklist
+from tests.measure.overread.made import digital_chain, serving, worklist
 
 guards = pytest.importorskip("measure.overread.guard", reason="the extra `overread` is missing")
 httpx = pytest.importorskip("httpx", reason="httpx, which plays the browser, is not installed")

@@ -22,7 +22,7 @@ from PIL import Image
 from digitize.options import Options
 from measure.overread.worklist import Worklist
 from measure.reading import Person
-from tests.measure.made_overread import digital_chain, page_chain, serving, worklist
+from tests.measure.overread.made import digital_chain, page_chain, serving, worklist
 
 sync_api = pytest.importorskip("playwright.sync_api", reason="playwright is not installed")
 pytest.importorskip("measure.overread.server", reason="the extra `overread` is missing")
@@ -347,7 +347,7 @@ def command(folder):
     """`measure overread` as a process of its own, and the address that it prints."""
     start = "from measure.cli import main; main()"
     line = [sys.executable, "-c", start, "overread", "--no-browser", folder / "model.csv"]
-    env = {**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])}
+    env = {**os.environ, "PYTHONPATH": str(Path(__file__).parents[3])}
     with subprocess.Popen(line, stdout=subprocess.PIPE, text=True, env=env) as server:
         try:
             address = server.stdout.readline().split()[-1]

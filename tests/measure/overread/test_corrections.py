@@ -5,7 +5,7 @@ import json
 import numpy as np
 import pytest
 
-from digitize.errors import CannotWrite, UnreadableFile
+from digitize.errors import CannotWrite, NoTrace, UnreadableFile
 from measure.overread.corrections import (
     BeatUse,
     Boundary,
@@ -24,9 +24,8 @@ from measure.overread.corrections import (
     in_force,
     to_plain,
 )
-from measure.overread.scale import scale_from
 from measure.overread.session import UNSIGNED
-from tests.measure.made_overread import digital_chain, page_chain, page_stages, session
+from tests.measure.overread.made import digital_chain, page_chain, page_stages, session
 
 EVERY = (
     LeadName(0, "V1"),
@@ -198,9 +197,9 @@ def test_a_stretch_redrawn_coarsely_is_fitted_to_the_ink():
 def test_nothing_is_drawn_where_there_is_no_ink():
     left, top, right, _ = page_stages().tracing.panels[0].box_mm
     bare = ((left + 15.0, top - 8.0), (left + 25.0, top - 8.0))
-    with pytest.raises(Refused, match="no ink"):
+    with pytest.raises(NoTrace, match="no ink"):
         page_chain().reading([Redraw(0, bare)])
-    with pytest.raises(Refused, match="beside the panel"):
+    with pytest.raises(NoTrace, match="beside the panel"):
         page_chain().reading([Redraw(0, ((right + 30, top), (right + 40, top)))])
 
 
@@ -218,22 +217,6 @@ def test_moved_edges_cut_another_stretch_of_the_same_line():
 def test_a_panel_that_is_not_there_is_refused():
     with pytest.raises(Refused, match="no panel 99"):
         page_chain().reading([LeadName(99, "V1")])
-
-
-def test_two_places_are_a_scale_in_both_directions():
-    # a fine fax has 8.04 pels and 7.7 lines per mm (ITU-T T.4, from memory)
-    dpi = (204.2, 195.6)
-    for points in ([(0, 0), (804, 0)], [(0, 0), (0, 770)]):
-        assert scale_from(points, 100.0, dpi) == pytest.approx((8.04, 7.70), rel=1e-3)
-    assert scale_from([(0, 0), (30, 40)], 10.0, None) == (5.0, 5.0)
-
-
-@pytest.mark.parametrize("mm", [0.0, -5.0, float("nan"), 1e9])
-def test_a_distance_that_is_none_is_refused(mm):
-    with pytest.raises(Refused, match="distance in millimetres"):
-        scale_from([(0, 0), (100, 0)], mm, None)
-    with pytest.raises(Refused, match="too close"):
-        scale_from([(0, 0), (5, 5)], 10.0, None)
 
 
 def test_undo_and_redo_lead_there_and_back(tmp_path):

@@ -23,7 +23,7 @@ from tests.drawn.heart import HeartSpec, record_model
 if TYPE_CHECKING:
     from measure.overread.guard import Guard
 
-SAMPLES = Path(__file__).parents[2] / "sample_scans"
+SAMPLES = Path(__file__).parents[3] / "sample_scans"
 NOON = "2024-03-01T12:00:00+00:00"
 
 

@@ -12,6 +12,7 @@ import numpy as np
 import scipy as sp
 
 from digitize.course import BRIDGE_MM
+from digitize.errors import NoTrace
 from digitize.fit import STEP_MM, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.path import cheapest_path, run_at, sharp_edges
@@ -19,7 +20,6 @@ from digitize.pen import Pen
 from digitize.sheet import Raster
 from digitize.trace import Stroke, redraw
 from digitize.ways import EDGE
-from measure.overread.corrections import Refused
 
 _HAND_MM = 2.5  # a hand's points lie so far from the ink at most
 _STEEP_MM = 1.0  # and so far beside a flank
@@ -48,14 +48,14 @@ def refit(
 
     Raises
     ------
-    Refused
+    NoTrace
         The points lie off the panel's own stretch of paper, or there is no ink under them.
     """
     own = strokes[panel]
     given = np.array(points, float)
     inside = (own.x_mm >= given[0, 0]) & (own.x_mm <= given[-1, 0])
     if inside.sum() < 4:
-        raise Refused("the points lie beside the panel: draw within its edges")
+        raise NoTrace("the points lie beside the panel: draw within its edges")
     x_mm = own.x_mm[inside]
     hand_mm = np.interp(x_mm, given[:, 0], given[:, 1])
     y_mm, sigma_mm = _fitted(x_mm, hand_mm, strokes, panel, ink)
@@ -91,7 +91,7 @@ def _fitted(
     edges = _edges(np.nan_to_num(seen) - beside, x_px, corner.row(hand_mm), px)
     inked = np.isfinite(edges[0])
     if not inked.any():
-        raise Refused("there is no ink under the points: strike the stretch out instead")
+        raise NoTrace("there is no ink under the points: strike the stretch out instead")
     cols = np.arange(seen.shape[1])
     top, bottom = (np.interp(cols, cols[inked], side[inked]) for side in edges)
     start_px = start_from_edges(

@@ -3,7 +3,7 @@
 import math
 from collections.abc import Sequence
 
-from measure.overread.corrections import Refused
+from digitize.errors import NoGrid
 
 _LEAST_PX = 20.0  # a click is sure to about two pixels: a tenth of this
 
@@ -24,15 +24,15 @@ def scale_from(
 
     Raises
     ------
-    Refused
+    NoGrid
         The points are too close, or the distance is none.
     """
     (x0, y0), (x1, y1) = points
     ratio = dpi[0] / dpi[1] if dpi else 1.0
     distance_px = math.hypot(x1 - x0, (y1 - y0) * ratio)  # in pixels as they lie across
     if not (math.isfinite(distance_px) and distance_px >= _LEAST_PX):
-        raise Refused("the two places are too close to give a scale: take them farther apart")
+        raise NoGrid("the two places are too close to give a scale: take them farther apart")
     if not (math.isfinite(mm) and 1 <= mm <= 1000):
-        raise Refused("give the distance in millimetres, 1 to 1000")
+        raise NoGrid("give the distance in millimetres, 1 to 1000")
     across = distance_px / mm
     return across, across / ratio
