@@ -14,7 +14,7 @@ import typer
 from digitize import CAUTION, program_version
 from digitize.console import console
 from digitize.formats import FORMATS
-from digitize.options import Options
+from digitize.options import Options, names_from, scale_from
 
 app = typer.Typer(
     add_completion=False,
@@ -89,10 +89,10 @@ def page(
             speed_mm_s=speed,
             gain_mm_mv=gain,
             layout=layout,
-            lead_order=_names(leads),
+            lead_order=names_from(leads),
             turn_deg=turn,
             timing=timing,
-            px_per_mm=_scale(px_per_mm),
+            px_per_mm=scale_from(px_per_mm),
             max_megapixels=max_megapixels,
         )
     except ValueError as error:
@@ -204,21 +204,3 @@ def redact(
     with console(len(files)) as shown_on:
         failed = redact_files(files, Options(), shown_on, folder=output, replace=replace)
     raise typer.Exit(1 if failed else 0)
-
-
-def _names(text: str | None) -> tuple[str, ...] | None:
-    """Lead names out of a list with commas."""
-    return None if text is None else tuple(name.strip() for name in text.split(","))
-
-
-def _scale(text: str | None) -> tuple[float, float] | None:
-    """Pixels per mm across and down out of one number or two."""
-    if text is None:
-        return None
-    try:
-        values = [float(part) for part in text.split(",")]
-    except ValueError:
-        values = []
-    if len(values) not in (1, 2):
-        raise ValueError(f"'{text}' is no scale: give one number or two, such as 8.04,3.85")
-    return values[0], values[-1]

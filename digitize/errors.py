@@ -7,6 +7,8 @@
     ├── PoorResolution          too few pixels per millimetre to measure
     ├── OutputExists            a result is there already and --replace was not given
     ├── CannotWrite             a result cannot be written where it was asked for
+    ├── CannotExport            a format has no way to hold this tracing
+    ├── StillReadable           printing can be read on a page after it was covered
     └── ProgramFault            the program itself failed on this page
 
 A stage says what happened and what to do; which file and page it was is added afterwards, by
@@ -52,6 +54,14 @@ class OutputExists(InputError):
 
 class CannotWrite(InputError):
     """A result cannot be written where it was asked for."""
+
+
+class CannotExport(InputError):
+    """The format asked for cannot hold this tracing."""
+
+
+class StillReadable(InputError):
+    """Printing can still be read on a page after it was covered."""
 
 
 class ProgramFault(InputError):

@@ -52,3 +52,27 @@ class Options:
             raise ValueError("pixels per mm are not possible: give 0.5 to 100")
         if not (math.isfinite(self.max_megapixels) and self.max_megapixels > 0):
             raise ValueError("the limit of megapixels must be above 0")
+
+
+def names_from(text: str | None) -> tuple[str, ...] | None:
+    """Lead names out of a list with commas."""
+    return None if text is None else tuple(name.strip() for name in text.split(","))
+
+
+def scale_from(text: str | None) -> tuple[float, float] | None:
+    """Pixels per mm across and down out of one number or two.
+
+    Raises
+    ------
+    ValueError
+        It is neither; the text is fit to be shown to the person.
+    """
+    if text is None:
+        return None
+    try:
+        values = [float(part) for part in text.split(",")]
+    except ValueError:
+        values = []
+    if len(values) not in (1, 2):
+        raise ValueError(f"'{text}' is no scale: give one number or two, such as 8.04,3.85")
+    return values[0], values[-1]

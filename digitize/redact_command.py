@@ -6,7 +6,7 @@ from pathlib import Path
 from PIL import Image
 
 from digitize.console import Console
-from digitize.errors import InputError, at, shown
+from digitize.errors import InputError, StillReadable, at, shown
 from digitize.options import Options
 from digitize.pages import Page
 from digitize.read import read_page, read_stages
@@ -15,10 +15,6 @@ from digitize.safe_write import write_files
 from digitize.tracing_files import output_stem
 
 ENDING = ".redacted.png"
-
-
-class StillReadable(InputError):  # noqa: N818 - says what happened, like the others of its tree
-    """Printing can still be read on a page after it was covered."""
 
 
 def redact_files(

@@ -2,8 +2,10 @@
 
 import os
 import tempfile
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from pathlib import Path
+from typing import IO
 
 from digitize.errors import CannotWrite, OutputExists, shown
 
@@ -51,6 +53,35 @@ def write_files(files: Mapping[Path, bytes], *, replace: bool) -> None:
     finally:
         for written in beside.values():
             written.unlink(missing_ok=True)
+
+
+@contextmanager
+def written(path: Path, *, replace: bool) -> Iterator[IO[bytes]]:
+    """A file to write piece by piece; it takes its name when it is complete, and only then.
+
+    Raises
+    ------
+    OutputExists
+        One of that name is there and `replace` is not given.
+    CannotWrite
+        The folder is missing or closed, the disk full; nothing half-written is left.
+    """
+    refuse_existing([path], replace=replace)
+    beside = None
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        beside = _write_beside(path, b"")
+        with beside.open("wb") as file:
+            yield file
+            file.flush()
+            os.fsync(file.fileno())
+        beside.replace(path)
+    except OSError as error:
+        reason = error.strerror or "input error"
+        raise CannotWrite(f"cannot write {shown(path)} ({reason}): give another place") from None
+    finally:
+        if beside is not None:
+            beside.unlink(missing_ok=True)
 
 
 def _write_beside(path: Path, content: bytes) -> Path:

@@ -1,9 +1,7 @@
-"""Readings of every page in a store, in tables of their own beside those of `digitize`.
+"""Readings of every page in a store: each a file beside its tracing and a row of the catalogue.
 
-`reading` has one row per page that was measured, or why it could not be. `measured` has one row per
-number or finding of a reading, so that a new measurement needs no new column: `number` and `se` for
-intervals, `word` for findings ("met", "not met", "undecided"). What could not be measured has no
-row. A reading's rows are committed together, after its file is in place.
+Workers return records, the parent alone writes: a reading's row is committed after its file is in
+place.
 """
 
 import multiprocessing
@@ -12,50 +10,21 @@ import sys
 from collections.abc import Iterator, Mapping
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from concurrent.futures.process import BrokenProcessPool
-from dataclasses import dataclass
 from pathlib import Path
 
-from digitize import CAUTION, program_version
+from digitize import CAUTION
 from digitize.archive.catalogue import opened
 from digitize.archive.store import CATALOGUE, locked, put
 from digitize.console import console
 from digitize.errors import InputError, UnreadableFile, shown
 from digitize.tracing_files import read_tracing
+from measure.catalogue import Key, Measured, keep, open_tables
 from measure.reading import Person, read
 from measure.reading_files import to_json
 
-VERSION = 1  # of these tables
 ENDING = ".reading.json"
 # What arithmetic on an unforeseen tracing can raise: LinAlgError is a ValueError.
 _FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError)
-_TABLES = f"""
-    BEGIN IMMEDIATE;
-    CREATE TABLE IF NOT EXISTS measure_version (version INTEGER NOT NULL);
-    INSERT INTO measure_version SELECT {VERSION} WHERE NOT EXISTS (SELECT 1 FROM measure_version);
-    CREATE TABLE IF NOT EXISTS reading (
-        sha256 TEXT NOT NULL, options TEXT NOT NULL, page INTEGER NOT NULL,
-        reason TEXT NOT NULL, version TEXT NOT NULL, PRIMARY KEY (sha256, options, page)
-    ) WITHOUT ROWID;
-    CREATE TABLE IF NOT EXISTS measured (
-        sha256 TEXT NOT NULL, options TEXT NOT NULL, page INTEGER NOT NULL,
-        name TEXT NOT NULL, number REAL, se REAL, word TEXT,
-        PRIMARY KEY (sha256, options, page, name)
-    ) WITHOUT ROWID;
-    CREATE INDEX IF NOT EXISTS measured_name ON measured (name, number, word);
-    COMMIT;
-"""
-
-Key = tuple[str, str, int]  # hash of the content, options, page
-
-
-@dataclass(frozen=True)
-class Measured:
-    """What a worker brings back of one page: nothing of it is written there."""
-
-    reason: str  # why there is no reading; empty where there is one
-    content: bytes = b""  # of the reading's file
-    numbers: Mapping[str, tuple[float, float]] | None = None  # value and standard error
-    words: Mapping[str, str] | None = None
 
 
 def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
@@ -80,7 +49,7 @@ def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
                 for key, found in _measure_all(store, todo, processes):
                     if found.content:
                         put(store, todo[key], {ENDING: found.content})
-                    _keep(catalogue.db, key, found)
+                    keep(catalogue.db, key, found)
                     if found.reason:
                         failed += 1
                         shown_on.line(f"{key[0][:12]}, page {key[2]}: {found.reason}")
@@ -90,13 +59,6 @@ def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
         return 1
     print(f"{len(todo) - failed} pages measured, {failed} could not be.\n{CAUTION}")
     return failed
-
-
-def open_tables(db: sqlite3.Connection) -> None:
-    """Make the tables where they are not; refuse those of a later version."""
-    db.executescript(_TABLES)
-    if db.execute("SELECT version FROM measure_version").fetchone()[0] > VERSION:
-        raise UnreadableFile("the readings were written by a later version: use that version")
 
 
 def measure_page(path: Path) -> Measured:
@@ -152,16 +114,3 @@ def _measure_all(
 
 def _tracing(store: Path, stem: str) -> Path:
     return store / f"{stem}.json"
-
-
-def _keep(db: sqlite3.Connection, key: Key, found: Measured) -> None:
-    """Commit a reading with all that was measured."""
-    numbers = ((*key, n, value, se, None) for n, (value, se) in (found.numbers or {}).items())
-    words = ((*key, name, None, None, word) for name, word in (found.words or {}).items())
-    with db:
-        db.execute("BEGIN IMMEDIATE")
-        db.execute("DELETE FROM measured WHERE (sha256, options, page) = (?, ?, ?)", key)
-        insert = "INSERT INTO measured VALUES (?, ?, ?, ?, ?, ?, ?)"
-        db.executemany(insert, [*numbers, *words])
-        row = (*key, found.reason, program_version())
-        db.execute("INSERT OR REPLACE INTO reading VALUES (?, ?, ?, ?, ?)", row)

@@ -15,7 +15,7 @@ import typer
 
 from digitize import CAUTION, program_version
 from digitize.errors import InputError
-from digitize.options import Options
+from digitize.options import Options, names_from, scale_from
 
 if TYPE_CHECKING:
     from measure.reading import Person
@@ -202,31 +202,42 @@ def find(
         str | None, typer.Option(help="Name to sort by; -NAME for the largest first.")
     ] = None,
     columns: Annotated[
-        str | None, typer.Option(help="Further names to show, such as qtc_bazett_ms,rr_ms.")
+        str | None, typer.Option(help="Further names to show, such as qtc_bazett_ms,rr_ms; or all.")
     ] = None,
-    to: Annotated[str, typer.Option(help="csv, or count for the number of pages alone.")] = "csv",
+    to: Annotated[
+        str, typer.Option(help="csv, parquet, or count for the number of pages alone.")
+    ] = "csv",
+    plot: Annotated[
+        str | None, typer.Option(help="Name whose histogram is shown in place of a table.")
+    ] = None,
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="File for the table or, as HTML, the histogram."),
+    ] = None,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over an earlier file.")] = False,
 ) -> None:
     """List the pages of a store that a question is true of; the store is only read.
 
     Names are those of the readings: intervals (qrs_ms, qrs_ms_se), findings ('met', 'not met',
     'undecided') and what is known of the page (status, layout). "is missing" asks for what could
-    not be measured. A match is no diagnosis: look at the page.
+    not be measured. "--columns all" gives the whole catalogue. A match is no diagnosis: look at the
+    page.
     """
-    if to not in ("csv", "count"):
-        raise typer.BadParameter(f"'{to}' is not known here: give csv or count")
-    from measure.find import Question, QuestionError, to_csv, understand
-    from measure.find import find as find_pages
+    if to not in ("csv", "parquet", "count"):
+        raise typer.BadParameter(f"'{to}' is not known here: give csv, parquet or count")
+    if to == "parquet" and output is None and plot is None:
+        raise typer.BadParameter("parquet is no text: give a file with -o")
+    from measure.find import QuestionError
+    from measure.find_command import Wanted, answer
 
+    names = () if columns is None else tuple(name.strip() for name in columns.split(","))
     try:
-        question = Question() if where is None else understand(where)
-        more = () if columns is None else tuple(name.strip() for name in columns.split(","))
-        names, rows = find_pages(store, question, sort=sort, columns=more)
+        answer(store, Wanted(where, sort, names, to, plot, output, replace))
     except QuestionError as error:
         raise typer.BadParameter(str(error)) from None
     except InputError as error:
         print(error, file=sys.stderr)
         raise typer.Exit(1) from None
-    print(to_csv(names, rows) if to == "csv" else len(rows), end="" if to == "csv" else "\n")
 
 
 def _dates(given: list[str] | None, count: int) -> list[str | None]:
@@ -260,25 +271,14 @@ def _options(
             speed_mm_s=speed,
             gain_mm_mv=gain,
             layout=layout,
-            lead_order=None if leads is None else tuple(n.strip() for n in leads.split(",")),
+            lead_order=names_from(leads),
             turn_deg=turn,
             timing=timing,
-            px_per_mm=None if px_per_mm is None else _scale(px_per_mm),
+            px_per_mm=scale_from(px_per_mm),
             max_megapixels=max_megapixels,
         )
     except ValueError as error:
         raise typer.BadParameter(str(error)) from None
-
-
-def _scale(text: str) -> tuple[float, float]:
-    """Pixels per mm across and down out of one number or two."""
-    try:
-        values = [float(part) for part in text.split(",")]
-    except ValueError:
-        values = []
-    if len(values) not in (1, 2):
-        raise ValueError(f"'{text}' is no scale: give one number or two, such as 8.04,3.85")
-    return values[0], values[-1]
 
 
 def _person(sex: str | None, age: float | None) -> "Person":

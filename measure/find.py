@@ -10,11 +10,10 @@ and not its opposite either; `is missing` asks for it.
     comparison  ( = | != | < | <= | > | >= ) ( number | 'word' ) | "is" ( "known" | "missing" )
 """
 
-import csv
 import difflib
-import io
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -22,19 +21,25 @@ from typing import Any
 from digitize.archive.catalogue import opened
 from digitize.archive.store import CATALOGUE
 from digitize.errors import UnreadableFile
-from measure.questions import FAMILIES, RHYTHM_KEYS, WIDTH_KEYS
+from measure.catalogue import COLUMNS, ERRORS, FINDINGS, INTERVALS, columns_of
 
+WHOLE_NUMBERS = ("page", "leads", "checks_failed", "width_px", "height_px")
 NUMBERS_OF_PAGE = (
-    *("page", "leads", "speed_mm_s", "gain_mm_mv", "read_share", "checks_failed"),
-    *("width_px", "height_px", "seconds", "peak_mb"),
+    *WHOLE_NUMBERS,
+    *("speed_mm_s", "gain_mm_mv", "read_share", "seconds", "peak_mb"),
 )
-WORDS_OF_PAGE = ("sha256", "status", "layout", "timing", "speed_source", "gain_source", "stem")
-INTERVALS = (*RHYTHM_KEYS, *WIDTH_KEYS)
-FINDINGS = tuple(key for _, keys in FAMILIES for key in keys)
-NAMES = (
-    *(*NUMBERS_OF_PAGE, *WORDS_OF_PAGE),
-    *(*INTERVALS, *(f"{name}_se" for name in INTERVALS), *FINDINGS),
+WORDS_OF_PAGE = (
+    *("sha256", "options", "status", "reason", "stem", "layout", "timing"),
+    *("speed_source", "gain_source", "version"),
 )
+NAMES: Mapping[str, str] = {  # of everything that can be asked, with its SQL
+    **{name: f"p.{name}" for name in (*NUMBERS_OF_PAGE, *WORDS_OF_PAGE)},
+    **{name: f"r.{name}" for name in (*INTERVALS, *ERRORS, *FINDINGS)},
+    "reading_reason": "r.reason",
+    "reading_version": "r.version",
+}
+NUMBERS = frozenset((*NUMBERS_OF_PAGE, *INTERVALS, *ERRORS))
+EVERYTHING = "all"  # in place of the names of columns
 _ALWAYS = ("sha256", "page", "stem", "status")
 
 _TOKEN = re.compile(
@@ -58,14 +63,15 @@ class Question:
     names: tuple[str, ...] = ()
 
 
+@contextmanager
 def find(
     store: Path,
     question: Question,
     *,
     sort: str | None = None,
     columns: Sequence[str] = (),
-) -> tuple[tuple[str, ...], list[tuple[Any, ...]]]:
-    """Return column names and the pages of a store that a question is true of.
+) -> Iterator[tuple[tuple[str, ...], Iterator[tuple[Any, ...]]]]:
+    """Column names and, row by row, the pages of a store that a question is true of.
 
     Parameters
     ----------
@@ -76,7 +82,8 @@ def find(
     sort : str, optional
         Name to sort by, a "-" before it for the largest first; missing ones come last.
     columns : sequence of str
-        Shown beside the page's own and those that the question asks about.
+        Shown beside the page's own and those that the question asks about; `EVERYTHING` alone:
+        all there are.
 
     Raises
     ------
@@ -86,31 +93,22 @@ def find(
         There is no store, or it holds no readings.
     """
     order = (sort or "").removeprefix("-")
-    shown = tuple(dict.fromkeys((*_ALWAYS, *question.names, *columns, *([order] if order else ()))))
-    expressions, values = zip(*(_value(name) for name in shown), strict=True)
-    sql = f"SELECT {', '.join(expressions)} FROM page p WHERE {question.sql} ORDER BY "
-    ordering, order_values = _value(order) if order else ("p.sha256", ())
+    wanted = NAMES if tuple(columns) == (EVERYTHING,) else columns
+    shown = tuple(dict.fromkeys((*_ALWAYS, *question.names, *wanted, *([order] if order else ()))))
+    ordering = _sql(order) if order else "p.sha256"
     down = " DESC" if (sort or "").startswith("-") else ""
-    sql += f"{ordering} IS NULL, {ordering}{down}, p.sha256, p.options, p.page"
-    parameters = [v for part in values for v in part]
+    sql = f"""
+        SELECT {", ".join(map(_sql, shown))} FROM page p
+        LEFT JOIN reading r USING (sha256, options, page) WHERE {question.sql}
+        ORDER BY {ordering} IS NULL, {ordering}{down}, p.sha256, p.options, p.page
+    """
     with opened(store / CATALOGUE, read_only=True) as catalogue:
-        if not catalogue.db.execute(
-            "SELECT 1 FROM sqlite_master WHERE name = 'measured'"
-        ).fetchone():
+        present = columns_of(catalogue.db)
+        if not present:
             raise UnreadableFile("no page of the store was measured: run measure archive first")
-        rows = catalogue.db.execute(
-            sql, (*parameters, *question.values, *order_values, *order_values)
-        ).fetchall()
-    return shown, rows
-
-
-def to_csv(names: Sequence[str], rows: Sequence[Sequence[Any]]) -> str:
-    """A table as CSV (RFC 4180), blank where a value is missing."""
-    buffer = io.StringIO()
-    writer = csv.writer(buffer, lineterminator="\n")
-    writer.writerow(names)
-    writer.writerows(rows)
-    return buffer.getvalue()
+        if not COLUMNS.keys() <= present:
+            raise UnreadableFile("the readings are of an earlier version: run measure archive once")
+        yield shown, catalogue.db.execute(sql, question.values)
 
 
 def understand(text: str) -> Question:
@@ -139,19 +137,12 @@ def _tokens(text: str) -> Iterator[tuple[str, str]]:
         yield str(match.lastgroup), match[str(match.lastgroup)]
 
 
-def _value(name: str) -> tuple[str, tuple[str, ...]]:
-    """SQL for one value of page `p`, with its parameters."""
+def _sql(name: str) -> str:
+    """SQL for one value of a page."""
     if name not in NAMES:
         near = difflib.get_close_matches(name, NAMES, n=3) or ["qrs_ms", "lbbb_strict", "status"]
         raise QuestionError(f"'{name}' is not known here: {', '.join(near)}?")
-    if name in NUMBERS_OF_PAGE or name in WORDS_OF_PAGE:
-        return f"p.{name}", ()
-    column = "word" if name in FINDINGS else "se" if name.endswith("_se") else "number"
-    return (
-        f"(SELECT m.{column} FROM measured m WHERE m.sha256 = p.sha256"
-        " AND m.options = p.options AND m.page = p.page AND m.name = ?)",
-        (name.removesuffix("_se") if column == "se" else name,),
-    )
+    return NAMES[name]
 
 
 @dataclass
@@ -189,9 +180,8 @@ class _Reader:
         kind, name = self._next("a name")
         if kind != "name":
             raise QuestionError(f"{name} stands where a name is expected")
-        sql, parameters = _value(name)
+        sql = _sql(name)
         self.names.append(name)
-        self.values += parameters
         return self._comparison(name, sql)
 
     def _comparison(self, name: str, sql: str) -> str:
@@ -204,7 +194,7 @@ class _Reader:
         if sign not in _SIGNS:
             raise QuestionError(f"after {name} comes one of {' '.join(_SIGNS)}, not '{sign}'")
         kind, text = self._next(f"a value after {name} {sign}")
-        wanted = "word" if name in FINDINGS or name in WORDS_OF_PAGE else "number"
+        wanted = "number" if name in NUMBERS else "word"
         if kind != wanted:
             what = "a word in quotes, such as 'met'" if wanted == "word" else "a number"
             raise QuestionError(f"{name} is compared with {what}, not with {text}")

@@ -19,8 +19,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from digitize import program_version
-from digitize.errors import UnreadableFile
-from digitize.formats.leads import NO_SAMPLE, CannotExport, LeadTable, lead_table
+from digitize.errors import CannotExport, UnreadableFile
+from digitize.formats.leads import NO_SAMPLE, LeadTable, lead_table
 from digitize.tracing import Tracing
 
 if TYPE_CHECKING:

@@ -11,8 +11,8 @@ standard texts of EDF+ for the labels of ECG leads.
 
 import numpy as np
 
-from digitize.errors import UnreadableFile
-from digitize.formats.leads import LARGEST_STEPS, NO_SAMPLE, CannotExport, lead_table
+from digitize.errors import CannotExport, UnreadableFile
+from digitize.formats.leads import LARGEST_STEPS, NO_SAMPLE, lead_table
 from digitize.tracing import Tracing
 
 _LARGEST_RECORD_BYTES = 61440  # advised upper limit of one data record (EDF, 1992)

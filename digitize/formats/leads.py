@@ -9,7 +9,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from digitize.errors import InputError
+from digitize.errors import CannotExport
 from digitize.tracing import FS_HZ, Panel, Tracing
 
 STEP_MV = 0.001
@@ -26,10 +26,6 @@ LEAD_CODES = {
     **{f"V{n}": 2 + n for n in range(1, 7)},
     **{"V7": 9, "V8": 66, "V9": 67, "V3R": 11, "V4R": 12, "V5R": 13, "V6R": 14},
 }
-
-
-class CannotExport(InputError):  # noqa: N818 - says what happened, like the others of its tree
-    """The format asked for cannot hold this tracing."""
 
 
 @dataclass(frozen=True, eq=False)

@@ -1,25 +1,21 @@
-"""Readings of a store, and questions to it."""
+"""Readings of every page of a store."""
 
-import csv
-import io
 import json
 import sqlite3
 from contextlib import closing
 from dataclasses import replace
 
 import numpy as np
-import pandas as pd
 import pytest
-from typer.testing import CliRunner
 
 from digitize.archive.catalogue import PageRow, opened
 from digitize.archive.reading import row_of
 from digitize.archive.store import CATALOGUE, put, stem_of
+from digitize.errors import UnreadableFile
 from digitize.tracing import FS_HZ, LEADS
 from digitize.tracing_files import read_tracing, tracing_files
-from measure.archive import measure_archive, measure_page, open_tables
-from measure.cli import app
-from measure.find import FINDINGS, INTERVALS, Question, QuestionError, find, understand
+from measure.archive import measure_archive, measure_page
+from measure.find import Question, find
 from measure.reading import read
 from measure.sources import tracing_from_samples
 from tests.digitize.made_tracing import panel, tracing
@@ -57,8 +53,10 @@ def table(store, sql):
         return db.execute(sql).fetchall()
 
 
-def ask(store, where, **more):
-    return find(store, understand(where), **more)[1]
+def row_of_reading(store, sha256):
+    with closing(sqlite3.connect(store / CATALOGUE)) as db:
+        db.row_factory = sqlite3.Row
+        return dict(db.execute("SELECT * FROM reading WHERE sha256 = ?", (sha256,)).fetchone())
 
 
 # ---- measuring -------------------------------------------------------------------------------
@@ -69,11 +67,13 @@ def test_rows_are_those_of_the_reading(store, capsys):
     assert "1 pages measured, 1 could not be" in capsys.readouterr().out
     stem = stem_of("1" * 64, OPTIONS, 1)
     wanted = read(read_tracing(store / f"{stem}.json"))
-    found = dict(table(store, "SELECT name, number FROM measured WHERE number IS NOT NULL"))
-    known = {name: q.value for name, q in wanted.intervals.items() if q.known}
-    assert found == known
-    words = dict(table(store, "SELECT name, word FROM measured WHERE word IS NOT NULL"))
-    assert words == {f.key: f.result for f in wanted.findings}
+    found = row_of_reading(store, "1" * 64)
+    for name, quantity in wanted.intervals.items():
+        assert found[name] == (quantity.value if quantity.known else None)
+        assert found[f"{name}_se"] == (quantity.se if quantity.known else None)
+    assert {f.key: found[f.key] for f in wanted.findings} == {
+        f.key: f.result for f in wanted.findings
+    }
     document = json.loads((store / f"{stem}.reading.json").read_bytes())
     assert document["intervals"]["qrs_ms"]["value"] == pytest.approx(found["qrs_ms"], abs=0.01)
 
@@ -98,131 +98,43 @@ def test_no_store(tmp_path, capsys):
     assert "is no store" in capsys.readouterr().err
 
 
-# ---- asking ----------------------------------------------------------------------------------
+VERSION_1 = """
+    CREATE TABLE measure_version (version INTEGER NOT NULL);
+    INSERT INTO measure_version VALUES (1);
+    CREATE TABLE reading (
+        sha256 TEXT NOT NULL, options TEXT NOT NULL, page INTEGER NOT NULL,
+        reason TEXT NOT NULL, version TEXT NOT NULL, PRIMARY KEY (sha256, options, page)
+    ) WITHOUT ROWID;
+    CREATE TABLE measured (
+        sha256 TEXT NOT NULL, options TEXT NOT NULL, page INTEGER NOT NULL,
+        name TEXT NOT NULL, number REAL, se REAL, word TEXT,
+        PRIMARY KEY (sha256, options, page, name)
+    ) WITHOUT ROWID;
+    CREATE INDEX measured_name ON measured (name, number, word);
+    INSERT INTO reading VALUES ('a', 'o', 1, '', '0.1'), ('b', 'o', 1, 'no beat', '0.1');
+    INSERT INTO measured VALUES
+        ('a', 'o', 1, 'qrs_ms', 164, 3, NULL), ('a', 'o', 1, 'lbbb_strict', NULL, NULL, 'met');
+"""
 
-VALUES = {
-    "a": ({"qrs_ms": (164.0, 3.0)}, {"lbbb_strict": "met"}),
-    "b": ({"qrs_ms": (90.0, 2.0), "pr_ms": (210.0, 4.0)}, {"lbbb_strict": "not met"}),
-    "c": ({}, {"lbbb_strict": "undecided"}),
-}
 
-
-@pytest.fixture
-def asked(tmp_path):
-    """A store of three pages with values of our choice; the third has no QRS duration."""
+def test_readings_of_an_earlier_version_are_brought_up(tmp_path):
     with opened(tmp_path / CATALOGUE) as catalogue:
-        open_tables(catalogue.db)
-        for sha256, (numbers, words) in VALUES.items():
-            catalogue.add_page(sha256, OPTIONS, PageRow(1, "good", leads=12, layout="3x4+1"))
-            rows = [(sha256, OPTIONS, 1, n, value, se, None) for n, (value, se) in numbers.items()]
-            rows += [(sha256, OPTIONS, 1, n, None, None, word) for n, word in words.items()]
-            catalogue.db.executemany("INSERT INTO measured VALUES (?,?,?,?,?,?,?)", rows)
-    return tmp_path
+        catalogue.db.executescript(VERSION_1)
+    old = pytest.raises(UnreadableFile, match="run measure archive once")
+    with old, find(tmp_path, Question()):
+        pass
+    assert measure_archive(tmp_path, processes=1) == 0
+    row = row_of_reading(tmp_path, "a")
+    assert (row["qrs_ms"], row["qrs_ms_se"], row["lbbb_strict"]) == (164, 3, "met")
+    assert (row["pr_ms"], row["version"]) == (None, "0.1")
+    assert row_of_reading(tmp_path, "b")["reason"] == "no beat"
+    assert not table(tmp_path, "SELECT 1 FROM sqlite_master WHERE name = 'measured'")
 
 
-@pytest.mark.parametrize(
-    ("where", "pages"),
-    [
-        ("qrs_ms >= 150 and lbbb_strict = 'met'", "a"),
-        ("qrs_ms < 150", "b"),
-        ("not qrs_ms >= 150", "b"),  # what was not measured meets neither
-        ("qrs_ms is missing", "c"),
-        ("qrs_ms is known AND NOT lbbb_strict = 'met'", "b"),
-        ("lbbb_strict = 'undecided' or pr_ms > 200 and qrs_ms < 100", "bc"),
-        ("(lbbb_strict = 'undecided' or pr_ms > 200) and qrs_ms < 100", "b"),
-        ("lbbb_strict != 'met'", "bc"),
-        ("qrs_ms_se > 2.5", "a"),
-        ("layout = '3x4+1' and leads = 12", "abc"),
-        ("layout = 'it''s'", ""),
-    ],
-)
-def test_questions(asked, where, pages):
-    assert "".join(row[0] for row in ask(asked, where)) == pages
-
-
-@pytest.mark.parametrize(
-    ("where", "said"),
-    [
-        ("qrs_m > 1", "'qrs_m' is not known here: qrs_ms"),
-        ("qrs_ms > 1; DROP TABLE page", "'; DROP TABLE page' is not understood"),
-        ("qrs_ms > 'wide'", "qrs_ms is compared with a number"),
-        ("lbbb_strict = 1", "a word in quotes"),
-        ("lbbb_strict = met", "a word in quotes"),
-        ("qrs_ms", "a comparison after qrs_ms is missing"),
-        ("qrs_ms >", "a value after qrs_ms > is missing"),
-        ("qrs_ms like 1", "not 'like'"),
-        ("qrs_ms is big", "'known' or 'missing'"),
-        ("(qrs_ms > 1", "not closed"),
-        ("qrs_ms > 1 qrs_ms", "not expected"),
-        ("1 = 1", "a name is expected"),
-        ("status = 'x' -- y", "is not understood"),
-        ("(" * 5000 + "qrs_ms > 1", "too many brackets"),
-        ("not " * 5000 + "qrs_ms > 1", "too many brackets"),
-        ("sqlite_master = 'x'", "is not known here"),
-        ("", "is missing at the end"),
-    ],
-)
-def test_what_is_no_question(where, said):
-    with pytest.raises(QuestionError, match=said.replace("(", r"\(")):
-        understand(where)
-
-
-def test_words_of_a_question_are_never_sql(asked):
-    hostile = "x' OR 1=1 --"
-    question = understand("lbbb_strict = '" + hostile.replace("'", "''") + "'")
-    assert hostile not in question.sql
-    assert find(asked, question)[1] == []
-    with pytest.raises(QuestionError, match="not known"):
-        find(asked, Question(), sort="1; DROP TABLE page")
-    with pytest.raises(QuestionError, match="not known"):
-        find(asked, Question(), columns=["p.sha256"])
-
-
-def test_every_name_of_a_reading_can_be_asked(asked):
-    reading = read(whole())
-    assert set(INTERVALS) == set(reading.intervals)
-    assert {finding.key for finding in reading.findings} <= set(FINDINGS)
-    for name in INTERVALS:
-        ask(asked, f"{name} > 0")
-
-
-def test_sorted_with_the_missing_last(asked):
-    for order, pages in (("qrs_ms", "bac"), ("-qrs_ms", "abc")):
-        assert "".join(row[0] for row in find(asked, Question(), sort=order)[1]) == pages
-
-
-def test_asking_writes_nothing(asked):
-    before = {path: path.read_bytes() for path in asked.iterdir()}
-    ask(asked, "qrs_ms > 1")
-    assert {path: path.read_bytes() for path in asked.iterdir()} == before
-
-
-# ---- the command -----------------------------------------------------------------------------
-
-
-def run(*words):
-    return CliRunner().invoke(app, ["find", *map(str, words)])
-
-
-def test_csv_is_read_by_pandas(asked):
-    result = run(asked, "--where", "lbbb_strict != 'met'", "--columns", "qrs_ms,pr_ms")
-    assert result.exit_code == 0
-    frame = pd.read_csv(io.StringIO(result.stdout), keep_default_na=True)
-    assert frame["qrs_ms"].tolist()[0] == 90.0
-    assert frame["qrs_ms"].isna().tolist() == [False, True]
-    assert len(list(csv.reader(io.StringIO(result.stdout)))) == 3
-
-
-def test_count_and_wrong_usage(asked, tmp_path):
-    assert run(asked, "--where", "qrs_ms > 0", "--to", "count").stdout == "2\n"
-    assert run(asked, "--where", "qrs > 0").exit_code == 2
-    assert run(asked, "--to", "xml").exit_code == 2
-    nothing = run(tmp_path / "none")
-    assert nothing.exit_code == 1
-    assert "there is no catalogue" in nothing.stderr
-
-
-def test_store_that_was_not_measured(store):
-    result = run(store)
-    assert result.exit_code == 1
-    assert "run measure archive first" in result.stderr
+def test_readings_of_a_later_version_are_left_alone(tmp_path, capsys):
+    with opened(tmp_path / CATALOGUE) as catalogue:
+        catalogue.db.executescript(VERSION_1)
+        catalogue.db.execute("UPDATE measure_version SET version = 9")
+    assert measure_archive(tmp_path, processes=1) == 1
+    assert "later version" in capsys.readouterr().err
+    assert len(table(tmp_path, "SELECT * FROM measured")) == 2

@@ -11,10 +11,11 @@ from xml.etree import ElementTree as Xml
 import numpy as np
 import pytest
 
+from digitize.errors import CannotExport
 from digitize.formats import FORMATS, export
 from digitize.formats.aecg import V3
 from digitize.formats.dicom import TWELVE_LEAD_ECG
-from digitize.formats.leads import LEAD_CODES, NO_SAMPLE, STEP_MV, CannotExport, lead_table
+from digitize.formats.leads import LEAD_CODES, NO_SAMPLE, STEP_MV, lead_table
 from digitize.tracing import LEADS
 from tests.digitize.made_tracing import leads_at, panel, tracing
 
