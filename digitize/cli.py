@@ -148,8 +148,12 @@ def archive(
         str | None, typer.Option(help="failed: take up again what failed before.")
     ] = None,
     processes: Annotated[
-        int, typer.Option(min=1, help="Files read at the same time; else one per core.")
+        int, typer.Option(min=1, help="Pages read at the same time; else one per core.")
     ] = os.cpu_count() or 1,
+    cluster: Annotated[
+        str | None,
+        typer.Option(help="Address of a dask scheduler whose workers read, tcp://HOST:PORT."),
+    ] = None,
     page_seconds: Annotated[
         float, typer.Option(min=1, help="Give a page up after so long.")
     ] = 120.0,
@@ -176,12 +180,16 @@ def archive(
         )
     except ValueError as error:
         raise typer.BadParameter(str(error)) from None
+    from digitize.archive.engines import cluster as workers_of
+    from digitize.archive.engines import this_machine
     from digitize.archive.reading import read_for_store
-    from digitize.archive.run import Limits, run_archive
+    from digitize.archive.run import run_archive
+    from digitize.archive.worker import Limits
 
-    limits = Limits(page_seconds, page_memory_mb, processes)
+    limits = Limits(page_seconds, page_memory_mb)
+    engine = this_machine(processes) if cluster is None else workers_of(cluster)
     failed = run_archive(
-        folders, store, options, limits, read=read_for_store, again_failed=again == "failed"
+        folders, store, options, limits, engine, read=read_for_store, again_failed=again == "failed"
     )
     raise typer.Exit(1 if failed else 0)
 

@@ -1,8 +1,10 @@
 """Files into pages of pixels."""
 
 import hashlib
+import itertools
 import stat
 from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from io import BufferedReader
 from pathlib import Path
@@ -17,6 +19,7 @@ from digitize.pdf import open_pdf
 from digitize.pictures import Loader, Picture, open_heic, open_pictures
 from digitize.tracing import PageSource
 
+MOST_PAGES = 10_000  # of one file; more is a damaged or hostile one
 _HEAD_BYTES = 1024  # a PDF header may stand anywhere in these (ISO 32000-1, annex H.3.4.1)
 _HEIC_BRANDS = (b"heic", b"heix", b"heim", b"heis", b"hevc", b"mif1", b"msf1")  # ISO/IEC 23008-12
 
@@ -40,6 +43,7 @@ def open_pages(
     path: str | Path,
     *,
     max_megapixels: float = Options.max_megapixels,
+    only: int | None = None,
     on_error: Callable[[InputError], None] | None = None,
 ) -> Iterator[Page]:
     """Pages of a scan, fax, photo or document, one at a time.
@@ -52,6 +56,8 @@ def open_pages(
         PNG, JPEG, TIFF (each of its pages), BMP, GIF, WebP, PDF, HEIC or DICOM.
     max_megapixels : float
         Larger pages are refused before they are decoded.
+    only : int, optional
+        The one page to decode, from 1; nothing comes where there is no such page.
     on_error : callable, optional
         Called with the error of a page that cannot be read; the pages after it still come.
         Without it the error is raised and ends the reading.
@@ -62,20 +68,44 @@ def open_pages(
         The file cannot be opened at all, or a page cannot be read and `on_error` is not given.
     """
     path = Path(path)
+    with _told(path), _open_file(path) as file:
+        sha256 = hashlib.file_digest(file, "sha256").hexdigest()
+        loaders = enumerate(_reader(file)(file, max_megapixels=max_megapixels), start=1)
+        wanted = loaders if only is None else itertools.islice(loaders, only - 1, only)
+        for number, load in wanted:
+            try:
+                page = _page(load(), path.name, sha256, number)
+            except UnreadableFile as error:
+                at(error, path.name, number)
+                if on_error is None:
+                    raise
+                on_error(error)
+            else:
+                yield page
+
+
+def count_pages(path: str | Path) -> int:
+    """How many pages a file has; none of them is decoded.
+
+    Raises
+    ------
+    UnreadableFile
+        The file cannot be opened at all, or says that it has more than `MOST_PAGES`.
+    """
+    path = Path(path)
+    with _told(path), _open_file(path) as file:
+        loaders = _reader(file)(file, max_megapixels=Options.max_megapixels)
+        count = sum(1 for _ in itertools.islice(loaders, MOST_PAGES + 1))
+        if count > MOST_PAGES:
+            raise UnreadableFile(f"it says that it has more than {MOST_PAGES} pages: split it")
+        return count
+
+
+@contextmanager
+def _told(path: Path) -> Iterator[None]:
+    """Errors of a file with its name."""
     try:
-        with _open_file(path) as file:
-            sha256 = hashlib.file_digest(file, "sha256").hexdigest()
-            loaders = _reader(file)(file, max_megapixels=max_megapixels)
-            for number, load in enumerate(loaders, start=1):
-                try:
-                    page = _page(load(), path.name, sha256, number)
-                except UnreadableFile as error:
-                    at(error, path.name, number)
-                    if on_error is None:
-                        raise
-                    on_error(error)
-                else:
-                    yield page
+        yield
     except UnreadableFile as error:
         raise at(error, path.name) from None
     except OSError as error:

@@ -15,7 +15,9 @@ import numpy as np
 import pytest
 from PIL import Image
 
-from digitize.archive.run import Limits, run_archive
+from digitize.archive.engines import this_machine
+from digitize.archive.run import run_archive
+from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize import made_files
 from tests.digitize.archive import stand_in as made
@@ -33,8 +35,8 @@ VARIANTS = int(os.environ.get("MILLIVELLUM_VARIANTS", "4"))
 
 
 def run(scans, store, seconds=20.0):
-    limits = Limits(seconds, 3072, 2)
-    return run_archive([scans], store, Options(max_megapixels=20), limits, read=made.read)
+    options, limits = Options(max_megapixels=20), Limits(seconds, 3072)
+    return run_archive([scans], store, options, limits, this_machine(2), read=made.read)
 
 
 def rows(store):

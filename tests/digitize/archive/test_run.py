@@ -12,8 +12,10 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from digitize.archive.run import Limits, run_archive
+from digitize.archive.engines import this_machine
+from digitize.archive.run import run_archive
 from digitize.archive.store import CONTACT_SHEET
+from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize.archive import stand_in as made
 
@@ -31,9 +33,14 @@ def store(tmp_path):
 
 
 def run(scans, store, *, seconds=20.0, options=None, again_failed=False):
-    limits = Limits(seconds, 4096, 2)
     return run_archive(
-        [scans], store, options or Options(), limits, read=made.read, again_failed=again_failed
+        [scans],
+        store,
+        options or Options(),
+        Limits(seconds, 4096),
+        this_machine(2),
+        read=made.read,
+        again_failed=again_failed,
     )
 
 
@@ -220,12 +227,15 @@ def test_names_that_are_no_text(scans, store):
 PROGRAM = """
 import sys
 from pathlib import Path
-from digitize.archive.run import Limits, run_archive
+from digitize.archive.engines import this_machine
+from digitize.archive.run import run_archive
+from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize.archive.stand_in import read
 if __name__ == "__main__":
-    limits = Limits(20.0, 4096, 2)
-    sys.exit(run_archive([Path(sys.argv[1])], Path(sys.argv[2]), Options(), limits, read=read))
+    folder, store = map(Path, sys.argv[1:])
+    limits = Limits(20.0, 4096)
+    sys.exit(run_archive([folder], store, Options(), limits, this_machine(2), read=read))
 """
 
 
