@@ -37,6 +37,8 @@ SURE = 3.0  # log odds to the runner-up below which the layout is called doubtfu
 DROPPED_ROW = 3.0  # log odds against a row found that is none
 UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
+GUESSED = 0.35  # and from which it is taken where the arrangement expects no name
+STROKES = ("I", "II", "III")  # what is left of any letter may look like these
 
 
 @dataclass(frozen=True)
@@ -292,10 +294,12 @@ def _lead(
     if slot.name is None:
         if read is not None and read[1] > READ:
             return read[0], "printed", read[1]
+        if read is not None and read[1] > GUESSED and read[0] not in STROKES:
+            return read[0], "found", read[1]
         return STRIP_LEAD, "assumed", 0.5
     if read is not None and read[0] in (slot.name, slot.name.removeprefix("-")):
         return slot.name, "printed" if read[1] > 0.3 else "found", read[1]
-    if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
+    if read is not None and read[1] > 0.95 and read[0] not in STROKES:
         return read[0], "printed", read[1]
     return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7
 

@@ -16,6 +16,7 @@ INK_LEVEL = 0.35
 PULSE_S = 0.2  # common practice
 HEIGHTS_MM = (2.5, 5.0, 10.0, 20.0, 40.0)  # of 1 mV
 WIDTHS_MM = (2.5, 5.0, 10.0)
+HEIGHT_OFF = 0.12  # of a usual height: letters with two upright strokes are of any
 STRAIGHT = 0.8  # share of a side that must be inked
 LEVEL_MM = 0.15  # a recorder's pulse is level; the top of a QRS rises, sinks and is notched
 
@@ -106,7 +107,9 @@ def _pulse(
         return None
     if foot is None:
         foot = float(ink.raster.y_mm((left[2] + right[2]) / 2)) - 0.15
-    return Mark(float(x0), float(x1), top, foot)
+    mark = Mark(float(x0), float(x1), top, foot)
+    usual = any(abs(mark.height_mm / h - 1) < HEIGHT_OFF for h in HEIGHTS_MM)
+    return mark if usual else None
 
 
 def _level(part: np.ndarray, first_row: int, ink: Ink) -> float | None:

@@ -23,6 +23,7 @@ from digitize.marks import find_marks
 from digitize.options import Options
 from digitize.pages import Page, open_pages
 from digitize.rows import find_rows
+from digitize.rules import lettering
 from digitize.ruling import find_ruling
 from digitize.sheet import Sheet, flatten
 from digitize.strips import name_strips, settle_timing
@@ -74,13 +75,15 @@ def read_page(
     on_stage("ink")
     ink = find_ink(sheet)
     on_stage("printing")
-    printing = _printing(page, grid, ink)
+    marks = find_marks(ink)
+    letters = lettering(ink, marks)
+    printing = _printing(page, grid, letters)
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
         return _read_turned(page, turn_deg, options, on_stage)
     on_stage("layout")
     rows = find_rows(ink, printing.letters)
-    layout = find_layout(ink, printing, rows, find_marks(ink), options)
+    layout = find_layout(letters, printing, rows, marks, options)
     on_stage("trace")
     layout, strokes = _traced(page, grid, ink, layout)
     on_stage("checks")

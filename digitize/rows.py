@@ -7,19 +7,19 @@ spend their time: at their baselines.
 
 from dataclasses import dataclass
 
-import cv2
 import numpy as np
 import scipy as sp
 
 from digitize.ink import Ink, solid_ink
+from digitize.rules import straight_rules
 from digitize.sheet import Box
 
 STEP_MM = 0.25  # columns are looked at this far apart
 BIN_MM = 0.25
-LONG_RULE_MM = 28.0  # a straight upright line this long is a frame or separator, no QRS
-FLAT_RULE_MM = 70.0  # a straight level line this long is a frame
 LEAST_PITCH_MM = 6.0
 THICKEST_PEN_MM = 1.3
+GAP_MM = 0.6  # specks of paper within a line are shorter
+QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
 SOLID_MM = 7  # unbroken ink of this length is trace or mark, no speck
 
 
@@ -67,7 +67,8 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     mask = solid_ink(ink)
     for box in letters:
         mask[_window(ink, box)] = 0
-    mask, uprights = _without_rules(mask, ink)
+    rules, uprights = straight_rules(mask, ink)
+    mask[rules] = 0
     runs = _find_runs(mask, ink)
     heights = _row_heights(runs)
     if not heights:
@@ -86,28 +87,6 @@ def _window(ink: Ink, box: Box) -> tuple[slice, slice]:
         slice(max(int(r.row(box.top_mm)), 0), int(np.ceil(r.row(box.bottom_mm))) + 1),
         slice(max(int(r.col(box.left_mm)), 0), int(np.ceil(r.col(box.right_mm))) + 1),
     )
-
-
-def _without_rules(mask: np.ndarray, ink: Ink) -> tuple[np.ndarray, tuple[Box, ...]]:
-    """Take frames and full-height separators away."""
-    scale = ink.raster.px_per_mm
-    tall = np.ones((round(LONG_RULE_MM * scale), 1), np.uint8)
-    wide = np.ones((1, round(FLAT_RULE_MM * scale)), np.uint8)
-    upright = cv2.morphologyEx(mask, cv2.MORPH_OPEN, tall)
-    level = cv2.morphologyEx(mask, cv2.MORPH_OPEN, wide)
-    grow = np.ones((3, 3), np.uint8)
-    _, _, stats, _ = cv2.connectedComponentsWithStats(cv2.dilate(upright, grow))
-    boxes = tuple(
-        Box(
-            ink.raster.x_mm(left),
-            ink.raster.y_mm(top),
-            ink.raster.x_mm(left + width),
-            ink.raster.y_mm(top + height),
-        )
-        for left, top, width, height, _ in stats[1:]
-    )
-    rules = cv2.dilate(np.maximum(upright, level), grow)
-    return np.where(rules > 0, 0, mask).astype(np.uint8), boxes
 
 
 def _find_runs(mask: np.ndarray, ink: Ink) -> Runs:
@@ -186,5 +165,18 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
     if not solid:
         return None
     left, right = first + solid[0].start, first + solid[-1].stop
+    # Whole millimetres are too coarse, and a tall QRS leaves the row for a while.
+    parts = np.split(x, np.flatnonzero(np.diff(x) > GAP_MM) + 1)
+    for part in parts:
+        if part[-1] > right and part[0] - right < _reach_mm(part):
+            right = part[-1]
+    for part in reversed(parts):
+        if part[0] < left and left - part[-1] < _reach_mm(part):
+            left = part[0]
     within = x[(x >= left) & (x <= right)]
     return Row(y_mm, float(within[0]), float(within[-1]))
+
+
+def _reach_mm(part: np.ndarray) -> float:
+    """How far from the rest of a row a piece of ink may stand and still belong to it."""
+    return QRS_MM if part[-1] - part[0] > PIECE_MM else 0.0

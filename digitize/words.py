@@ -172,7 +172,7 @@ def _crop(ink: Ink, box: Box) -> np.ndarray:
     return np.clip(255 * (1 - part), 0, 255).astype(np.uint8)
 
 
-_NUMBER = r"(\d{1,3}(?:[.,]\d)?|[lIO]{1,2}|[lI]0|lO|[sS])"
+_NUMBER = r"(?<![\d.,])(\d{1,3}(?:[.,]\d)?|[lIO]{1,2}|[lI]0|lO|[sS])"
 _SPEED = re.compile(_NUMBER + r"\s*mm\s*[/7|lI]?\s*s(?!\w*V)", re.IGNORECASE)
 _GAIN = re.compile(_NUMBER + r"\s*mm\s*[/7|lI]?\s*mv", re.IGNORECASE)
 _SLIPS = str.maketrans({"l": "1", "I": "1", "O": "0", "o": "0", "s": "5", "S": "5", ",": "."})
