@@ -6,15 +6,21 @@ input could not be used, 2 the command was not understood.
 """
 
 import os
+import sys
+from functools import partial
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from digitize import CAUTION, program_version
 from digitize.console import console
+from digitize.errors import InputError
 from digitize.formats import FORMATS
 from digitize.options import Options, names_from, scale_from
+
+if TYPE_CHECKING:
+    from digitize.archive.run import Kept
 
 app = typer.Typer(
     add_completion=False,
@@ -154,6 +160,21 @@ def archive(
         str | None,
         typer.Option(help="Address of a dask scheduler whose workers read, tcp://HOST:PORT."),
     ] = None,
+    manifest: Annotated[
+        Path | None,
+        typer.Option(help="CSV of whose the files are: file, patient, date (page, sex, age)."),
+    ] = None,
+    name_pattern: Annotated[
+        str | None,
+        typer.Option(help="Regular expression of file names with (?P<patient>...), (?P<date>...)."),
+    ] = None,
+    keep_header: Annotated[
+        bool, typer.Option("--keep-header", help="Keep the printing outside the traces as text.")
+    ] = False,
+    header_fields: Annotated[
+        Path | None,
+        typer.Option(help="File of regular expressions whose named groups are fields of it."),
+    ] = None,
     page_seconds: Annotated[
         float, typer.Option(min=1, help="Give a page up after so long.")
     ] = 120.0,
@@ -188,8 +209,16 @@ def archive(
 
     limits = Limits(page_seconds, page_memory_mb)
     engine = this_machine(processes) if cluster is None else workers_of(cluster)
+    kept = _kept(manifest, name_pattern, header_fields, keep_header=keep_header)
     failed = run_archive(
-        folders, store, options, limits, engine, read=read_for_store, again_failed=again == "failed"
+        folders,
+        store,
+        options,
+        limits,
+        engine,
+        read=partial(read_for_store, header=kept.header),
+        kept=kept,
+        again_failed=again == "failed",
     )
     raise typer.Exit(1 if failed else 0)
 
@@ -212,3 +241,26 @@ def redact(
     with console(len(files)) as shown_on:
         failed = redact_files(files, Options(), shown_on, folder=output, replace=replace)
     raise typer.Exit(1 if failed else 0)
+
+
+def _kept(
+    manifest: Path | None, pattern: str | None, fields: Path | None, *, keep_header: bool
+) -> "Kept":
+    """What the store holds beside what the pages say."""
+    from digitize.archive.charts import Charts, name_pattern, read_manifest
+    from digitize.archive.header import read_patterns
+    from digitize.archive.run import Kept
+
+    if fields is not None and not keep_header:
+        raise typer.BadParameter("--header-fields looks into the header: give --keep-header too")
+    try:
+        rows = {} if manifest is None else read_manifest(manifest)
+        names = None if pattern is None else name_pattern(pattern)
+        header = () if fields is None else read_patterns(fields)
+    except ValueError as error:
+        raise typer.BadParameter(str(error)) from None
+    except InputError as error:
+        print(error, file=sys.stderr)
+        raise typer.Exit(1) from None
+    said = Charts(rows, names) if manifest or names else None
+    return Kept(said, header if keep_header else None)

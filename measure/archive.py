@@ -48,7 +48,7 @@ def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
                 shown_on.line(f"{len(todo)} pages to measure")
                 for key, found in _measure_all(store, todo, processes):
                     if found.content:
-                        put(store, todo[key], {ENDING: found.content})
+                        put(store, todo[key][0], {ENDING: found.content})
                     keep(catalogue.db, key, found)
                     if found.reason:
                         failed += 1
@@ -61,10 +61,10 @@ def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
     return failed
 
 
-def measure_page(path: Path) -> Measured:
+def measure_page(path: Path, person: Person) -> Measured:
     """Return the reading of one tracing as plain values, or the reason why there is none."""
     try:
-        reading = read(read_tracing(path), Person())
+        reading = read(read_tracing(path), person)
     except InputError as error:
         return Measured(str(error).removeprefix(f"{error.place}: "))
     except _FAULTS as fault:
@@ -84,25 +84,29 @@ def _existing(store: Path) -> Path:
     return store / CATALOGUE
 
 
-def _todo(db: sqlite3.Connection, *, again: bool) -> Iterator[tuple[Key, str]]:
-    """Pages with a tracing, and where it stands; those without a reading unless `again`."""
+def _todo(db: sqlite3.Connection, *, again: bool) -> Iterator[tuple[Key, tuple[str, Person]]]:
+    """Pages with a tracing, where it is, whose it is; those without a reading unless `again`."""
     sql = """
-        SELECT p.sha256, p.options, p.page, p.stem FROM page p
+        SELECT p.sha256, p.options, p.page, p.stem, c.sex, c.age_years FROM page p
         LEFT JOIN reading r USING (sha256, options, page)
+        LEFT JOIN chart c ON c.sha256 = p.sha256 AND c.page IN (0, p.page)
         WHERE p.stem IS NOT NULL AND (? OR r.version IS NULL) ORDER BY 1, 2, 3
     """
-    for sha256, options, page, stem in db.execute(sql, (again,)):
-        yield (sha256, options, page), stem
+    for sha256, options, page, stem, sex, age_years in db.execute(sql, (again,)):
+        yield (sha256, options, page), (stem, Person(sex, age_years))
 
 
 def _measure_all(
-    store: Path, todo: Mapping[Key, str], processes: int
+    store: Path, todo: Mapping[Key, tuple[str, Person]], processes: int
 ) -> Iterator[tuple[Key, Measured]]:
     """Each page with what was found, as it comes."""
     context = multiprocessing.get_context("forkserver")
     context.set_forkserver_preload(["measure.archive"])
     with ProcessPoolExecutor(processes, mp_context=context) as pool:
-        work = {pool.submit(measure_page, _tracing(store, stem)): k for k, stem in todo.items()}
+        work = {
+            pool.submit(measure_page, _tracing(store, stem), person): key
+            for key, (stem, person) in todo.items()
+        }
         try:
             for future in as_completed(work):
                 yield work[future], future.result()

@@ -184,8 +184,8 @@ def archive(
 ) -> None:
     """Measure every page of a store: NAME.reading.json, and rows to ask with `measure find`.
 
-    Started again, it continues. Sex and age are not known here, so that thresholds that depend on
-    them may stay undecided.
+    Started again, it continues. Where no manifest says sex and age, thresholds that depend on them
+    may stay undecided.
     """
     from measure.archive import measure_archive
 

@@ -23,6 +23,7 @@ from digitize.archive.store import CATALOGUE
 from digitize.errors import UnreadableFile
 from measure.catalogue import COLUMNS, ERRORS, FINDINGS, INTERVALS, columns_of
 
+_OF_CHART = "(SELECT c.{} FROM chart c WHERE c.sha256 = p.sha256 AND c.page IN (0, p.page))"
 WHOLE_NUMBERS = ("page", "leads", "checks_failed", "width_px", "height_px")
 NUMBERS_OF_PAGE = (
     *WHOLE_NUMBERS,
@@ -30,15 +31,16 @@ NUMBERS_OF_PAGE = (
 )
 WORDS_OF_PAGE = (
     *("sha256", "options", "status", "reason", "stem", "layout", "timing"),
-    *("speed_source", "gain_source", "version"),
+    *("speed_source", "gain_source", "version", "header", "header_fields"),
 )
 NAMES: Mapping[str, str] = {  # of everything that can be asked, with its SQL
     **{name: f"p.{name}" for name in (*NUMBERS_OF_PAGE, *WORDS_OF_PAGE)},
     **{name: f"r.{name}" for name in (*INTERVALS, *ERRORS, *FINDINGS)},
+    **{name: _OF_CHART.format(name) for name in ("patient", "date", "sex", "age_years")},
     "reading_reason": "r.reason",
     "reading_version": "r.version",
 }
-NUMBERS = frozenset((*NUMBERS_OF_PAGE, *INTERVALS, *ERRORS))
+NUMBERS = frozenset((*NUMBERS_OF_PAGE, *INTERVALS, *ERRORS, "age_years"))
 EVERYTHING = "all"  # in place of the names of columns
 _ALWAYS = ("sha256", "page", "stem", "status")
 

@@ -2,15 +2,16 @@
 
 A page's row is committed after its files are in place, so a row stands for files that are there.
 Tables: `source` (where a content was met), `work` (one content under one set of options, done when
-all its pages have a row), `page` (one page each: what was read, or why not). `user_version` is the
+all its pages have a row), `page` (one page each: what was read, or why not), `chart` (what a person
+says of a content: whose, of which day; page 0 stands for all its pages). `user_version` is the
 version of this schema; a later one is refused, an earlier one is brought up step by step.
 """
 
 import sqlite3
 from collections import Counter
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from contextlib import closing, contextmanager
-from dataclasses import asdict, dataclass, fields
+from dataclasses import asdict, astuple, dataclass, fields
 from pathlib import Path
 from typing import Any
 
@@ -41,7 +42,26 @@ _STEPS = (
     ) WITHOUT ROWID;
     CREATE INDEX page_status ON page (status);
     """,
+    """
+    CREATE TABLE chart (
+        sha256 TEXT NOT NULL, page INTEGER NOT NULL,
+        patient TEXT, date TEXT, sex TEXT, age_years REAL, PRIMARY KEY (sha256, page)
+    ) WITHOUT ROWID;
+    CREATE INDEX chart_patient ON chart (patient, date);
+    ALTER TABLE page ADD COLUMN header TEXT;
+    ALTER TABLE page ADD COLUMN header_fields TEXT;
+    """,
 )
+
+
+@dataclass(frozen=True)
+class Chart:
+    """What a person says of a page; None is what was not said. `date` is year-month-day."""
+
+    patient: str | None = None
+    date: str | None = None
+    sex: str | None = None  # "male" or "female"
+    age_years: float | None = None
 
 
 @dataclass(frozen=True)
@@ -49,7 +69,9 @@ class PageRow:
     """What became of one page; page 0 is a file that could not be opened as a whole.
 
     `reason` is empty for a good page, else says in words what to look at or what went wrong.
-    `read_share` is the share of printed samples that could be read.
+    `read_share` is the share of printed samples that could be read. `header` is the printing
+    outside the traces and `header_fields` what a person's patterns found in it, as JSON; both only
+    where it was asked for.
     """
 
     page: int
@@ -70,6 +92,8 @@ class PageRow:
     seconds: float | None = None
     peak_mb: float | None = None
     version: str | None = None
+    header: str | None = None
+    header_fields: str | None = None
 
 
 _COLUMNS = tuple(field.name for field in fields(PageRow))
@@ -159,6 +183,16 @@ class Catalogue:
             f"INSERT OR REPLACE INTO page (sha256, options, {names}) VALUES ({marks})",
             (sha256, options, *asdict(row).values()),
         )
+
+    def set_charts(self, sha256: str, charts: Mapping[int, Chart]) -> None:
+        """Put what is said of a content in place of what was said before."""
+        with self.db:
+            self.db.execute("BEGIN IMMEDIATE")
+            self.db.execute("DELETE FROM chart WHERE sha256 = ?", (sha256,))
+            self.db.executemany(
+                "INSERT INTO chart VALUES (?, ?, ?, ?, ?, ?)",
+                [(sha256, page, *astuple(chart)) for page, chart in charts.items()],
+            )
 
     def finish(self, sha256: str, options: str) -> None:
         """Note that a content has all its rows."""

@@ -4,15 +4,21 @@ An engine is an executor of `concurrent.futures` with the number of pages to hav
 run the same function on the same records, so that a page comes out the same whoever reads it.
 """
 
+import multiprocessing
 import threading
 from collections.abc import Callable, Iterator
 from concurrent.futures import CancelledError, Executor, Future, ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
+from digitize import program_version
 from digitize.archive.catalogue import FAILED, PageRow
 from digitize.archive.worker import Outcome, PageDone, Task, perform
 from digitize.errors import CannotWrite, UnreadableFile
+
+if TYPE_CHECKING:
+    from distributed import Client
 
 _AHEAD = 2  # pages per thread of a cluster: none waits for the next one to be sent
 _ANSWER_S = 15  # for a scheduler to answer
@@ -66,8 +72,29 @@ def cluster(address: str) -> Iterator[Engine]:
         threads = sum(client.nthreads().values())
         if not threads:
             raise UnreadableFile(f"the dask scheduler at {address} has no worker: start some")
+        _check_workers(client)
         executor: Executor = client.get_executor()
         yield Engine(lambda task: executor.submit(perform, task), threads * _AHEAD, _of_cluster)
+
+
+def _check_workers(client: "Client") -> None:
+    """Refuse workers of another version, or that may not have processes of their own."""
+    try:
+        facts = set(client.run(_facts_of_worker).values())
+    except ImportError:
+        facts = {(None, False)}
+    if {version for version, _ in facts} != {program_version()}:
+        raise UnreadableFile("the workers lack this version of the program: install it there")
+    if any(daemon for _, daemon in facts):
+        raise UnreadableFile(
+            "the workers may not have processes of their own: start them with "
+            "DASK_DISTRIBUTED__WORKER__DAEMON=False"
+        )
+
+
+def _facts_of_worker() -> tuple[str | None, bool]:
+    """Version of the program there, and whether the worker is a process that may have no others."""
+    return program_version(), multiprocessing.current_process().daemon
 
 
 def _of_cluster(task: Task, future: "Future[Outcome]") -> Outcome:

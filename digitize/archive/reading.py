@@ -1,13 +1,16 @@
 """One page read for the store: its files, and its row of the catalogue."""
 
 import io
-from collections.abc import Mapping
+import json
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 from PIL import Image
 
 from digitize import program_version
 from digitize.archive.catalogue import GOOD, LOOK, PageRow
+from digitize.archive.header import header_fields, header_text
 from digitize.options import Options
 from digitize.overlay import draw_overlay
 from digitize.pages import Page
@@ -19,10 +22,14 @@ from digitize.tracing_files import tracing_files
 THUMB_PX = 560  # wide enough to see a trace that jumped a row
 
 
-def read_for_store(page: Page, options: Options) -> tuple[PageRow, Mapping[str, bytes]]:
+def read_for_store(
+    page: Page, options: Options, *, header: Sequence[str] | None = None
+) -> tuple[PageRow, Mapping[str, bytes]]:
     """Return the row of a page and its files, ending to content.
 
     Nothing of the printing outside the traces is kept: the overlay is drawn on a covered page.
+    Where `header` is given, that printing goes into the row as text, with the fields that these
+    patterns find.
 
     Raises
     ------
@@ -37,7 +44,12 @@ def read_for_store(page: Page, options: Options) -> tuple[PageRow, Mapping[str, 
         ".thumb.jpg": _thumbnail(overlay),
         **{name.removeprefix("x"): data for name, data in tracing_files(tracing, "x").items()},
     }
-    return row_of(tracing), files
+    row = row_of(tracing)
+    if header is not None:
+        text = header_text(stages)
+        fields = json.dumps(header_fields(text, header), ensure_ascii=False)
+        row = replace(row, header=text, header_fields=fields)
+    return row, files
 
 
 def row_of(tracing: Tracing) -> PageRow:

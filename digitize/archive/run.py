@@ -13,9 +13,10 @@ from pathlib import Path
 
 from digitize import CAUTION
 from digitize.archive.catalogue import FAILED, Catalogue, PageRow, opened
+from digitize.archive.charts import Charts
 from digitize.archive.contact import STATUS_WORDS, contact_sheet
 from digitize.archive.engines import Engine
-from digitize.archive.plan import Plan, make_plan
+from digitize.archive.plan import Plan, make_plan, options_key
 from digitize.archive.sources import Source, remove, unpack
 from digitize.archive.store import CATALOGUE, CONTACT_SHEET, locked, put, stem_of, temporary
 from digitize.archive.worker import Limits, Outcome, PageDone, Reader, Task
@@ -23,6 +24,20 @@ from digitize.console import Console, console
 from digitize.errors import CannotWrite, InputError, at, shown
 from digitize.options import Options
 from digitize.safe_write import write_files
+
+
+@dataclass(frozen=True)
+class Kept:
+    """What the store is to hold beside what the pages say: nothing of it unless it is asked for.
+
+    `header` are the patterns for the header's fields where its printing is kept, else None.
+    """
+
+    charts: Charts | None = None
+    header: tuple[str, ...] | None = None
+
+
+NOTHING_KEPT = Kept()
 
 
 def run_archive(
@@ -33,6 +48,7 @@ def run_archive(
     engine: AbstractContextManager[Engine],
     *,
     read: Reader,
+    kept: Kept = NOTHING_KEPT,
     again_failed: bool = False,
 ) -> int:
     """Read every page under the folders into a store and return how many could not be read.
@@ -49,14 +65,17 @@ def run_archive(
         Who does the work.
     read : callable
         Reads one page; must be a function of a module.
+    kept : Kept
+        What a person says of the sources, and whether the printing of the header is kept.
     again_failed : bool
         Whether to take up again what failed before.
     """
     try:
         with locked(store), opened(store / CATALOGUE) as catalogue:
-            plan = make_plan(folders, options, catalogue, again_failed=again_failed)
+            key = options_key(options, kept.header)
+            plan = make_plan(folders, key, catalogue, kept.charts, again_failed=again_failed)
             with console(len(plan.todo)) as shown_on:
-                for text in (plan, *plan.unreadable):
+                for text in (plan, *plan.doubts, *plan.unreadable):
                     shown_on.line(str(text))
                 with engine as at_work:
                     run = _Run(store, catalogue, plan, options, limits, shown_on, read, at_work)

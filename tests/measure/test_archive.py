@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from digitize.archive.catalogue import PageRow, opened
+from digitize.archive.catalogue import Chart, PageRow, opened
 from digitize.archive.reading import row_of
 from digitize.archive.store import CATALOGUE, put, stem_of
 from digitize.errors import UnreadableFile
@@ -16,7 +16,7 @@ from digitize.tracing import FS_HZ, LEADS
 from digitize.tracing_files import read_tracing, tracing_files
 from measure.archive import measure_archive, measure_page
 from measure.find import Question, find
-from measure.reading import read
+from measure.reading import Person, read
 from measure.sources import tracing_from_samples
 from tests.digitize.made_tracing import panel, tracing
 from tests.drawn.heart import HeartSpec, record_model
@@ -88,9 +88,17 @@ def test_page_without_a_beat_says_so_and_started_again_there_is_nothing_to_do(st
     assert "2 pages to measure" in capsys.readouterr().err
 
 
+def test_sex_and_age_of_the_manifest_count(store):
+    with opened(store / CATALOGUE) as catalogue:
+        catalogue.set_charts("1" * 64, {0: Chart("K1", None, "female", 71.0)})
+    measure_archive(store, processes=1)
+    document = json.loads((store / f"{stem_of('1' * 64, OPTIONS, 1)}.reading.json").read_bytes())
+    assert document["person"] == {"sex": "female", "age_years": 71.0}
+
+
 def test_damaged_tracing_is_a_reason(tmp_path):
     (tmp_path / "x.json").write_text("{")
-    assert "damaged" in measure_page(tmp_path / "x.json").reason
+    assert "damaged" in measure_page(tmp_path / "x.json", Person()).reason
 
 
 def test_no_store(tmp_path, capsys):

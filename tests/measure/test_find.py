@@ -7,7 +7,7 @@ import pandas as pd
 import pytest
 from typer.testing import CliRunner
 
-from digitize.archive.catalogue import PageRow, opened
+from digitize.archive.catalogue import Chart, PageRow, opened
 from digitize.archive.store import CATALOGUE
 from measure.catalogue import FINDINGS, INTERVALS, Measured, keep, open_tables
 from measure.cli import app
@@ -173,6 +173,16 @@ def test_same_table_as_csv_and_parquet(asked, tmp_path):
         run(asked, "--columns", "qrs_ms,lbbb_strict", "--to", to, "-o", tmp_path / f"t.{to}")
     left, right = pd.read_csv(tmp_path / "t.csv"), pd.read_parquet(tmp_path / "t.parquet")
     pd.testing.assert_frame_equal(left[right.columns], right, check_dtype=False)
+
+
+def test_what_a_manifest_said_can_be_asked(asked):
+    with opened(asked / CATALOGUE) as catalogue:
+        catalogue.set_charts("a", {0: Chart("K1", "2024-03-01", "female", 71.0)})
+        catalogue.set_charts("b", {1: Chart("K2"), 2: Chart("K3")})
+    assert ask(asked, "patient = 'K1' and date < '2025' and age_years > 70")[0][0] == "a"
+    assert ask(asked, "patient = 'K2'")[0][0] == "b"
+    assert ask(asked, "patient = 'K3'") == []
+    assert ask(asked, "patient is missing")[0][0] == "c"
 
 
 def test_files_are_not_written_over_and_parquet_is_no_text(asked, tmp_path):

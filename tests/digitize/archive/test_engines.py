@@ -69,7 +69,7 @@ def workers():
     with (
         dask.config.set({"distributed.worker.daemon": False}),
         LocalCluster(
-            n_workers=WORKERS, threads_per_worker=1, dashboard_address=None, memory_limit=0
+            n_workers=WORKERS, threads_per_worker=1, dashboard_address=":0", memory_limit=0
         ) as made_cluster,
     ):
         yield made_cluster.scheduler_address
@@ -106,6 +106,13 @@ def _kill_when_busy(store, victim):
             pass
         time.sleep(0.02)
     os.kill(victim, signal.SIGKILL)
+
+
+def test_workers_that_may_have_no_processes_are_refused():
+    with dask.config.set({"distributed.worker.daemon": True}):
+        few = LocalCluster(n_workers=1, threads_per_worker=1, dashboard_address=":0")
+    with few, pytest.raises(UnreadableFile, match="DAEMON=False"), cluster(few.scheduler_address):
+        pass
 
 
 def test_no_scheduler_and_no_address_are_told(monkeypatch):
