@@ -160,15 +160,19 @@ def overread(
 ) -> None:
     """Check, correct, measure and sign in the browser: a page that this machine serves to itself.
 
-    What a person does is kept in NAME.overread.json; the input is never touched.
+    What a person does is kept in NAME.overread.json; the input is never touched. A store stands for
+    all its pages that need a look, the JSON of a page in a store for that page's source.
     """
     options = _options(speed, gain, layout, None, None, None, px_per_mm, Options.max_megapixels)
     person = _person(sex, age)
     from digitize.errors import InputError
     from measure.overread.serve import serve
+    from measure.overread.stored import sources_of
 
     try:
-        serve(files, options, person, folder=output, port=port, browser=not no_browser)
+        sources, journals = sources_of(files)
+        place = output or journals
+        serve(sources, options, person, folder=place, port=port, browser=not no_browser)
     except InputError as error:
         print(error, file=sys.stderr)
         raise typer.Exit(1) from None

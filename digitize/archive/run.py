@@ -14,11 +14,11 @@ from pathlib import Path
 from digitize import CAUTION
 from digitize.archive.catalogue import FAILED, Catalogue, PageRow, opened
 from digitize.archive.charts import Charts
-from digitize.archive.contact import STATUS_WORDS, contact_sheet
+from digitize.archive.contact import STATUS_WORDS, contact_sheets, sheet_name
 from digitize.archive.engines import Engine
 from digitize.archive.plan import Plan, make_plan, options_key
 from digitize.archive.sources import Source, remove, unpack
-from digitize.archive.store import CATALOGUE, CONTACT_SHEET, locked, put, stem_of, temporary
+from digitize.archive.store import CATALOGUE, locked, put, stem_of, temporary
 from digitize.archive.worker import Limits, Outcome, PageDone, Reader, Task
 from digitize.console import Console, console
 from digitize.errors import CannotWrite, InputError, at, shown
@@ -81,13 +81,13 @@ def run_archive(
                     run = _Run(store, catalogue, plan, options, limits, shown_on, read, at_work)
                     run.work()
             counts = catalogue.counts()
-            page = contact_sheet(catalogue.rows(), counts)
-            write_files({store / CONTACT_SHEET: page}, replace=True)
+            for name, sheet in contact_sheets(catalogue.rows(), counts):
+                write_files({store / name: sheet}, replace=True)
     except InputError as error:
         print(error, file=sys.stderr)
         return 1
     told = ", ".join(f"{counts[status]} {word}" for status, word in STATUS_WORDS.items())
-    print(f"Pages in the store: {told}. Look at {shown(store / CONTACT_SHEET)}.\n{CAUTION}")
+    print(f"Pages in the store: {told}. Look at {shown(store / sheet_name(1))}.\n{CAUTION}")
     return run.failed + len(plan.unreadable)
 
 

@@ -15,7 +15,6 @@ from digitize.errors import CannotWrite, shown
 from digitize.safe_write import write_files
 
 CATALOGUE = "catalogue.sqlite"
-CONTACT_SHEET = "contact_sheet.html"
 _NAME_DIGITS = 32  # of the hash: two contents will not meet in 128 bits
 
 

@@ -12,9 +12,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from digitize.archive.contact import sheet_name
 from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
-from digitize.archive.store import CONTACT_SHEET
 from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize.archive import stand_in as made
@@ -192,7 +192,7 @@ def test_names_of_sources_are_in_no_name_of_the_store_and_not_on_the_sheet(scans
     made.save(scans / "Doe_Jane_1950.png", made.READ)
     run(scans, store)
     assert not any("Doe" in str(path.relative_to(store)) for path in store.rglob("*"))
-    assert "Doe" not in (store / CONTACT_SHEET).read_text()
+    assert "Doe" not in (store / sheet_name(1)).read_text()
 
 
 def test_one_writer_at_a_time(scans, store, capsys):
