@@ -122,7 +122,12 @@ def page(
 def export(
     names: Annotated[list[Path], typer.Argument(help="Tracings: NAME.json, NAME.csv or NAME.")],
     form: Annotated[
-        str, typer.Option("--as", help=f"Open format: {', '.join(FORMATS)}.", show_default=False)
+        str,
+        typer.Option(
+            "--as",
+            help=f"Open format: {', '.join(FORMATS)}; dicom-scan: the page itself.",
+            show_default=False,
+        ),
     ],
     output: Annotated[
         Path | None,
@@ -135,9 +140,10 @@ def export(
     Nothing is filled in: where nothing was read the format's own sign for it stands, and a format
     without one refuses. Patient fields stay empty.
     """
-    if form not in FORMATS:
-        raise typer.BadParameter(f"'{form}' is not known here: give {', '.join(FORMATS)}")
-    from digitize.formats.command import export_files
+    from digitize.formats.command import SCAN, export_files
+
+    if form not in (*FORMATS, SCAN):
+        raise typer.BadParameter(f"'{form}' is not known here: give {', '.join((*FORMATS, SCAN))}")
 
     with console(len(names)) as shown_on:
         failed = export_files(names, form, shown_on, folder=output, replace=replace)

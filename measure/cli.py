@@ -179,6 +179,40 @@ def overread(
 
 
 @app.command()
+def export(
+    files: Annotated[
+        list[Path],
+        typer.Argument(help="Tracings (CSV, JSON); scans, photos, PDFs; WFDB, EDF, DICOM."),
+    ],
+    form: Annotated[
+        str,
+        typer.Option("--as", help="dicom, fhir, aecg, pdf or dicom-pdf.", show_default=False),
+    ],
+    output: Annotated[
+        Path | None,
+        typer.Option("-o", "--output", help="Folder for the files; else beside each input."),
+    ] = None,
+    sex: Annotated[str | None, typer.Option(help="male or female, where known.")] = None,
+    age: Annotated[float | None, typer.Option(help="Age in years, where known.")] = None,
+    replace: Annotated[bool, typer.Option("--replace", help="Write over earlier files.")] = False,
+) -> None:
+    """Write ECGs with what was measured on them for other systems, or the report as a document.
+
+    Each number goes with its standard error; what could not be measured is said to be missing.
+    Patient fields stay empty.
+    """
+    person = _person(sex, age)
+    from digitize.console import console
+    from measure.export import FORMS, export_files
+
+    if form not in FORMS:
+        raise typer.BadParameter(f"'{form}' is not known here: give {', '.join(FORMS)}")
+    with console(len(files)) as shown_on:
+        failed = export_files(files, form, person, shown_on, folder=output, replace=replace)
+    raise typer.Exit(1 if failed else 0)
+
+
+@app.command()
 def archive(
     store: Annotated[Path, typer.Argument(help="A store that digitize archive has filled.")],
     processes: Annotated[

@@ -2,12 +2,14 @@
 
 The format has no value for "no sample", but a series may hold many sequence sets, each with its
 own time and leads of equal length: every stretch without a gap becomes one, so nothing is filled
-in. Subject, trial and date are not known here and say so (null flavour UNK).
+in. Measurements that the nomenclature knows are annotations of the series. Subject, trial and date
+are not known here and say so (null flavour UNK).
 
 References
 ----------
 HL7 v3 Annotated ECG (aECG), release 1, ANSI/HL7 V3 ECG R1-2004, and its implementation guide
-(2005): structure and codes written down from memory of the guide.
+(2005): structure and codes written down from memory of the guide, as are the reference identifiers
+of measurements.
 """
 
 import uuid
@@ -18,6 +20,7 @@ import numpy as np
 
 from digitize import program_version
 from digitize.formats.leads import DERIVED, LeadTable, lead_table
+from digitize.formats.measurements import NOTHING, Measurements, rounded
 from digitize.tracing import Tracing
 
 V3 = "urn:hl7-org:v3"
@@ -28,7 +31,7 @@ _CPT = "2.16.840.1.113883.6.12"
 _ROUTINE_ECG = "93000"
 
 
-def files(tracing: Tracing, stem: str) -> dict[str, bytes]:
+def files(tracing: Tracing, stem: str, measurements: Measurements = NOTHING) -> dict[str, bytes]:
     """One annotated ECG as XML.
 
     Raises
@@ -60,6 +63,7 @@ def files(tracing: Tracing, stem: str) -> dict[str, bytes]:
     _add(device, "softwareName").text = f"millivellum {program_version()}"
     for (start, stop), columns in stretches(table).items():
         _add_set(series, table, start, stop, columns)
+    _add_measurements(series, measurements)
     Xml.indent(root, " ")
     text = Xml.tostring(root, encoding="utf-8", xml_declaration=True)
     return {f"{stem}.aecg.xml": text}
@@ -94,6 +98,21 @@ def _add_set(
         _add(value, "origin", value="0", unit="uV")
         _add(value, "scale", value="1", unit="uV")
         _add(value, "digits").text = " ".join(map(str, table.steps[start:stop, column].tolist()))
+
+
+def _add_measurements(series: Xml.Element, measurements: Measurements) -> None:
+    """Numbers that were measured and have an identifier, as one annotation set."""
+    known = [n for n in measurements.numbers if n.value is not None and n.concept.refid]
+    if not known:
+        return
+    annotations = _add(_add(series, "subjectOf"), "annotationSet")
+    _add(annotations, "activityTime", nullFlavor="UNK")
+    for number in known:
+        annotation = _add(_add(annotations, "component"), "annotation")
+        refid, unit = number.concept.refid or "", number.concept.unit
+        _add(annotation, "code", code=refid, codeSystem=_MDC, codeSystemName=_MDC_NAME)
+        value = f"{rounded(number.value or 0.0):g}"
+        _add(annotation, "value", **{_XSI_TYPE: "PQ", "value": value, "unit": unit})
 
 
 def _add(parent: Xml.Element, name: str, **attributes: str) -> Xml.Element:

@@ -1,26 +1,25 @@
 """A DICOM 12-lead ECG waveform object, NAME.dcm, in steps of 1 µV.
 
 The waveform is marked DERIVED. Where nothing was printed or read stands the Waveform Padding Value.
-Patient and study stay anonymous. The standard demands an acquisition time, which no page tells
-reliably: a placeholder stands there, and the object says that dates were removed. The same
-tracing gives the same identifiers and the same bytes.
+The standard demands an acquisition time, which no page tells reliably: a placeholder stands there.
+Measurements are waveform annotations: a number with its code and unit, its standard error and what
+could not be measured as text.
 
 References
 ----------
-DICOM PS3.3 A.34.3 (12-lead ECG), C.10.9 (waveform), C.7.1.1 (patient); PS3.16 CID 3001 (leads);
-PS3.5 B.2 (identifiers under 2.25).
+DICOM PS3.3 A.34.3 (12-lead ECG), C.10.9 (waveform), C.10.10 (annotation); PS3.16 CID 3001 (leads).
 """
 
 import hashlib
-import io
-import uuid
+from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from digitize import program_version
-from digitize.errors import CannotExport, UnreadableFile
-from digitize.formats.leads import NO_SAMPLE, LeadTable, lead_table
+from digitize.errors import CannotExport
+from digitize.formats.dicom_object import PLACEHOLDER, code, new_object, to_bytes, without_person
+from digitize.formats.leads import DERIVED, NO_SAMPLE, LeadTable, lead_table
+from digitize.formats.measurements import NOTHING, Measurements, Number, rounded
 from digitize.tracing import Tracing
 
 if TYPE_CHECKING:
@@ -28,16 +27,19 @@ if TYPE_CHECKING:
 
 TWELVE_LEAD_ECG = "1.2.840.10008.5.1.4.1.1.9.1.1"
 MOST_CHANNELS = 13  # PS3.3 A.34.3.4.4
-PLACEHOLDER = ("19000101", "000000")
+OWN_SCHEME = "99MILLIVELLUM"  # of concepts without a standard code: "99" marks it as local (PS3.16)
+NUMBERS, REMARKS, FINDINGS = 1, 2, 3  # annotation groups
 
+_LONGEST_TEXT = 1024  # bytes of a value of ST (PS3.5 6.2)
 _MEANINGS = {
     "aVR": "aVR, augmented voltage, right",
     "aVL": "aVL, augmented voltage, left",
     "aVF": "aVF, augmented voltage, foot",
 }
+_UNITS = {"ms": "millisecond", "deg": "degree", "/min": "per minute", "uV": "microvolt"}
 
 
-def files(tracing: Tracing, stem: str) -> dict[str, bytes]:
+def files(tracing: Tracing, stem: str, measurements: Measurements = NOTHING) -> dict[str, bytes]:
     """One DICOM file.
 
     Raises
@@ -53,51 +55,16 @@ def files(tracing: Tracing, stem: str) -> dict[str, bytes]:
             f"a 12-lead ECG object holds {MOST_CHANNELS} leads, this has {len(table.names)}: "
             "export as wfdb"
         )
-    try:
-        from pydicom.dataset import Dataset, FileMetaDataset
-        from pydicom.uid import UID, ExplicitVRLittleEndian
-    except ImportError:
-        raise UnreadableFile(
-            "writing DICOM needs one more package: install millivellum[dicom]"
-        ) from None
-    content = hashlib.sha256(table.steps.tobytes() + repr(table.names).encode()).hexdigest()
-    name = f"{tracing.source.sha256}/{tracing.source.page}/{content}"
-    dataset = Dataset()
-    _identify(dataset, name)
-    dataset.WaveformSequence = [_group(table)]
-    dataset.file_meta = FileMetaDataset()
-    dataset.file_meta.MediaStorageSOPClassUID = UID(TWELVE_LEAD_ECG)
-    dataset.file_meta.MediaStorageSOPInstanceUID = dataset.SOPInstanceUID
-    dataset.file_meta.TransferSyntaxUID = ExplicitVRLittleEndian
-    buffer = io.BytesIO()
-    dataset.save_as(buffer, enforce_file_format=True)
-    return {f"{stem}.dcm": buffer.getvalue()}
-
-
-def _identify(dataset: "Dataset", name: str) -> None:
-    """Everything but the waveform: PS3.3 modules of patient, study, series, equipment, instance."""
-    for keyword in (
-        *("PatientName", "PatientID", "PatientBirthDate", "PatientSex"),
-        *("StudyDate", "StudyTime", "StudyID", "AccessionNumber", "ReferringPhysicianName"),
-        "AcquisitionContextSequence",
-    ):
-        setattr(dataset, keyword, [] if keyword.endswith("Sequence") else "")
-    dataset.PatientIdentityRemoved = "YES"
-    dataset.DeidentificationMethod = "Header of the page not read"
-    dataset.LongitudinalTemporalInformationModified = "REMOVED"
-    dataset.StudyInstanceUID = _uid(f"study {name}")
-    dataset.SeriesInstanceUID = _uid(f"series {name}")
-    dataset.SOPInstanceUID = _uid(name)
-    dataset.SOPClassUID = TWELVE_LEAD_ECG
-    dataset.Modality = "ECG"
-    dataset.SeriesDescription = "Derived from a scanned document, no diagnosis"
-    dataset.SeriesNumber = dataset.InstanceNumber = 1
-    dataset.Manufacturer = "millivellum"
-    dataset.ManufacturerModelName = "millivellum"
-    dataset.DeviceSerialNumber = "none"
-    dataset.SoftwareVersions = program_version()
-    dataset.ContentDate, dataset.ContentTime = PLACEHOLDER
+    said = repr((table.names, measurements)).encode()
+    content = hashlib.sha256(table.steps.tobytes() + said).hexdigest()
+    dataset = new_object(tracing.source, TWELVE_LEAD_ECG, "ECG", content)
+    without_person(dataset)
     dataset.AcquisitionDateTime = "".join(PLACEHOLDER)
+    dataset.AcquisitionContextSequence = []
+    dataset.WaveformSequence = [_group(table)]
+    if measurements != NOTHING:
+        dataset.WaveformAnnotationSequence = list(_annotations(measurements))
+    return {f"{stem}.dcm": to_bytes(dataset)}
 
 
 def _group(table: LeadTable) -> "Dataset":
@@ -129,10 +96,10 @@ def _channel(number: int, name: str, table: LeadTable) -> "Dataset":
     channel = Dataset()
     channel.WaveformChannelNumber = number
     channel.ChannelSourceSequence = [
-        _code(f"2:{table.code(name)}", "MDC", _MEANINGS.get(name, f"Lead {name}"))
+        code(f"2:{table.code(name)}", "MDC", _MEANINGS.get(name, f"Lead {name}"))
     ]
     channel.ChannelSensitivity = 1
-    channel.ChannelSensitivityUnitsSequence = [_code("uV", "UCUM", "microvolt")]
+    channel.ChannelSensitivityUnitsSequence = [code("uV", "UCUM", _UNITS["uV"])]
     channel.ChannelSensitivityCorrectionFactor = 1
     channel.ChannelBaseline = 0
     channel.ChannelSampleSkew = 0
@@ -140,15 +107,46 @@ def _channel(number: int, name: str, table: LeadTable) -> "Dataset":
     return channel
 
 
-def _code(value: str, scheme: str, meaning: str) -> "Dataset":
-    """A coded entry (PS3.3 8.8)."""
+def _annotations(measurements: Measurements) -> Iterator["Dataset"]:
+    """Each number, then what belongs to it in words, then the findings."""
+    yield _text(DERIVED, REMARKS)
+    for number in measurements.numbers:
+        if number.value is None:
+            words = f"{number.concept.words} not measured: {number.reason or 'reason unknown'}"
+            yield _text(words, REMARKS)
+            continue
+        yield _number(number, number.value)
+        if number.se is not None:
+            error = f"{rounded(number.se):g} {number.concept.unit}"
+            yield _text(f"{number.concept.words}: standard error {error}", REMARKS)
+    for finding in measurements.findings:
+        yield _text(f"{finding.definition} ({finding.source}): {finding.result}", FINDINGS)
+
+
+def _number(number: Number, value: float) -> "Dataset":
+    """A number under its code, of all leads together."""
+    concept = number.concept
+    item = _annotation(NUMBERS)
+    item.ConceptNameCodeSequence = [
+        code(number.key[:16].upper(), OWN_SCHEME, concept.words)
+        if concept.mdc is None
+        else code(f"2:{concept.mdc}", "MDC", concept.words)
+    ]
+    item.NumericValue = f"{rounded(value):g}"
+    item.MeasurementUnitsCodeSequence = [code(concept.unit, "UCUM", _UNITS[concept.unit])]
+    return item
+
+
+def _text(words: str, group: int) -> "Dataset":
+    item = _annotation(group)
+    item.UnformattedTextValue = words.encode()[:_LONGEST_TEXT].decode(errors="ignore")
+    return item
+
+
+def _annotation(group: int) -> "Dataset":
     from pydicom.dataset import Dataset
 
-    code = Dataset()
-    code.CodeValue, code.CodingSchemeDesignator, code.CodeMeaning = value, scheme, meaning
-    return code
-
-
-def _uid(name: str) -> str:
-    """An identifier of its own for that name, the same each time."""
-    return f"2.25.{uuid.uuid5(uuid.NAMESPACE_OID, name).int}"
+    item = Dataset()
+    item.ReferencedWaveformChannels = [1, 0]  # of the one multiplex group, every channel
+    item.AnnotationGroupNumber = group
+    return item
