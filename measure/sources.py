@@ -10,16 +10,15 @@ import hashlib
 import importlib
 import math
 from collections.abc import Callable, Sequence
-from fractions import Fraction
 from pathlib import Path
 from types import ModuleType
 from typing import Any
 
 import numpy as np
-import scipy as sp
 
 from digitize.errors import NoTrace, UnreadableFile
 from digitize.tracing import FS_HZ, LEADS, Known, PageSource, Panel, Tracing
+from measure.resampling import resampled
 
 _MV_PER_UNIT = {"mv": 1.0, "uv": 1e-3, "µv": 1e-3, "μv": 1e-3, "v": 1e3, "nv": 1e-6}
 _SLOWEST_HZ = 100.0  # below this a QRS has too few samples to be measured
@@ -108,7 +107,7 @@ def tracing_from_samples(
 
 def _panel(name: str, row: int, mv: np.ndarray, fs_hz: float) -> Panel:
     """One lead on the common 2 ms raster, with the noise of its samples."""
-    mv = _resampled(mv, fs_hz)
+    mv = resampled(mv, fs_hz)
     sigma = np.where(np.isfinite(mv), _noise_mv(mv), np.nan)
     return Panel(
         lead=_USUAL_NAMES.get(name.strip().lower(), name.strip()),
@@ -123,19 +122,6 @@ def _panel(name: str, row: int, mv: np.ndarray, fs_hz: float) -> Panel:
         gain_mm_mv=10.0,
         lead_source="given",
     )
-
-
-def _resampled(mv: np.ndarray, fs_hz: float) -> np.ndarray:
-    """Samples at 500/s; gaps are bridged for the filter and missing again after it."""
-    ratio = Fraction(FS_HZ / fs_hz).limit_denominator(1000)
-    finite = np.isfinite(mv)
-    if ratio == 1 or not finite.any():
-        return mv.copy()
-    index = np.arange(len(mv))
-    bridged = np.interp(index, index[finite], mv[finite])
-    fine = sp.signal.resample_poly(bridged, ratio.numerator, ratio.denominator, padtype="line")
-    at = np.arange(len(fine)) * ratio.denominator / ratio.numerator
-    return np.where(np.interp(at, index, finite) > 1 - 1e-9, fine, np.nan)
 
 
 def _noise_mv(mv: np.ndarray) -> float:
