@@ -76,7 +76,7 @@ class Sheet:
 def flatten(page: Page, grid: Grid) -> Sheet:
     """Return the page resampled onto square millimetre paper.
 
-    The raster has 12 pixels per millimetre for a page of 10 or more, else 8: finer than the page
+    The raster has 10 pixels per millimetre for a page of 10 or more, else 8: about as fine as the page
     where that is coarse, so that nothing is lost, and no finer than a pen needs.
 
     Raises
@@ -90,7 +90,7 @@ def flatten(page: Page, grid: Grid) -> Sheet:
             f"only {min(native):.1f} pixels per millimetre of paper, "
             f"at least {MIN_PX_PER_MM:.1f} are needed; rescan at 150 dpi or more"
         )
-    px_per_mm = 12.0 if max(native) >= 10 else 8.0
+    px_per_mm = 10.0 if max(native) >= 10 else 8.0
     pixels, factor = page.pixels, max(1, int(min(native) / px_per_mm + 0.25))
     if factor > 1:
         rows, cols = (n // factor for n in pixels.shape[:2])
