@@ -19,6 +19,8 @@ SAME_X_MM = 3.0
 SAME_Y = 0.1  # of the distance between rows: traces wander about their zero line
 # An upright stroke alone is easily read as I: such names weigh less.
 WEIGHT: Mapping[str, float] = {"I": 0.35, "II": 0.6, "III": 0.8}
+# Evidence against two places for the names, on one level and on two.
+APART_LEVEL, APART = 1.0, 2.0
 DOUBT = -5.0  # a crop that no name explains better than this says nothing
 
 
@@ -120,23 +122,28 @@ def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair],
     dy = np.array([pair.dy_mm for pair in pairs])
     gain = np.array([pair.gain for pair in pairs])
     first = np.array([pair.slot.column == 0 for pair in pairs])
-    seeds = np.nonzero(gain > 0.5)[0]
-    best_score = 0.0
-    chosen: list[_Pair] = []
     same_y_mm = max(SAME_Y * pitch_mm, 1.8)
-    for k in seeds:
-        level = np.abs(dy - dy[k]) < same_y_mm
-        near = level & (np.abs(dx - dx[k]) < SAME_X_MM)
-        score, own = _one_each(_those(pairs, near))
-        # A calibration mark may push the names of the first column aside from the others'.
-        for j in seeds[level[seeds] & (first[seeds] != first[k]) & ~near[seeds]]:
-            apart = level & (np.abs(dx - np.where(first == first[k], dx[k], dx[j])) < SAME_X_MM)
-            both, two = _one_each(_those(pairs, apart))
-            if both - 1.0 > score:
-                score, own = both - 1.0, two
-        if score > best_score:
-            best_score, chosen = score, own
-    return chosen, best_score
+
+    def best_at(group: np.ndarray) -> tuple[float, np.ndarray, int]:
+        """Evidence at the best place of a group of pairs, who stands there, and one of these."""
+        best = 0.0, np.zeros(len(pairs), bool), -1
+        for k in np.nonzero(group & (gain > 0.5))[0]:
+            near = group & (np.abs(dx - dx[k]) < SAME_X_MM) & (np.abs(dy - dy[k]) < same_y_mm)
+            score = _one_each(_those(pairs, near))[0]
+            if score > best[0]:
+                best = score, near, int(k)
+        return best
+
+    score, near, _ = best_at(np.ones(len(pairs), bool))
+    (_, left, a), (_, inner, b) = best_at(first), best_at(~first)
+    if a >= 0 and b >= 0:
+        # A calibration mark may push the names of the first column aside from the others', or
+        # those of the first column stand left of their traces and the others above.
+        price = APART_LEVEL if abs(dy[a] - dy[b]) < same_y_mm else APART
+        both, chosen = _one_each(_those(pairs, left | inner))
+        if both - price > score:
+            return chosen, both - price
+    return _one_each(_those(pairs, near))[1], score
 
 
 def _likeliest(names: Mapping[str, float]) -> tuple[str, float]:

@@ -13,6 +13,7 @@ from digitize.tracing import Known
 from digitize.words import GAINS_MM_MV, SPEEDS_MM_S, Printing, printed_gains, printed_speeds
 
 USUAL_SPEED_MM_S, USUAL_GAIN_MM_MV = 25.0, 10.0  # common practice
+MOST_S = 14.0  # usual recordings are 10 s; of longer rows the speed is not taken from marks alone
 NEAR = 0.06  # a mark this near to a usual size has that size
 
 
@@ -43,7 +44,8 @@ class Scale:
 def find_scale(printing: Printing, rows: Rows, marks: Sequence[Mark], options: Options) -> Scale:
     """Return speed and gain of a page and where each comes from."""
     notes: list[str] = []
-    speed = _speed(printed_speeds(printing), marks, options, notes)
+    longest_mm = max((row.right_mm - row.left_mm for row in rows.rows), default=0.0)
+    speed = _speed(printed_speeds(printing), marks, longest_mm, options, notes)
     gains = printed_gains(printing)
     row_gain = _row_gains(rows, marks, gains)
     chest = gains[1] if len(gains) > 1 else None
@@ -56,7 +58,11 @@ def find_scale(printing: Printing, rows: Rows, marks: Sequence[Mark], options: O
 
 
 def _speed(
-    printed: Sequence[float], marks: Sequence[Mark], options: Options, notes: list[str]
+    printed: Sequence[float],
+    marks: Sequence[Mark],
+    longest_mm: float,
+    options: Options,
+    notes: list[str],
 ) -> Known:
     drawn = _usual(np.array([m.width_mm / PULSE_S for m in marks]), SPEEDS_MM_S)
     if options.speed_mm_s is not None:
@@ -70,6 +76,13 @@ def _speed(
                 f"{drawn[0] * PULSE_S:g} mm wide, which would be {drawn[0]:g} mm/s"
             )
         return Known(printed[0], "printed")
+    if drawn is not None and longest_mm > drawn[0] * MOST_S:
+        notes.append(
+            f"calibration marks are {drawn[0] * PULSE_S:g} mm wide: {drawn[0]:g} mm/s, and rows of "
+            f"{longest_mm / drawn[0]:.0f} s, or shorter marks at {2 * drawn[0]:g} mm/s, which is "
+            f"assumed; give --speed if you know it"
+        )
+        return Known(2 * drawn[0], "assumed")
     if drawn is not None:
         return Known(drawn[0], "found", drawn[1])
     notes.append(

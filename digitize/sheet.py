@@ -76,8 +76,8 @@ class Sheet:
 def flatten(page: Page, grid: Grid) -> Sheet:
     """Return the page resampled onto square millimetre paper.
 
-    The raster has 10 pixels per millimetre for a page of 10 or more, else 8: about as fine as the page
-    where that is coarse, so that nothing is lost, and no finer than a pen needs.
+    The raster has 10 pixels per millimetre for a page of 10 or more, else 8: about as fine as the
+    page where that is coarse, so that nothing is lost, and no finer than a pen needs.
 
     Raises
     ------

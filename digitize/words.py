@@ -32,6 +32,9 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
 }
 LETTER_MM = (0.7, 6.5)  # height of a letter
 WIDEST_LETTER_MM = 9.0
+TICK_WIDE = 0.25  # width of an upright stroke over its height
+MERGED_MM = (1.3, 60.0)  # height and width of letters run together
+MERGED_FILL = (0.3, 0.85)  # share of their box that they cover: traces less, bars more
 NAME_MM = (1.1, 6.0)  # height of a lead name
 MOST_LINES = 30  # lines of printing read on one page
 MOST_LENGTH = 250  # of all lines together, in heights of their letters
@@ -63,9 +66,11 @@ class Printing:
 
 def read_printing(ink: Ink) -> Printing:
     """Return the words and lines of a sheet, read."""
-    letters = _letters(ink)
+    letters, merged = _pieces(ink)
     words = _join(letters, reach=0.75)
-    lines = [line for line in _join(letters, reach=3.5) if line.right_mm - line.left_mm > 8]
+    words += _without_ticks(words, letters)
+    lines = _join([*letters, *merged], reach=3.5)
+    lines = [line for line in lines if line.right_mm - line.left_mm > 8]
     short = [w for w in words if _name_sized(w)]
     short = sorted(short, key=lambda w: -_blackness(ink, w))[:MOST_WORDS]
     lines = sorted(lines, key=lambda b: _off_middle(b, ink))[::-1][:MOST_LINES]
@@ -97,8 +102,11 @@ def _name_scores(probabilities: np.ndarray) -> dict[str, float]:
     }
 
 
-def _letters(ink: Ink) -> list[Box]:
-    """Boxes of separate pieces of ink that have the size of a letter."""
+def _pieces(ink: Ink) -> tuple[list[Box], list[Box]]:
+    """Boxes of pieces of ink that have the size of a letter, and of letters that have run together.
+
+    Blur joins the letters of small or bold print. A trace of that shape fills less of its box.
+    """
     _, _, stats, _ = cv2.connectedComponentsWithStats(solid_ink(ink), connectivity=8)
     scale = ink.raster.px_per_mm
     left, top, width, height, area = (stats[1:, k] / scale for k in range(5))
@@ -110,11 +118,25 @@ def _letters(ink: Ink) -> list[Box]:
         & (width < 7 * height)
         & (area > 0.08 * height)
     )
+    fill = area / (width * height)
+    merged = (
+        ~fits
+        & (height > MERGED_MM[0])
+        & (height < LETTER_MM[1])
+        & (width > height)
+        & (width < MERGED_MM[1])
+        & (fill > MERGED_FILL[0])
+        & (fill < MERGED_FILL[1])
+    )
     x0, y0 = ink.raster.left_mm, ink.raster.top_mm
-    return [
-        Box(x0 + a, y0 + b, x0 + a + c, y0 + b + d)
-        for a, b, c, d in zip(left[fits], top[fits], width[fits], height[fits], strict=True)
-    ]
+
+    def boxes(of: np.ndarray) -> list[Box]:
+        return [
+            Box(x0 + a, y0 + b, x0 + a + c, y0 + b + d)
+            for a, b, c, d in zip(left[of], top[of], width[of], height[of], strict=True)
+        ]
+
+    return boxes(fits), boxes(merged)
 
 
 def _join(letters: list[Box], reach: float) -> list[Box]:
@@ -138,6 +160,36 @@ def _join(letters: list[Box], reach: float) -> list[Box]:
         else:
             boxes.append(letter)
     return boxes
+
+
+def _without_ticks(words: list[Box], letters: list[Box]) -> list[Box]:
+    """Words that begin or end with an upright stroke once more without it: it may be a tick."""
+    shorter = []
+    for word in words:
+        own = sorted((x for x in letters if _inside(x, word)), key=lambda b: b.left_mm)
+        upright = [b.right_mm - b.left_mm < TICK_WIDE * (b.bottom_mm - b.top_mm) for b in own]
+        for rest, cut in ((own[1:], upright[:1]), (own[:-1], upright[-1:])):
+            if any(cut) and rest and not all(upright):
+                shorter.append(_around(rest))
+    return shorter
+
+
+def _inside(inner: Box, outer: Box) -> bool:
+    return (
+        inner.left_mm >= outer.left_mm
+        and inner.right_mm <= outer.right_mm
+        and inner.top_mm >= outer.top_mm
+        and inner.bottom_mm <= outer.bottom_mm
+    )
+
+
+def _around(boxes: list[Box]) -> Box:
+    return Box(
+        min(b.left_mm for b in boxes),
+        min(b.top_mm for b in boxes),
+        max(b.right_mm for b in boxes),
+        max(b.bottom_mm for b in boxes),
+    )
 
 
 def _name_sized(box: Box) -> bool:
@@ -173,8 +225,8 @@ def _crop(ink: Ink, box: Box) -> np.ndarray:
 
 
 _NUMBER = r"(?<![\d.,])(\d{1,3}(?:[.,]\d)?|[lIO]{1,2}|[lI]0|lO|[sS])"
-_SPEED = re.compile(_NUMBER + r"\s*mm\s*[/7|lI]?\s*s(?!\w*V)", re.IGNORECASE)
-_GAIN = re.compile(_NUMBER + r"\s*mm\s*[/7|lI]?\s*mv", re.IGNORECASE)
+_SPEED = re.compile(_NUMBER + r"\s*m{2,3}\s*[/7|lI]?\s*s(?!\w*V)", re.IGNORECASE)
+_GAIN = re.compile(_NUMBER + r"\s*m{2,3}\s*[/7|lI]?\s*mv", re.IGNORECASE)
 _SLIPS = str.maketrans({"l": "1", "I": "1", "O": "0", "o": "0", "s": "5", "S": "5", ",": "."})
 SPEEDS_MM_S = (12.5, 25.0, 50.0, 100.0)
 GAINS_MM_MV = (2.5, 5.0, 10.0, 20.0, 40.0)

@@ -53,6 +53,16 @@ def test_marks_alone_are_measured(width_mm, height_mm, speed, gain):
     assert (scale.gain_mm_mv.value, scale.gain_mm_mv.source) == (gain, "found")
 
 
+def test_a_speed_from_narrow_marks_that_makes_rows_too_long_is_doubted():
+    marks = [mark(y, width_mm=2.5) for y in (40.0, 80.0)]  # 0.2 s at 12.5 mm/s, 0.1 s at 25 mm/s
+    scale = find_scale(printing(), ROWS, marks, Options())  # rows of 250 mm: 20 s or 10 s
+    assert (scale.speed_mm_s.value, scale.speed_mm_s.source) == (25.0, "assumed")
+    assert "2.5 mm wide" in scale.notes[0]
+    short = Rows((Row(40.0, 10, 140), Row(80.0, 10, 140)), 40.0, ROWS.runs, ())
+    scale = find_scale(printing(), short, marks, Options())
+    assert (scale.speed_mm_s.value, scale.speed_mm_s.source) == (12.5, "found")
+
+
 def test_nothing_said_is_assumed_and_said_to_be():
     scale = find_scale(printing("Invented patient 0417"), ROWS, (), Options())
     # Common practice: 25 mm/s, 10 mm/mV.
