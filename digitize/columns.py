@@ -5,12 +5,14 @@ from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
+import scipy as sp
 
 from digitize.marks import Mark
 from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent
 from digitize.sheet import Box
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
+FAINT_MM = 5.0  # gap in a faint trace where most rows go on behind it
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
@@ -38,11 +40,35 @@ class Breaks:
 
 
 def trace_extent(rows: Rows) -> Span:
-    """Where the traces begin and end across the page."""
-    return Span(
-        float(np.median([row.left_mm for row in rows.rows])),
-        float(np.median([row.right_mm for row in rows.rows])),
-    )
+    """Where the traces begin and end across the page.
+
+    A faint trace may end early in many rows, but not at the same place: what most rows together
+    show beyond their usual ends belongs to them.
+    """
+    middle = len(rows.rows) // 2
+    left = sorted(row.left_mm for row in rows.rows)[middle]
+    right = sorted(row.right_mm for row in rows.rows)[-1 - middle]
+    first = rows.runs.x_mm.min()
+    column = np.round((rows.runs.x_mm - first) / STEP_MM).astype(int)
+    inked = np.zeros((len(rows.rows), column.max() + 1), bool)
+    for number, row in enumerate(rows.rows):
+        inked[number, column[_near(rows, row)]] = True
+    near = sp.ndimage.maximum_filter1d(inked, 2 * round(0.3 * FAINT_MM / STEP_MM) + 1, axis=1)
+    shared = (near.mean(axis=0) > 0.4) & (inked.mean(axis=0) > 0.25)
+    shared_mm = np.flatnonzero(shared) * STEP_MM + first
+    for x in shared_mm[shared_mm > right]:
+        if x - right < FAINT_MM:
+            right = float(x)
+    for x in shared_mm[shared_mm < left][::-1]:
+        if left - x < FAINT_MM:
+            left = float(x)
+    return Span(left, right)
+
+
+def _near(rows: Rows, row: Row) -> np.ndarray:
+    """Which runs of ink stand at the height of a row."""
+    reach = min(0.5 * rows.pitch_mm, 12.0)
+    return (rows.runs.top_mm < row.y_mm + reach) & (rows.runs.bottom_mm > row.y_mm - reach)
 
 
 def marks_of_row(row: Row, marks: Sequence[Mark], pitch_mm: float) -> list[Mark]:

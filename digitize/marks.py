@@ -16,6 +16,7 @@ INK_LEVEL = 0.35
 PULSE_S = 0.2  # common practice
 HEIGHTS_MM = (2.5, 5.0, 10.0, 20.0, 40.0)  # of 1 mV
 WIDTHS_MM = (2.5, 5.0, 10.0)
+FULLEST = 0.3  # inked share of the inside: a lead name may stand there
 HEIGHT_OFF = 0.12  # of a usual height: letters with two upright strokes are of any
 STRAIGHT = 0.8  # share of a side that must be inked
 LEVEL_MM = 0.15  # a recorder's pulse is level; the top of a QRS rises, sinks and is notched
@@ -97,7 +98,7 @@ def _pulse(
     inner = slice(a + round(0.5 * scale), b - round(0.5 * scale))
     bottom = min(left[2], right[2]) - round(0.8 * scale)
     inside = mask[y1 + round(0.3 * scale) : bottom, inner]
-    if roof < 0.9 or (inside.size and inside.mean() > 0.12):
+    if roof < 0.9 or (inside.size and inside.mean() > FULLEST):
         return None
     x0, x1 = ink.raster.x_mm(left[0]), ink.raster.x_mm(right[0])
     density = np.clip(ink.density, 0, 1)

@@ -6,7 +6,9 @@ spend their time: at their baselines.
 """
 
 from dataclasses import dataclass
+from itertools import pairwise
 
+import cv2
 import numpy as np
 import scipy as sp
 
@@ -20,7 +22,8 @@ LEAST_PITCH_MM = 6.0
 THICKEST_PEN_MM = 1.3
 GAP_MM = 0.6  # specks of paper within a line are shorter
 QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
-SOLID_MM = 7  # unbroken ink of this length is trace or mark, no speck
+SOLID_MM = 7  # ink along half of this length is trace or mark, no speck
+SPECK_MM = 1.0  # ink smaller than this in both directions is halftone or dirt
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,7 +67,7 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     letters : tuple of Box
         Separate letters: not part of any trace.
     """
-    mask = solid_ink(ink)
+    mask = without_specks(solid_ink(ink), SPECK_MM * ink.raster.px_per_mm)
     for box in letters:
         mask[_window(ink, box)] = 0
     rules, uprights = straight_rules(mask, ink)
@@ -87,6 +90,14 @@ def _window(ink: Ink, box: Box) -> tuple[slice, slice]:
         slice(max(int(r.row(box.top_mm)), 0), int(np.ceil(r.row(box.bottom_mm))) + 1),
         slice(max(int(r.col(box.left_mm)), 0), int(np.ceil(r.col(box.right_mm))) + 1),
     )
+
+
+def without_specks(mask: np.ndarray, size_px: float) -> np.ndarray:
+    """The ink of a mask without pieces that are smaller than a size both ways."""
+    _, labels, stats, _ = cv2.connectedComponentsWithStats(mask, connectivity=8)
+    large = np.maximum(stats[:, cv2.CC_STAT_WIDTH], stats[:, cv2.CC_STAT_HEIGHT]) >= size_px
+    large[0] = False
+    return large[labels].astype(np.uint8)
 
 
 def _find_runs(mask: np.ndarray, ink: Ink) -> Runs:
@@ -116,9 +127,10 @@ def _row_heights(runs: Runs) -> list[float]:
     y = bins[strong] + BIN_MM / 2
     share = np.array([coverage_mm(runs, height) for height in y])
     thin = np.array([_thin(runs, height) for height in y], bool)
-    keep = thin & (share > 0.35 * share.max(initial=0.0))
-    y, share = y[keep], share[keep]
-    return _spaced(y, share)
+    clear = thin & (share > 0.35 * share.max(initial=0.0))
+    heights = _spaced(y[clear], share[clear])
+    faint = thin & ~clear & (share > 0.12 * share.max(initial=0.0))
+    return _filled(heights, y[faint])
 
 
 def coverage_mm(runs: Runs, y_mm: float) -> float:
@@ -147,6 +159,20 @@ def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:
     return [float(v) for v in y]
 
 
+def _filled(heights: list[float], faint: np.ndarray) -> list[float]:
+    """The rows with faint ones where the even distance of the others leaves room for one."""
+    if len(heights) < 3:
+        return heights
+    pitch = float(np.median(np.diff(heights)))
+    found = list(heights)
+    for above, below in pairwise(heights):
+        middle = (above + below) / 2
+        near = [y for y in faint if abs(y - middle) < 0.2 * pitch]
+        if abs((below - above) / pitch - 2) < 0.25 and near:
+            found.append(float(min(near, key=lambda y: abs(y - middle))))
+    return sorted(found)
+
+
 def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
     """Return the row at a height, from its first to its last solid stretch of ink.
 
@@ -158,25 +184,27 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
     if len(x) < 20:
         return None
     first = np.floor(x[0])
-    inked = np.bincount((x - first).astype(int)) * STEP_MM
-    labels, _ = sp.ndimage.label(inked > 0.7)
-    solid = [part[0] for part in sp.ndimage.find_objects(labels)]
-    solid = [part for part in solid if part.stop - part.start >= SOLID_MM]
-    if not solid:
+    inked = np.minimum(np.bincount((x - first).astype(int)) * STEP_MM, 1.0)
+    # Half of a stretch is enough: a faint trace is broken everywhere.
+    solid = np.flatnonzero(sp.ndimage.uniform_filter1d(inked, SOLID_MM) > 0.5)
+    if len(solid) == 0:
         return None
-    left, right = first + solid[0].start, first + solid[-1].stop
-    # Whole millimetres are too coarse, and a tall QRS leaves the row for a while.
+    low, high = first + solid[0], first + solid[-1] + 1
     parts = np.split(x, np.flatnonzero(np.diff(x) > GAP_MM) + 1)
+    within = [part for part in parts if part[-1] > low and part[0] < high and _is_piece(part)]
+    if not within:
+        return None
+    left, right = within[0][0], within[-1][-1]
+    # A tall QRS leaves the row for a while.
     for part in parts:
-        if part[-1] > right and part[0] - right < _reach_mm(part):
+        if part[-1] > right and part[0] - right < QRS_MM and _is_piece(part):
             right = part[-1]
     for part in reversed(parts):
-        if part[0] < left and left - part[-1] < _reach_mm(part):
+        if part[0] < left and left - part[-1] < QRS_MM and _is_piece(part):
             left = part[0]
-    within = x[(x >= left) & (x <= right)]
-    return Row(y_mm, float(within[0]), float(within[-1]))
+    return Row(y_mm, float(left), float(right))
 
 
-def _reach_mm(part: np.ndarray) -> float:
-    """How far from the rest of a row a piece of ink may stand and still belong to it."""
-    return QRS_MM if part[-1] - part[0] > PIECE_MM else 0.0
+def _is_piece(part: np.ndarray) -> bool:
+    """Whether an unbroken piece of ink is long enough for a trace."""
+    return bool(part[-1] - part[0] > PIECE_MM)

@@ -49,6 +49,7 @@ def find_scale(printing: Printing, rows: Rows, marks: Sequence[Mark], options: O
     gains = printed_gains(printing)
     row_gain = _row_gains(rows, marks, gains)
     chest = gains[1] if len(gains) > 1 else None
+    row_gain = _between_rows(row_gain, notes)
     if row_gain and chest is not None:
         chest = float(np.median([pair[1] for pair in row_gain.values()]))
     gain = _gain(gains, row_gain, marks, options, notes)
@@ -138,6 +139,26 @@ def _row_gains(
                 limb, chest = printed[0], printed[1]
             gains[row.y_mm] = (limb, chest)
     return gains
+
+
+def _between_rows(
+    row_gain: Mapping[float, tuple[float, float]], notes: list[str]
+) -> dict[float, tuple[float, float]]:
+    """Gains of the rows, where those of some rows differ from those of the first.
+
+    A mark that stands left of limb and chest leads alike speaks for the limb leads if a row of
+    other height is on the page: a strip of a chest lead with its own gain.
+    """
+    heights = {gain for pair in row_gain.values() for gain in pair}
+    if len(heights) != 2 or any(limb != chest for limb, chest in row_gain.values()):
+        return dict(row_gain)
+    first = row_gain[min(row_gain)][0]
+    (other,) = heights - {first}
+    notes.append(
+        f"calibration marks of {first:g} and {other:g} mm on one page: limb leads are read at "
+        f"{first:g}, chest leads at {other:g} mm/mV; give --gain if all are at one"
+    )
+    return {y: (limb, other) for y, (limb, _) in row_gain.items()}
 
 
 def _usual(values: np.ndarray, usual: Sequence[float]) -> tuple[float, float] | None:
