@@ -19,13 +19,14 @@ from digitize.grid import Grid, find_grid
 from digitize.gridless import find_plain_scale
 from digitize.ink import Ink, find_ink
 from digitize.layout import Layout, find_layout
-from digitize.marks import find_marks
+from digitize.marks import Mark, find_marks
 from digitize.options import Options
 from digitize.pages import Page, open_pages
+from digitize.retrace import retrace
 from digitize.rows import find_rows
 from digitize.rules import lettering
 from digitize.ruling import find_ruling
-from digitize.sheet import Sheet, flatten
+from digitize.sheet import Box, Sheet, flatten
 from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
@@ -44,6 +45,7 @@ class Stages:
     grid: Grid
     sheet: Sheet
     ink: Ink
+    printing: Printing
     layout: Layout
     strokes: tuple[Stroke, ...]
     tracing: Tracing
@@ -75,15 +77,52 @@ def read_page(
     on_stage("ink")
     ink = find_ink(sheet)
     on_stage("printing")
-    marks = find_marks(ink)
+    marks = tuple(find_marks(ink))
     letters = lettering(ink, marks)
     printing = _printing(page, grid, letters)
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
-        return _read_turned(page, turn_deg, options, on_stage)
+        return read_turned(page, turn_deg, options, on_stage)
+    printed = _Printed(ink, marks, letters, printing)
+    return _laid_out(page, grid, sheet, printed, options, on_stage)
+
+
+@dataclass(frozen=True, eq=False)
+class _Printed:
+    """The ink with what stands on it apart from traces: marks, and printing in its `letters`."""
+
+    ink: Ink
+    marks: tuple[Mark, ...]
+    letters: Ink
+    printing: Printing
+
+
+def read_ink(stages: Stages, ink: Ink, printing: Printing, options: Options) -> Stages:
+    """Return an upright page read once more, from this ink and printing on; see `read_page`.
+
+    Raises
+    ------
+    NoTrace
+        There is no ECG in this ink.
+    """
+    marks = tuple(find_marks(ink))
+    printed = _Printed(ink, marks, lettering(ink, marks), printing)
+    return _laid_out(stages.page, stages.grid, stages.sheet, printed, options, lambda name: None)
+
+
+def _laid_out(
+    page: Page,
+    grid: Grid,
+    sheet: Sheet,
+    printed: _Printed,
+    options: Options,
+    on_stage: Callable[[str], None],
+) -> Stages:
+    """The stages from the layout on."""
+    ink, printing = printed.ink, printed.printing
     on_stage("layout")
     rows = find_rows(ink, printing.letters)
-    layout = find_layout(letters, printing, rows, marks, options)
+    layout = find_layout(printed.letters, printing, rows, printed.marks, options)
     on_stage("trace")
     layout, strokes = _traced(page, grid, ink, layout)
     on_stage("checks")
@@ -94,7 +133,17 @@ def read_page(
     require_ecg(tracing)
     tracing = dataclasses.replace(tracing, checks=find_checks(tracing))
     on_stage("")
-    return Stages(page, grid, sheet, ink, layout, strokes, tracing)
+    return Stages(page, grid, sheet, ink, printing, layout, strokes, tracing)
+
+
+def read_part(stages: Stages, ink: Ink, changed: Box) -> Stages:
+    """Return the stages of a page whose ink was changed in one place; its layout is kept."""
+    page, grid, layout = stages.page, stages.grid, stages.layout
+    if page.drawing is None:
+        strokes = retrace(ink, layout, stages.strokes, changed)
+    else:
+        layout, strokes = _traced(page, grid, ink, layout)
+    return dataclasses.replace(stages, ink=ink, layout=layout, strokes=strokes)
 
 
 def _grid(page: Page, options: Options) -> Grid:
@@ -125,10 +174,13 @@ def _traced(page: Page, grid: Grid, ink: Ink, layout: Layout) -> tuple[Layout, t
     return layout, tuple(d or t for d, t in zip(drawn, traced, strict=True))
 
 
-def _read_turned(
-    page: Page, turn_deg: int, options: Options, on_stage: Callable[[str], None]
+def read_turned(
+    page: Page,
+    turn_deg: int,
+    options: Options,
+    on_stage: Callable[[str], None] = lambda name: None,
 ) -> Stages:
-    """The page read after a clockwise turn, which is kept with the geometry."""
+    """Return the page read after a clockwise turn, which is kept with the geometry."""
     upright = dataclasses.replace(options, turn_deg=0)
     turned = turn_page(page, turn_deg)
     if page.drawing is not None:
@@ -158,20 +210,33 @@ def read_stages(
     """
     on_stage("page")
     for page in open_pages(path, max_megapixels=options.max_megapixels, on_error=on_error):
-        try:
-            stages = read_page(page, options, on_stage=on_stage)
-        except InputError as error:
-            at(error, page.source.file_name, page.source.page)
-            if on_error is None:
-                raise
-            on_error(error)
-        except _FAULTS as fault:
-            if on_error is None:
-                raise
-            on_error(at(_fault(fault), page.source.file_name, page.source.page))
-        else:
+        stages = read_or_tell(page, options, on_error=on_error, on_stage=on_stage)
+        if stages is not None:
             yield stages
         on_stage("page")
+
+
+def read_or_tell(
+    page: Page,
+    options: Options,
+    *,
+    on_error: Callable[[InputError], None] | None = None,
+    on_stage: Callable[[str], None] = lambda name: None,
+) -> Stages | None:
+    """Return one page read, or None where `on_error` was told why it cannot be."""
+    source = page.source
+    try:
+        return read_page(page, options, on_stage=on_stage)
+    except InputError as error:
+        at(error, source.file_name, source.page)
+        if on_error is None:
+            raise
+        on_error(error)
+    except _FAULTS as fault:
+        if on_error is None:
+            raise
+        on_error(at(_fault(fault), source.file_name, source.page))
+    return None
 
 
 def to_tracing(

@@ -139,7 +139,7 @@ def compare(
 def overread(
     files: Annotated[
         list[Path],
-        typer.Argument(help="Scans, photos, PDFs; tracings (CSV, JSON); WFDB, EDF, DICOM, CSV."),
+        typer.Argument(help="Scans, tracings, digital ECGs; folders of them; a store."),
     ],
     output: Annotated[
         Path | None,
@@ -161,18 +161,16 @@ def overread(
     """Check, correct, measure and sign in the browser: a page that this machine serves to itself.
 
     What a person does is kept in NAME.overread.json; the input is never touched. A store stands for
-    all its pages that need a look, the JSON of a page in a store for that page's source.
+    all its pages that need a look, the JSON of a page in a store for that page. A saved reading
+    (NAME.reading.json) can be held beside another ECG.
     """
     options = _options(speed, gain, layout, None, None, None, px_per_mm, Options.max_megapixels)
     person = _person(sex, age)
     from digitize.errors import InputError
     from measure.overread.serve import serve
-    from measure.overread.stored import sources_of
 
     try:
-        sources, journals = sources_of(files)
-        place = output or journals
-        serve(sources, options, person, folder=place, port=port, browser=not no_browser)
+        serve(files, options, person, folder=output, port=port, browser=not no_browser)
     except InputError as error:
         print(error, file=sys.stderr)
         raise typer.Exit(1) from None

@@ -54,12 +54,21 @@ def open_ecgs(
     ending = path.suffix.lower()
     if ending in TABLE_ENDINGS:
         yield _from_table(path, unit)
-    elif ending in DIGITAL_ENDINGS and not _is_picture(path):
+    elif holds_samples(path):
         from measure.sources import read_digital
 
         yield Given(read_digital(path, unit=unit), path.stem, {}, None)
     else:
         yield from _from_pages(path, options, on_error)
+
+
+def holds_samples(path: Path) -> bool:
+    """Whether a file holds samples rather than a page, by its ending and where that is not enough.
+
+    A tracing and a digital ECG do.
+    """
+    ending = path.suffix.lower()
+    return ending in TABLE_ENDINGS or (ending in DIGITAL_ENDINGS and not _is_picture(path))
 
 
 def _from_table(path: Path, unit: str | None) -> Given:

@@ -20,11 +20,14 @@ from measure.boundaries import Boundaries, Edges, find_boundaries
 from measure.criteria import judge
 from measure.intervals import measure_intervals
 from measure.overread.corrections import (
+    PAGE,
     PLACES,
     STROKES,
     BeatUse,
     Boundary,
     Correction,
+    Ignore,
+    Measured,
     Patient,
     Refused,
     in_force,
@@ -39,6 +42,7 @@ if TYPE_CHECKING:
 
 _SAME_BEAT_S = 0.1  # a beat found again after a correction of the page is the nearest to its time
 _REMEMBERED = 16
+_PAGES_REMEMBERED = 3  # each holds the ink of a page
 
 Made = TypeVar("Made")
 
@@ -48,10 +52,11 @@ class Chain:
 
     def __init__(self, tracing: Tracing, stages: "Stages | None", person: Person) -> None:
         """`stages` is None for an ECG that was digital all along."""
-        self.stages = stages
+        self._found_stages = stages
         self._found = tracing
         self._person = person
         self._made: dict[Hashable, Any] = {}
+        self._pages: dict[tuple[Correction, ...], Stages] = {}
 
     def reading(self, corrections: Sequence[Correction] = ()) -> Reading:
         """Return the reading under these corrections, computed from the first stage they reach.
@@ -64,14 +69,18 @@ class Chain:
             No beat is left.
         """
         corrections = in_force(corrections)
-        paper = tuple(c for c in corrections if isinstance(c, (*PLACES, *STROKES)))
+        page = tuple(c for c in corrections if isinstance(c, PAGE))
+        paper = (page, tuple(c for c in corrections if isinstance(c, (*PLACES, *STROKES))))
         chosen = tuple(c for c in corrections if isinstance(c, BeatUse))
         moved = tuple(c for c in corrections if isinstance(c, Boundary))
         person = self._person
         for c in corrections:
             if isinstance(c, Patient):
                 person = Person(c.sex, c.age_years)
-        tracing = self._once(("tracing", paper), lambda: self._tracing(paper))
+        tracing = self._once(("tracing", paper), lambda: self._tracing(*paper))
+        for c in corrections:
+            if isinstance(c, Measured) and not 0 <= c.panel < len(tracing.panels):
+                raise Refused(f"there is no panel {c.panel}")
         found = self._once(("beats", paper), lambda: find_beats(tracing))
         beats = choose_beats(found, chosen)
         beat = self._once(("beat", paper, chosen), lambda: average_beats(tracing, beats))
@@ -81,14 +90,38 @@ class Chain:
             lambda: _read_on(tracing, person, beats, beat, move_edges(edges, moved)),
         )
 
-    def _tracing(self, paper: tuple[Correction, ...]) -> Tracing:
-        if not paper:
+    def stages(self, corrections: Sequence[Correction] = ()) -> "Stages | None":
+        """Return the stages of the page under these corrections, None where there is no page."""
+        page = tuple(c for c in in_force(corrections) if isinstance(c, PAGE))
+        return self._stages_under(page)
+
+    def _stages_under(self, page: tuple[Correction, ...]) -> "Stages | None":
+        if self._found_stages is None or not page:
+            return self._found_stages
+        if page in self._pages:
+            self._pages[page] = self._pages.pop(page)  # used last, forgotten last
+            return self._pages[page]
+        from measure.overread.reread import corrected_stages  # image libraries for pages alone
+
+        if isinstance(page[-1], Ignore):  # beside what is remembered, one more region
+            begun, more = self._stages_under(page[:-1]), page[-1:]
+        else:
+            begun, more = self._found_stages, page
+        assert begun is not None
+        self._pages[page] = corrected_stages(begun, more)
+        while len(self._pages) > _PAGES_REMEMBERED:
+            self._pages.pop(next(iter(self._pages)))
+        return self._pages[page]
+
+    def _tracing(self, page: tuple[Correction, ...], placed: tuple[Correction, ...]) -> Tracing:
+        if not page and not placed:
             return self._found
-        if self.stages is None:
+        stages = self._stages_under(page)
+        if stages is None:
             raise Refused("this ECG has no page: only beats and boundaries can be corrected")
         from measure.overread.paper import corrected_tracing  # image libraries for pages alone
 
-        return corrected_tracing(self.stages, paper)
+        return corrected_tracing(stages, placed)
 
     def _once(self, key: Hashable, make: Callable[[], Made]) -> Made:
         """What was made for this key, made now where it was not."""

@@ -6,11 +6,11 @@ that no stage ever sees a value that no page can have.
 
 import itertools
 import math
-from collections.abc import Mapping, Sequence
-from dataclasses import asdict, dataclass, fields
-from typing import Any, Literal
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
 
-from digitize.options import TIMINGS
+from digitize.options import TIMINGS, TURNS_DEG, Options
 
 EDGES = ("p_on_ms", "p_off_ms", "qrs_on_ms", "qrs_off_ms", "t_off_ms")
 LONGEST_NAME = 8  # characters of a lead's name: "V10R" and the like leave room
@@ -34,9 +34,7 @@ class LeadName:
 
     def __post_init__(self) -> None:
         """A name is letters and figures."""
-        name = self.lead
-        if not (0 < len(name) <= LONGEST_NAME and name.isascii() and name.isalnum()):
-            raise Refused(f"'{name[:20]}' is no name of a lead: letters and figures alone")
+        _name(self.lead)
 
 
 @dataclass(frozen=True)
@@ -126,11 +124,83 @@ class Redraw:
         """At least two points, from left to right."""
         if not 2 <= len(self.points) <= MOST_POINTS:
             raise Refused(f"a stretch is redrawn by 2 to {MOST_POINTS} points")
-        if not all(math.isfinite(v) for point in self.points for v in point):
-            raise Refused("a point lies nowhere on the paper")
+        _somewhere(self.points)
         xs = [x for x, _ in self.points]
         if any(b <= a for a, b in itertools.pairwise(xs)):
             raise Refused("the points of a stretch must run from left to right")
+
+
+@dataclass(frozen=True)
+class Turn:
+    """The page as it was given becomes upright by a clockwise turn of so many degrees."""
+
+    turn_deg: int
+
+    def __post_init__(self) -> None:
+        """A quarter of a turn or several."""
+        if self.turn_deg not in TURNS_DEG:
+            raise Refused("a page is turned by 0, 90, 180 or 270 degrees")
+
+
+@dataclass(frozen=True)
+class Arrangement:
+    """Rows x columns + rhythm strips of the page, such as "3x4+1"; lead names row by row."""
+
+    layout: str
+    lead_order: tuple[str, ...] | None = None
+
+    def __post_init__(self) -> None:
+        """A layout that the layout stage knows how to look for."""
+        try:
+            Options(layout=self.layout)
+        except ValueError as error:
+            raise Refused(str(error)) from None
+        for name in self.lead_order or ():
+            _name(name)
+
+
+@dataclass(frozen=True)
+class Crop:
+    """Only this part of the paper belongs to the ECG."""
+
+    left_mm: float
+    top_mm: float
+    right_mm: float
+    bottom_mm: float
+
+    def __post_init__(self) -> None:
+        """Room for a panel."""
+        _rising("crop", self.left_mm, self.right_mm, 20.0)
+        _rising("crop", self.top_mm, self.bottom_mm, 10.0)
+
+
+@dataclass(frozen=True)
+class Ignore:
+    """What stands here hides the ECG: a stamp, handwriting."""
+
+    left_mm: float
+    top_mm: float
+    right_mm: float
+    bottom_mm: float
+
+    def __post_init__(self) -> None:
+        """Some piece of paper."""
+        _rising("region", self.left_mm, self.right_mm, 0.2)
+        _rising("region", self.top_mm, self.bottom_mm, 0.2)
+
+
+@dataclass(frozen=True)
+class Measured:
+    """Calipers set in a panel: from one place (x_mm, y_mm) to another. It changes nothing."""
+
+    panel: int
+    points: tuple[tuple[float, float], ...]
+
+    def __post_init__(self) -> None:
+        """Two places."""
+        if len(self.points) != 2:
+            raise Refused("calipers have two legs")
+        _somewhere(self.points)
 
 
 @dataclass(frozen=True)
@@ -175,7 +245,11 @@ class Patient:
 
 
 Correction = (
-    LeadName
+    Turn
+    | Arrangement
+    | Crop
+    | Ignore
+    | LeadName
     | Swap
     | Flip
     | Speed
@@ -187,81 +261,49 @@ Correction = (
     | Boundary
     | BeatUse
     | Patient
+    | Measured
 )
+REGIONS = (Crop, Ignore)  # inputs of the ink
+ARRANGING = (Turn, Arrangement, Crop)  # the panels are found anew after them
+PAGE = (Turn, Arrangement, *REGIONS)
 PLACES = (LeadName, Swap, Flip, Speed, Gain, ColumnTiming, PanelEdges)  # inputs of the layout
 STROKES = (StrikeOut, Redraw)  # inputs of the trace
-_KINDS: dict[str, type] = {
-    "lead name": LeadName,
-    "swap": Swap,
-    "flip": Flip,
-    "speed": Speed,
-    "gain": Gain,
-    "timing": ColumnTiming,
-    "panel edges": PanelEdges,
-    "strike out": StrikeOut,
-    "redraw": Redraw,
-    "boundary": Boundary,
-    "beat": BeatUse,
-    "patient": Patient,
-}
-_NAMES = {kind: name for name, kind in _KINDS.items()}
-
-
-def to_plain(correction: Correction) -> dict[str, Any]:
-    """The correction as JSON can hold it, its kind first."""
-    return {"kind": _NAMES[type(correction)], **asdict(correction)}
-
-
-def from_plain(entry: Mapping[str, Any]) -> Correction:
-    """The correction that a dictionary describes.
-
-    Raises
-    ------
-    Refused
-        There is no such correction, or it holds what no page can have; the text is fit to show.
-    """
-    kind = _KINDS.get(str(entry.get("kind")))
-    if kind is None:
-        raise Refused("there is no such correction")
-    values = {key: value for key, value in entry.items() if key != "kind"}
-    try:
-        given = {
-            f.name: _typed(f.type, values.pop(f.name)) for f in fields(kind) if f.name in values
-        }
-        if values:
-            raise TypeError
-        return kind(**given)
-    except (TypeError, KeyError, OverflowError):
-        raise Refused("the correction is not complete") from None
+_IN_TIME = (Boundary, BeatUse)
 
 
 def in_force(corrections: Sequence[Correction]) -> tuple[Correction, ...]:
-    """The corrections that count: what was placed in time before the speed changed is void."""
-    last = max((k for k, c in enumerate(corrections) if isinstance(c, Speed)), default=-1)
-    return tuple(
-        c for k, c in enumerate(corrections) if k > last or not isinstance(c, (Boundary, BeatUse))
-    )
+    """The corrections that count; see `counted`."""
+    counts = counted(corrections)
+    return tuple(c for c, counts_too in zip(corrections, counts, strict=True) if counts_too)
 
 
-def _typed(kind: Any, value: Any) -> Any:
-    """A value of the field's own kind; TypeError where it is another."""
-    if kind is float or (kind == float | None and value is not None):
-        if isinstance(value, bool) or not isinstance(value, (int, float)):
-            raise TypeError
-        return float(value)
-    if kind is int or (kind == int | None and value is not None):
-        if isinstance(value, bool) or not isinstance(value, int):
-            raise TypeError
-        return value
-    if kind is bool:
-        if not isinstance(value, bool):
-            raise TypeError
-        return value
-    if kind == tuple[tuple[float, float], ...]:
-        return tuple((_typed(float, x), _typed(float, y)) for x, y in value)
-    if value is not None and not isinstance(value, str):
-        raise TypeError
-    return value
+def counted(corrections: Sequence[Correction]) -> tuple[bool, ...]:
+    """Whether each correction still counts.
+
+    What was placed in time before the speed changed is void, and what names a panel, or a time in
+    one, before the panels were found anew. A region is void once the page was turned after it. Of
+    several turns, crops or arrangements the last one counts.
+    """
+    later: list[Correction] = []
+    counts = []
+    for correction in reversed(corrections):
+        counts.append(not any(_voids(after, correction) for after in later))
+        later.append(correction)
+    return tuple(reversed(counts))
+
+
+def _voids(after: Correction, before: Correction) -> bool:
+    """Whether the later correction leaves nothing of the earlier one."""
+    if isinstance(after, Speed):
+        return isinstance(before, _IN_TIME)
+    if not isinstance(after, ARRANGING):
+        return False
+    if type(after) is type(before):
+        return True
+    if isinstance(after, Turn) and isinstance(before, REGIONS):
+        return True
+    of_panel = getattr(before, "panel", None) is not None
+    return of_panel or isinstance(before, _IN_TIME)
 
 
 def _within(what: str, value: float, low: float, high: float) -> None:
@@ -272,3 +314,13 @@ def _within(what: str, value: float, low: float, high: float) -> None:
 def _rising(what: str, left_mm: float, right_mm: float, least_mm: float) -> None:
     if not (math.isfinite(left_mm) and math.isfinite(right_mm) and right_mm - left_mm >= least_mm):
         raise Refused(f"a {what} must be {least_mm:g} mm wide or more, from left to right")
+
+
+def _name(name: str) -> None:
+    if not (0 < len(name) <= LONGEST_NAME and name.isascii() and name.isalnum()):
+        raise Refused(f"'{name[:20]}' is no name of a lead: letters and figures alone")
+
+
+def _somewhere(points: Sequence[Sequence[float]]) -> None:
+    if not all(math.isfinite(v) for point in points for v in point):
+        raise Refused("a point lies nowhere on the paper")

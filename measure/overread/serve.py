@@ -8,8 +8,10 @@ from collections.abc import Sequence
 from importlib.util import find_spec
 from pathlib import Path
 
-from digitize.errors import InputError
+from digitize.errors import InputError, UnreadableFile, shown
 from digitize.options import Options
+from measure.overread.items import Item, file_items
+from measure.overread.stored import stored_items
 from measure.overread.worklist import Worklist
 from measure.reading import Person
 
@@ -34,7 +36,7 @@ def serve(
     Parameters
     ----------
     files : sequence of Path
-        The worklist.
+        The worklist: files, folders, stores.
     options, person
         What is known better than the pages say.
     folder : Path, optional
@@ -48,12 +50,15 @@ def serve(
     ------
     CannotServe
         A package is missing, or the port is taken.
+    UnreadableFile
+        A folder or store holds no ECG.
     """
     absent = [name for name in _NEEDED if find_spec(name) is None]
     if absent:
         raise CannotServe(
             f"the page needs {' and '.join(absent)}: pip install millivellum[overread]"
         )
+    items = find_items(files, folder)
     import uvicorn
 
     from measure.overread.guard import HOST, Guard
@@ -61,7 +66,7 @@ def serve(
 
     listener = _listener(HOST, port)
     guard = Guard(listener.getsockname()[1])
-    worklist = Worklist(files, options, person, folder)
+    worklist = Worklist(items, options, person)
     worklist.start()
     print(f"Over-read page: {guard.address}", flush=True)
     print("It answers on this machine alone. End it with Ctrl-C.", file=sys.stderr)
@@ -71,6 +76,23 @@ def serve(
     if browser:
         threading.Timer(0.3, webbrowser.open, (guard.address,)).start()
     uvicorn.Server(config).run(sockets=[listener])
+
+
+def find_items(places: Sequence[Path], folder: Path | None) -> list[Item]:
+    """Return what a worklist is made of: files, folders and stores, in the order given.
+
+    Raises
+    ------
+    UnreadableFile
+        A folder or store holds no ECG to over-read.
+    """
+    items: list[Item] = []
+    for place in places:
+        stored = stored_items(place, folder)
+        if stored == []:
+            raise UnreadableFile(f"no page of the store {shown(place)} needs a look")
+        items += stored or file_items(place, folder)
+    return items
 
 
 def _listener(host: str, port: int) -> socket.socket:

@@ -19,8 +19,10 @@ from starlette.routing import Route
 
 from digitize.errors import InputError
 from digitize.two_places import scale_from
-from measure.overread.corrections import Refused, from_plain
-from measure.overread.export import EXPORTS, export
+from measure.overread.beside import beside
+from measure.overread.corrections import Refused
+from measure.overread.corrections_json import from_plain
+from measure.overread.export import KINDS, Taken, export, export_comparison
 from measure.overread.guard import Guard
 from measure.overread.session import Session
 from measure.overread.view import overview
@@ -36,6 +38,7 @@ _ELSEWHERE = (
     "This ECG was opened in another tab, which now has the pen. Nothing was changed here; take "
     "the pen over to go on in this tab."
 )
+_PUT_AWAY = "This ECG was put away and is read again. Nothing was changed; open it once more."
 _OUTDATED = "The record changed since this tab was drawn. Nothing was overwritten; look again."
 
 Do = Callable[[Session, Mapping[str, Any]], None]
@@ -43,72 +46,133 @@ Do = Callable[[Session, Mapping[str, Any]], None]
 
 def make_app(worklist: Worklist, guard: Guard) -> Starlette:
     """Return the application that serves one worklist behind its guard."""
-    entries = worklist.entries
+    answers = _Answers(worklist)
+    number = "/ecgs/{number:int}"
+    routes = [
+        Route("/", _page_file),
+        Route("/page/{name}", _page_file),
+        Route("/ecgs", answers.listing),
+        Route(number, answers.ecg),
+        Route(number + "/paper/{view}/{level:int}/{col:int}/{row:int}", answers.tile),
+        Route(number + "/export/{kind}", answers.exported),
+        Route(number + "/beside/{other:int}/{how}", answers.compared),
+        Route(number + "/{change}", answers.change, methods=["POST"]),
+    ]
+    return Starlette(routes=routes, middleware=[Middleware(BaseHTTPMiddleware, dispatch=guard)])
 
-    async def listing(request: Request) -> Response:
+
+class _Answers:
+    """What is answered about the ECGs of one worklist."""
+
+    def __init__(self, worklist: Worklist) -> None:
+        self.worklist = worklist
+
+    async def listing(self, request: Request) -> Response:
+        """The worklist, in order."""
         rows = [
-            {"name": e.name, "state": e.state, "stage": e.stage, "message": e.message}
-            for e in entries
-        ]
+            {"number": k, "name": e.item.name, "state": e.state, "stage": e.stage,
+             "message": e.message}
+            for k, e in self.worklist.in_order()
+        ]  # fmt: skip
         return JSONResponse(rows)
 
-    async def ecg(request: Request) -> Response:
-        entry = _entry(request, entries)
-        if entry is not None and entry.state == "no scale" and entry.source is not None:
-            size = [entry.source.width_px, entry.source.height_px]
-            return JSONResponse({"unscaled": size, "message": entry.message, "name": entry.name})
-        if entry is None or entry.session is None:
-            return _no("This ECG is not ready.", 404)
+    async def ecg(self, request: Request) -> Response:
+        """One ECG: the record, or how far it is read; the first tab that asks has the pen."""
+        entry = self._entry(request)
+        if entry is None:
+            return _no("There is no such ECG.", 404)
+        self.worklist.want(entry)
+        if entry.session is None:
+            return JSONResponse(_unread(entry))
         tab = request.query_params.get("tab", "")
         first = not entry.tab
         if first or request.query_params.get("take") == "1":
             entry.tab = tab
         return await _shown(entry, tab)
 
-    async def picture(request: Request) -> Response:
-        entry = _entry(request, entries)
-        if entry is None or entry.pictures is None:
-            return _no("This ECG is not ready.", 404)
-        view, size = request.path_params["view"], request.path_params["size"]
+    async def tile(self, request: Request) -> Response:
+        """A piece of the paper."""
+        entry, asked = self._entry(request), request.path_params
+        pictures = None if entry is None else await run_in_threadpool(lambda: entry.pictures)
+        if pictures is None:
+            return _no("There is no such picture.", 404)
+        place = (asked["level"], asked["col"], asked["row"])
         try:
-            jpeg = await run_in_threadpool(entry.pictures.jpeg, view, size)
+            jpeg = await run_in_threadpool(pictures.tile, asked["view"], *place)
         except KeyError:
             return _no("There is no such picture.", 404)
         return Response(jpeg, media_type="image/jpeg")
 
-    async def change(request: Request) -> Response:
-        entry, name = _entry(request, entries), request.path_params["change"]
+    async def change(self, request: Request) -> Response:
+        """The record after a change, or why there is none."""
+        entry, name = self._entry(request), request.path_params["change"]
         wish = await _wish(request)
         if wish is None:
             return _no("The request is not complete.", 400)
         if entry is not None and name == "scale" and entry.state == "no scale":
-            return _scaled(worklist, entry, wish)
-        if entry is None or entry.session is None or name not in (*_CHANGES, "release"):
-            return _no("This ECG is not ready.", 404)
+            return _scaled(self.worklist, entry, wish)
+        if entry is None or name not in (*_CHANGES, "release"):
+            return _no("There is nothing to change.", 404)
         if name == "release":  # the tab is being closed: the next one that opens has the pen
             entry.tab = "" if wish.get("tab") == entry.tab else entry.tab
             return Response(status_code=204)
+        self.worklist.want(entry)
         return await run_in_threadpool(_changed, entry, _CHANGES[name], wish)
 
-    async def exported(request: Request) -> Response:
-        entry, kind = _entry(request, entries), request.path_params["kind"]
-        if entry is None or entry.session is None or kind not in EXPORTS:
+    async def exported(self, request: Request) -> Response:
+        """A file to take away."""
+        entry, kind = self._entry(request), request.path_params["kind"]
+        session = None if entry is None else entry.session
+        if entry is None or session is None or kind not in KINDS:
             return _no("There is no such file.", 404)
-        name, content = await run_in_threadpool(export, entry.session, kind)
-        disposition = f'attachment; filename="{name}"'
-        headers = {"Content-Disposition": disposition}
-        return Response(content, media_type=EXPORTS[kind].media_type, headers=headers)
 
-    routes = [
-        Route("/", _page_file),
-        Route("/page/{name}", _page_file),
-        Route("/ecgs", listing),
-        Route("/ecgs/{number:int}", ecg),
-        Route("/ecgs/{number:int}/paper/{view}/{size}", picture),
-        Route("/ecgs/{number:int}/export/{kind}", exported),
-        Route("/ecgs/{number:int}/{change}", change, methods=["POST"]),
-    ]
-    return Starlette(routes=routes, middleware=[Middleware(BaseHTTPMiddleware, dispatch=guard)])
+        def take() -> Taken:
+            with entry.lock:
+                return export(session, kind)
+
+        return await _taken(take)
+
+    async def compared(self, request: Request) -> Response:
+        """An earlier ECG beside this one, for the page or to take away."""
+        new, old = self._entry(request), self._entry(request, "other")
+        if new is None or old is None:
+            return _no("There is no such ECG.", 404)
+        self.worklist.want(old)
+        sides = await run_in_threadpool(lambda: (old.document(), new.document()))
+        if sides[0] is None or sides[1] is None:
+            return JSONResponse(_unread(old))
+        given = (sides[0], old.item.name, sides[1], new.item.name)
+        if request.path_params["how"] == "export":
+            return await _taken(lambda: export_comparison(*given))
+        return JSONResponse(await run_in_threadpool(beside, *given))
+
+    def _entry(self, request: Request, which: str = "number") -> Entry | None:
+        number, entries = request.path_params[which], self.worklist.entries
+        return entries[number] if 0 <= number < len(entries) else None
+
+
+def _unread(entry: Entry) -> dict[str, Any]:
+    """What there is of an ECG that is not read: its page, where that is open, and how far it is."""
+    size = entry.source and [entry.source.width_px, entry.source.height_px]
+    return {
+        "unread": entry.state,
+        "stage": entry.stage,
+        "message": entry.message,
+        "name": entry.item.name,
+        "size_px": size if entry.pictures is not None else None,
+    }
+
+
+async def _taken(make: Callable[[], Taken]) -> Response:
+    """A file to take away, or why there is none."""
+    try:
+        taken = await run_in_threadpool(make)
+    except KeyError:
+        return _no("There is no such file.", 404)
+    except InputError as error:
+        return _no(str(error), 422)
+    headers = {"Content-Disposition": f'attachment; filename="{taken.name}"'}
+    return Response(taken.content, media_type=taken.media_type, headers=headers)
 
 
 async def _wish(request: Request) -> dict[str, Any] | None:
@@ -155,8 +219,9 @@ _CHANGES: Mapping[str, Do] = {
 
 def _changed(entry: Entry, do: Do, wish: Mapping[str, Any]) -> Response:
     """The record after a change; it is refused where this tab does not have the pen."""
-    assert entry.session is not None
     with entry.lock:
+        if entry.session is None:
+            return _no(_PUT_AWAY, 409)
         if wish.get("tab") != entry.tab:
             return _no(_ELSEWHERE, 409)
         if wish.get("revision") != entry.session.revision:
@@ -170,16 +235,12 @@ def _changed(entry: Entry, do: Do, wish: Mapping[str, Any]) -> Response:
 
 async def _shown(entry: Entry, tab: str) -> Response:
     def show() -> dict[str, Any]:
-        assert entry.session is not None
         with entry.lock:
+            if entry.session is None:
+                return _unread(entry)
             return {**overview(entry.session), "pen": entry.tab == tab}
 
     return JSONResponse(await run_in_threadpool(show))
-
-
-def _entry(request: Request, entries: list[Entry]) -> Entry | None:
-    number = request.path_params["number"]
-    return entries[number] if 0 <= number < len(entries) else None
 
 
 def _no(message: str, status: int) -> Response:

@@ -10,20 +10,23 @@ import json
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from digitize import program_version
 from digitize.errors import CannotWrite, InputError, UnreadableFile, at
 from digitize.safe_write import write_files
 from measure.overread.chain import Chain
-from measure.overread.corrections import Correction, Refused, from_plain, to_plain
+from measure.overread.corrections import Correction, Refused
+from measure.overread.corrections_json import from_plain, to_plain
 from measure.plain import json_lines, plain
 from measure.reading import Reading
 from measure.wording import NOTICE
 
+if TYPE_CHECKING:
+    from digitize.read import Stages
+
 FORMAT = "millivellum overread"
 FORMAT_VERSION = 1
-JOURNAL_ENDING = ".overread.json"
 LONGEST_TEXT = 2000
 LONGEST_PERSON = 120
 UNSIGNED = "Not signed: no clinician has put a name to this reading."
@@ -80,6 +83,10 @@ class Session:
     def reading(self) -> Reading:
         """The reading under all corrections; it says who signed it, or that nobody has."""
         return self._stamped(self._computed(self.steps))
+
+    def stages(self) -> "Stages | None":
+        """The stages of the page under all corrections, None where there is no page."""
+        return self.chain.stages([step.correction for step in self.steps])
 
     def correct(self, correction: Correction, who: str) -> None:
         """Add a correction.

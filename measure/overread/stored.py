@@ -1,43 +1,72 @@
 """From the pages of a store back to their sources, so that a person can over-read them."""
 
 import os
-import sqlite3
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
-from digitize.archive.catalogue import LOOK, opened
+from digitize.archive.catalogue import LOOK, Catalogue, opened
 from digitize.archive.store import CATALOGUE
-from digitize.errors import UnreadableFile, at, shown
+from measure.overread.items import JOURNAL_ENDING, Item
 
 JOURNALS = "overread"  # folder of a store for what a person did: sources are only read
 
 
-def sources_of(given: Sequence[Path]) -> tuple[list[Path], Path | None]:
-    """Return the files to over-read, and where the journals go if any of them is of a store.
+def stored_items(path: Path, folder: Path | None) -> list[Item] | None:
+    """Return the pages of a store to over-read, or None for a path that is of no store.
+
+    A page is read from its source once more, under the options that the store read it with. Where
+    the source is no longer there, or lies in a zip file, its tracing in the store is taken.
 
     Parameters
     ----------
-    given : sequence of Path
+    path : Path
         A store stands for all its pages that need a look, the JSON of a page in a store for that
-        page; every other file stands for itself.
+        page.
+    folder : Path, optional
+        Where the journals go; in the store where it is not given.
 
     Raises
     ------
     UnreadableFile
-        The catalogue cannot be read, or a source is no longer where it was.
+        The catalogue cannot be read.
     """
-    files: list[Path] = []
-    folder = None
-    for path in given:
-        store = _store_of(path)
-        if store is None:
-            files.append(path)
-            continue
-        folder = store / JOURNALS
-        stem = None if path.resolve() == store else _stem(path, store)
-        with opened(store / CATALOGUE, read_only=True) as catalogue:
-            files += _found(catalogue.db, stem, path)
-    return list(dict.fromkeys(files)), folder
+    store = _store_of(path)
+    if store is None:
+        return None
+    wanted = None if path.resolve() == store else _stem(path, store)
+    place = store / JOURNALS if folder is None else folder
+    with opened(store / CATALOGUE, read_only=True) as catalogue:
+        sources = _sources(catalogue)
+        return [
+            _item(row, store, sources.get(row["sha256"]), place)
+            for row in catalogue.rows()
+            if row["stem"] and (row["status"] == LOOK if wanted is None else row["stem"] == wanted)
+        ]
+
+
+def _sources(catalogue: Catalogue) -> dict[str, Path]:
+    """Where each content was met."""
+
+    def rows() -> Iterator[tuple[str, Path]]:
+        for path, sha256 in catalogue.db.execute("SELECT path, sha256 FROM source ORDER BY path"):
+            yield sha256, Path(os.fsdecode(path))
+
+    return dict(rows())
+
+
+def _item(row: dict[str, Any], store: Path, source: Path | None, place: Path) -> Item:
+    tracing = store / f"{row['stem']}.json"
+    there = source is not None and source.is_file()
+    name = tracing.stem if source is None else source.name
+    return Item(
+        name=name if row["page"] == 1 else f"{name}, page {row['page']}",
+        file=source if there and source is not None else tracing,
+        journal=place / f"{tracing.stem}{JOURNAL_ENDING}",
+        page=row["page"],
+        tracing=tracing,
+        sha256=row["sha256"] if there else None,
+    )
 
 
 def _store_of(path: Path) -> Path | None:
@@ -52,21 +81,3 @@ def _store_of(path: Path) -> Path | None:
 
 def _stem(path: Path, store: Path) -> str:
     return path.resolve().relative_to(store).as_posix().removesuffix(".json")
-
-
-def _found(db: sqlite3.Connection, stem: str | None, path: Path) -> Iterator[Path]:
-    """The source of one page, or of all that need a look, each once."""
-    where, value = ("p.status = ?", LOOK) if stem is None else ("p.stem = ?", stem)
-    sql = f"""
-        SELECT p.sha256, max(s.path) FROM page p LEFT JOIN source s USING (sha256)
-        WHERE {where} GROUP BY p.sha256 ORDER BY min(p.page), p.sha256
-    """
-    for sha256, name in db.execute(sql, (value,)):
-        source = Path(os.fsdecode(name or b""))
-        if name is None or not source.is_file():
-            reason = (
-                f"the source of page {sha256[:12]} is not where it was, or in a zip file: "
-                "give the scan itself"
-            )
-            raise at(UnreadableFile(reason), shown(path))
-        yield source

@@ -11,6 +11,8 @@ import numpy as np
 
 from digitize.tracing import Panel, Tracing
 from measure.criteria.finding import Clause, Finding
+from measure.overread.calipers import measure_between
+from measure.overread.corrections import Measured, counted, in_force
 from measure.overread.session import Session
 from measure.plain import plain
 from measure.questions import FAMILIES, answer
@@ -37,7 +39,8 @@ def overview(session: Session) -> dict[str, Any]:
             "signatures": [
                 {k: s[k] for k in ("name", "comment", "when")} for s in session.signatures
             ],
-            "corrections": [step.plain for step in session.steps],
+            "corrections": _corrections(session),
+            "measured": _measured(session, tracing),
             "can_redo": bool(session.undone),
             "scale": {
                 "speed_mm_s": tracing.speed_mm_s,
@@ -59,9 +62,28 @@ def overview(session: Session) -> dict[str, Any]:
     )
 
 
+def _corrections(session: Session) -> list[dict[str, Any]]:
+    """What was corrected, and whether a later step left it void."""
+    counts = counted([step.correction for step in session.steps])
+    return [
+        {**step.plain, "void": not counts_too}
+        for step, counts_too in zip(session.steps, counts, strict=True)
+    ]
+
+
+def _measured(session: Session, tracing: Tracing) -> list[dict[str, Any]]:
+    """Caliper results that were kept, on the scale that their panel has now."""
+    kept = in_force([step.correction for step in session.steps])
+    return [
+        {"points": c.points, **measure_between(tracing.panels[c.panel], c.points)}
+        for c in kept
+        if isinstance(c, Measured)
+    ]
+
+
 def _paper(session: Session) -> dict[str, Any] | None:
     """Where the flattened and the scanned picture lie; None where there is no page."""
-    stages = session.chain.stages
+    stages = session.stages()
     if stages is None:
         return None
     raster, (rows, cols) = stages.sheet.raster, stages.sheet.pixels.shape[:2]
@@ -69,6 +91,7 @@ def _paper(session: Session) -> dict[str, Any] | None:
     left_mm, top_mm = raster.left_mm - half, raster.top_mm - half
     corners = np.array([[left_mm, top_mm], [raster.x_mm(cols) - half, raster.y_mm(rows) - half]])
     return {
+        "turn_deg": stages.tracing.geometry["turn_deg"],  # after another turn it looks otherwise
         "flat": {"box": [*corners[0], *(corners[1] - corners[0])], "px": [cols, rows]},
         "scan": {"px": list(stages.page.pixels.shape[1::-1])},
         "ruled_mm": stages.grid.ruled_mm,

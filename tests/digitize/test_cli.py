@@ -41,7 +41,7 @@ def stand_in(page, options, *, on_stage=lambda name: None):
     layout, strokes = layout_of(read)
     read = replace(read, geometry=to_geometry(grid(), layout, strokes), checks=find_checks(read))
     on_stage("")
-    return Stages(page, grid(), None, None, layout, strokes, read)
+    return Stages(page, grid(), None, None, None, layout, strokes, read)
 
 
 @pytest.fixture

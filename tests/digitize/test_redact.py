@@ -49,7 +49,8 @@ def page(monkeypatch):
     made = tracing()
     layout, strokes = layout_of(made)
     made = replace(made, geometry=to_geometry(grid(PX_PER_MM), layout, strokes))
-    return Stages(Page(pixels, SOURCE), grid(PX_PER_MM), None, None, layout, strokes, made)
+    page = Page(pixels, SOURCE)
+    return Stages(page, grid(PX_PER_MM), None, None, None, layout, strokes, made)
 
 
 def test_header_and_notes_are_covered_names_and_run_stay(page):

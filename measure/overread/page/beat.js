@@ -17,6 +17,12 @@ export class Beat {
     new ResizeObserver(() => this.ecg && this.show(this.ecg)).observe(root);
   }
 
+  // An earlier ECG behind the leads, at one scale and aligned on the QRS onset; null: none.
+  beside(found) {
+    this.old = found;
+    if (this.ecg) this.show(this.ecg);
+  }
+
   show(ecg) {
     this.ecg = ecg;
     this.beat = ecg.beat;
@@ -25,7 +31,7 @@ export class Beat {
     this.rows = Math.max(Math.ceil(leads.length / COLUMNS), 1);
     const focused = document.activeElement?.dataset?.edge;
     this.cell = [this.root.clientWidth / COLUMNS, this.root.clientHeight / this.rows];
-    this.scale = scaleOf(Object.values(this.beat.mv));
+    this.scale = scaleOf([...Object.values(this.beat.mv), ...Object.values(this.old?.beat.mv ?? {})]);
     this.cells = new Map(leads.map((lead, k) => [lead, [
       this.cell[0] * Math.floor(k / this.rows), this.cell[1] * (k % this.rows)]]));
     this.marks = svg("g", {});
@@ -54,16 +60,22 @@ export class Beat {
 
   #cell(lead, ecg) {
     const [left, top] = this.cells.get(lead), { low, high } = this.scale;
-    const { start_ms, step_ms } = this.beat;
-    const inside = (k) => start_ms + k * step_ms >= FROM_MS && start_ms + k * step_ms <= TO_MS;
     const y = (mv) => (top + this.cell[1] * (high - mv) / (high - low)).toFixed(2);
-    const ys = this.beat.mv[lead].map((mv, k) => (mv === null || !inside(k) ? null : y(mv)));
-    const x = (k) => left + this.#x(start_ms + k * step_ms);
+    const wave = ({ step_ms, mv }, start_ms) => {
+      const at = (k) => start_ms + k * step_ms;
+      const inside = (k) => at(k) >= FROM_MS && at(k) <= TO_MS;
+      return pathOf((k) => left + this.#x(at(k)),
+        (mv[lead] ?? []).map((v, k) => (v === null || !inside(k) ? null : y(v))));
+    };
+    const old = this.old && wave(this.old.beat, this.old.beat.start_ms + (this.at.qrs_on_ms ?? 0));
+    const change = this.old?.beat_change_mv[lead];
     const parts = [
       svg("rect", { class: "cell", x: left, y: top, width: this.cell[0], height: this.cell[1] }),
-      svg("path", { class: "wave", d: pathOf(x, ys) }),
+      old ? svg("path", { class: "wave old", d: old }) : svg("g", {}),
+      svg("path", { class: "wave", d: wave(this.beat, this.beat.start_ms) }),
       svg("text", { class: "leadname", x: left + 6, y: top + NAME_Y },
-        `${lead}  ${ecg.beat.shapes[lead] ?? ""}  (${this.beat.beats[lead]})`),
+        `${lead}  ${ecg.beat.shapes[lead] ?? ""}  (${this.beat.beats[lead]})`
+        + (change === undefined || change === null ? "" : `  Δ ${change.toFixed(2)} mV`)),
     ];
     for (const edge of Object.keys(NAMES)) {
       const line = (at, name) => svg("line", { class: name, x1: left + this.#x(at),

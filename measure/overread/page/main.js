@@ -1,16 +1,20 @@
-// The page: one ECG of the worklist, its paper, its beat, its reading, and the keys.
+// The page: one ECG of the worklist, its paper, its beat, its reading.
 
 import * as api from "./api.js";
 import { Beat } from "./beat.js";
+import { Beside } from "./beside.js";
 import { byId, html } from "./draw.js";
+import { useKeys } from "./keys.js";
+import { showPanel } from "./panel.js";
 import { Paper } from "./paper.js";
-import { showPanel, showSide } from "./side.js";
-import { TOOLS, Tool, panelAt } from "./tools.js";
+import { showSide } from "./side.js";
+import { TOOLS, Tool, panelAt, sides } from "./tools.js";
+import { askDistance, askScale, showUnread, unreadEcg } from "./unread.js";
 
-const POLL_MS = 700, BLINK_MS = 450, PAN = 0.12, FINE_MM = 0.2, COARSE_MM = 1;
-const state = { number: null, ecg: null, panel: null, doubt: -1, blinking: null };
+const POLL_MS = 700, BLINK_MS = 450;
+const state = { number: null, ecg: null, list: [], panel: null, doubt: -1, blinking: null };
 
-const paper = new Paper(byId("paper"), {
+const paper = new Paper(byId("paper"), byId("ground"), {
   click: clicked,
   hover: (x, y) => tool.hover(x, y),
   edge: (panel, side, x) => {
@@ -21,24 +25,11 @@ const paper = new Paper(byId("paper"), {
 });
 const tool = new Tool(paper, used);
 const beat = new Beat(byId("beat"), (edge, at_ms) => correct({ kind: "boundary", edge, at_ms }));
-
-const ACTIONS = [
-  ["f", "Fit", () => paper.fit()],
-  ["v", "As scanned", () => turned()],
-  ["b", "Blink", () => blink()],
-  ["n", "Next doubt", () => doubt(state.doubt + 1)],
-  ["p", "Next panel", () => select(((state.panel ?? -1) + 1) % state.ecg.panels.length, true)],
-  ["z", "Undo", () => change("undo")],
-  ["Z", "Redo", () => change("redo")],
-  ["+", "Closer", () => paper.zoom(0.8)],
-  ["-", "Farther", () => paper.zoom(1.25)],
-  ["m", "March the calipers", () => tool.march()],
-  ["?", "Keys", () => byId("keys").showModal()],
-  ...Object.entries(TOOLS).filter(([name]) => name !== "scale").map(([name, { key, label }]) => [key, label, () => take(name)]),
-];
-const ALSO = [["arrows", "Move the paper; in a tool, its cross (Shift: finely)"],
-  ["space", "Set a point of the tool"], ["Enter", "Finish the redrawn stretch"],
-  ["Escape", "Put the tool away"], ["left, right on a boundary", "2 ms (Shift: 10 ms)"]];
+const beside = new Beside((found) => {
+  beat.beside(found);
+  byId("beatnote").textContent = found
+    ? `full line: this ECG; broken line: ${found.name}; aligned on the QRS onset` : "";
+});
 
 function clicked(x, y, data) {
   if (tool.name) return say(tool.put(x, y));
@@ -52,53 +43,27 @@ function useBeat(time_s) {
   correct({ kind: "beat", time_s, use: !averaged });
 }
 
+// A tool has all its places.
 function used(name, panel, points) {
-  if (name === "scale") return askDistance(points);
-  const xs = points.map(([x]) => x);
-  if (name === "strike") {
-    correct({ kind: "strike out", panel: panel.number, left_mm: Math.min(...xs),
-      right_mm: Math.max(...xs) });
-  } else if (name === "redraw") {
-    correct({ kind: "redraw", panel: panel.number, points });
-  } else {
-    return measured(panel, points);
+  if (name === "caliper") return measured(panel, points);
+  if (name === "scale") {
+    askDistance(state.number, points, { warn, say, read: () => {
+      tool.stop();
+      byId("paper").classList.remove("tool");
+      return open(state.number);
+    } });
+    return "";
   }
+  const xs = points.map(([x]) => x);
+  const span = { left_mm: Math.min(...xs), right_mm: Math.max(...xs) };
+  correct({
+    strike: { kind: "strike out", panel: panel?.number, ...span },
+    redraw: { kind: "redraw", panel: panel?.number, points },
+    ignore: { kind: "ignore", ...sides(points) },
+    crop: { kind: "crop", ...sides(points) },
+  }[name]);
   take(null);
   return null;
-}
-
-// A page without grid: two places, and how far apart a person knows them to be.
-function unscaled(number, ecg) {
-  state.ecg = { panels: [], beats: [], doubts: [], corrections: [], paper: {
-    scan: { px: ecg.unscaled } } };
-  byId("state").textContent = `${ecg.message}. Or show the scale here.`;
-  paper.open(number, state.ecg);
-  tool.start("scale");
-  byId("paper").classList.add("tool");
-  byId("paper").focus();
-  say(TOOLS.scale.say);
-}
-
-function askDistance(points) {
-  const input = html("input", { id: "distance", inputmode: "decimal", size: 6 });
-  const form = html("form", {}, html("label", { for: "distance" },
-    "Their distance in mm (10 s at 25 mm/s are 250, a mark of 1 mV at 10 mm/mV is 10): "), input,
-  html("button", { type: "submit" }, "Read the page"));
-  form.addEventListener("submit", async (event) => {
-    event.preventDefault();
-    try {
-      await api.change(state.number, "scale", { points, mm: input.value });
-    } catch (error) {
-      return say(error.message);
-    }
-    tool.stop();
-    Object.assign(state, { number: null, ecg: null });
-    warn("");
-    return poll();
-  });
-  warn(form);
-  input.focus();
-  return "";
 }
 
 // What lies between the legs of the calipers, on the scale of the panel under the first.
@@ -108,6 +73,17 @@ function measured(panel, [[x0, y0], [x1, y1]]) {
   const words = `${ms.toFixed(0)} ms, ${mv.toFixed(2)} mV${rate}`;
   tool.draw(words);
   return `Calipers in ${panel.lead}: ${words}`;
+}
+
+function keep() {
+  const panel = tool.points.length === 2 && panelAt(state.ecg.panels, ...tool.points[0]);
+  if (tool.name !== "caliper" || !panel) return say("Set both legs of the calipers first.");
+  return correct({ kind: "measured", panel: panel.number, points: tool.points });
+}
+
+function snap() {
+  tool.snap = !tool.snap;
+  say(tool.snap ? "The calipers snap to the trace." : "The calipers stand where they are set.");
 }
 
 function take(name) {
@@ -125,7 +101,8 @@ function take(name) {
   return say(next ? TOOLS[next].say : "");
 }
 
-function turned() {
+function turnView() {
+  if (!state.ecg.paper?.flat) return;
   take(null);
   const view = paper.turn();
   redraw();
@@ -155,7 +132,7 @@ function doubt(number) {
 
 function select(panel, seek = false) {
   state.panel = panel;
-  if (seek && paper.view === "flat" && state.ecg.paper) paper.seek(panel);
+  if (seek && state.ecg.panels[panel]?.y_mm && paper.view === "flat") paper.seek(panel);
   redraw();
 }
 
@@ -167,7 +144,9 @@ function evidence(places) {
     { lead, time_s: s + (edges.qrs_on_ms + (time_ms ?? 0)) / 1000 }))));
 }
 
-const say = (words) => { if (words !== null && words !== undefined) byId("said").textContent = words; };
+function say(words) {
+  if (words !== null && words !== undefined) byId("said").textContent = words;
+}
 
 function warn(words, button) {
   byId("banner").hidden = !words;
@@ -178,6 +157,7 @@ const correct = (correction) => change("correct", { correction, who: byId("who")
 
 let queue = Promise.resolve();
 function change(what, wish = {}) {
+  if (state.ecg?.revision === undefined) return undefined; // not read yet
   queue = queue.then(() => changed(what, wish)); // one after the other: each knows its revision
   return queue;
 }
@@ -187,6 +167,7 @@ async function changed(what, wish) {
   try {
     show(await api.change(state.number, what, { ...wish, revision: state.ecg.revision }));
     say("Done.");
+    beside.refresh();
   } catch (error) {
     say(error.message);
     if (error.status === 409) elsewhere(error.message);
@@ -212,7 +193,7 @@ function show(ecg) {
   state.ecg = ecg;
   redraw();
   beat.show(ecg);
-  showSide(state.number, ecg, { doubt, evidence, correct });
+  showSide(state.number, ecg, { doubt, evidence, correct, say, beat: useBeat });
   byId("undo").disabled = !ecg.corrections.length;
   byId("redo").disabled = !ecg.can_redo;
   const signed = ecg.signed ? `Signed by ${ecg.signed.name}` : "NOT SIGNED";
@@ -220,88 +201,85 @@ function show(ecg) {
   document.title = `${ecg.name} · over-read`;
 }
 
-async function open(number, take = false) {
+async function open(number, over = false) {
   if (state.number !== null && state.number !== number) api.release(state.number);
   state.number = number;
-  const ecg = await api.open(number, take);
-  Object.assign(state, { panel: null, doubt: -1 });
-  if (ecg.unscaled) return unscaled(number, ecg);
-  byId("paper").toggleAttribute("hidden", !ecg.paper);
-  byId("tools").toggleAttribute("hidden", !ecg.paper);
+  const ecg = await api.open(number, over);
+  if (state.number !== number) return; // another was chosen meanwhile
+  if (ecg.unread) {
+    unread(number, ecg);
+    return;
+  }
+  Object.assign(state, { panel: null, doubt: -1, page: null });
+  document.body.classList.remove("unread");
+  byId("tools").hidden = byId("sheet").hidden = !ecg.paper;
   if (ecg.paper) paper.open(number, ecg);
   show(ecg);
   warn("");
-  if (ecg.pen) return;
-  elsewhere("This ECG is open in another tab. You can look; to change it, take the pen over.");
+  poll();
+  if (!ecg.pen) {
+    elsewhere("This ECG is open in another tab. You can look; to change it, take the pen over.");
+  }
 }
 
-const usable = (how) => how === "ready" || how === "no scale";
+// The page is shown as scanned while it is read.
+function unread(number, ecg) {
+  const page = `${number} ${ecg.size_px}`;
+  if (!state.ecg || state.page !== page) {
+    Object.assign(state, { ecg: unreadEcg(ecg), page });
+    document.body.classList.add("unread");
+    byId("tools").hidden = true;
+    byId("sheet").hidden = !ecg.size_px;
+    if (ecg.size_px) paper.open(number, state.ecg);
+  }
+  showUnread(ecg);
+  listed();
+  if (ecg.unread === "no scale") askScale(tool, say);
+  else if (ecg.unread === "waiting" || ecg.unread === "reading") {
+    setTimeout(() => state.number === number && open(number).catch((e) => warn(e.message)), POLL_MS);
+  }
+}
 
-// The worklist is asked again until everything is read.
+function listed() {
+  byId("worklist").replaceChildren(...state.list.map(({ number, name, state: how, message }) =>
+    html("option", { value: number, selected: number === state.number },
+      ["ready", "waiting", "to compare"].includes(how) ? name : `${name}: ${message || how}`)));
+  beside.offer(state.number, state.list);
+}
+
+function go(by) {
+  const at = state.list.findIndex(({ number }) => number === state.number);
+  const next = state.list[at + by];
+  if (!next) return say(by > 0 ? "This is the last ECG." : "This is the first ECG.");
+  return open(next.number);
+}
+
+// The worklist is asked again as long as something in it is being read.
 async function poll() {
-  let list;
+  clearTimeout(state.polling);
   try {
-    list = await api.worklist();
+    state.list = await api.worklist();
+    if (state.number === null) await open(state.list[0].number);
+    else listed();
   } catch (error) {
     return warn(error.message);
   }
-  const chosen = state.number ?? 0;
-  byId("worklist").replaceChildren(...list.map(({ name, state: how, stage, message }, k) =>
-    html("option", { value: k, selected: k === chosen, disabled: !usable(how) },
-      how === "ready" ? name : `${name}: ${message || stage || how}`)));
-  const busy = list.some(({ state: how }) => how === "waiting" || how === "reading");
-  if (state.number === null) {
-    const first = list.findIndex(({ state: how }) => usable(how));
-    if (first >= 0) await open(first);
-    else byId("state").textContent = list.map((e) => `${e.name}: ${e.message || e.stage || e.state}`).join(" · ");
-  }
-  if (busy) setTimeout(poll, POLL_MS);
+  if (state.list.some(({ state: how }) => how === "reading")) state.polling = setTimeout(poll, POLL_MS);
   return undefined;
 }
 
-function keyed(event) {
-  const typing = event.target.closest("input, textarea, select, dialog, [role=slider]");
-  if (!state.ecg || typing || event.ctrlKey || event.metaKey || event.altKey) return;
-  const [x, y] = { ArrowLeft: [-1, 0], ArrowRight: [1, 0], ArrowUp: [0, -1], ArrowDown: [0, 1],
-  }[event.key] ?? [0, 0];
-  const onPaper = event.target === byId("paper") || event.target === document.body;
-  if (onPaper && (x || y)) {
-    const step = event.shiftKey ? FINE_MM : COARSE_MM;
-    if (tool.name) tool.step(x * step, y * step);
-    else paper.pan(x * PAN, y * PAN);
-  } else if (event.key === "Escape") take(null);
-  else if (onPaper && tool.name && event.key === " ") say(tool.put());
-  else if (onPaper && tool.name === "redraw" && event.key === "Enter") say(tool.finish());
-  else {
-    const action = ACTIONS.find(([key]) => key === event.key);
-    if (!action) return;
-    action[2]();
-  }
-  event.preventDefault();
-}
-
-function toolbar() {
-  const buttons = ACTIONS.filter(([key]) => !"zZm?".includes(key)).map(([key, label, act]) => {
-    const name = Object.keys(TOOLS).find((tool) => TOOLS[tool].key === key);
-    return html("button", { type: "button", onclick: act, title: `Key ${key}`, "data-tool": name,
-      "aria-pressed": name ? "false" : null }, label);
-  });
-  const strength = html("input", { type: "range", min: 0, max: 1, step: 0.05, value: 0.9,
-    oninput: (event) => paper.strength(event.target.value) });
-  byId("tools").replaceChildren(...buttons, html("label", {}, "Trace ", strength));
-}
-
-toolbar();
-byId("keylist").replaceChildren(...[...ACTIONS, ...ALSO].flatMap(([key, label]) =>
-  [html("dt", {}, key), html("dd", {}, label)]));
-byId("undo").addEventListener("click", () => change("undo"));
-byId("redo").addEventListener("click", () => change("redo"));
+const undo = () => change("undo"), redo = () => change("redo");
+useKeys({ turnView, blink, take, keep, snap, undo, redo, go, say,
+  nextDoubt: () => doubt(state.doubt + 1),
+  nextPanel: () => select(((state.panel ?? -1) + 1) % Math.max(state.ecg.panels.length, 1), true),
+}, paper, tool);
+byId("undo").addEventListener("click", undo);
+byId("redo").addEventListener("click", redo);
 byId("help").addEventListener("click", () => byId("keys").showModal());
 byId("worklist").addEventListener("change", (event) => open(Number(event.target.value)));
 byId("sign").addEventListener("submit", (event) => {
   event.preventDefault();
   change("sign", { name: byId("who").value, comment: byId("comment").value });
 });
-document.addEventListener("keydown", keyed);
 window.addEventListener("pagehide", () => { if (state.number !== null) api.release(state.number); });
 poll();

@@ -1,17 +1,17 @@
 // The paper: picture, trace, panels and beats in millimetres; zoom and pan.
 
-import { picture } from "./api.js";
 import { pathOf, svg } from "./draw.js";
+import { Tiles } from "./tiles.js";
 
-const FULL_FROM_PX_PER_MM = 5; // screen pixels per mm from which the full picture is worth loading
-const CLOSEST_MM = 12, TYPICAL_MM = 280, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
+const CLOSEST_MM = 12, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
 
 export class Paper {
-  constructor(root, on) {
+  constructor(root, canvas, on) {
     this.root = root;
     this.on = on; // place(x, y), panel(number), beat(beat), edge(panel, side, x_mm)
+    this.tiles = new Tiles(canvas, () => this.#frame());
     this.layers = {};
-    for (const name of ["picture", "trace", "panels", "beats", "marks", "tool"]) {
+    for (const name of ["trace", "panels", "beats", "marks", "tool"]) {
       this.layers[name] = svg("g", {});
     }
     const stripes = svg("path", { d: "M0 2L2 0", class: "hatch" });
@@ -30,15 +30,22 @@ export class Paper {
   }
 
   open(number, ecg) {
+    this.box = [];
     this.number = number;
     this.ecg = ecg;
     this.view = ecg.paper.flat ? "flat" : "scan";
-    this.#pictures();
+    this.#picture();
     this.fit();
   }
 
   show(ecg, selected, doubted) {
+    const turned = this.ecg?.paper.turn_deg !== ecg.paper.turn_deg;
     this.ecg = ecg;
+    if (turned) {
+      this.box = [];
+      this.#picture();
+      this.fit();
+    }
     const flat = this.view === "flat";
     this.layers.trace.replaceChildren(...(flat ? ecg.panels.flatMap(traceOf) : []));
     this.layers.panels.replaceChildren(
@@ -48,15 +55,18 @@ export class Paper {
   }
 
   fit(box) {
-    const paper = this.ecg.paper;
-    const whole = this.view === "flat" ? ruled(paper) : [0, 0, ...paper.scan.px];
-    this.box = [...(box ?? whole)];
+    const { paper, panels } = this.ecg, flat = this.view === "flat";
+    const whole = flat ? ruled(paper) : [0, 0, ...paper.scan.px];
+    const close = flat && panels.length ? around(panels) : whole;
+    const again = !box && String(this.box) === String(close); // a second time: the whole page
+    this.box = [...(box ?? (again ? whole : close))];
     this.#frame();
   }
 
   turn() {
     this.view = this.view === "flat" ? "scan" : "flat";
-    this.#pictures();
+    this.box = [];
+    this.#picture();
     this.fit();
     return this.view;
   }
@@ -91,9 +101,10 @@ export class Paper {
   }
 
   place(event) {
-    const point = new DOMPoint(event.clientX, event.clientY);
-    const { x, y } = point.matrixTransform(this.root.getScreenCTM().inverse());
-    return [x, y];
+    const { left, top, width, height } = this.root.getBoundingClientRect();
+    const scale = Math.min(width / this.box[2], height / this.box[3]);
+    const from = (at, room, k) => this.box[k] + this.box[k + 2] / 2 + (at - room / 2) / scale;
+    return [from(event.clientX - left, width, 0), from(event.clientY - top, height, 1)];
   }
 
   // Vertical bars on every averaged beat of a lead, at times in seconds of the recording.
@@ -110,27 +121,23 @@ export class Paper {
     this.layers.marks.replaceChildren(...bars);
   }
 
-  #pictures() {
+  #picture() {
     const { paper } = this.ecg;
     for (const name of ["trace", "panels", "beats", "marks"]) this.layers[name].replaceChildren();
-    const [x, y, width, height] = this.view === "flat" ? paper.flat.box : [0, 0, ...paper.scan.px];
-    const image = (size) => svg("image", { href: picture(this.number, this.view, size),
-      x, y, width, height, preserveAspectRatio: "none" });
-    this.layers.picture.replaceChildren(image("small"));
-    this.fine = () => this.layers.picture.append(image("full"));
-    this.#frame();
+    const flat = this.view === "flat", { px } = paper[this.view];
+    const name = `${this.number} ${this.view} ${paper.turn_deg}`;
+    this.tiles.show({ number: this.number, view: this.view, name, px,
+      box: flat ? paper.flat.box : [0, 0, ...px] });
   }
 
+  // Everything moves together, once for each frame of the screen.
   #frame() {
-    if (!this.ecg?.paper) return;
-    this.root.setAttribute("viewBox", this.box.join(" "));
-    const px = this.root.clientWidth / this.box[2];
-    const across = this.ecg.paper.flat?.box[2] ?? TYPICAL_MM;
-    const scale = this.view === "flat" ? 1 : this.ecg.paper.scan.px[0] / across;
-    if (this.fine && px * scale > FULL_FROM_PX_PER_MM) {
-      this.fine();
-      this.fine = null;
-    }
+    this.due ??= requestAnimationFrame(() => {
+      this.due = null;
+      if (!this.ecg?.paper) return;
+      this.root.setAttribute("viewBox", this.box.join(" "));
+      this.tiles.draw(this.box);
+    });
   }
 
   #panel(panel, selected, doubted) {
@@ -220,6 +227,13 @@ export class Paper {
 function ruled({ ruled_mm: [left, top, right, bottom] }) {
   return [left - AROUND_MM, top - AROUND_MM, right - left + 2 * AROUND_MM,
     bottom - top + 2 * AROUND_MM];
+}
+
+// The panels with some paper around them.
+function around(panels) {
+  const far = (k, most) => most(...panels.map(({ box_mm }) => box_mm[k]));
+  const [left, top] = [far(0, Math.min) - 3 * AROUND_MM, far(1, Math.min) - AROUND_MM];
+  return [left, top, far(2, Math.max) + AROUND_MM - left, far(3, Math.max) + AROUND_MM - top];
 }
 
 export const xOf = (panel, time_s) =>

@@ -1,50 +1,45 @@
 // The column beside the paper: doubts, intervals, findings, corrections, signatures.
 
-import { file } from "./api.js";
+import { file, take } from "./api.js";
 import { byId, html } from "./draw.js";
+import { showScale } from "./panel.js";
 
 const SIGNS = { met: "■", undecided: "◪", "not met": "□" };
 const FILES = { report: "Report (HTML)", reading: "Reading (JSON)", tracing: "Tracing (JSON)",
-  samples: "Samples (CSV)" };
+  samples: "Samples (CSV)", overlay: "Overlay (PNG)", wfdb: "WFDB (zip)", edf: "EDF+",
+  dicom: "DICOM waveform", fhir: "FHIR observation", aecg: "aECG (HL7)" };
+const OF_PAGES = ["tracing", "samples", "overlay"];
 
 export function showSide(number, ecg, on) {
   byId("notice").textContent = ecg.notice;
   byId("doubts").replaceChildren(...doubts(ecg, on));
   byId("intervals").replaceChildren(...ecg.intervals.map(interval));
   showFindings(ecg, on);
-  byId("scale").replaceChildren(...scale(ecg, on));
+  byId("beats").replaceChildren(...ecg.beats.map((beat) => beatOf(beat, on)));
+  byId("measured").replaceChildren(...measured(ecg));
+  showScale(ecg, on.correct);
   byId("corrections").replaceChildren(...corrections(ecg));
   byId("signatures").replaceChildren(...ecg.signatures.map((s) =>
     html("li", {}, `${s.name}, ${s.when}${s.comment ? `: ${s.comment}` : ""}`)));
   byId("exports").replaceChildren(...Object.entries(FILES)
-    .filter(([kind]) => ecg.paper || kind === "report" || kind === "reading")
-    .map(([kind, label]) => html("li", {}, html("a", { href: file(number, kind) }, label))));
+    .filter(([kind]) => ecg.paper || !OF_PAGES.includes(kind))
+    .map(([kind, label]) => html("li", {}, html("a", { href: file(number, kind),
+      onclick: (event) => {
+        event.preventDefault();
+        take(file(number, kind)).catch((error) => on.say(error.message));
+      } }, label))));
 }
 
-export function showPanel(ecg, number, on) {
-  const part = byId("panelpart"), panel = ecg.panels[number];
-  part.hidden = !panel?.y_mm;
-  if (part.hidden) return;
-  byId("panelname").textContent = `Panel ${number + 1}: ${panel.lead}${panel.strip ? " strip" : ""}`;
-  const [left, , right] = panel.box_mm;
-  const others = ecg.panels.filter((p) => p.number !== number)
-    .map((p) => html("option", { value: p.number }, `${p.lead}${p.strip ? " strip" : ""}`));
-  byId("panel").replaceChildren(
-    ...field("Lead", "lead", panel.lead, (value) =>
-      on({ kind: "lead name", panel: number, lead: value.trim() })),
-    ...labelled("Swap with", html("select", { id: "swap",
-      onchange: (event) => on({ kind: "swap", panel: number, other: Number(event.target.value) }) },
-    html("option", { value: "" }, "…"), ...others)),
-    ...field("Gain, mm/mV", "gain", panel.gain_mm_mv, (value) =>
-      on({ kind: "gain", mm_mv: Number(value), panel: number })),
-    ...field("Left edge, mm", "edgeleft", left.toFixed(1), (value) =>
-      on({ kind: "panel edges", panel: number, left_mm: Number(value), right_mm: right })),
-    ...field("Right edge, mm", "edgeright", right.toFixed(1), (value) =>
-      on({ kind: "panel edges", panel: number, left_mm: left, right_mm: Number(value) })),
-    html("button", { type: "button", onclick: () => on({ kind: "flip", panel: number }) },
-      "Flip: it is printed upside down"),
-    ...panel.notes.map((note) => html("p", { class: "notice" }, note)),
-  );
+function beatOf(beat, on) {
+  const words = `${beat.time_s.toFixed(2)} s, ${beat.kind}`;
+  return html("button", { type: "button", "aria-pressed": String(beat.averaged),
+    "data-at": beat.time_s, onclick: () => on.beat(beat.time_s) }, words);
+}
+
+function measured(ecg) {
+  if (!ecg.measured.length) return [html("li", {}, "None.")];
+  return ecg.measured.map(({ lead, ms, mv, rate_bpm: rate }) => html("li", {},
+    `${lead}: ${ms.toFixed(0)} ms, ${mv.toFixed(2)} mV${rate ? `, ${rate.toFixed(0)}/min` : ""}`));
 }
 
 function doubts(ecg, on) {
@@ -86,50 +81,15 @@ function clauseOf(clause, on) {
   `${SIGNS[clause.result]} ${clause.text}`, ...clause.lines.map((line) => html("div", {}, line)));
 }
 
-function scale(ecg, on) {
-  const { speed_mm_s: speed, gain_mm_mv: gain, timing, layout } = ecg.scale;
-  const person = (change) => on.correct({ kind: "patient", ...ecg.person, ...change });
-  const patient = [
-    ...choice("Sex", "sex", { "": "not given", female: "female", male: "male" },
-      ecg.person.sex ?? "", (value) => person({ sex: value || null })),
-    ...field("Age, years", "age", ecg.person.age_years ?? "", (value) =>
-      person({ age_years: value === "" ? null : Number(value) })),
-  ];
-  if (!ecg.paper) return patient;
-  const from = (known) => ` (${known.source})`;
-  return [
-    ...field(`Speed, mm/s${from(speed)}`, "speed", speed.value, (value) =>
-      on.correct({ kind: "speed", mm_s: Number(value) })),
-    ...field(`Gain, mm/mV${from(gain)}`, "allgain", gain.value, (value) =>
-      on.correct({ kind: "gain", mm_mv: Number(value) })),
-    ...choice(`Columns${from(timing)}`, "timing", { consecutive: "one after the other",
-      simultaneous: "all at the same instant" }, timing.value, (value) =>
-      on.correct({ kind: "timing", timing: value })),
-    html("span", {}, "Layout"), html("span", {}, `${layout.value}${from(layout)}`),
-    ...patient,
-  ];
-}
-
 function corrections(ecg) {
   if (!ecg.corrections.length) return [html("li", {}, "None.")];
-  return ecg.corrections.map(({ kind, who, when, ...rest }) => {
+  return ecg.corrections.map(({ kind, who, when, void: without, ...rest }) => {
     const panel = ecg.panels[rest.panel]?.lead;
-    const what = Object.entries(rest).filter(([key]) => key !== "panel" && key !== "points")
+    const what = Object.entries(rest).filter(([key, value]) => key !== "panel" && key !== "points" && value !== null)
       .map(([key, value]) => `${key.replace(/_(mm|ms|s)$/, "").replaceAll("_", " ")} ${
         typeof value === "number" ? Number(value.toFixed(2)) : value}`).join(", ");
-    return html("li", {}, [kind, panel && `in ${panel}`, what].filter(Boolean).join(" · "),
+    const lost = without && "void: the page was arranged, or its speed changed, after it";
+    return html("li", {}, [kind, panel && `in ${panel}`, what, lost].filter(Boolean).join(" · "),
       html("span", { class: "was" }, `${who || "no name given"}, ${when}`));
   });
-}
-
-const labelled = (label, input) => [html("label", { for: input.id }, label), input];
-
-const field = (label, id, value, changed) => labelled(label, html("input", { id, value,
-  size: 8, autocomplete: "off", onchange: (event) => changed(event.target.value) }));
-
-function choice(label, id, options, chosen, changed) {
-  const choices = Object.entries(options).map(([value, words]) =>
-    html("option", { value, selected: value === chosen }, words));
-  return labelled(label, html("select", { id, onchange: (event) => changed(event.target.value) },
-    ...choices));
 }

@@ -1,16 +1,20 @@
-// Tools that work by places on the paper: strike out, redraw, calipers. Each is fed by clicks, or
-// by a cross that the arrow keys move and the space bar sets down.
+// Tools that work by places on the paper. Each is fed by clicks, or by a cross that the arrow keys
+// move and the space bar sets down.
 
 import { svg } from "./draw.js";
 
 export const TOOLS = {
-  strike: { label: "Strike out", key: "s", points: 2,
+  strike: { label: "Strike out", key: "s", points: 2, span: true,
     say: "Strike out: mark the beginning and the end of what cannot be read." },
   redraw: { label: "Redraw", key: "d", points: Infinity,
     say: "Redraw: mark points along the ink from left to right, then Enter." },
-  caliper: { label: "Calipers", key: "c", points: 2,
-    say: "Calipers: mark two places. Then m marches them along." },
-  scale: { label: "Scale", key: "s", points: 2,
+  ignore: { label: "Ignore", key: "i", points: 2, region: true,
+    say: "Ignore: mark two opposite corners of a stamp or of handwriting." },
+  crop: { label: "Crop", key: "x", points: 2, region: true,
+    say: "Crop: mark two opposite corners of what belongs to the ECG." },
+  caliper: { label: "Calipers", key: "c", points: 2, snaps: true,
+    say: "Calipers: mark two places. Then m marches them along, k keeps the result." },
+  scale: { label: "Scale", points: 2, anywhere: true,
     say: "No grid was found. Mark two places whose distance you know, then type it." },
 };
 
@@ -18,6 +22,7 @@ export class Tool {
   constructor(paper, done) {
     this.paper = paper;
     this.done = done; // (name, panel, points)
+    this.snap = false;
     this.stop();
   }
 
@@ -48,21 +53,21 @@ export class Tool {
   }
 
   put(x = this.cross[0], y = this.cross[1]) {
-    const last = this.points.at(-1);
+    const last = this.points.at(-1), { points, snaps } = TOOLS[this.name];
     if (this.name === "redraw" && last && x <= last[0]) return "Points must run from left to right.";
-    if (this.points.length >= TOOLS[this.name].points) this.points = [];
-    this.points.push([x, y]);
+    if (this.points.length >= points) this.points = [];
+    this.points.push(snaps && this.snap ? this.#snapped(x, y) : [x, y]);
     this.marching = false;
     this.words = "";
     this.draw();
-    return this.points.length === TOOLS[this.name].points ? this.finish() : null;
+    return this.points.length === points ? this.finish() : null;
   }
 
   finish() {
     if (this.points.length < 2) return "Two places are needed.";
-    const [x, y] = this.points[0];
-    const panel = panelAt(this.paper.ecg.panels, x, y);
-    if (!panel && this.name !== "scale") return "That is beside every panel: mark within one.";
+    const { region, anywhere } = TOOLS[this.name];
+    const panel = panelAt(this.paper.ecg.panels, ...this.points[0]);
+    if (!panel && !region && !anywhere) return "That is beside every panel: mark within one.";
     return this.done(this.name, panel, this.points);
   }
 
@@ -74,28 +79,38 @@ export class Tool {
   draw(words = this.words) {
     this.words = words;
     const parts = [], [x, y] = this.cross;
-    const arm = this.paper.box[2] / 100;
+    const arm = this.paper.box[2] / 100, { span, region } = TOOLS[this.name];
     const cross = `M${x - arm} ${y}H${x + arm}M${x} ${y - arm}V${y + arm}`;
     parts.push(svg("path", { class: "tooling", d: cross }));
     if (this.name === "redraw") {
       parts.push(svg("polyline", { class: "tooling", points: this.points.join(" ") }));
-    } else {
+    } else if (!region) {
       for (const [at] of this.points) parts.push(this.#bar(at));
     }
     for (const [px, py] of this.points) {
       parts.push(svg("circle", { class: "tooling", cx: px, cy: py, r: arm / 3 }));
     }
-    if (this.name === "strike" && this.points.length === 1) {
-      const from = this.points[0][0];
-      parts.push(svg("rect", { class: "reach", x: Math.min(from, x), width: Math.abs(x - from),
-        y: this.paper.box[1], height: this.paper.box[3] }));
-    }
+    if ((span || region) && this.points.length === 1) parts.push(this.#reach(region));
     if (this.marching) parts.push(...this.#marched());
     if (words) {
       const [tx, ty] = this.points[1];
       parts.push(svg("text", { class: "measure", x: tx + 1.5, y: ty - 1.5 }, words));
     }
     this.paper.layers.tool.replaceChildren(...parts);
+  }
+
+  // From the first place to the cross: the full height for a span, both sides for a region.
+  #reach(region) {
+    const [x0, y0] = this.points[0], [x, y] = this.cross, [, top, , height] = this.paper.box;
+    const down = region ? { y: Math.min(y0, y), height: Math.abs(y - y0) } : { y: top, height };
+    return svg("rect", { class: "reach", x: Math.min(x0, x), width: Math.abs(x - x0), ...down });
+  }
+
+  // The height of the trace at a place, where a panel has one there.
+  #snapped(x, y) {
+    const panel = panelAt(this.paper.ecg.panels, x, y);
+    const sample = panel?.y_mm?.[Math.round((x - panel.box_mm[0]) / panel.step_mm)];
+    return [x, sample ?? y];
   }
 
   #bar(x) {
@@ -116,3 +131,7 @@ export class Tool {
 
 export const panelAt = (panels, x, y) => panels.find(({ box_mm: [left, top, right, bottom] }) =>
   x >= left && x <= right && y >= top && y <= bottom);
+
+// Two opposite corners as the sides of a region.
+export const sides = ([[x0, y0], [x1, y1]]) => ({ left_mm: Math.min(x0, x1),
+  top_mm: Math.min(y0, y1), right_mm: Math.max(x0, x1), bottom_mm: Math.max(y0, y1) });

@@ -9,11 +9,13 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from digitize.options import Options
 from digitize.read import Stages, read_stages
 from digitize.tracing import LEADS
 from measure.overread.chain import Chain
-from measure.overread.pictures import Pictures
+from measure.overread.items import Item
 from measure.overread.session import Session
 from measure.overread.worklist import Worklist
 from measure.reading import Person
@@ -55,14 +57,23 @@ def session(chain: Chain, folder: Path) -> Session:
     return Session(chain, folder / "ecg.overread.json", lambda: NOON)
 
 
-def worklist(folder: Path, chain: Chain) -> Worklist:
-    """A worklist of one ECG that is ready."""
-    made = Worklist([folder / "ecg.png"], Options(), Person(), None)
-    (entry,) = made.entries
-    pixels = chain.stages and (chain.stages.page.pixels, chain.stages.sheet.pixels)
-    entry.session, entry.pictures = session(chain, folder), Pictures(*(pixels or ()))
-    entry.state = "ready"
+def worklist(folder: Path, *chains: Chain) -> Worklist:
+    """A worklist of ECGs that are ready; the first keeps its journal as `session` does."""
+    names = ["ecg", *(f"ecg{k}" for k in range(2, len(chains) + 1))]
+    items = [Item(f"{n}.png", folder / f"{n}.png", folder / f"{n}.overread.json") for n in names]
+    made = Worklist(items, Options(), Person())
+    for entry, chain in zip(made.entries, chains, strict=True):
+        entry.session = Session(chain, entry.item.journal, lambda: NOON)
+        entry.state = "ready"
     return made
+
+
+def write_csv(path: Path) -> None:
+    """The model ECG as a table."""
+    panels = digital_chain().reading().tracing.panels
+    names = ",".join(f"{p.lead}_mV" for p in panels)
+    rows = np.column_stack([panels[0].time_s, *(p.mv for p in panels)])
+    np.savetxt(path, rows, delimiter=",", header=f"time_s,{names}", comments="", fmt="%.5f")
 
 
 @contextlib.contextmanager

@@ -13,16 +13,19 @@ import subprocess
 import sys
 import time
 import urllib.parse
+import zipfile
 from pathlib import Path
 
 import numpy as np
 import pytest
 from PIL import Image
 
+from digitize.formats import FORMATS
 from digitize.options import Options
+from measure.overread.serve import find_items
 from measure.overread.worklist import Worklist
 from measure.reading import Person
-from tests.measure.overread.made import digital_chain, page_chain, serving, worklist
+from tests.measure.overread.made import digital_chain, page_chain, serving, worklist, write_csv
 
 sync_api = pytest.importorskip("playwright.sync_api", reason="playwright is not installed")
 pytest.importorskip("measure.overread.server", reason="the extra `overread` is missing")
@@ -43,7 +46,7 @@ def browser():
 
 @pytest.fixture
 def guard(tmp_path):
-    with serving(worklist(tmp_path, page_chain())) as guard:
+    with serving(worklist(tmp_path, page_chain(), digital_chain())) as guard:
         yield guard
 
 
@@ -118,15 +121,23 @@ def test_the_page_says_that_it_is_unsigned_and_no_diagnosis(page):
     assert "This is no diagnosis" in page.inner_text("#notice")
 
 
-def test_zoom_brings_the_full_picture(page):
-    width = "() => document.getElementById('paper').viewBox.baseVal.width"
-    before = page.evaluate(width)
-    for _ in range(6):
-        page.keyboard.press("+")
-    assert page.evaluate(width) == pytest.approx(before * 0.8**6)
-    page.wait_for_selector("#paper image[href$='full']", state="attached")
+def test_zoom_brings_the_tiles_that_it_needs(page):
+    wide = "n => Math.abs(document.getElementById('paper').viewBox.baseVal.width - n) < 1e-3"
+    before = page.evaluate("() => document.getElementById('paper').viewBox.baseVal.width")
+    assert not any("/paper/flat/0/" in url for url in page.asked)
+    with page.expect_request("**/paper/flat/0/*/*"):
+        for _ in range(6):
+            page.keyboard.press("+")
+    page.wait_for_function(wide, arg=before * 0.8**6)
     page.keyboard.press("f")
-    assert page.evaluate(width) == pytest.approx(before)
+    page.wait_for_function(wide, arg=before)
+    white = page.evaluate(
+        """() => { const { width, height } = document.getElementById("ground");
+          const at = [width / 2, height / 2, 60, 60];
+          const { data } = document.getElementById("ground").getContext("2d").getImageData(...at);
+          return data.every((v) => v === 255); }"""
+    )
+    assert not white  # ruled paper is drawn in the middle of the canvas
 
 
 def test_a_lead_is_renamed_and_the_name_undone(page):
@@ -189,11 +200,115 @@ def test_calipers_measure_on_the_panels_own_scale(page):
     assert re.search(r"(799|800|801) ms, -0\.5\d? ?0? ?mV, 75/min", words.replace("−", "-")), words
 
 
-def test_a_beat_is_taken_out_by_a_click(page):
+def test_a_beat_is_taken_out_by_a_click_and_back_by_the_keyboard(page):
     averaged = page.locator("#paper .heartbeat.averaged").count()
     page.locator("#paper .heartbeat.averaged").first.click()
     done(page, 1)
     assert page.locator("#paper .heartbeat.averaged").count() < averaged
+    page.locator('#beats [aria-pressed="false"]').first.press("Enter")
+    done(page, 2)
+    assert page.locator("#paper .heartbeat.averaged").count() == averaged
+
+
+def test_calipers_are_kept_and_snap_to_the_trace(page):
+    page.keyboard.press("t")
+    page.keyboard.press("c")
+    for share in (0.1, 0.2):
+        x, y = on_screen(page, 0, share)
+        page.mouse.click(x, y + 4)
+    words = page.inner_text("#said").removeprefix("Calipers in ")
+    page.keyboard.press("k")
+    done(page, 1)
+    assert page.inner_text("#measured") == words
+    mv = float(re.search(r"(-?[\d.]+) mV", words.replace("−", "-")).group(1))
+    assert abs(mv) < 0.4  # two places on the level line, though both were clicked beside it
+
+
+def test_an_ignored_region_is_no_longer_read(page):
+    gaps = page.locator("#paper .missing").count()
+    page.keyboard.press("i")
+    x, y = on_screen(page, 0, 0.5)
+    page.mouse.click(x - 12, y - 12)
+    page.mouse.click(x + 12, y + 12)
+    done(page, 1)
+    assert page.locator("#paper .missing").count() > gaps
+    assert "ignore" in page.inner_text("#corrections")
+    page.click("#undo")
+    done(page, 0)
+    assert page.locator("#paper .missing").count() == gaps
+
+
+def test_columns_at_the_same_instant(page):
+    far = page.locator("#beats button").last.inner_text()
+    page.select_option("#timing", "simultaneous")
+    done(page, 1)
+    assert "given" in page.locator("label[for=timing]").inner_text()
+    # two columns of five seconds one after the other, or both in the same five
+    assert (
+        float(far.split()[0])
+        > 5
+        > float(page.locator("#beats button").last.inner_text().split()[0])
+    )
+
+
+def test_the_page_in_another_layout_has_other_panels_and_earlier_names_are_void(page):
+    rename(page, "V9")
+    done(page, 1)
+    page.fill("#order", "aVL I aVR II aVF III V1 V2 V3 V4 V5 V6")
+    page.get_by_text("Read the page in this layout").click()
+    done(page, 2)
+    assert first_name(page) == "aVL (given)"
+    assert "void" in page.locator("#corrections li").first.inner_text()
+
+
+def test_an_earlier_ecg_beside_this_one_follows_its_corrections(page):
+    page.keyboard.press("o")
+    page.select_option("#other", "1")
+    page.wait_for_selector("#besideall table")
+    assert page.locator("#beat .wave.old").count() == 12
+    before = page.inner_text("#besideall table")
+    peak = _peak_of_the_old_beat(page)
+    page.focus('[data-edge="qrs_on_ms"][role="slider"]')
+    for _ in range(5):
+        page.keyboard.press("ArrowLeft")
+    done(page, 1)
+    page.wait_for_function(
+        "t => document.querySelector('#besideall table')?.innerText !== t", arg=before
+    )
+    # aligned on the QRS onset: it moved to the left with it, by 10 ms of a cell of 920 ms
+    cell = page.locator("#beat .cell").first.bounding_box()["width"]
+    moved = peak - _peak_of_the_old_beat(page)
+    assert moved == pytest.approx(10 * cell / 920, abs=0.5)
+    with page.expect_download() as download:
+        page.get_by_text("Take the comparison away").click()
+    assert download.value.suggested_filename == "ecg.png.compare.zip"
+    page.select_option("#other", "")
+    assert page.locator("#beat .wave.old").count() == 0
+
+
+def _peak_of_the_old_beat(page):
+    """Where on the page the first lead of the old beat is highest."""
+    drawn = page.locator("#beat .wave.old").first.get_attribute("d")
+    points = [tuple(map(float, place.split())) for place in re.findall(r"[\d.]+ [\d.]+", drawn)]
+    return min(points, key=lambda point: point[1])[0]
+
+
+def test_the_next_ecg_is_a_key_away(page):
+    page.keyboard.press("]")
+    page.wait_for_function("() => document.title.startsWith('model.csv')")
+    assert page.locator("#sheet").is_hidden()
+    page.keyboard.press("[")
+    page.wait_for_function("() => document.title.startsWith('lafb')")
+    assert page.locator("#sheet").is_visible()
+
+
+def test_everything_that_the_command_line_writes_can_be_taken_away(page):
+    kinds = [a.get_attribute("href").split("/")[-1] for a in page.locator("#exports a").all()]
+    assert {"report", "reading", "tracing", "samples", "overlay", *FORMATS} - {"csv"} == set(kinds)
+    with page.expect_download() as download:
+        page.click("#exports a[href$='wfdb']")
+    with zipfile.ZipFile(download.value.path()) as archive:
+        assert any(name.endswith(".hea") for name in archive.namelist())
 
 
 def test_signed_and_found_again_after_a_reload(page):
@@ -325,19 +440,21 @@ def test_two_places_give_the_scale_of_a_page_without_grid(browser, tmp_path):
             page.mouse.click(x_px * a + e, 300 * a + f)
         page.fill("#distance", "100")
         page.press("#distance", "Enter")
-        page.wait_for_function("() => document.getElementById('state').innerText.includes('wait')")
+        page.wait_for_function(
+            "() => document.getElementById('state').innerText.includes('Waiting')"
+        )
         page.close()
-    _, options = made.wanted.get_nowait()
+    wanted = made.wanted.get_nowait()
     # 800 pixels are 100 mm; a fax has half as many down, and a click is sure to a screen pixel
-    assert options.px_per_mm == pytest.approx((8.0, 4.0), rel=0.005)
+    assert wanted.px_per_mm == pytest.approx((8.0, 4.0), rel=0.005)
 
 
 def bare_page(folder):
     """A worklist of one white fax page without any grid, read as far as it goes."""
     image = Image.fromarray(np.full((600, 1000), 255, np.uint8))
     image.save(folder / "bare.png", dpi=(200, 100))
-    made = Worklist([folder / "bare.png"], Options(), Person(), None)
-    made.read_next(*made.wanted.get())
+    made = Worklist(find_items([folder / "bare.png"], None), Options(), Person())
+    made.read_next(made.entries[0])
     assert made.entries[0].state == "no scale"
     return made
 
@@ -369,11 +486,3 @@ def _wait_until_open(address, seconds=30.0):
             if time.monotonic() > until:
                 raise
             time.sleep(0.1)
-
-
-def write_csv(path):
-    """The model ECG as a table."""
-    panels = digital_chain().reading().tracing.panels
-    names = ",".join(f"{p.lead}_mV" for p in panels)
-    rows = np.column_stack([panels[0].time_s, *(p.mv for p in panels)])
-    np.savetxt(path, rows, delimiter=",", header=f"time_s,{names}", comments="", fmt="%.5f")

@@ -7,12 +7,16 @@ import pytest
 
 from digitize.errors import CannotWrite, NoTrace, UnreadableFile
 from measure.overread.corrections import (
+    Arrangement,
     BeatUse,
     Boundary,
     ColumnTiming,
+    Crop,
     Flip,
     Gain,
+    Ignore,
     LeadName,
+    Measured,
     PanelEdges,
     Patient,
     Redraw,
@@ -20,14 +24,20 @@ from measure.overread.corrections import (
     Speed,
     StrikeOut,
     Swap,
-    from_plain,
+    Turn,
     in_force,
-    to_plain,
 )
+from measure.overread.corrections_json import from_plain, to_plain
 from measure.overread.session import UNSIGNED
 from tests.measure.overread.made import digital_chain, page_chain, page_stages, session
 
 EVERY = (
+    Turn(180),
+    Arrangement("3x4+1"),
+    Arrangement("3x1", ("V1", "II", "V5")),
+    Crop(0.0, 0.0, 100.0, 60.0),
+    Ignore(10.5, 20.0, 30.0, 28.0),
+    Measured(2, ((1.0, 2.0), (3.0, 4.5))),
     LeadName(0, "V1"),
     Swap(0, 3),
     Flip(2),
