@@ -63,8 +63,8 @@ def measure_intervals(
         "jt_ms": _between(edges.qrs_off_ms, edges.t_off_ms),
         **corrected,
         "p_axis_deg": _wave_axis(beat, edges.p_on_ms, edges.p_off_ms),
-        "qrs_axis_deg": _axis({lead: w.net_area_mv_ms for lead, w in waves.items()}),
-        "t_axis_deg": _axis({lead: w.t_mv for lead, w in waves.items()}),
+        "qrs_axis_deg": frontal_axis({lead: w.net_area_mv_ms for lead, w in waves.items()}),
+        "t_axis_deg": frontal_axis({lead: w.t_mv for lead, w in waves.items()}),
     }
 
 
@@ -106,14 +106,14 @@ def _wave_axis(beat: DominantBeat, start: Quantity, end: Quantity) -> Quantity:
             areas[lead] = Quantity(
                 area, float(se.mean() * len(mv) / 2), "mV ms", (lead,), beat.beats[k]
             )
-    return _axis(areas)
+    return frontal_axis(areas)
 
 
-def _axis(sizes: Mapping[str, Quantity]) -> Quantity:
-    """Frontal axis from lead I and aVF, by Einthoven's and Goldberger's geometry.
+def frontal_axis(sizes: Mapping[str, Quantity]) -> Quantity:
+    """Return the frontal axis in degrees from the sizes of a wave in lead I and aVF.
 
-    aVF is scaled by 2 / sqrt(3), since the augmented leads are shorter than the bipolar ones.
-    Without aVF it follows from I and II, or I and III.
+    Einthoven's and Goldberger's geometry: aVF is scaled by 2 / sqrt(3), since the augmented leads
+    are shorter than the bipolar ones. Without aVF it follows from I and II, or I and III.
     """
     one, foot = sizes.get("I"), _foot(sizes)
     if one is None or not one.known or foot is None:

@@ -1,5 +1,6 @@
 """Fascicular blocks, AHA/ACCF/HRS 2009 part III, clause by clause (from memory)."""
 
+import math
 from dataclasses import replace
 
 import pytest
@@ -95,9 +96,17 @@ def test_aha_2009_posterior_qr_in_iii_and_avf(name):
     assert lpfb(leads).result == "not met"
 
 
+def anterior_with_right_block(foot_mv, late_mv=-0.4):
+    """Right block whose net area in aVF begins at `foot_mv`, and whose S in I is `late_mv`."""
+    leads = anterior_leads(rbbb_leads())
+    leads["I"] = lead("I", "RS", wave("R", 0.8, 0, 80), wave("S", late_mv, 80, 140))
+    leads["aVF"] = lead("aVF", "S", wave("S", foot_mv, 0, 80))
+    return leads
+
+
 def test_right_block_with_either_fascicular_block():
     wide = {"qrs_ms": ms(140)}
-    anterior = made.findings(anterior_leads(rbbb_leads()), qrs_axis_deg=axis(-60), **wide)
+    anterior = made.findings(anterior_with_right_block(-1.2), qrs_axis_deg=axis(-60), **wide)
     assert anterior["rbbb_complete"].result == "met"
     assert anterior["rbbb_lafb"].result == "met"
     assert anterior["lafb"].result == "not met"  # its own QRS limit
@@ -110,3 +119,12 @@ def test_right_block_with_either_fascicular_block():
     posterior = made.findings(leads, qrs_axis_deg=axis(120), **wide)
     assert posterior["rbbb_lpfb"].result == "met"
     assert posterior["rbbb_lafb"].result == "not met"
+
+
+@pytest.mark.parametrize(("turned_deg", "result"), [(-43, "not met"), (-47, "met")])
+def test_right_block_the_axis_is_that_of_the_beginning(turned_deg, result):
+    """Both waves have one shape, so that their areas are to each other as their heights."""
+    foot_mv = 0.8 * math.tan(math.radians(turned_deg)) * math.sqrt(3) / 2
+    late = anterior_with_right_block(foot_mv, late_mv=-1.6)
+    found = made.findings(late, qrs_ms=ms(140), qrs_axis_deg=axis(-120))
+    assert made.clause(found["rbbb_lafb"], "QRS axis of the first 80 ms").result == result
