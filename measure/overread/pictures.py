@@ -4,6 +4,7 @@ Level 0 is the page pixel by pixel; each level above has half the pixels across 
 """
 
 import io
+import math
 import threading
 from functools import lru_cache
 
@@ -51,6 +52,11 @@ class Pictures:
         if (view, level) not in self._levels:
             self._levels[view, level] = _halved(self._at(view, level - 1))
         return self._levels[view, level]
+
+
+def coarsest(pixels: np.ndarray) -> int:
+    """The level at which a page is a single tile."""
+    return max(math.ceil(math.log2(max(pixels.shape[:2]) / TILE_PX)), 0)
 
 
 def _halved(pixels: np.ndarray) -> np.ndarray:

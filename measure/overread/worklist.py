@@ -17,7 +17,7 @@ from digitize.tracing import PageSource
 from measure.inputs import holds_samples, open_ecgs
 from measure.overread.chain import Chain
 from measure.overread.items import Item, page_item
-from measure.overread.pictures import Pictures
+from measure.overread.pictures import Pictures, coarsest
 from measure.overread.session import Session, scale_kept
 from measure.reading import Person
 from measure.reading_files import document, load_document
@@ -63,7 +63,9 @@ class Entry:
 
     def opened(self, page: Page) -> None:
         """The page is there to be looked at, though not read yet."""
-        self.source, self._pictures = page.source, Pictures(page.pixels)
+        pictures = Pictures(page.pixels)
+        pictures.tile("scan", coarsest(page.pixels), 0, 0)
+        self.source, self._pictures = page.source, pictures
 
     def read(self, chain: Chain, now: str = "ready") -> None:
         """What a person does begins here, or where it was left off."""
@@ -165,8 +167,6 @@ class Worklist:
 
     def _read_page(self, entry: Entry) -> None:
         """The page of an item; a file that holds another after it gets one more entry."""
-        from digitize.read import read_or_tell  # image libraries for pages alone
-
         item, options = entry.item, self._options_for(entry)
         entry.stage = "page"
 
@@ -185,6 +185,8 @@ class Worklist:
                     )
                 entry.state, entry.message = "reading", ""  # a page before it may have failed
                 entry.opened(page)
+                from digitize.read import read_or_tell  # it takes a while: the page is shown before
+
                 stages = read_or_tell(page, options, on_error=fail, on_stage=at_stage)
                 if stages is not None:
                     entry.read(Chain(stages.tracing, stages, self._person))

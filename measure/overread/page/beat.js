@@ -98,7 +98,7 @@ export class Beat {
           "data-column": column, ...(column ? {} : { tabindex: 0, role: "slider",
             "aria-label": name, "aria-valuemin": FROM_MS, "aria-valuemax": TO_MS,
             "aria-valuenow": Math.round(this.at[edge]),
-            "aria-valuetext": `${Math.round(this.at[edge] - this.at.qrs_on_ms)} ms after QRS` }),
+            "aria-valuetext": `${Math.round(this.at[edge] - this.at.qrs_on_ms)} ms after QRS begins` }),
           onpointerdown: (event) => this.#grab(event, edge) }));
       }
     }

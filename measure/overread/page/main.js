@@ -11,7 +11,7 @@ import { showSide } from "./side.js";
 import { TOOLS, Tool, panelAt, sides } from "./tools.js";
 import { askDistance, askScale, showUnread, unreadEcg } from "./unread.js";
 
-const POLL_MS = 700, BLINK_MS = 450;
+const POLL_MS = 700, SOON_MS = 150, BLINK_MS = 450;
 const state = { number: null, ecg: null, list: [], panel: null, doubt: -1, blinking: null };
 
 const paper = new Paper(byId("paper"), byId("ground"), {
@@ -153,7 +153,7 @@ function warn(words, button) {
   byId("banner").replaceChildren(words, ...(button ? [button] : []));
 }
 
-const correct = (correction) => change("correct", { correction, who: byId("who").value });
+export const correct = (correction) => change("correct", { correction, who: byId("who").value });
 
 let queue = Promise.resolve();
 function change(what, wish = {}) {
@@ -236,7 +236,8 @@ function unread(number, ecg) {
   listed();
   if (ecg.unread === "no scale") askScale(tool, say);
   else if (ecg.unread === "waiting" || ecg.unread === "reading") {
-    setTimeout(() => state.number === number && open(number).catch((e) => warn(e.message)), POLL_MS);
+    setTimeout(() => state.number === number && open(number).catch((e) => warn(e.message)),
+      ecg.size_px ? POLL_MS : SOON_MS);
   }
 }
 

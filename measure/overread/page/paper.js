@@ -1,9 +1,10 @@
 // The paper: picture, trace, panels and beats in millimetres; zoom and pan.
 
-import { pathOf, svg } from "./draw.js";
+import { svg } from "./draw.js";
 import { Tiles } from "./tiles.js";
+import { CLOSE_PX_PER_MM, traceOf } from "./trace.js";
 
-const CLOSEST_MM = 12, AROUND_MM = 4, SHORTEST_GAP = 10; // samples of a gap that is worth hatching
+const CLOSEST_MM = 12, AROUND_MM = 4;
 
 export class Paper {
   constructor(root, canvas, on) {
@@ -47,7 +48,7 @@ export class Paper {
       this.fit();
     }
     const flat = this.view === "flat";
-    this.layers.trace.replaceChildren(...(flat ? ecg.panels.flatMap(traceOf) : []));
+    this.layers.trace.replaceChildren(...(flat ? ecg.panels.flatMap((panel) => traceOf(panel, this.close)) : []));
     this.layers.panels.replaceChildren(
       ...(flat ? ecg.panels.flatMap((panel) => this.#panel(panel, selected, doubted)) : []));
     this.layers.beats.replaceChildren(...(flat ? this.#beats(ecg) : []));
@@ -135,9 +136,18 @@ export class Paper {
     this.due ??= requestAnimationFrame(() => {
       this.due = null;
       if (!this.ecg?.paper) return;
+      this.#detail(this.root.clientWidth / this.box[2] > CLOSE_PX_PER_MM);
       this.root.setAttribute("viewBox", this.box.join(" "));
       this.tiles.draw(this.box);
     });
+  }
+
+  #detail(close) {
+    if (close === this.close) return;
+    this.close = close;
+    for (const path of this.layers.trace.querySelectorAll(".trace")) {
+      path.setAttribute("d", close ? path.forms.full : path.forms.far);
+    }
   }
 
   #panel(panel, selected, doubted) {
@@ -238,26 +248,3 @@ function around(panels) {
 
 export const xOf = (panel, time_s) =>
   panel.box_mm[0] + (time_s - panel.start_s) * panel.speed_mm_s;
-
-function traceOf(panel) {
-  if (!panel.y_mm) return [];
-  const x = (k) => panel.box_mm[0] + k * panel.step_mm;
-  const doubtful = new Set(panel.doubtful);
-  const sure = panel.y_mm.map((y, k) => (doubtful.has(k) ? null : y));
-  const unsure = panel.y_mm.map((y, k) => (doubtful.has(k) ? y : null));
-  const parts = [svg("path", { class: "trace", d: pathOf(x, sure) })];
-  if (doubtful.size) parts.push(svg("path", { class: "trace doubtful", d: pathOf(x, unsure) }));
-  let first = null;
-  for (let k = 0; k <= panel.y_mm.length; k += 1) {
-    const missing = k < panel.y_mm.length && panel.y_mm[k] === null;
-    if (missing) first ??= k;
-    else if (first !== null) {
-      if (k - first >= SHORTEST_GAP) {
-        parts.push(svg("rect", { class: "missing", x: x(first), y: panel.baseline_mm - 2.5,
-          width: (k - first) * panel.step_mm, height: 5 }));
-      }
-      first = null;
-    }
-  }
-  return parts;
-}

@@ -76,7 +76,7 @@ function finding(found, open, on) {
 
 function clauseOf(clause, on) {
   const look = () => on.evidence(clause.places);
-  return html("div", { class: "clause", tabindex: 0, onpointerenter: look, onfocus: look,
+  return html("div", { class: "clause", role: "note", tabindex: 0, onpointerenter: look, onfocus: look,
     onpointerleave: () => on.evidence([]), onblur: () => on.evidence([]) },
   `${SIGNS[clause.result]} ${clause.text}`, ...clause.lines.map((line) => html("div", {}, line)));
 }
