@@ -6,7 +6,7 @@ trace touches are then looked for at that place alone.
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -49,6 +49,7 @@ class LabelFit:
     right_aligned: bool
     boxes: tuple[Box, ...]
     inner_offset_mm: tuple[float, float] | None = None
+    places: Mapping[tuple[int, int], Box] = field(default_factory=dict)  # of the names, by slot
 
 
 @dataclass(frozen=True)
@@ -102,10 +103,11 @@ def _fit_aligned(
     if not chosen:
         return LabelFit(0.0, {}, None, right, ())
     read = {(pair.slot.row, pair.slot.column): _likeliest(posterior(pair.word)) for pair in chosen}
-    boxes = tuple(pair.word.box for pair in chosen)
+    places = {(pair.slot.row, pair.slot.column): pair.word.box for pair in chosen}
+    boxes = tuple(places.values())
     first = _usual_place([pair for pair in chosen if pair.slot.column == 0])
     inner = _usual_place([pair for pair in chosen if pair.slot.column > 0])
-    return LabelFit(score, read, first, right, boxes, inner)
+    return LabelFit(score, read, first, right, boxes, inner, places)
 
 
 def _usual_place(pairs: Sequence[_Pair]) -> tuple[float, float] | None:
@@ -193,13 +195,14 @@ def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot], aside_mm: float =
         _expected_box(slot, places[slot.column > 0], fit.right_aligned, height) for slot in missing
     ]
     score, names = fit.score, dict(fit.names)
+    looked = {(s.row, s.column): box for s, box in zip(missing, boxes, strict=True)}
     for slot, word in zip(missing, read_boxes(ink, boxes), strict=True):
         post = posterior(word)
         if not post:
             continue
         score += min(max(_gain(slot, post), -1.0), 2.0)
         names[slot.row, slot.column] = _likeliest(post)
-    return replace(fit, score=score, names=names)
+    return replace(fit, score=score, names=names, places={**fit.places, **looked})
 
 
 def _places(

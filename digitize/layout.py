@@ -6,7 +6,7 @@ margin to the runner-up says how sure that is. Scale comes from what is printed 
 calibration marks; what neither says is assumed, and said so.
 """
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -22,6 +22,7 @@ from digitize.columns import (
 from digitize.errors import NoTrace
 from digitize.ink import Ink
 from digitize.labels import LabelFit, Slot, fit_labels, look_again
+from digitize.likeness import names_by_likeness
 from digitize.marks import Mark, mark_box
 from digitize.options import Options
 from digitize.rows import Row, Rows
@@ -37,8 +38,6 @@ SURE = 3.0  # log odds to the runner-up below which the layout is called doubtfu
 DROPPED_ROW = 3.0  # log odds against a row found that is none
 UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
-GUESSED = 0.35  # and from which it is taken where the arrangement expects no name
-STROKES = ("I", "II", "III")  # what is left of any letter may look like these
 
 
 @dataclass(frozen=True)
@@ -153,7 +152,8 @@ def find_layout(
     hypotheses.sort(key=lambda h: -h.score)
     best = hypotheses[0]
     margin = best.score - next((h.score for h in hypotheses[1:]), best.score - 20)
-    panels = _panels(best, scale, options)
+    alike = names_by_likeness(ink, best.labels, best.slots)
+    panels = _panels(best, scale, options, alike)
     return Layout(
         name=_known_name(best, margin, options),
         speed_mm_s=scale.speed_mm_s,
@@ -254,13 +254,14 @@ def _panels(
     best: _Hypothesis,
     scale: Scale,
     options: Options,
+    alike: Mapping[tuple[int, int], tuple[str, float]],
 ) -> tuple[PanelPlace, ...]:
     start_mm = best.spans[0].left_mm
     speed, rows = float(scale.speed_mm_s.value), best.rows
     panels = []
     for number, slot in enumerate(best.slots):
         strip = slot.row >= best.template.rows or best.template.name == "1x1"
-        lead, source, sure = _lead(slot, number, best, options)
+        lead, source, sure = _lead(slot, number, best, options, alike)
         left = best.spans[slot.column].left_mm
         right = best.spans[-1].right_mm if strip else best.spans[slot.column].right_mm
         row = rows.rows[slot.row]
@@ -285,21 +286,26 @@ def _panels(
 
 
 def _lead(
-    slot: Slot, number: int, best: _Hypothesis, options: Options
+    slot: Slot,
+    number: int,
+    best: _Hypothesis,
+    options: Options,
+    alike: Mapping[tuple[int, int], tuple[str, float]],
 ) -> tuple[str, Origin, float]:
     """Name of a panel: given, read, or as the arrangement has it."""
     if options.lead_order is not None and number < len(options.lead_order):
         return options.lead_order[number], "given", 1.0
     read = best.labels.names.get((slot.row, slot.column))
     if slot.name is None:
+        if (slot.row, slot.column) in alike:
+            name, sure = alike[slot.row, slot.column]
+            return name, "printed", sure
         if read is not None and read[1] > READ:
             return read[0], "printed", read[1]
-        if read is not None and read[1] > GUESSED and read[0] not in STROKES:
-            return read[0], "found", read[1]
         return STRIP_LEAD, "assumed", 0.5
     if read is not None and read[0] in (slot.name, slot.name.removeprefix("-")):
         return slot.name, "printed" if read[1] > 0.3 else "found", read[1]
-    if read is not None and read[1] > 0.95 and read[0] not in STROKES:
+    if read is not None and read[1] > 0.95 and read[0] not in ("I", "II", "III"):
         return read[0], "printed", read[1]
     return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7
 

@@ -22,6 +22,7 @@ LEAST_PITCH_MM = 6.0
 THICKEST_PEN_MM = 1.3
 GAP_MM = 0.6  # specks of paper within a line are shorter
 QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
+OUTSIDE_MM = 2.0  # the zero line of a trace lies on the ruling, or this near
 SOLID_MM = 7  # ink along half of this length is trace or mark, no speck
 SPECK_MM = 1.0  # ink smaller than this in both directions is halftone or dirt
 
@@ -73,7 +74,7 @@ def find_rows(ink: Ink, letters: tuple[Box, ...]) -> Rows:
     rules, uprights = straight_rules(mask, ink)
     mask[rules] = 0
     runs = _find_runs(mask, ink)
-    heights = _row_heights(runs)
+    heights = _row_heights(runs, ink.ruled_mm)
     if not heights:
         return Rows((), 0.0, runs, uprights)
     pitch = float(np.median(np.diff(heights))) if len(heights) > 1 else 40.0
@@ -113,7 +114,7 @@ def _find_runs(mask: np.ndarray, ink: Ink) -> Runs:
     )
 
 
-def _row_heights(runs: Runs) -> list[float]:
+def _row_heights(runs: Runs, ruled_mm: tuple[float, float, float, float]) -> list[float]:
     """Heights of the rows, top to bottom: peaks of the run profile that are far enough apart."""
     length = runs.bottom_mm - runs.top_mm
     middle = (runs.bottom_mm + runs.top_mm) / 2
@@ -127,6 +128,10 @@ def _row_heights(runs: Runs) -> list[float]:
     y = bins[strong] + BIN_MM / 2
     share = np.array([coverage_mm(runs, height) for height in y])
     thin = np.array([_thin(runs, height) for height in y], bool)
+    edge = np.array([_is_edge(runs, height, ruled_mm) for height in y], bool)
+    if np.count_nonzero(thin & ~edge) > 2:
+        thin &= ~edge
+        share[edge] = 0.0
     clear = thin & (share > 0.35 * share.max(initial=0.0))
     heights = _spaced(y[clear], share[clear])
     faint = thin & ~clear & (share > 0.12 * share.max(initial=0.0))
@@ -143,6 +148,16 @@ def _thin(runs: Runs, y_mm: float) -> bool:
     """Whether the ink at a height is a pen's line; the shaded edge of a sheet is a broad band."""
     near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
     return bool(np.quantile((runs.bottom_mm - runs.top_mm)[near], 0.3) < THICKEST_PEN_MM)
+
+
+def _is_edge(runs: Runs, y_mm: float, ruled_mm: tuple[float, float, float, float]) -> bool:
+    """Whether ink at a height is the shaded edge of a sheet: outside the ruling, as wide."""
+    left, top, right, bottom = ruled_mm
+    if top - OUTSIDE_MM < y_mm < bottom + OUTSIDE_MM:
+        return False
+    near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
+    first, last = np.quantile(runs.x_mm[near], (0.02, 0.98)) if near.any() else (right, left)
+    return bool(last - first > 0.9 * (right - left))
 
 
 def _spaced(y: np.ndarray, share: np.ndarray) -> list[float]:

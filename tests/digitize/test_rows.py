@@ -54,9 +54,9 @@ def test_each_row_reaches_from_its_first_to_its_last_ink(page):
         panels = [p for p in sheet.composition.panels if p.row == row]
         left = min([p.x_mm[0] for p in panels] + [mark[0] for mark in sheet.composition.marks])
         right = max(p.x_mm[-1] for p in panels)
-        # A row begins with the first whole millimetre that is inked for 0.7 mm of it.
-        assert found.left_mm == pytest.approx(left, abs=0.75)
-        assert found.right_mm == pytest.approx(right, abs=0.75)
+        # Columns are looked at every quarter of a millimetre, and the pen is 0.3 mm wide.
+        assert found.left_mm == pytest.approx(left, abs=0.41)
+        assert found.right_mm == pytest.approx(right, abs=0.41)
 
 
 def test_tall_complexes_that_cross_into_the_next_row_make_no_row_of_their_own():
@@ -103,3 +103,51 @@ def test_what_is_hidden_does_not_count():
     hidden[: round(ink.raster.row(37.0))] = True  # a card over the first row
     rows = find_rows(replace(ink, hidden=hidden), ())
     np.testing.assert_allclose([r.y_mm for r in rows.rows], [50, 76, 102], atol=1.0)
+
+
+def test_a_trace_broken_everywhere_is_followed_to_its_ends():
+    sheet = perfect_sheet(CHART)
+    rng = np.random.default_rng(5)
+    kept = np.repeat(rng.random(sheet.ink.density.shape[1] // 12 + 1) < 0.7, 12)  # 1.5 mm pieces
+    broken = replace(sheet.ink, density=sheet.ink.density * kept[: sheet.ink.density.shape[1]])
+    whole = rows_of(CHART)
+    found = find_rows(broken, ())
+    assert len(found.rows) == len(whole.rows)
+    for row, other in zip(found.rows, whole.rows, strict=True):
+        assert row.right_mm == pytest.approx(other.right_mm, abs=4.5)  # three pieces in a line
+
+
+def test_halftone_specks_are_no_rows():
+    ink = perfect_sheet(CHART).ink
+    rng = np.random.default_rng(6)
+    density = ink.density.copy()
+    rows, cols = (rng.integers(2, n - 2, 9000) for n in density.shape)
+    for dy in (-1, 0, 1):
+        for dx in (-1, 0, 1):
+            density[rows + dy, cols + dx] = 1.0
+    found = find_rows(replace(ink, density=density), ())
+    expected = [row.y_mm for row in rows_of(CHART).rows]
+    np.testing.assert_allclose([row.y_mm for row in found.rows], expected, atol=1.0)
+
+
+def test_a_faint_row_between_others_is_not_lost():
+    ink = perfect_sheet(CHART).ink
+    density = ink.density.copy()
+    third = rows_of(CHART).rows[2].y_mm
+    band = slice(int(ink.raster.row(third - 12)), int(ink.raster.row(third + 12)))
+    left, right = int(ink.raster.col(100.0)), int(ink.raster.col(250.0))
+    density[band, left:right] = 0
+    found = find_rows(replace(ink, density=density), ())
+    assert len(found.rows) == 4
+    assert found.rows[2].y_mm == pytest.approx(third, abs=1.0)
+
+
+def test_the_shaded_edge_of_a_sheet_on_a_desk_is_no_row():
+    ink = perfect_sheet(CHART).ink
+    left, top, right, bottom = ink.ruled_mm
+    ruled = (left + 3, top + 6, right - 3, bottom - 12)
+    density = ink.density.copy()
+    line = int(ink.raster.row(bottom - 5))
+    density[line : line + 8] = 0.9  # a millimetre of shade along the whole edge
+    found = find_rows(replace(ink, density=density, ruled_mm=ruled), ())
+    assert len(found.rows) == 4

@@ -104,3 +104,17 @@ def test_a_mark_of_no_usual_size_scales_nothing():
     scale = find_scale(printing(), ROWS, odd, Options())
     assert scale.speed_mm_s.source == "assumed"
     assert scale.gain_mm_mv.source == "assumed"
+
+
+def test_a_strip_of_a_chest_lead_with_a_mark_of_its_own_tells_the_chest_leads_gain():
+    marks = (mark(40.0), mark(80.0, height_mm=5.0))
+    scale = find_scale(printing("25 mm/s"), ROWS, marks, Options())
+    assert scale.gain_of(40.0, "aVL") == 10.0
+    assert scale.gain_of(40.0, "V4") == 5.0  # beside limb leads, behind their mark
+    assert scale.gain_of(80.0, "V1") == 5.0
+    assert any("10 and 5 mm" in note for note in scale.notes)
+
+
+def test_digits_that_ran_together_are_no_speed():
+    scale = find_scale(printing("1025 mm/s"), ROWS, (), Options())
+    assert scale.speed_mm_s.source == "assumed"
