@@ -6,6 +6,7 @@ long or too much memory) costs that page. It ends itself when whoever waits for 
 """
 
 import dataclasses
+import gc
 import multiprocessing
 import os
 import resource
@@ -122,8 +123,9 @@ Message = int | Outcome | None
 def _start(task: Task) -> tuple[BaseProcess, Connection]:
     """A process at work on a task, and the pipe on which its messages come."""
     context = multiprocessing.get_context("forkserver")
-    # Image libraries are loaded once, in the process from which all others are forked.
-    context.set_forkserver_preload(["digitize.archive.reading"])
+    # Loaded once, in the process from which all others are forked: the image libraries, and the
+    # command, which each of them would import again.
+    context.set_forkserver_preload(["digitize.archive.reading", "digitize.cli"])
     ours, theirs = context.Pipe()
     process = context.Process(target=_work, args=(task, theirs), daemon=True)
     process.start()
@@ -133,6 +135,7 @@ def _start(task: Task) -> tuple[BaseProcess, Connection]:
 
 def _work(task: Task, pipe: Connection) -> None:
     """The life of the process."""
+    gc.freeze()  # what was loaded before the fork stays: looking it through would copy it
     _be_silent()
     threading.Thread(target=_end_with_parent, args=(pipe,), daemon=True).start()
     pipe.send(None)

@@ -4,33 +4,23 @@
 """
 
 import errno
-import io
+import hashlib
 import os
+import shutil
 import sqlite3
+import subprocess
 import time
-import zlib
 from contextlib import closing
 
-import numpy as np
 import pytest
-from PIL import Image
 
 from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
 from digitize.archive.worker import Limits
 from digitize.options import Options
-from tests.digitize import made_files
+from tests.digitize.archive import hostile
 from tests.digitize.archive import stand_in as made
 
-KINDS = {
-    "png": {},
-    "jpeg": {},
-    "tiff": {"compression": "tiff_lzw"},
-    "bmp": {},
-    "gif": {},
-    "webp": {},
-    "pdf": {},
-}
 VARIANTS = int(os.environ.get("MILLIVELLUM_VARIANTS", "4"))
 
 
@@ -44,14 +34,6 @@ def rows(store):
         return db.execute("SELECT sha256, page, status, reason FROM page").fetchall()
 
 
-def whole(kind):
-    buffer = io.BytesIO()
-    image = Image.fromarray(np.full((120, 200, 3), made.READ, np.uint8))
-    image.putpixel((100, 60), (10, 20, 30))
-    image.save(buffer, kind, **KINDS[kind])
-    return buffer.getvalue()
-
-
 def outside(tmp_path, store):
     return {
         path: path.read_bytes()
@@ -60,115 +42,75 @@ def outside(tmp_path, store):
     }
 
 
-@pytest.mark.parametrize("kind", KINDS)
-def test_flipped_bits_end_in_rows(tmp_path, kind, capfd):
-    rng = np.random.default_rng([7, *kind.encode()])
+def keep(scans, kind, contents):
+    scans.mkdir(exist_ok=True)
+    for number, content in enumerate(contents):
+        (scans / f"{number}.{kind.split('.')[0]}").write_bytes(content)
+
+
+@pytest.mark.parametrize("kind", hostile.whole_files())
+def test_damaged_files_end_in_rows(tmp_path, kind, capfd):
+    """Each content has a row, what failed has a reason, and nothing is written elsewhere."""
     scans, store = tmp_path / "scans", tmp_path / "store"
-    scans.mkdir()
-    for variant in range(VARIANTS):
-        content = np.frombuffer(whole(kind), np.uint8).copy()
-        where = rng.integers(0, min(len(content), 400 if variant % 2 else len(content)), 4)
-        content[where] ^= rng.integers(1, 256, 4).astype(np.uint8)
-        (scans / f"{variant}.{kind}").write_bytes(content.tobytes())
+    keep(scans, kind, hostile.variants(kind, VARIANTS))
     before = outside(tmp_path, store)
     run(scans, store)
     found = rows(store)
-    contents = {path.read_bytes() for path in scans.iterdir()}
-    assert len({sha256 for sha256, *_ in found}) == len(contents)
+    if kind != "zip":  # whose members are the contents
+        contents = {path.read_bytes() for path in scans.iterdir()}
+        assert len({sha256 for sha256, *_ in found}) == len(contents)
     assert all(reason for *_, status, reason in found if status == "failed")
     assert outside(tmp_path, store) == before
     assert "Traceback" not in capfd.readouterr().err
 
 
-@pytest.mark.parametrize("kind", KINDS)
+@pytest.mark.parametrize("kind", ["png", "jpg", "tif.fax", "pdf.scanned", "heic", "dcm"])
 def test_cut_at_every_tenth_ends_in_rows(tmp_path, kind):
     scans, store = tmp_path / "scans", tmp_path / "store"
-    scans.mkdir()
-    content = whole(kind)
-    for tenth in range(1, 10):
-        (scans / f"{tenth}.{kind}").write_bytes(content[: len(content) * tenth // 10])
+    keep(scans, kind, hostile.cuts(kind))
     run(scans, store)
     assert len({sha256 for sha256, *_ in rows(store)}) == 9
 
 
-def bomb_tiff():
-    """A TIFF that promises 60000 x 60000 pixels in one strip (TIFF 6.0, section 2)."""
-    buffer = io.BytesIO()
-    Image.new("L", (8, 8)).save(buffer, "TIFF")
-    content = buffer.getvalue()
-    for tag in (b"\x00\x01", b"\x01\x01"):  # ImageWidth, ImageLength, little-endian
-        at = content.index(tag + b"\x04\x00\x01\x00\x00\x00") + 8
-        content = content[:at] + (60_000).to_bytes(4, "little") + content[at + 4 :]
-    return content
-
-
-def bomb_pdf():
-    """A PDF whose image states 30000 x 30000 pixels."""
-    return made_files.image_pdf(
-        np.zeros((4, 4, 3), np.uint8),
-        page_pt=(800, 600),
-        place=b"800 0 0 600 0 0",
-        declared_px=(30_000, 30_000),
-    )
-
-
-def inflating_pdf():
-    """A PDF whose content unpacks to 400 MB of nothing."""
-    packed = zlib.compressobj(9)
-    data = b"".join([*(packed.compress(b" " * 2**20) for _ in range(400)), packed.flush()])
-    return made_files.pdf(
-        b"<</Type/Catalog /Pages 2 0 R>>",
-        b"<</Type/Pages /Kids[3 0 R] /Count 1>>",
-        b"<</Type/Page /Parent 2 0 R /MediaBox[0 0 99 99] /Contents 4 0 R>>",
-        made_files.stream(b"/Filter/FlateDecode", data),
-    )
-
-
-def circular_pdf():
-    """A PDF whose page tree is its own child."""
-    return made_files.pdf(
-        b"<</Type/Catalog /Pages 2 0 R>>", b"<</Type/Pages /Kids[2 0 R 2 0 R] /Count 2>>"
-    )
-
-
-def sliver():
-    """A picture of 1 x 30000 pixels."""
-    buffer = io.BytesIO()
-    Image.new("L", (30_000, 1), made.NO_GRID).save(buffer, "PNG")
-    return buffer.getvalue()
+def test_sound_files_of_every_kind_are_read(tmp_path):
+    """The whole files that the damage is done to: otherwise it would prove nothing."""
+    scans, store = tmp_path / "scans", tmp_path / "store"
+    scans.mkdir()
+    for kind, content in hostile.whole_files().items():
+        (scans / f"{kind.replace('.', '-')}.{kind.split('.')[0]}").write_bytes(content)
+    assert run(scans, store) == 0
+    assert {status for _, _, status, _ in rows(store)} == {"good"}
 
 
 def test_bombs_and_oddities_each_end_in_a_clear_row(tmp_path, capfd):
     scans, store = tmp_path / "scans", tmp_path / "store"
     scans.mkdir()
-    hostile = {
-        "bomb.png": made_files.bomb_png(),
-        "bomb.tiff": bomb_tiff(),
-        "bomb.pdf": bomb_pdf(),
-        "circular.pdf": circular_pdf(),
-        "locked.pdf": made_files.locked_pdf(),
-        "sliver.png": sliver(),
-        "empty.jpg": b"",
-        "noise.heic": np.random.default_rng(1).bytes(5000),
-        "cut.dcm": bytes(128) + b"DICM\x08\0",
-    }
-    for name, content in hostile.items():
+    refused, odd = hostile.refused_files(), hostile.odd_files()
+    for name, content in {**refused, **odd}.items():
         (scans / name).write_bytes(content)
-    made.save(scans / "sound.png", made.READ)
-    (scans / "lies.jpg").write_bytes(made.save(tmp_path / "x.png", made.DOUBTFUL).read_bytes())
+    (scans / "folder.png").mkdir()
+    os.mkfifo(scans / "queue.png")
+    before = {path for path in tmp_path.rglob("*") if store not in path.parents}
     run(scans, store)
-    found = rows(store)
-    assert len({sha256 for sha256, *_ in found}) == len(hostile) + 2
-    assert {status for _, _, status, _ in found} == {"good", "look", "failed"}
-    assert sum(status == "failed" for _, _, status, _ in found) >= len(hostile)
-    assert all("\n" not in reason for *_, reason in found)
-    assert "Traceback" not in capfd.readouterr().err
+    by_content = {}
+    for sha256, _, status, _ in rows(store):
+        by_content.setdefault(sha256, set()).add(status)
+    for name, content in refused.items():
+        if not name.endswith(".zip"):
+            assert by_content[hashlib.sha256(content).hexdigest()] == {"failed"}, name
+    for name, content in odd.items():
+        assert "good" in by_content[hashlib.sha256(content).hexdigest()], name
+    assert all("\n" not in reason for *_, reason in rows(store))
+    said = capfd.readouterr().err
+    assert "queue.png: this is not a regular file" in said
+    assert "Traceback" not in said
+    assert {p for p in tmp_path.rglob("*") if store not in p.parents} - before == {store}
 
 
 def test_page_that_unpacks_for_ever_is_given_up(tmp_path):
     scans, store = tmp_path / "scans", tmp_path / "store"
     scans.mkdir()
-    (scans / "inflating.pdf").write_bytes(inflating_pdf())
+    (scans / "inflating.pdf").write_bytes(hostile.inflating_pdf())
     made.save(scans / "sound.png", made.READ)
     began = time.monotonic()
     run(scans, store, seconds=2.0)
@@ -191,6 +133,39 @@ def test_full_disk_ends_the_run_in_one_line_and_later_it_continues(tmp_path, mon
     assert rows(store) == []
     assert run(scans, store) == 0
     assert len(rows(store)) == 3
+
+
+@pytest.fixture
+def small_disk(tmp_path):
+    """A file system of 300 KB of its own."""
+    place = tmp_path / "disk"
+    place.mkdir()
+    words = ["mount", "-t", "tmpfs", "-o", "size=300k", "tmpfs", str(place)]
+    if shutil.which("mount") is None or subprocess.run(words, check=False, stderr=-3).returncode:
+        pytest.skip("no file system can be mounted here")
+    yield place
+    subprocess.run(["umount", str(place)], check=True)
+
+
+def test_disk_that_runs_full_in_the_middle(tmp_path, small_disk, capsys):
+    """What was written before stands and has its rows; nothing half-written is left."""
+    scans, store = tmp_path / "scans", small_disk / "store"
+    made.save(scans / "many.tiff", *[made.READ] * 40)
+    assert run(scans, store) == 1
+    said = capsys.readouterr().err.splitlines()[-1]  # of the file or of the catalogue
+    assert "No space left on device" in said or "disk is full" in said
+    assert not list(store.rglob("*.part"))
+    for _, page, status, _ in rows(store):
+        (kept,) = store.glob(f"pages/*/*.p{page}.json")
+        assert (status, kept.stat().st_size > 0) == ("good", True)
+
+
+def test_store_that_may_only_be_read(tmp_path, small_disk, capsys):
+    scans, store = tmp_path / "scans", small_disk / "store"
+    made.save(scans / "1.png", made.READ)
+    subprocess.run(["mount", "-o", "remount,ro", str(small_disk)], check=True)
+    assert run(scans, store) == 1
+    assert "cannot be written (Read-only file system)" in capsys.readouterr().err
 
 
 def test_clock_going_backwards_changes_nothing(tmp_path, monkeypatch):
