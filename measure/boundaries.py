@@ -93,7 +93,8 @@ def _edges_of(
 
     if overall is not None and not overall.qrs_on_ms.known:
         return overall
-    onset, offset = qrs_edges(leads, spike_ms)
+    within_ms = (overall.qrs_on_ms.value, overall.qrs_off_ms.value) if overall else None
+    onset, offset = qrs_edges(leads, spike_ms, within_ms)
     if overall is not None:
         onset = _within(onset, overall.qrs_on_ms.value, overall.qrs_off_ms.value)
         offset = _within(offset, onset.at_ms, overall.qrs_off_ms.value)

@@ -51,16 +51,32 @@ class Edge:
     se_ms: float
 
 
-def qrs_edges(leads: Leads, spike_ms: float | None = None) -> tuple[Edge, Edge]:
-    """Return onset and offset of the QRS around 0 ms; the onset is never before a pacing spike."""
+def qrs_edges(
+    leads: Leads, spike_ms: float | None = None, within_ms: tuple[float, float] | None = None
+) -> tuple[Edge, Edge]:
+    """Return onset and offset of the QRS around 0 ms; the onset is never before a pacing spike.
+
+    `within_ms` are the ends of the QRS over all leads, where these are parts of them: there all
+    movement between belongs to the QRS, also that which a calm stretch parts from the rest.
+    """
     slopes = leads.slopes(_QRS_PARABOLA_MS)
     moving = leads.size(slopes)
     middle = leads.index(-60) + int(np.argmax(moving[leads.index(-60) : leads.index(60)]))
     first = leads.index(-170) if spike_ms is None else leads.index(spike_ms + 2)
-    return (
-        _qrs_onset(leads, moving, middle, min(first, middle - 1)),
-        _qrs_offset(leads, slopes, moving, middle),
-    )
+    first = min(first, middle - 1)
+    if within_ms is not None:
+        on, off = (leads.index(ms) for ms in within_ms)
+        if on < middle < off:
+            return (
+                _left_at(leads, _first_moving(moving, first, on, middle)),
+                _qrs_offset(leads, slopes, moving, middle, off),
+            )
+    return _qrs_onset(leads, moving, middle, first), _qrs_offset(leads, slopes, moving, middle)
+
+
+def _first_moving(moving: np.ndarray, calm_from: int, start: int, stop: int) -> int:
+    least = _least(moving[calm_from : stop + 1], _QRS_SLOPE_MV_S)
+    return start + int(np.argmax(moving[start : stop + 1] > least))
 
 
 def _qrs_onset(leads: Leads, moving: np.ndarray, middle: int, first: int) -> Edge:
@@ -72,13 +88,23 @@ def _qrs_onset(leads: Leads, moving: np.ndarray, middle: int, first: int) -> Edg
     if start <= furthest + 1 and core > furthest:
         # No quiet stretch: the P wave runs into the QRS, which begins at the calmest place.
         start = furthest + int(np.argmin(moving[furthest:core]))
+    return _left_at(leads, start)
+
+
+def _left_at(leads: Leads, start: int) -> Edge:
+    """Where the leads come away from the level they have up to `start`."""
     away = leads.distance(leads.level(start - _LEVEL_MS, start + 1))
     at = [leave(away, start, f * _QRS_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0)]
     return _edge(leads, *at)
 
 
-def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: int) -> Edge:
-    """Where the movement ends; where the ST segment itself slopes, movement about that slope."""
+def _qrs_offset(
+    leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: int, latest: int | None = None
+) -> Edge:
+    """Where the movement ends; where the ST segment itself slopes, movement about that slope.
+
+    Up to `latest`, if given, pauses do not end it.
+    """
     last = min(middle + 240, len(moving) - 30)
     width = _ST_MS[1] - _ST_MS[0]
     following = np.roll(
@@ -86,7 +112,7 @@ def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: in
     )
     about = leads.size(slopes - following)
     plain, corrected = (
-        reach(m > _least(m[middle:last], _QRS_SLOPE_MV_S), middle, last, _QRS_GAP_MS)
+        _last_moving(m > _least(m[middle:last], _QRS_SLOPE_MV_S), middle, last, latest)
         for m in (moving, about)
     )
     end = plain if plain - corrected <= _DISAGREE_MS else corrected
@@ -100,6 +126,12 @@ def _qrs_offset(leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: in
     return Edge(
         edge.at_ms, math.hypot(edge.se_ms, abs(plain - corrected) / 4 if end == plain else 3)
     )
+
+
+def _last_moving(moving: np.ndarray, middle: int, last: int, latest: int | None) -> int:
+    if latest is None:
+        return reach(moving, middle, last, _QRS_GAP_MS)
+    return latest - int(np.argmax(moving[middle : latest + 1][::-1]))
 
 
 def t_end(leads: Leads, qrs_off_ms: float, peak_before_ms: float, latest_ms: float) -> Edge | None:
