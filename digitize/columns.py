@@ -7,12 +7,15 @@ from itertools import pairwise
 import numpy as np
 import scipy as sp
 
+from digitize.ink import Ink
 from digitize.marks import Mark
 from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent
 from digitize.sheet import Box
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
 FAINT_MM = 5.0  # gap in a faint trace where most rows go on behind it
+CUT_MM = 2.0  # ink this near to the edge of the picture is cut off there
+CUT_STEP_MM = 1.5  # names tell a column's place to about so much, breaks do the rest
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
@@ -169,6 +172,42 @@ def column_spans(
     rights = [*(edge[0] for edge in edges), extent.right_mm]
     spans = tuple(Span(a, b) for a, b in zip(lefts, rights, strict=True))
     return _even(spans, extent, shares), float(np.mean(shares))
+
+
+def possible_extents(extent: Span, room: Span) -> list[Span]:
+    """The extent as it is seen, and as it may have been before the picture cut off a part."""
+    lefts = np.arange(extent.left_mm - CUT_STEP_MM, room.left_mm, -CUT_STEP_MM)
+    rights = np.arange(extent.right_mm + CUT_STEP_MM, room.right_mm, CUT_STEP_MM)
+    wholes = [Span(extent.left_mm, float(right)) for right in rights]
+    return [extent, *wholes, *(Span(float(left), extent.right_mm) for left in lefts)]
+
+
+def within(spans: tuple[Span, ...], extent: Span) -> tuple[Span, ...]:
+    """The columns as far as they are seen."""
+    return tuple(
+        Span(max(span.left_mm, extent.left_mm), min(span.right_mm, extent.right_mm))
+        for span in spans
+    )
+
+
+def beyond_cuts(extent: Span, ink: Ink) -> Span:
+    """How far traces may go on beyond the picture: a fifth, where they run up to its edge."""
+    raster, fifth = ink.raster, (extent.right_mm - extent.left_mm) / 5
+    right_mm = raster.x_mm(ink.density.shape[1] - 1)
+    return Span(
+        extent.left_mm - (fifth if extent.left_mm - raster.left_mm < CUT_MM else 0.0),
+        extent.right_mm + (fifth if right_mm - extent.right_mm < CUT_MM else 0.0),
+    )
+
+
+def cut_notes(extent: Span, room: Span) -> list[str]:
+    """What is said where traces run up to an edge of the picture."""
+    sides = [("left", extent.left_mm > room.left_mm), ("right", extent.right_mm < room.right_mm)]
+    return [
+        f"the traces run up to the {side} edge of the picture: what stood beyond it is missing"
+        for side, cut in sides
+        if cut
+    ]
 
 
 def _ticked(ticks: Sequence[Box], expected_mm: float, rows: int) -> tuple[float, float]:

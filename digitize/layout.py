@@ -13,10 +13,14 @@ import numpy as np
 
 from digitize.columns import (
     Span,
+    beyond_cuts,
     column_spans,
+    cut_notes,
     marks_of_row,
+    possible_extents,
     row_breaks,
     trace_extent,
+    within,
     without_marks,
 )
 from digitize.errors import NoTrace
@@ -25,7 +29,7 @@ from digitize.labels import LabelFit, Slot, fit_labels, look_again
 from digitize.likeness import names_by_likeness
 from digitize.marks import Mark, mark_box
 from digitize.options import Options
-from digitize.rows import Row, Rows
+from digitize.rows import Rows, row_choices
 from digitize.scale import Scale, find_scale
 from digitize.sheet import Box
 from digitize.templates import TEMPLATES, Template
@@ -35,7 +39,6 @@ from digitize.words import Printing
 MOST_STRIPS = 3
 STRIP_LEAD = "II"  # common practice, where a strip's name cannot be read
 SURE = 3.0  # log odds to the runner-up below which the layout is called doubtful
-DROPPED_ROW = 3.0  # log odds against a row found that is none
 UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
 
@@ -140,7 +143,8 @@ def find_layout(
     rows = without_marks(rows, marks)
     extent = trace_extent(rows)
     aside_mm = extent.left_mm - with_marks.left_mm
-    hypotheses = _weigh(printing, rows, extent, scale, options)
+    room = beyond_cuts(extent, ink)
+    hypotheses = _weigh(printing, rows, extent, room, scale, options)
     if not hypotheses:
         raise NoTrace(
             f"{len(rows.rows)} rows of trace fit no usual layout; "
@@ -162,7 +166,7 @@ def find_layout(
         panels=panels,
         marks=tuple(mark_box(m, 1.0) for m in marks),
         words=printing.letters,
-        notes=(*scale.notes, *_notes(best, margin, panels, hypotheses)),
+        notes=(*scale.notes, *cut_notes(extent, room), *_notes(best, margin, panels, hypotheses)),
         considered=tuple((h.described, round(h.score, 2)) for h in hypotheses),
     )
 
@@ -178,13 +182,13 @@ def _at_zero_line(rows: Rows, marks: Sequence[Mark]) -> Rows:
 
 
 def _weigh(
-    printing: Printing, rows: Rows, extent: Span, scale: Scale, options: Options
+    printing: Printing, rows: Rows, extent: Span, room: Span, scale: Scale, options: Options
 ) -> list[_Hypothesis]:
     """All arrangements with the page's number of rows, the likeliest first."""
     found = []
     breaks = row_breaks(rows)
     ticks = [box for box in (*printing.letters, *rows.uprights) if _upright(box)]
-    for first, part, doubt in _row_choices(rows):
+    for first, part, doubt in row_choices(rows):
         for template in TEMPLATES:
             strips = len(part.rows) - template.rows
             if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):
@@ -192,44 +196,41 @@ def _weigh(
             if options.layout not in (None, _full_name(template, strips)):
                 continue
             short = breaks.of(first, first + template.rows)
-            spans, shared = column_spans(short, extent, template.columns, ticks)
-            slots = tuple(_slots(template, strips, spans, part))
-            labels = fit_labels(printing.words, slots, part.pitch_mm)
-            seconds = (spans[0].right_mm - spans[0].left_mm) / float(scale.speed_mm_s.value)
-            length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
-            evidence = 6.0 * (shared - 0.4) if template.columns > 1 else 0.0
-            unread = sum((slot.row, 0) not in labels.names for slot in slots if slot.name is None)
-            strips_cost = 0.3 * strips + (UNREAD_STRIP * unread if labels.score > SURE else 0.0)
-            other = template.prior - strips_cost + length + evidence - doubt
-            found.append(_Hypothesis(template, strips, part, spans, slots, labels, other))
+            laid = [
+                _laid(template, part, within(spans, extent), shared, printing, scale)
+                for whole in possible_extents(extent, room if template.columns > 1 else extent)
+                for spans, shared in [column_spans(short, whole, template.columns, ticks)]
+            ]
+            best = max(laid, key=lambda h: h.score)
+            found.append(replace(best, other=best.other - doubt))
     return sorted(found, key=lambda h: -h.score)
+
+
+def _laid(
+    template: Template,
+    rows: Rows,
+    spans: tuple[Span, ...],
+    shared: float,
+    printing: Printing,
+    scale: Scale,
+) -> _Hypothesis:
+    """One arrangement laid over the page, with the evidence for it."""
+    strips = len(rows.rows) - template.rows
+    slots = tuple(_slots(template, strips, spans, rows))
+    labels = fit_labels(printing.words, slots, rows.pitch_mm)
+    widest_mm = max(span.right_mm - span.left_mm for span in spans)
+    seconds = widest_mm / float(scale.speed_mm_s.value)
+    length = -min(2.0 * abs(np.log(seconds / template.panel_s)), 4.0)
+    evidence = 6.0 * (shared - 0.4) if template.columns > 1 else 0.0
+    unread = sum((slot.row, 0) not in labels.names for slot in slots if slot.name is None)
+    strips_cost = 0.3 * strips + (UNREAD_STRIP * unread if labels.score > SURE else 0.0)
+    other = template.prior - strips_cost + length + evidence
+    return _Hypothesis(template, strips, rows, spans, slots, labels, other)
 
 
 def _upright(box: Box) -> bool:
     """Whether a piece of ink is a plain upright stroke, as separators are."""
     return box.right_mm - box.left_mm < 0.35 * (box.bottom_mm - box.top_mm)
-
-
-def _row_choices(rows: Rows) -> list[tuple[int, Rows, float]]:
-    """The rows found, and without an outermost one that may be no trace: first, rows, cost."""
-    count = len(rows.rows)
-    left = float(np.median([row.left_mm for row in rows.rows]))
-    right = float(np.median([row.right_mm for row in rows.rows]))
-
-    def cost(row: Row) -> float:
-        both = min(right, row.right_mm) - max(left, row.left_mm)
-        either = max(right, row.right_mm) - min(left, row.left_mm)
-        return DROPPED_ROW if both > 0.93 * either else 0.3 * DROPPED_ROW
-
-    choices = []
-    for top in (0, 1):
-        for bottom in (0, 1):
-            kept = rows.rows[top : count - bottom]
-            dropped = (*rows.rows[:top], *rows.rows[count - bottom :])
-            if kept:
-                doubt = sum(cost(row) for row in dropped)
-                choices.append((top, replace(rows, rows=kept), doubt))
-    return choices
 
 
 def _full_name(template: Template, strips: int) -> str:

@@ -5,7 +5,7 @@ run counts as one, whatever its length, so the profile of runs over height peaks
 spend their time: at their baselines.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import cv2
@@ -23,6 +23,7 @@ THICKEST_PEN_MM = 1.3
 GAP_MM = 0.6  # specks of paper within a line are shorter
 QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
 OUTSIDE_MM = 2.0  # the zero line of a trace lies on the ruling, or this near
+DROPPED_ROW = 3.0  # log odds against a row found that is none
 SOLID_MM = 7  # ink along half of this length is trace or mark, no speck
 SPECK_MM = 1.0  # ink smaller than this in both directions is halftone or dirt
 
@@ -223,3 +224,25 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
 def _is_piece(part: np.ndarray) -> bool:
     """Whether an unbroken piece of ink is long enough for a trace."""
     return bool(part[-1] - part[0] > PIECE_MM)
+
+
+def row_choices(rows: Rows) -> list[tuple[int, Rows, float]]:
+    """The rows found, and without an outermost one that may be no trace: first, rows, cost."""
+    count = len(rows.rows)
+    left = float(np.median([row.left_mm for row in rows.rows]))
+    right = float(np.median([row.right_mm for row in rows.rows]))
+
+    def cost(row: Row) -> float:
+        both = min(right, row.right_mm) - max(left, row.left_mm)
+        either = max(right, row.right_mm) - min(left, row.left_mm)
+        return DROPPED_ROW if both > 0.93 * either else 0.3 * DROPPED_ROW
+
+    choices = []
+    for top in (0, 1):
+        for bottom in (0, 1):
+            kept = rows.rows[top : count - bottom]
+            dropped = (*rows.rows[:top], *rows.rows[count - bottom :])
+            if kept:
+                doubt = sum(cost(row) for row in dropped)
+                choices.append((top, replace(rows, rows=kept), doubt))
+    return choices

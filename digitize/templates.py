@@ -37,6 +37,7 @@ def _by_column(order: tuple[str, ...], rows: int) -> tuple[tuple[str, ...], ...]
 
 
 _USUAL, _CABRERA = LEADS, (*CABRERA, *LEADS[6:])
+_POSTERIOR = (*LEADS[:9], "V7", "V8", "V9")  # the last three electrodes moved to the back
 # Common practice: how often each is met, and for how long each panel runs.
 TEMPLATES = (
     Template("3x4", _by_column(_USUAL, 3), 0.0, 2.5),
@@ -47,6 +48,8 @@ TEMPLATES = (
     Template("3x4", _by_column(_CABRERA, 3), -2.5, 2.5),
     Template("6x2", _by_column(_CABRERA, 6), -2.5, 5.0),
     Template("12x1", _by_column(_CABRERA, 12), -3.0, 10.0),
+    Template("3x4", _by_column(_POSTERIOR, 3), -4.0, 2.5),
+    Template("6x2", _by_column(_POSTERIOR, 6), -4.0, 5.0),
     Template("6x1", _by_column(LEADS[:6], 6), -2.0, 10.0),
     Template("6x1", _by_column(LEADS[6:], 6), -2.0, 10.0),
     Template("6x1", _by_column(CABRERA, 6), -3.5, 10.0),

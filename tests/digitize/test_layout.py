@@ -9,7 +9,9 @@ from digitize.errors import NoTrace
 from digitize.layout import Layout, find_layout
 from digitize.marks import find_marks
 from digitize.options import Options
+from digitize.rows import find_rows
 from digitize.tracing import LEADS
+from digitize.words import NAMES, Printing, Word, read_printing
 from tests.digitize.drawn_ink import CHART, perfect_sheet, read_words, rows_of
 from tests.drawn.spec import LayoutSpec, LetterSpec, PageSpec
 
@@ -132,6 +134,47 @@ def test_leads_printed_at_unusual_places_keep_their_printed_names():
     at = {(p.row, p.column): p.lead for p in found.panels}
     assert (at[0, 2], at[1, 2]) == ("V2", "V1")
     assert any("V2 where V1 is usual" in note for note in found.notes)
+
+
+def renamed(names: dict[str, str]) -> Printing:
+    """The printing of the chart with other names in place of some, clearly read."""
+
+    def other(word: Word) -> Word:
+        name = names.get(word.text)
+        likely = {n: 0.0 if n == name else -20.0 for n in NAMES}
+        return word if name is None else replace(word, text=name, names=likely)
+
+    printing = read_words(CHART)
+    return replace(printing, words=tuple(other(word) for word in printing.words))
+
+
+@pytest.mark.parametrize(
+    "names", [{"V4": "V7", "V5": "V8", "V6": "V9"}, {"V1": "V3R", "V2": "V4R"}]
+)
+def test_leads_of_other_places_on_the_chest_are_named_as_printed(names):
+    ink = perfect_sheet(CHART).ink
+    found = find_layout(ink, renamed(names), rows_of(CHART), find_marks(ink))
+    at = {(p.row, p.column): p.lead for p in found.panels}
+    for panel in perfect_sheet(CHART).composition.panels:
+        assert at[panel.row, panel.column] == names.get(panel.lead, panel.lead)
+
+
+@pytest.mark.parametrize("lost_mm", [12.0, 25.0])
+def test_a_page_cut_off_at_the_right_keeps_its_columns_and_says_so(lost_mm):
+    whole = perfect_sheet(CHART).ink
+    right_mm = max(p.x_mm[-1] for p in perfect_sheet(CHART).composition.panels) - lost_mm
+    cols = round(whole.raster.col(right_mm))
+    ink = replace(whole, density=whole.density[:, :cols], hidden=whole.hidden[:, :cols])
+    printing = read_printing(ink)
+    found = find_layout(ink, printing, find_rows(ink, printing.letters), find_marks(ink))
+    drawn = {(p.row, p.column): p for p in perfect_sheet(CHART).composition.panels}
+    assert any("right edge of the picture" in note for note in found.notes)
+    for panel in found.panels:
+        expected = drawn[panel.row, panel.column]
+        assert panel.lead == expected.lead
+        assert panel.box.left_mm == pytest.approx(expected.x_mm[0], abs=0.5)
+        last = min(expected.x_mm[-1], right_mm)
+        assert panel.box.right_mm == pytest.approx(last, abs=0.5)
 
 
 def test_a_page_shifted_and_larger_has_the_same_layout():
