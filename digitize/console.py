@@ -73,9 +73,20 @@ def console(files: int) -> Iterator[Console]:
         yield Console()
         return
     from rich.console import Console as Terminal
-    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
+    from rich.progress import (
+        BarColumn,
+        MofNCompleteColumn,
+        Progress,
+        TextColumn,
+        TimeRemainingColumn,
+    )
 
-    columns = (TextColumn("{task.description}", markup=False), BarColumn(), MofNCompleteColumn())
+    columns = (
+        TextColumn("{task.description}", markup=False),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TimeRemainingColumn(),
+    )
     terminal = Terminal(stderr=True)
     # Lines printed meanwhile go above the bar; a stdout that is piped stays a pipe.
     with Progress(
@@ -90,9 +101,13 @@ class _RichBar:
     def __init__(self, progress, files: int) -> None:  # type: ignore[no-untyped-def]
         self._progress = progress
         self._task = progress.add_task("", total=files)
+        self._done, self._began_s = 0, time.monotonic()
 
     def say(self, text: str) -> None:
         self._progress.update(self._task, description=text)
 
     def advance(self) -> None:
         self._progress.advance(self._task)
+        self._done += 1
+        rate = 60 * self._done / max(time.monotonic() - self._began_s, 1e-3)
+        self._progress.update(self._task, description=f"{rate:.1f} files a minute")

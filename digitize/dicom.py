@@ -52,6 +52,8 @@ def open_dicom(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
             size = int(dataset.get("Columns") or 0), int(dataset.get("Rows") or 0)
     except (pydicom.errors.InvalidDicomError, pydicom.errors.BytesLengthException, *_DAMAGE):
         raise _damage() from None
+    except MemoryError:  # an element says that it is thousands of megabytes long
+        raise _damage() from None
     if not holds_picture:
         raise UnreadableFile(
             "this DICOM file holds no picture: if it is a digital ECG, give it to measure"

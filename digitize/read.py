@@ -34,7 +34,7 @@ from digitize.upright import find_turn, turn_page
 from digitize.words import Printing, read_printing
 
 # What arithmetic on an unforeseen page can raise: LinAlgError is a ValueError.
-_FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
+FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
 
 
 @dataclass(frozen=True, eq=False)
@@ -232,10 +232,10 @@ def read_or_tell(
         if on_error is None:
             raise
         on_error(error)
-    except _FAULTS as fault:
+    except FAULTS as fault:
         if on_error is None:
             raise
-        on_error(at(_fault(fault), source.file_name, source.page))
+        on_error(at(program_fault(fault), source.file_name, source.page))
     return None
 
 
@@ -260,8 +260,8 @@ def to_tracing(
     )
 
 
-def _fault(fault: Exception) -> ProgramFault:
-    """What is said of a mistake of our own: enough to find it, nothing from the page."""
+def program_fault(fault: Exception) -> ProgramFault:
+    """Return what is said of a mistake of our own: enough to find it, nothing from the page."""
     if isinstance(fault, MemoryError):
         return ProgramFault("there is not memory enough for this page: scan it at 300 dpi")
     ours = Path(__file__).parent

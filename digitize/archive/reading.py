@@ -14,7 +14,7 @@ from digitize.archive.header import header_fields, header_text
 from digitize.options import Options
 from digitize.overlay import draw_overlay
 from digitize.pages import Page
-from digitize.read import read_page
+from digitize.read import FAULTS, program_fault, read_page
 from digitize.redact import cover
 from digitize.tracing import Tracing
 from digitize.tracing_files import tracing_files
@@ -34,11 +34,14 @@ def read_for_store(
     Raises
     ------
     InputError
-        The page cannot be read.
+        The page cannot be read, or the program failed on it.
     """
-    stages = read_page(page, options)
-    tracing = stages.tracing
-    overlay = draw_overlay(cover(stages), tracing)
+    try:
+        stages = read_page(page, options)
+        tracing = stages.tracing
+        overlay = draw_overlay(cover(stages), tracing)
+    except FAULTS as fault:
+        raise program_fault(fault) from None
     files = {
         ".overlay.png": overlay,
         ".thumb.jpg": _thumbnail(overlay),

@@ -72,6 +72,20 @@ def test_what_is_no_file_of_patterns(tmp_path, content, said):
         read_patterns(tmp_path / "none.txt")
 
 
+def test_a_mistake_of_the_program_is_told_as_one(monkeypatch):
+    from digitize.archive import reading
+    from digitize.errors import ProgramFault
+    from digitize.options import Options
+
+    def fail(page, options):
+        raise IndexError("Invented Patient")
+
+    monkeypatch.setattr(reading, "read_page", fail)
+    with pytest.raises(ProgramFault, match="the program failed on this page") as told:
+        reading.read_for_store(None, Options())
+    assert "Invented" not in str(told.value)
+
+
 def test_row_of_a_page_has_no_header_unless_it_is_asked_for(stages, monkeypatch):
     from digitize.archive import reading
     from digitize.options import Options
