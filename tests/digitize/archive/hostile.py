@@ -277,6 +277,13 @@ def _countless_dicom() -> bytes:
     return buffer.getvalue()
 
 
+def _long_dicom() -> bytes:
+    """A DICOM picture whose pixels say that they are 4 GB long (PS3.5 7.1.2)."""
+    content, tag = _dicom(), b"\xe0\x7f\x10\x00OB\0\0"  # Pixel Data, explicit little endian
+    at = content.index(tag) + len(tag)
+    return content[:at] + b"\xf0\xff\xff\xff" + content[at + 4 :]
+
+
 def _sliver() -> bytes:
     """A picture of 1 x 30000 pixels."""
     buffer = io.BytesIO()
@@ -302,6 +309,7 @@ def refused_files() -> Mapping[str, bytes]:
         "huge.pdf": _huge_page_pdf(),
         "circular.pdf": _circular_pdf(),
         "countless.dcm": _countless_dicom(),
+        "long.dcm": _long_dicom(),
         "locked.pdf": made_files.locked_pdf(),
         "sliver.png": _sliver(),
         "empty.jpg": b"",

@@ -101,6 +101,7 @@ def test_bombs_and_oddities_each_end_in_a_clear_row(tmp_path, capfd):
     for name, content in odd.items():
         assert "good" in by_content[hashlib.sha256(content).hexdigest()], name
     assert all("\n" not in reason for *_, reason in rows(store))
+    assert not any("the program failed" in reason for *_, reason in rows(store))
     said = capfd.readouterr().err
     assert "queue.png: this is not a regular file" in said
     assert "Traceback" not in said
