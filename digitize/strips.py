@@ -24,7 +24,8 @@ APART = 0.25  # difference of correlation that settles the timing
 def name_strips(panels: Sequence[Panel]) -> tuple[Panel, ...]:
     """Return the panels with each strip named after the short panel that it repeats.
 
-    A name that was read is overruled only by clear agreement with another lead.
+    A name that was read is overruled only by clear agreement with another lead, and no name while
+    the lead that it names is on the page and too little of it was read to be compared.
     """
     short = [panel for panel in panels if not panel.strip]
     return tuple(_named(panel, short) if panel.strip and short else panel for panel in panels)
@@ -37,7 +38,10 @@ def _named(strip: Panel, short: Sequence[Panel]) -> Panel:
     agreement = sorted(((_agreement_db(strip, s), s.lead) for s in short), reverse=True)
     best, lead = agreement[0]
     second = next((db for db, other in agreement[1:] if other != lead), -np.inf)
-    own = next((db for db, other in agreement if other == strip.lead), -np.inf)
+    own = next((db for db, other in agreement if other == strip.lead), None)
+    if own == -np.inf:
+        return strip  # hardly anything of its own lead was read: another may look like it
+    own = -np.inf if own is None else own
     needed = SAME_DB + (CONTRADICTS_DB if strip.lead_source == "printed" else 0.0)
     if lead == strip.lead or best < needed or best - max(second, own) < CLEAR_DB:
         return strip

@@ -1,12 +1,17 @@
-"""From the pages of a store back to their sources, so that a person can over-read them."""
+"""From tracings, in a store or beside their page, back to the pages that a person over-reads."""
 
+import hashlib
 import os
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 from digitize.archive.catalogue import LOOK, Catalogue, opened
 from digitize.archive.store import CATALOGUE
+from digitize.errors import UnreadableFile
+from digitize.tracing_files import read_tracing
+from measure.inputs import TABLE_ENDINGS
 from measure.overread.items import JOURNAL_ENDING, Item
 
 JOURNALS = "overread"  # folder of a store for what a person did: sources are only read
@@ -43,6 +48,22 @@ def stored_items(path: Path, folder: Path | None) -> list[Item] | None:
             for row in catalogue.rows()
             if row["stem"] and (row["status"] == LOOK if wanted is None else row["stem"] == wanted)
         ]
+
+
+def with_page(item: Item) -> Item:
+    """Return an item that is a tracing as the page it was read from, where that lies beside it."""
+    if item.file.suffix.lower() not in TABLE_ENDINGS or item.tracing is not None:
+        return item
+    try:
+        source = read_tracing(item.file.with_suffix(".json")).source
+        page = item.file.with_name(Path(source.file_name).name)
+        with page.open("rb") as file:
+            same = hashlib.file_digest(file, "sha256").hexdigest() == source.sha256
+    except (UnreadableFile, OSError):
+        return item  # no tracing of this program, or its page is elsewhere
+    if not same:
+        return item
+    return replace(item, file=page, page=source.page, tracing=item.file, sha256=source.sha256)
 
 
 def _sources(catalogue: Catalogue) -> dict[str, Path]:

@@ -82,10 +82,10 @@ def _measured(session: Session, tracing: Tracing) -> list[dict[str, Any]]:
 
 
 def _paper(session: Session) -> dict[str, Any] | None:
-    """Where the flattened and the scanned picture lie; None where there is no page."""
+    """Where the flattened and the scanned picture lie; of a tracing without its page, the paper."""
     stages = session.stages()
     if stages is None:
-        return None
+        return _paper_of(session.automatic.tracing)
     raster, (rows, cols) = stages.sheet.raster, stages.sheet.pixels.shape[:2]
     half = 0.5 / raster.px_per_mm
     left_mm, top_mm = raster.left_mm - half, raster.top_mm - half
@@ -95,6 +95,18 @@ def _paper(session: Session) -> dict[str, Any] | None:
         "flat": {"box": [*corners[0], *(corners[1] - corners[0])], "px": [cols, rows]},
         "scan": {"px": list(stages.page.pixels.shape[1::-1])},
         "ruled_mm": stages.grid.ruled_mm,
+    }
+
+
+def _paper_of(tracing: Tracing) -> dict[str, Any] | None:
+    """The paper that a tracing was read from; None for an ECG that was digital all along."""
+    if "ruled_mm" not in tracing.geometry:
+        return None
+    left, top, right, bottom = ruled = tracing.geometry["ruled_mm"]
+    return {
+        "turn_deg": tracing.geometry["turn_deg"],
+        "flat": {"box": [left, top, right - left, bottom - top], "px": None},
+        "ruled_mm": ruled,
     }
 
 

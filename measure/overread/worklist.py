@@ -19,6 +19,7 @@ from measure.overread.chain import Chain
 from measure.overread.items import Item, page_item
 from measure.overread.pictures import Pictures, coarsest
 from measure.overread.session import Session, scale_kept
+from measure.overread.stored import with_page
 from measure.reading import Person
 from measure.reading_files import document, load_document
 from measure.run import READING_ENDING
@@ -155,6 +156,7 @@ class Worklist:
             self._used.pop(0).put_away()
 
     def _read(self, entry: Entry) -> None:
+        entry.item = with_page(entry.item)
         file = entry.item.file
         if file.name.endswith(READING_ENDING):
             entry.saved(load_document(file))

@@ -50,6 +50,21 @@ def test_two_leads_that_look_alike_settle_nothing():
     assert name_strips(panels)[-1].lead == "II"
 
 
+def test_a_lead_that_was_hardly_read_is_not_replaced_by_one_that_looks_like_it():
+    # V5 shows what II would show where it stands; of II itself a third is left
+    strip = with_strip("II")[-1]
+    panels = []
+    for p in with_strip("II")[:-1]:
+        first = round(p.start_s * FS_HZ)
+        if p.lead == "II":
+            p = replace(p, mv=np.where(np.arange(len(p.mv)) < len(p.mv) / 3, p.mv, np.nan))
+        elif p.lead == "V5":
+            p = replace(p, mv=strip.mv[first : first + len(p.mv)])
+        panels.append(p)
+    named = name_strips((*panels, strip))[-1]
+    assert (named.lead, named.lead_source) == ("II", "assumed")
+
+
 def test_missing_samples_take_no_part():
     panels = list(with_strip("V5"))
     mv = panels[-1].mv.copy()

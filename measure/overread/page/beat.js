@@ -71,11 +71,11 @@ export class Beat {
     const change = this.old?.beat_change_mv[lead];
     const parts = [
       svg("rect", { class: "cell", x: left, y: top, width: this.cell[0], height: this.cell[1] }),
-      old ? svg("path", { class: "wave old", d: old }) : svg("g", {}),
-      svg("path", { class: "wave", d: wave(this.beat, this.beat.start_ms) }),
       svg("text", { class: "leadname", x: left + 6, y: top + NAME_Y },
         `${lead}  ${ecg.beat.shapes[lead] ?? ""}  (${this.beat.beats[lead]})`
         + (change === undefined || change === null ? "" : `  Δ ${change.toFixed(2)} mV`)),
+      old ? svg("path", { class: "wave old", d: old }) : svg("g", {}),
+      svg("path", { class: "wave", d: wave(this.beat, this.beat.start_ms) }),
     ];
     for (const edge of Object.keys(NAMES)) {
       const line = (at, name) => svg("line", { class: name, x1: left + this.#x(at),
@@ -149,6 +149,20 @@ export class Beat {
       if (handle.hasAttribute("role")) handle.setAttribute("aria-valuenow", Math.round(ms));
     }
   }
+}
+
+// What was found over all leads stands in each of them, where it begins and where it ends.
+const SPANS = { QRS: ["qrs_on_ms", "qrs_off_ms"], PR: ["p_on_ms", "qrs_on_ms"],
+  QT: ["qrs_on_ms", "t_off_ms"], QTc: ["qrs_on_ms", "t_off_ms"], P: ["p_on_ms", "p_off_ms"] };
+
+export function inEachLead(places, { mv, edges }) {
+  return places.flatMap((place) => {
+    if (place.lead !== "overall") return [place];
+    const ends = (SPANS[place.what.split(" ")[0]] ?? []).map((edge) => edges[edge])
+      .filter((at) => at !== null);
+    return Object.keys(mv).flatMap((lead) =>
+      ends.map((at) => ({ lead, time_ms: at - edges.qrs_on_ms })));
+  });
 }
 
 // One scale for all leads: from the lowest to the highest sample, a little air around.

@@ -27,6 +27,7 @@ export function useKeys(does, paper, tool) {
     ["t", "Calipers snap to the trace, or no longer", does.snap],
     ["z", "Undo", does.undo],
     ["Z", "Redo", does.redo],
+    ["g", "Go to signing", () => byId("comment").focus()],
     ["o", "Old beside new", () => byId("other").focus()],
     ["[", "ECG before", () => does.go(-1)],
     ["]", "Next ECG", () => does.go(1)],

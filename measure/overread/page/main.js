@@ -1,7 +1,7 @@
 // The page: one ECG of the worklist, its paper, its beat, its reading.
 
 import * as api from "./api.js";
-import { Beat } from "./beat.js";
+import { Beat, inEachLead } from "./beat.js";
 import { Beside } from "./beside.js";
 import { byId, html } from "./draw.js";
 import { useKeys } from "./keys.js";
@@ -102,7 +102,7 @@ function take(name) {
 }
 
 function turnView() {
-  if (!state.ecg.paper?.flat) return;
+  if (!state.ecg.paper?.flat || !state.ecg.paper.scan) return;
   take(null);
   const view = paper.turn();
   redraw();
@@ -136,7 +136,8 @@ function select(panel, seek = false) {
   redraw();
 }
 
-function evidence(places) {
+function evidence(seen) {
+  const places = inEachLead(seen, state.ecg.beat);
   beat.evidence(places);
   if (!state.ecg.paper || paper.view !== "flat") return;
   const { at_s, edges } = state.ecg.beat;
@@ -228,7 +229,7 @@ function unread(number, ecg) {
   if (!state.ecg || state.page !== page) {
     Object.assign(state, { ecg: unreadEcg(ecg), page });
     document.body.classList.add("unread");
-    byId("tools").hidden = true;
+    byId("tools").hidden = byId("undo").disabled = byId("redo").disabled = true;
     byId("sheet").hidden = !ecg.size_px;
     if (ecg.size_px) paper.open(number, state.ecg);
   }

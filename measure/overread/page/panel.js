@@ -6,7 +6,7 @@ const LAYOUTS = ["3x4", "3x4+1", "3x4+3", "6x2", "6x2+1", "12x1", "4x3", "4x3+1"
 
 export function showPanel(ecg, number, on) {
   const part = byId("panelpart"), panel = ecg.panels[number];
-  part.hidden = !panel?.y_mm;
+  part.hidden = !panel?.y_mm || !ecg.paper.scan;
   if (part.hidden) return;
   byId("panelname").textContent = `Panel ${number + 1}: ${panel.lead}${panel.strip ? " strip" : ""}`;
   const [left, , right] = panel.box_mm;
@@ -31,7 +31,7 @@ export function showPanel(ecg, number, on) {
 }
 
 export function showScale(ecg, on) {
-  byId("scale").replaceChildren(...(ecg.paper ? page(ecg, on) : []), ...patient(ecg, on));
+  byId("scale").replaceChildren(...(ecg.paper?.scan ? page(ecg, on) : []), ...patient(ecg, on));
 }
 
 function page(ecg, on) {

@@ -136,7 +136,10 @@ export class Paper {
     this.due ??= requestAnimationFrame(() => {
       this.due = null;
       if (!this.ecg?.paper) return;
-      this.#detail(this.root.clientWidth / this.box[2] > CLOSE_PX_PER_MM);
+      const { clientWidth, clientHeight } = this.root;
+      const scale = Math.min(clientWidth / this.box[2], clientHeight / this.box[3]);
+      this.#detail(scale > CLOSE_PX_PER_MM);
+      this.root.style.setProperty("--px-per-unit", scale.toFixed(2));
       this.root.setAttribute("viewBox", this.box.join(" "));
       this.tiles.draw(this.box);
     });

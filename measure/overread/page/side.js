@@ -8,7 +8,6 @@ const SIGNS = { met: "■", undecided: "◪", "not met": "□" };
 const FILES = { report: "Report (HTML)", reading: "Reading (JSON)", tracing: "Tracing (JSON)",
   samples: "Samples (CSV)", overlay: "Overlay (PNG)", wfdb: "WFDB (zip)", edf: "EDF+",
   dicom: "DICOM waveform", fhir: "FHIR observation", aecg: "aECG (HL7)" };
-const OF_PAGES = ["tracing", "samples", "overlay"];
 
 export function showSide(number, ecg, on) {
   byId("notice").textContent = ecg.notice;
@@ -22,7 +21,7 @@ export function showSide(number, ecg, on) {
   byId("signatures").replaceChildren(...ecg.signatures.map((s) =>
     html("li", {}, `${s.name}, ${s.when}${s.comment ? `: ${s.comment}` : ""}`)));
   byId("exports").replaceChildren(...Object.entries(FILES)
-    .filter(([kind]) => ecg.paper || !OF_PAGES.includes(kind))
+    .filter(([kind]) => kind !== "overlay" || ecg.paper?.scan)
     .map(([kind, label]) => html("li", {}, html("a", { href: file(number, kind),
       onclick: (event) => {
         event.preventDefault();

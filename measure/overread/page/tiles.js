@@ -24,7 +24,7 @@ export class Tiles {
       this.bitmaps.clear();
       this.failed.clear();
     }
-    this.top = picture ? Math.max(Math.ceil(Math.log2(Math.max(...picture.px) / TILE_PX)), 0) : 0;
+    this.top = picture?.px ? Math.max(Math.ceil(Math.log2(Math.max(...picture.px) / TILE_PX)), 0) : 0;
     this.wanted = [];
   }
 
@@ -38,6 +38,10 @@ export class Tiles {
     if (!picture || !wide) return;
     const scale = Math.min(wide / width, high / height);
     const [x0, y0] = [(wide - width * scale) / 2 - left * scale, (high - height * scale) / 2 - top * scale];
+    if (!picture.px) {
+      this.#rule(x0, y0, scale);
+      return;
+    }
     const [perX, perY] = [scale * picture.box[2] / picture.px[0], scale * picture.box[3] / picture.px[1]];
     const origin = [x0 + picture.box[0] * scale, y0 + picture.box[1] * scale];
     const need = Math.min(Math.max(Math.floor(-Math.log2(Math.max(perX, perY))), 0), this.top);
@@ -52,6 +56,22 @@ export class Tiles {
       }
     }
     this.#load();
+  }
+
+  // Paper of its own for a tracing whose page is not there: a line every 5 mm.
+  #rule(x0, y0, scale) {
+    const { context, picture: { box: [left, top, width, height] } } = this;
+    context.strokeStyle = "#d9c9c4";
+    context.beginPath();
+    for (let x = Math.ceil(left / 5) * 5; x <= left + width; x += 5) {
+      context.moveTo(x0 + x * scale, y0 + top * scale);
+      context.lineTo(x0 + x * scale, y0 + (top + height) * scale);
+    }
+    for (let y = Math.ceil(top / 5) * 5; y <= top + height; y += 5) {
+      context.moveTo(x0 + left * scale, y0 + y * scale);
+      context.lineTo(x0 + (left + width) * scale, y0 + y * scale);
+    }
+    context.stroke();
   }
 
   #paint(bitmap, level, [col, row], { origin, perX, perY }) {

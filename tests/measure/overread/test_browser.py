@@ -75,6 +75,9 @@ def test_a_clause_shows_its_evidence_on_beat_and_paper(page):
         seen[0] += page.locator("#beat .evidence").count()
         seen[1] += page.locator("#paper .evidence").count()
     assert min(seen) > 0
+    # the QRS duration is one of all leads: its two ends in each
+    clauses.filter(has_text="QRS duration").focus()
+    assert page.locator("#beat .evidence").count() == 2 * 12
 
 
 def test_a_killed_server_loses_nothing_that_was_answered(browser, tmp_path):

@@ -12,13 +12,18 @@ from digitize.archive.catalogue import GOOD, LOOK, PageRow, opened
 from digitize.archive.store import CATALOGUE
 from digitize.errors import UnreadableFile
 from digitize.options import Options
+from digitize.tracing_files import tracing_files
+from measure.overread.chain import Chain
 from measure.overread.corrections import Patient
 from measure.overread.items import page_item
 from measure.overread.serve import find_items
+from measure.overread.session import Session
+from measure.overread.stored import with_page
+from measure.overread.view import overview
 from measure.overread.worklist import AT_HAND, Worklist
 from measure.reading import Person
 from measure.reading_files import to_json
-from tests.measure.overread.made import digital_chain, write_csv
+from tests.measure.overread.made import NOON, SAMPLES, digital_chain, page_stages, write_csv
 
 
 def listed(*places, options=None, folder=None):
@@ -100,8 +105,6 @@ def test_a_page_that_is_no_longer_what_the_store_read_is_refused(store):
     page = made.entries[0]
     Image.fromarray(np.full((60, 90), 255, np.uint8)).save(page.item.file)
     page.item.tracing.parent.mkdir(parents=True)
-    from digitize.tracing_files import tracing_files
-
     tracing = digital_chain().reading().tracing
     for name, content in tracing_files(tracing, page.item.tracing.stem).items():
         (page.item.tracing.parent / name).write_bytes(content)
@@ -150,6 +153,29 @@ def test_only_a_few_are_kept_at_hand_and_what_was_done_is_not_lost(tmp_path):
     made.want(made.entries[0])
     made.read_next(made.wanted.get_nowait())
     assert made.entries[0].session.steps[0].correction == Patient("male", 70.0)
+
+
+def test_a_tracing_whose_page_lies_beside_it_is_read_from_its_page(tmp_path):
+    stages = page_stages()
+    page = tmp_path / stages.page.source.file_name
+    shutil.copy(SAMPLES / page.name, page)
+    for name, content in tracing_files(stages.tracing, page.stem).items():
+        (tmp_path / name).write_bytes(content)
+    (given,) = find_items([page.with_suffix(".json")], None)
+    item = with_page(given)
+    assert (item.file, item.page, item.journal) == (page, 1, given.journal)
+    assert item.tracing == page.with_suffix(".json")
+    page.write_bytes(b"another page")
+    assert with_page(given) == given
+
+
+def test_a_tracing_without_its_page_is_shown_on_paper_of_its_own(tmp_path):
+    tracing = page_stages().tracing
+    over = Session(Chain(tracing, None, Person()), tmp_path / "x.overread.json", lambda: NOON)
+    shown = overview(over)
+    assert shown["paper"]["flat"]["px"] is None
+    assert shown["paper"]["ruled_mm"] == pytest.approx(tracing.geometry["ruled_mm"], abs=1e-4)
+    assert all(panel["y_mm"] for panel in shown["panels"])
 
 
 def test_a_saved_reading_can_be_compared_and_no_more(tmp_path):
