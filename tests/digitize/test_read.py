@@ -43,6 +43,20 @@ def test_sample_page_is_read_as_it_was_drawn(stages, expected):
         assert np.isfinite(panel.mv).mean() > 0.95
 
 
+@pytest.mark.parametrize("name", ["fax_coarse_rbbb_3x4_1.tif", "vector_normal_6x2.pdf"])
+def test_pages_without_a_grid_or_without_pixels_are_read_as_drawn(name):
+    (tracing,) = digitize.read_pages(SAMPLES / name)
+    truth = json.loads((SAMPLES / name).with_suffix(".expected.json").read_text("utf-8"))
+    assert tracing.layout.value == truth["layout"]
+    assert tracing.speed_mm_s.value == truth["speed_mm_s"]
+    assert tracing.gain_mm_mv.value == truth["gain_mm_mv"]
+    place = {(p.lead, p.strip, p.row): p.start_s for p in tracing.panels}
+    # Half a millimetre, and what a scale without a grid may be out: 1 % of 250 mm.
+    for panel in truth["panels"]:
+        start_s = place[panel["lead"], panel["strip"], panel["row"]]
+        assert start_s == pytest.approx(panel["start_s"], abs=0.12)
+
+
 def test_sample_page_checks_itself(stages):
     checks = [check for check in stages.tracing.checks if check.name == "lead_relations"]
     assert checks

@@ -10,7 +10,9 @@ from typing import Any
 from tests.drawn.files import write_page
 from tests.drawn.heart import record_model
 from tests.drawn.page import PageTruth, draw_page
-from tests.drawn.sample_pages import SAMPLES, Sample
+from tests.drawn.sample_hard_pages import ALL_SAMPLES
+from tests.drawn.sample_pages import Sample
+from tests.drawn.vector import write_vector_page
 
 FOLDER = Path(__file__).parents[2] / "sample_scans"
 
@@ -45,14 +47,25 @@ def expected(sample: Sample, truth: PageTruth) -> dict[str, Any]:
     }
 
 
+def draw_sample(sample: Sample) -> Path:
+    """Draw one sample page with what it truly shows beside it; return its file."""
+    recording, path = record_model(sample.heart), FOLDER / sample.file
+    if path.suffix == ".pdf":
+        truth = write_vector_page(recording, sample.page, path)
+    else:
+        drawn = draw_page(recording, sample.page)
+        write_page(drawn, path)
+        truth = drawn.truth
+    text = json.dumps(expected(sample, truth), indent=1)
+    path.with_name(f"{path.stem}.expected.json").write_text(text + "\n")
+    return path
+
+
 def main() -> None:
     """Draw every sample page anew."""
     FOLDER.mkdir(exist_ok=True)
-    for sample in SAMPLES:
-        drawn = draw_page(record_model(sample.heart), sample.page)
-        path = write_page(drawn, FOLDER / sample.file)
-        text = json.dumps(expected(sample, drawn.truth), indent=1)
-        path.with_name(f"{path.stem}.expected.json").write_text(text + "\n")
+    for sample in ALL_SAMPLES:
+        path = draw_sample(sample)
         print(f"{path.name}  {path.stat().st_size / 1000:.0f} kB")
 
 

@@ -20,7 +20,8 @@ from tests.drawn.records import (
     read_ludb,
     read_ptbxl,
 )
-from tests.drawn.sample_pages import SAMPLES, Sample
+from tests.drawn.sample_hard_pages import ALL_SAMPLES
+from tests.drawn.sample_pages import Sample
 from tests.drawn.samples import FOLDER, expected
 from tests.drawn.variety import vary_heart, vary_page
 from tests.drawn.vector import write_vector_page
@@ -91,7 +92,7 @@ def test_dicom_example_beats_as_its_annotations_say() -> None:
     assert lag_ms == pytest.approx(982, abs=30)
 
 
-@pytest.mark.parametrize("sample", SAMPLES, ids=lambda sample: sample.file)
+@pytest.mark.parametrize("sample", ALL_SAMPLES, ids=lambda sample: sample.file)
 def test_sample_page_is_there_with_its_truth(sample: Sample) -> None:
     path = FOLDER / sample.file
     assert path.stat().st_size < 1_000_000
