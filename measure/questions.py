@@ -4,15 +4,16 @@ Table and report show the same answers: can the tracing be trusted, what is the 
 the QRS, which pattern, on what evidence, what to check by eye.
 """
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 from digitize.tracing import LEADS, Known
 from measure.criteria.decide import OVERALL
-from measure.criteria.finding import Finding
+from measure.criteria.finding import Clause, Finding
 from measure.quantity import Quantity
 from measure.reading import Reading
 from measure.reference import Usual, usual
-from measure.wording import deciding, nice, number
+from measure.wording import clause_lines, deciding, nice, number
 
 # The questions that findings answer, with the keys that belong to each.
 FAMILIES: tuple[tuple[str, tuple[str, ...]], ...] = (
@@ -107,6 +108,21 @@ def shown_in_full(
         for finding in group
         if finding.result != "not met" and _rests_on_leads(finding) and not _withheld(finding)
     )
+
+
+def evidence_by_clause(finding: Finding, above: dict[str, str]) -> Iterator[tuple[Clause, str]]:
+    """Each clause that has something to show, and its evidence in words.
+
+    `above` remembers under which definition a piece of evidence stands already: it is only
+    referred to from there on.
+    """
+    for clause in finding.clauses:
+        if not clause.evidence and clause.result == "met":
+            continue
+        words = "; ".join(clause_lines(clause))
+        first = above.setdefault(words, finding.definition)
+        repeated = first != finding.definition and len(words) > len(first)
+        yield clause, f"as above: {first}" if repeated else words
 
 
 def _rests_on_leads(finding: Finding) -> bool:

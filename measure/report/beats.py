@@ -53,9 +53,14 @@ def draw_beats(reading: Reading) -> str:
     return drawing(width, top, label, "".join(rows))
 
 
-def gain_mm_mv(reading: Reading) -> float:
-    """The gain at which the beats are drawn."""
-    return _scale(reading)[0]
+def beats_caption(reading: Reading) -> str:
+    """What the drawing shows and how to read its marks."""
+    return (
+        f"Dominant beat of each lead, {SPEED_MM_S:g} mm/s, {_scale(reading)[0]:g} mm/mV, all at "
+        "one scale; the grey band is one standard error. Full lines and shading: overall QRS; "
+        "broken lines: P and the end of T. ▼ notch, ◇ slur. Bar at the foot: QRS onset to "
+        "the last R peak, in ms. Dashed bar at the onset: depth from which a q counts."
+    )
 
 
 def _groups(reading: Reading) -> list[tuple[str, tuple[str, ...]]]:

@@ -11,16 +11,23 @@ from digitize import program_version
 from digitize.options import Options
 from digitize.tracing import LEADS
 from measure.criteria.finding import Clause, Finding
-from measure.questions import BLOCK_FAMILIES, Answers, Measured, answer, refusal, shown_in_full
+from measure.questions import (
+    BLOCK_FAMILIES,
+    Answers,
+    Measured,
+    answer,
+    evidence_by_clause,
+    refusal,
+    shown_in_full,
+)
 from measure.reading import Reading
-from measure.report.beats import SPEED_MM_S, draw_beats, gain_mm_mv
+from measure.report.beats import beats_caption, draw_beats
 from measure.report.html import bullets, document, mark, prose, section, table
 from measure.waves import LeadWaves
 from measure.wording import (
     NOTICE,
     ONE_SE,
     SIGNS,
-    clause_lines,
     nice,
     number,
     origin,
@@ -136,28 +143,18 @@ def _named(finding: Finding, family: str) -> str:
 
 
 def _beats(reading: Reading) -> str:
-    caption = (
-        f"Dominant beat of each lead, {SPEED_MM_S:g} mm/s, {gain_mm_mv(reading):g} mm/mV, all at "
-        "one scale; the grey band is one standard error. Full lines and shading: overall QRS; "
-        "broken lines: P and the end of T. ▼ notch, ◇ slur. Bar at the foot: QRS onset to "
-        "the last R peak, in ms. Dashed bar at the onset: depth from which a q counts."
-    )
+    caption = beats_caption(reading)
     return f"<figure>{draw_beats(reading)}<figcaption>{caption}</figcaption></figure>"
 
 
 def _evidence(answers: Answers) -> str:
-    shown: dict[str, str] = {}
-    findings = "".join(_finding(finding, shown) for finding in shown_in_full(answers.families))
+    above: dict[str, str] = {}
+    findings = "".join(_finding(finding, above) for finding in shown_in_full(answers.families))
     return f'<div class="columns">{findings}</div>'
 
 
-def _finding(finding: Finding, shown: dict[str, str]) -> str:
-    """One definition; evidence that stands above already is only referred to."""
-    clauses = "".join(
-        _clause(clause, finding.definition, shown)
-        for clause in finding.clauses
-        if clause.evidence or clause.result != "met"
-    )
+def _finding(finding: Finding, above: dict[str, str]) -> str:
+    clauses = "".join(_clause(*shown) for shown in evidence_by_clause(finding, above))
     return (
         f'<div class="finding"><h3>{mark(finding.result)}: {escape(nice(finding.definition))} '
         f'<span class="source">{escape(finding.source)}</span></h3>'
@@ -165,14 +162,10 @@ def _finding(finding: Finding, shown: dict[str, str]) -> str:
     )
 
 
-def _clause(clause: Clause, definition: str, shown: dict[str, str]) -> str:
+def _clause(clause: Clause, words: str) -> str:
     note = "" if clause.required else " (not required)"
-    lines = "; ".join(escape(line) for line in clause_lines(clause))
-    above = shown.setdefault(lines, definition)
-    if above != definition and len(lines) > len(above):
-        lines = escape(f"as above: {above}")
     text = f"{SIGNS[clause.result]} {escape(nice(clause.text))}{note}"
-    return f"<p><b>{text}</b> {lines}</p>"
+    return f"<p><b>{text}</b> {escape(words)}</p>"
 
 
 def _waves(reading: Reading) -> str:

@@ -1,8 +1,8 @@
-"""The report as a PDF of plain text with the overlay: for archives that take documents alone.
+"""The report as a PDF: for archives that take documents alone.
 
-It answers the same questions as the HTML report, without its drawings of the beats. It names the
-page by its hash, never by its file, whose name may name a patient. The same reading gives the same
-bytes.
+It answers the same questions as the HTML report, with the overlay and the same drawing of the
+beats, in true millimetres. It names the page by its hash, never by its file, whose name may name a
+patient. The same reading gives the same bytes.
 """
 
 import datetime
@@ -12,21 +12,24 @@ from typing import TYPE_CHECKING
 
 from digitize import program_version
 from digitize.errors import UnreadableFile
-from measure.questions import Answers, Measured, answer, refusal, shown_in_full
+from measure.questions import Answers, Measured, answer, evidence_by_clause, refusal, shown_in_full
 from measure.reading import Reading
-from measure.wording import NOTICE, ONE_SE, clause_lines, nice, number, origin
+from measure.report.beats import beats_caption, draw_beats
+from measure.report.svg import without_rims
+from measure.wording import NOTICE, ONE_SE, nice, number, origin
 
 if TYPE_CHECKING:
     from fpdf import FPDF
 
 _TEXT_PT, _SMALL_PT, _TITLE_PT = 9.5, 8.0, 13.0
-_LINE_MM = 4.4
-_MARGIN_MM = 14.0
+_LINE_MM, _SMALL_LINE_MM = 4.3, 3.5
+_MARGIN_MM, _FOOT_MM = 14.0, 10.0
 # The letters of the standard PDF fonts are those of Latin-1: others are written out.
 _WRITTEN_OUT = str.maketrans(
     {
         **{"\u2265": ">=", "\u2264": "<=", "\u2212": "-", "\u2013": "-", "\u2014": "-"},
         **{"\u201c": '"', "\u201d": '"', "\u2018": "'", "\u2019": "'", "\u2032": "'"},
+        **{"\u25bc": "triangle:", "\u25c7": "diamond:"},
         **{"\u25a0": "[x]", "\u25ea": "[?]", "\u25a1": "[ ]", "\u2026": "...", "\u03bc": "\u00b5"},
     }
 )
@@ -59,6 +62,7 @@ def report_pdf(reading: Reading, *, overlay_png: bytes | None = None) -> bytes:
     pdf.set_creator(f"millivellum {program_version()}")
     pdf.set_lang("en")
     pdf.set_margin(_MARGIN_MM)
+    pdf.set_auto_page_break(True, _FOOT_MM)
     pdf.add_page()
     answers = answer(reading)
     _title(pdf, "ECG reading")
@@ -66,41 +70,41 @@ def report_pdf(reading: Reading, *, overlay_png: bytes | None = None) -> bytes:
     _lines(pdf, answers.headline)
     if overlay_png is not None:
         _picture(pdf, overlay_png)
-    _sections(pdf, answers)
+    _sections(pdf, reading, answers)
     source = reading.tracing.source
     page = f"Page {source.page} of the file with SHA-256 {source.sha256 or 'unknown'}."
     _lines(pdf, [page, f"Program: millivellum {program_version()}. {ONE_SE} {NOTICE}"], small=True)
     return bytes(pdf.output())
 
 
-def _sections(pdf: "FPDF", answers: Answers) -> None:
+def _sections(pdf: "FPDF", reading: Reading, answers: Answers) -> None:
     """The questions of the HTML report, in its order."""
     _section(pdf, "1 Can the tracing be trusted?", answers.trust)
     rhythm = (*answers.rhythm, *_measured(answers.rhythm_rows))
     _section(pdf, "2 What is the rhythm?", rhythm)
     _section(pdf, "3 How wide is the QRS, what follows it?", _measured(answers.width_rows))
+    findings = [finding for _, group in answers.families for finding in group]
     patterns = [
-        f"{finding.result}: "
-        + (refusal(finding) if finding.result == "not met" else nice(finding.definition))
-        for result in ("met", "undecided", "not met")
-        for _, group in answers.families
-        for finding in group
+        f"{finding.result}: {nice(finding.definition)}"
+        for result in ("met", "undecided")
+        for finding in findings
         if finding.result == result
     ]
     _section(pdf, "4 Which pattern?", patterns)
-    evidence = [
-        line
-        for finding in shown_in_full(answers.families)
-        for line in (
-            f"{finding.result}: {nice(finding.definition)} ({finding.source})",
-            *(
-                f"   {clause.result}: {nice(clause.text)} {'; '.join(clause_lines(clause))}"
-                for clause in finding.clauses
-            ),
-        )
-    ]
-    _section(pdf, "5 On what evidence?", evidence, small=True)
-    _section(pdf, "6 What to check by eye", answers.by_eye)
+    refused = [refusal(finding) for finding in findings if finding.result == "not met"]
+    _lines(pdf, [f"not met: {'; '.join(refused)}."] if refused else [], small=True)
+    _section(pdf, "5 On what evidence?", ())
+    above: dict[str, str] = {}
+    for finding in shown_in_full(answers.families):
+        title = f"{finding.result}: {nice(finding.definition)} ({finding.source})"
+        _lines(pdf, [title], bold=True, small=True)
+        clauses = evidence_by_clause(finding, above)
+        lines = [f"   {c.result}: {nice(c.text)} {words}" for c, words in clauses]
+        _lines(pdf, lines, small=True)
+    pdf.ln(1.5)
+    pdf.image(io.BytesIO(without_rims(draw_beats(reading)).encode()), w=pdf.epw)
+    _lines(pdf, [beats_caption(reading)], small=True)
+    _section(pdf, "6 What to check by eye", answers.by_eye, small=True)
 
 
 def _measured(rows: Iterable[Measured]) -> list[str]:
@@ -129,7 +133,7 @@ def _title(pdf: "FPDF", text: str) -> None:
 def _lines(pdf: "FPDF", lines: Iterable[str], *, bold: bool = False, small: bool = False) -> None:
     pdf.set_font("Helvetica", "B" if bold else "", _SMALL_PT if small else _TEXT_PT)
     for line in lines:
-        _write(pdf, line)
+        _write(pdf, line, _SMALL_LINE_MM if small else _LINE_MM)
 
 
 def _write(pdf: "FPDF", text: str, line_mm: float = _LINE_MM) -> None:

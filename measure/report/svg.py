@@ -4,6 +4,8 @@ from html import escape
 
 import numpy as np
 
+_RIM = ' stroke="#fff" stroke-width="0.6" paint-order="stroke"'
+
 
 def line(
     x0: float, y0: float, x1: float, y1: float, *, colour: str, width_mm: float, dash: str = ""
@@ -67,9 +69,14 @@ def text(
     weight = ' font-weight="bold"' if bold else ""
     return (
         f'<text x="{x:.2f}" y="{y:.2f}" font-size="{size:g}" text-anchor="{anchor}" '
-        f'fill="{colour}"{weight} stroke="#fff" stroke-width="0.6" paint-order="stroke" '
+        f'fill="{colour}"{weight}{_RIM} '
         f'font-family="DejaVu Sans, Verdana, sans-serif">{escape(words)}</text>'
     )
+
+
+def without_rims(drawing: str) -> str:
+    """Return a drawing whose words have no rim: not every reader paints it beneath them."""
+    return drawing.replace(_RIM, "")
 
 
 def _points(x: np.ndarray, y: np.ndarray) -> str:

@@ -132,6 +132,22 @@ def test_pdf_shows_the_overlay_and_gives_the_same_bytes(reading):
     assert [o.type for o in page.get_objects()].count(pypdfium2.raw.FPDF_PAGEOBJ_IMAGE) == 1
 
 
+def test_pdf_draws_the_beats_in_true_millimetres_on_two_sheets(reading):
+    document = pypdfium2.PdfDocument(report_pdf(reading))
+    assert len(document) <= 2
+    text = text_of(report_pdf(reading))
+    assert "septum and front" in text  # a word of the drawing itself
+    mm = 72 / 25.4
+    widths = [
+        (right - left) / mm
+        for page in document
+        for drawn in page.get_objects([pypdfium2.raw.FPDF_PAGEOBJ_PATH], max_depth=4)
+        for left, _, right, _ in [drawn.get_bounds()]
+    ]
+    # One lead's paper is 44 mm wide: its frame, drawn 0.25 mm thick.
+    assert sum(abs(width - 44.25) < 0.1 for width in widths) >= 12
+
+
 def test_pdf_does_not_name_the_file(reading):
     from dataclasses import replace
 

@@ -14,7 +14,7 @@ from digitize.tracing import Check, Known
 from measure.quantity import missing
 from measure.questions import answer
 from measure.report import report
-from measure.report.beats import draw_beats, gain_mm_mv
+from measure.report.beats import beats_caption, draw_beats
 from measure.table import print_reading
 from measure.wording import NOTICE
 from tests.measure import made
@@ -161,7 +161,7 @@ def drawing(reading):
 def test_beats_are_drawn_to_scale():
     reading = made.reading()
     svg = drawing(reading)
-    assert gain_mm_mv(reading) == 10.0
+    assert "50 mm/s, 10 mm/mV" in beats_caption(reading)
     width = float(svg.get("width").removesuffix("mm"))
     assert svg.get("viewBox").split()[2] == f"{width:g}"  # one unit is one millimetre
     traces = [p for p in svg.iter("polyline") if p.get("stroke-width") == "0.3"]
@@ -178,7 +178,7 @@ def test_beats_are_drawn_to_scale():
 def test_tall_beats_share_one_smaller_gain():
     reading = made.reading()
     beat = replace(reading.beat, mv=reading.beat.mv * 6)
-    assert gain_mm_mv(replace(reading, beat=beat)) == 2.5
+    assert "50 mm/s, 2.5 mm/mV" in beats_caption(replace(reading, beat=beat))
 
 
 def test_evidence_is_marked_on_the_beat():
