@@ -9,6 +9,7 @@ from functools import lru_cache
 from importlib import resources
 
 import cv2
+import numba
 import numpy as np
 
 HEIGHT_PX = 48  # what the network was trained on
@@ -67,19 +68,25 @@ class Recogniser:
 
     def likelihood(self, probabilities: np.ndarray, name: str) -> float:
         """Log probability that the crop says `name`, over all alignments."""
-        letters = [self._index[c] for c in name]
-        states = [0]
-        for letter in letters:
-            states += [letter, 0]
-        p = np.log(probabilities[:, states] + 1e-12)
-        may_skip = np.array([k > 1 and s != 0 and s != states[k - 2] for k, s in enumerate(states)])
-        alpha = np.full(len(states), -np.inf)
-        alpha[:2] = p[0, :2]
-        for step in p[1:]:
-            one = np.concatenate([[-np.inf], alpha[:-1]])
-            two = np.where(may_skip, np.concatenate([[-np.inf, -np.inf], alpha[:-2]]), -np.inf)
-            alpha = np.logaddexp(np.logaddexp(alpha, one), two) + step
-        return float(np.logaddexp(alpha[-1], alpha[-2]))
+        states = np.zeros(2 * len(name) + 1, np.int64)
+        states[1::2] = [self._index[c] for c in name]
+        return float(_all_alignments(np.log(probabilities[:, states] + 1e-12), states))
+
+
+@numba.njit(cache=True)
+def _all_alignments(p: np.ndarray, states: np.ndarray) -> float:
+    """Forward recursion of the classification, (steps, states) log probabilities in."""
+    alpha = np.full(len(states), -np.inf)
+    alpha[:2] = p[0, :2]
+    for t in range(1, len(p)):
+        for k in range(len(states) - 1, -1, -1):  # downward: what is read is still of step t - 1
+            total = alpha[k]
+            if k > 0:
+                total = np.logaddexp(total, alpha[k - 1])
+            if k > 1 and states[k] != 0 and states[k] != states[k - 2]:
+                total = np.logaddexp(total, alpha[k - 2])
+            alpha[k] = total + p[t, k]
+    return np.logaddexp(alpha[-1], alpha[-2])
 
 
 @lru_cache(maxsize=1)

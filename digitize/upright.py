@@ -16,6 +16,7 @@ from digitize.words import Printing, Word, read_printing
 
 CLEAR = 0.9
 ENOUGH = 3  # clearly read lead names that settle it
+LONG, SURE = 8, 0.85  # letters of a line, and their mean probability, that settle it too
 
 
 def find_turn(ink: Ink, printing: Printing) -> int:
@@ -26,7 +27,7 @@ def find_turn(ink: Ink, printing: Printing) -> int:
     ink, printing : Ink, Printing
         The sheet as it lies; it is read again turned only where its names cannot be read.
     """
-    if _names(printing.words) >= ENOUGH:
+    if _names(printing.words) >= ENOUGH or any(map(_clear, printing.lines)):
         return 0
     sideways = _row_share(_turned(_ruled_part(ink), 90)) > _row_share(_ruled_part(ink))
     read = {0: _names(printing.words)}
@@ -65,6 +66,11 @@ def _row_share(ink: Ink) -> float:
     wide_mm = ink.density.shape[1] / ink.raster.px_per_mm
     inked = [coverage_mm(rows.runs, row.y_mm) for row in rows.rows]
     return float(np.mean(inked)) / wide_mm if inked else 0.0
+
+
+def _clear(line: Word) -> bool:
+    """Whether a line reads as print does the right way up; upside down, letters are guesses."""
+    return len(line.text) >= LONG and line.score > SURE and line.text.isascii()
 
 
 def _names(words: tuple[Word, ...]) -> int:
