@@ -17,6 +17,7 @@ FAINT_MM = 5.0  # gap in a faint trace where most rows go on behind it
 CUT_MM = 2.0  # ink this near to the edge of the picture is cut off there
 CUT_STEP_MM = 1.5  # names tell a column's place to about so much, breaks do the rest
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
+TICK_OFF_MM = 1.0  # a break so near to a tick is the same edge
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
 
@@ -151,15 +152,17 @@ def column_spans(
             edges.append((expected, expected))
             shares.append(0.0)
             continue
-        pull = np.where(near, broken - 0.05 * np.abs(x - expected), -np.inf)
+        away_mm = np.abs(x - expected)
+        # simultaneous steep complexes break all rows as well, wherever they happen to stand
+        pull = np.where(near, broken - 0.03 * away_mm - 0.04 * away_mm**2, -np.inf)
         at = int(np.argmax(pull))
         ticked, tick_mm = _ticked(ticks, expected, len(breaks.broken))
-        if broken[at] < 0.5 and ticked > 0.8:
+        if ticked > 0.8 and (pull[at] < 0.5 or abs(tick_mm - x[at]) > TICK_OFF_MM):
             shares.append(ticked)
             edges.append((tick_mm, tick_mm))
             continue
-        shares.append(float(broken[at]))
-        if broken[at] < 0.5:
+        shares.append(float(broken[at]) if pull[at] >= 0.5 else 0.0)
+        if pull[at] < 0.5:
             edges.append((expected, expected))
             continue
         first = last = at
