@@ -14,7 +14,7 @@ import cv2
 import numpy as np
 
 from digitize.field import INKED, Field, Path, walk
-from digitize.path import run_at
+from digitize.path import paint, run_at
 
 _WORTH_PER_MM = 0.8  # of stroke explained, in the path's price
 _LEAST_MM = 1.0  # shorter pieces of stroke are left to the fit
@@ -133,10 +133,9 @@ def _claimed(
 ) -> np.ndarray:
     """Ink that paths explain: under the pen all along, and whole runs that no other path enters."""
     visited = np.zeros(density.shape, bool)
-    row = np.arange(len(density))[:, None]
     spans = {m: (path.left - col0, path.span - row0) for m, path in paths.items()}
     for left, span in spans.values():
-        visited[:, left : left + span.shape[1]] |= (row >= span[0]) & (row <= span[1])
+        paint(visited, left, span)
     size = 2 * round(field.pen_mm / 2 * field.px_per_mm + 0.5) + 1
     pen = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size))
     claimed = cv2.dilate(visited.astype(np.uint8), pen) > 0
@@ -150,7 +149,7 @@ def _claimed(
             if k != m and a < b:
                 theirs, mine = other[:, a - start : b - start], run[:, a - left : b - left]
                 alone[a - left : b - left] &= (theirs[1] < mine[0]) | (theirs[0] > mine[1])
-        claimed[:, part] |= alone & (row >= run[0] - 1) & (row <= run[1] + 1)
+        paint(claimed, left, np.where(alone, run + [[-1], [1]], [[0], [-1]]))
     return claimed
 
 

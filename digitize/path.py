@@ -145,6 +145,14 @@ def run_at(density: np.ndarray, span: np.ndarray, level: float, slack: int) -> n
     return run
 
 
+@numba.njit(cache=True)
+def paint(mask: np.ndarray, left: int, span: np.ndarray) -> None:
+    """Set the rows of a span, ends included, in the columns of a mask from `left` on, in place."""
+    for c in range(span.shape[1]):
+        for r in range(max(span[0, c], 0), min(span[1, c], mask.shape[0] - 1) + 1):
+            mask[r, left + c] = True
+
+
 def sharp_edges(density: np.ndarray, run: np.ndarray, level: float) -> np.ndarray:
     """Sub-pixel top and bottom of runs where the density crosses `level`, (2, cols), or NaN."""
     cols = np.flatnonzero(run[0] >= 0)
