@@ -41,6 +41,7 @@ STRIP_LEAD = "II"  # common practice, where a strip's name cannot be read
 SURE = 3.0  # log odds to the runner-up below which the layout is called doubtful
 UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
+SAME = 0.9  # likeness to another name on the page from which that counts for more
 
 
 @dataclass(frozen=True)
@@ -298,11 +299,11 @@ def _lead(
         return options.lead_order[number], "given", 1.0
     read = best.labels.names.get((slot.row, slot.column))
     if slot.name is None:
-        if (slot.row, slot.column) in alike:
-            name, sure = alike[slot.row, slot.column]
-            return name, "printed", sure
-        if read is not None and read[1] > READ:
+        name, like = alike.get((slot.row, slot.column), (STRIP_LEAD, 0.0))
+        if read is not None and read[1] > READ and like < SAME:
             return read[0], "printed", read[1]
+        if like > 0:
+            return name, "printed", like
         return STRIP_LEAD, "assumed", 0.5
     if read is not None and read[0] in (slot.name, slot.name.removeprefix("-")):
         return slot.name, "printed" if read[1] > 0.3 else "found", read[1]
