@@ -1,6 +1,6 @@
 """Damaged files of every kind through whole runs: what becomes of them, by kind.
 
-    python -m tests.hostile_benchmark [--variants 120] [--seed 7]
+    python -m tests.hostile_benchmark [--variants 120] [--seed 7] [--kind NAME]
 
 Each variant is a file that `tests.digitize.archive.hostile` damages, read by a process of its own
 within limits of time and address space, with the real readers of files and a stand-in for what
@@ -33,10 +33,12 @@ def main() -> int:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--variants", type=int, default=120, help="of each kind")
     parser.add_argument("--seed", type=int, default=7)
+    parser.add_argument("--kind", choices=hostile.whole_files(), help="that kind alone")
     given = parser.parse_args()
+    kinds = [given.kind] if given.kind else [*hostile.whole_files()]
     print("kind             files  pages   good failed  seconds  reasons")
     total, broken, reasons = Counter[str](), [], Counter[str]()
-    for kind in hostile.whole_files():
+    for kind in kinds:
         contents = [*hostile.variants(kind, given.variants, given.seed), *hostile.cuts(kind)]
         counts, said, seconds, promises = _run(kind, contents)
         broken += promises
