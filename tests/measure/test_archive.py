@@ -4,6 +4,7 @@ import json
 import sqlite3
 from contextlib import closing
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -94,6 +95,14 @@ def test_sex_and_age_of_the_manifest_count(store):
     measure_archive(store, processes=1)
     document = json.loads((store / f"{stem_of('1' * 64, OPTIONS, 1)}.reading.json").read_bytes())
     assert document["person"] == {"sex": "female", "age_years": 71.0}
+
+
+def test_every_table_of_the_catalogue_is_described(store):
+    measure_archive(store, processes=1)
+    described = (Path(__file__).parents[2] / "DEVELOPERS.md").read_text("utf-8")
+    section = described.split("**A store**")[1].split("\n## ")[0]
+    for (name,) in table(store, "SELECT name FROM sqlite_master WHERE type = 'table'"):
+        assert f"`{name}`" in section, name
 
 
 def test_damaged_tracing_is_a_reason(tmp_path):
