@@ -2,17 +2,27 @@
 
 An A4 page at 300 dpi is opened by `measure overread` as a process of its own. First paint counts
 from the navigation, with the server up and the page's reading just begun; feedback from an input
-event to the frame that shows it; a recomputation from the request to the record on the page.
+event to the frame that shows it; a recomputation from the request to the record on the page. Beside
+these, which other work on the machine lengthens, stands the processor time of each recomputation.
 """
 
 import os
 import shutil
 import statistics
 import tempfile
+import time
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+from digitize.options import Options
+from digitize.read import read_stages
+from measure.overread.chain import Chain
+from measure.overread.corrections import Flip
+from measure.overread.corrections_json import from_plain
+from measure.overread.session import Session
+from measure.overread.view import overview
+from measure.reading import Person
 from tests.measure.overread.browsing import CHROMIUM, LAPTOP, command
 
 PAGE = Path(__file__).parents[1] / "sample_scans" / "normal_3x4_1.jpg"  # 3508 x 2480 pixels
@@ -105,6 +115,21 @@ def corrections(record: dict[str, Any]) -> dict[str, dict[str, Any]]:
     }  # fmt: skip
 
 
+def processor_times(folder: Path) -> Iterator[tuple[str, str]]:
+    """Seconds of one processor for each correction, in this process and after a first one."""
+    (stages,) = read_stages(PAGE, Options())
+    chain = Chain(stages.tracing, stages, Person())
+    over = Session(chain, folder / f"{PAGE.stem}.overread.json", lambda: "2024-03-01T12:00:00Z")
+    over.correct(Flip(0), "")  # compiles and loads what the others share
+    over.undo()
+    for name, correction in corrections(overview(over)).items():
+        began = time.process_time()
+        over.correct(from_plain(correction), "")
+        overview(over)
+        yield f"processor: {name}", f"{time.process_time() - began:.2f} s"
+        over.undo()
+
+
 def measure(page: Any, address: str) -> Iterator[tuple[str, str]]:
     """What was measured, line by line."""
     content_s, paper_s = first_paint(page, address)
@@ -144,6 +169,8 @@ def main() -> None:
             for name, figure in measure(page, address):
                 print(f"{name:28s} {figure}", flush=True)
             browser.close()
+        for name, figure in processor_times(Path(folder)):
+            print(f"{name:28s} {figure}", flush=True)
 
 
 if __name__ == "__main__":

@@ -48,6 +48,24 @@ def test_zoom_brings_the_tiles_that_it_needs(page):
     assert not white  # ruled paper is drawn in the middle of the canvas
 
 
+def test_two_fingers_bring_the_paper_closer(page):
+    """Touch as the browser's own protocol sends it: to twice the distance, half as much is seen."""
+    wide = "() => document.getElementById('paper').viewBox.baseVal.width"
+    before = page.evaluate(wide)
+    box = page.locator("#paper").bounding_box()
+    x, y = box["x"] + box["width"] / 2, box["y"] + box["height"] / 2
+    touch = page.context.new_cdp_session(page)
+    for kind, apart in (("Start", 60), ("Move", 80), ("Move", 100), ("Move", 120)):
+        points = [{"x": x + side * apart, "y": y, "id": k} for k, side in enumerate((-1, 1))]
+        touch.send("Input.dispatchTouchEvent", {"type": f"touch{kind}", "touchPoints": points})
+    touch.send("Input.dispatchTouchEvent", {"type": "touchEnd", "touchPoints": []})
+    page.wait_for_function(
+        "n => Math.abs(document.getElementById('paper').viewBox.baseVal.width / n - 0.5) < 0.05",
+        arg=before,
+    )
+    assert page.locator("#corrections .was").count() == 0
+
+
 def test_the_next_ecg_is_a_key_away(page):
     page.keyboard.press("]")
     page.wait_for_function("() => document.title.startsWith('model.csv')")

@@ -118,6 +118,31 @@ def test_an_ignored_region_is_no_longer_read(page):
     assert page.locator("#paper .missing").count() == gaps
 
 
+def test_a_panel_edge_is_dragged(page):
+    page.focus("#paper")
+    page.keyboard.press("p")
+    page.wait_for_selector("#paper .edge.grip", state="attached")
+    # the panel comes into view with the next frame
+    page.wait_for_function("() => document.getElementById('paper').viewBox.baseVal.width < 200")
+    left = float(page.input_value("#edgeleft"))
+    mm, x, y = page.evaluate(
+        """() => {
+          const edge = document.querySelector('#paper .edge.grip[data-side="left"]');
+          const on = document.getElementById("paper").getScreenCTM();
+          const y = edge.y1.baseVal.value * 0.75 + edge.y2.baseVal.value * 0.25;
+          const at = new DOMPoint(edge.x1.baseVal.value, y).matrixTransform(on);
+          return [on.a, at.x, at.y];
+        }"""
+    )
+    page.mouse.move(x, y)
+    page.mouse.down()
+    page.mouse.move(x + 3 * mm, y, steps=4)
+    page.mouse.up()
+    done(page, 1)
+    # 3 mm to the right, sure to a screen pixel
+    assert float(page.input_value("#edgeleft")) - left == pytest.approx(3, abs=1.5 / mm + 0.06)
+
+
 def test_columns_at_the_same_instant(page):
     far = page.locator("#beats button").last.inner_text()
     page.select_option("#timing", "simultaneous")
