@@ -149,7 +149,7 @@ def _claimed(
             if k != m and a < b:
                 theirs, mine = other[:, a - start : b - start], run[:, a - left : b - left]
                 alone[a - left : b - left] &= (theirs[1] < mine[0]) | (theirs[0] > mine[1])
-        paint(claimed, left, np.where(alone, run + [[-1], [1]], [[0], [-1]]))
+        paint(claimed, left, np.where(alone, run + np.array([[-1], [1]]), [[0], [-1]]))
     return claimed
 
 
