@@ -21,6 +21,7 @@ DEEPEST_FORM = 8
 CURVE_PARTS = 8  # straight parts of a flattened curve
 FAINTEST_ALPHA = 26  # of 255: a tenth, less is no line that anyone sees
 MOST_DECIMALS = 5
+BAR = 40.0  # a filled rectangle so many times longer than thick is a line
 
 _POINTS_PER_MM = 72 / 25.4
 _FINE = 1000  # places are asked for in thousandths of a pixel: the library answers in integers
@@ -129,10 +130,32 @@ def _subpaths_of(item: pdfium_c.FPDF_PAGEOBJECT, state: _State, depth: int) -> I
         pdfium_c.FPDFPageObj_GetStrokeWidth(item, width)
         for points in _subpaths(item):
             yield _Subpath(points, width.value, inner)
+    elif kind == pdfium_c.FPDF_PAGEOBJ_PATH:
+        inner = _within(item, state)
+        for points in _subpaths(item):
+            rule = _thin_bar(points)
+            if rule is not None:
+                yield _Subpath(rule[0], rule[1], inner)
     elif kind == pdfium_c.FPDF_PAGEOBJ_FORM and depth < DEEPEST_FORM:
         inner = _within(item, state)
         for k in range(pdfium_c.FPDFFormObj_CountObjects(item)):
             yield from _subpaths_of(pdfium_c.FPDFFormObj_GetObject(item, k), inner, depth + 1)
+
+
+def _thin_bar(
+    points: list[tuple[float, float]],
+) -> tuple[list[tuple[float, float]], float] | None:
+    """Middle line and width of a filled bar: many programs rule paper with them."""
+    corners = set(points)
+    xs, ys = sorted({x for x, _ in corners}), sorted({y for _, y in corners})
+    if len(corners) != 4 or len(xs) != 2 or len(ys) != 2:
+        return None
+    wide, high = xs[1] - xs[0], ys[1] - ys[0]
+    if max(wide, high) < BAR * min(wide, high):
+        return None
+    x, y = (xs[0] + xs[1]) / 2, (ys[0] + ys[1]) / 2
+    middle = [(xs[0], y), (xs[1], y)] if wide > high else [(x, ys[0]), (x, ys[1])]
+    return middle, min(wide, high)
 
 
 def _is_stroked(item: pdfium_c.FPDF_PAGEOBJECT) -> bool:
@@ -180,8 +203,9 @@ def _to_lines(paths: list[_Subpath]) -> tuple[DrawnLine, ...]:
         scale, step = _scale(state.matrix), _resolution(points)
         ends = np.cumsum([len(paths[k].points) for k in members])[:-1]
         for k, own in zip(members, np.split(_moved(points, state.matrix), ends), strict=True):
-            for part in _visible(own, state.box):
-                lines.append((k, DrawnLine(part, paths[k].width * scale, step * scale)))
+            width = paths[k].width * scale
+            for part in _visible(own, state.box, width / 2):
+                lines.append((k, DrawnLine(part, width, step * scale)))
     return tuple(line for _, line in sorted(lines, key=lambda numbered: numbered[0]))
 
 
@@ -203,9 +227,12 @@ def _resolution(points: np.ndarray) -> float:
     return max(10.0**-MOST_DECIMALS, single)
 
 
-def _visible(points: np.ndarray, box: Frame) -> Iterator[np.ndarray]:
-    """The parts of a line whose vertices lie inside a box; a crossing straight part counts."""
-    low, high = np.array(box[:2]), np.array(box[2:])
+def _visible(points: np.ndarray, box: Frame, slack_px: float) -> Iterator[np.ndarray]:
+    """The parts of a line whose vertices lie inside a box; a crossing straight part counts.
+
+    `slack_px` is half the line's width: a vertex so near to the edge still shows some ink.
+    """
+    low, high = np.array(box[:2]) - slack_px, np.array(box[2:]) + slack_px
     inside = ((points >= low) & (points <= high)).all(axis=1)
     if inside.all():
         yield points

@@ -119,6 +119,22 @@ def test_what_a_clip_hides_is_cut_off() -> None:
     np.testing.assert_allclose((ruled.points_px[:, 0] + 0.5) / SCALE, [0, 192], atol=0.3)
 
 
+def test_a_line_along_the_edge_of_its_clip_is_kept() -> None:
+    # The first sample of a trace often stands exactly where its box is cut.
+    steps = b" ".join(b"%.3f %d l" % (50.004 + x, 70 + x % 3) for x in range(2, 58, 2))
+    page = opened(b"q 50.01 0 60 140 re W n 50.004 70 m " + steps + b" S Q")
+    (line,) = drawing_of(page).lines
+    assert len(line.points_px) == 29
+
+
+def test_a_thin_filled_bar_is_a_line_along_its_middle() -> None:
+    upright, level = drawing_of(opened(b"30 10 0.5 100 re 10 40 150 0.25 re f")).lines
+    np.testing.assert_allclose((upright.points_px[:, 0] + 0.5) / SCALE, 30.25, atol=0.01)
+    assert np.ptp(upright.points_px[:, 1]) == pytest.approx(100 * SCALE, abs=0.1)
+    assert np.ptp(level.points_px[:, 1]) == pytest.approx(0, abs=1e-6)
+    assert level.width_px == pytest.approx(0.25 * SCALE, abs=0.01)
+
+
 def test_fills_and_invisible_strokes_are_no_lines() -> None:
     page = opened(b"10 10 50 50 re f 20 20 30 30 re n " + LINE)
     assert len(drawing_of(page).lines) == 1
