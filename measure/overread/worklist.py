@@ -8,7 +8,7 @@ import queue
 import threading
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from digitize.errors import InputError, NoGrid, UnreadableFile, at
 from digitize.options import Options
@@ -16,6 +16,7 @@ from digitize.pages import Page, open_pages
 from digitize.tracing import PageSource
 from measure.inputs import holds_samples, open_ecgs
 from measure.overread.chain import Chain
+from measure.overread.corrections import Turn
 from measure.overread.items import Item, page_item
 from measure.overread.pictures import Pictures, coarsest
 from measure.overread.session import Session, scale_kept
@@ -23,6 +24,9 @@ from measure.overread.stored import with_page
 from measure.reading import Person
 from measure.reading_files import document, load_document
 from measure.run import READING_ENDING
+
+if TYPE_CHECKING:
+    from digitize.read import Stages
 
 AT_HAND = 4  # ECGs with their pages in memory
 
@@ -50,12 +54,25 @@ class Entry:
     @property
     def pictures(self) -> Pictures | None:
         """The page as scanned, and flattened where it is read; as it is turned now."""
-        stages = self.session.stages() if self.session else None
-        if stages is None:
+        session = self.session
+        if session is None:
             return self._pictures
-        if self._pictures is None or self._pictures.scan is not stages.page.pixels:
+        stages = self._as_turned(session)
+        if stages is not None and (
+            self._pictures is None or self._pictures.scan is not stages.page.pixels
+        ):
             self._pictures = Pictures(stages.page.pixels, stages.sheet.pixels)
         return self._pictures
+
+    def _as_turned(self, session: Session) -> "Stages | None":
+        """The stages whose page is shown; no other correction than a turn alters the picture.
+
+        So a tile need not wait while the record is computed.
+        """
+        if not any(isinstance(step.correction, Turn) for step in session.steps):
+            return session.chain.stages()
+        with self.lock:
+            return session.stages()
 
     def document(self) -> dict[str, Any] | None:
         """The reading as it is now, or as it was saved, in the form of its file."""

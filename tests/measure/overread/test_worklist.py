@@ -14,7 +14,7 @@ from digitize.errors import UnreadableFile
 from digitize.options import Options
 from digitize.tracing_files import tracing_files
 from measure.overread.chain import Chain
-from measure.overread.corrections import Patient
+from measure.overread.corrections import Gain, Patient
 from measure.overread.items import page_item
 from measure.overread.serve import find_items
 from measure.overread.session import Session
@@ -23,7 +23,15 @@ from measure.overread.view import overview
 from measure.overread.worklist import AT_HAND, Worklist
 from measure.reading import Person
 from measure.reading_files import to_json
-from tests.measure.overread.made import NOON, SAMPLES, digital_chain, page_stages, write_csv
+from tests.measure.overread.made import (
+    NOON,
+    SAMPLES,
+    digital_chain,
+    page_chain,
+    page_stages,
+    worklist,
+    write_csv,
+)
 
 
 def listed(*places, options=None, folder=None):
@@ -176,6 +184,15 @@ def test_a_tracing_without_its_page_is_shown_on_paper_of_its_own(tmp_path):
     assert shown["paper"]["flat"]["px"] is None
     assert shown["paper"]["ruled_mm"] == pytest.approx(tracing.geometry["ruled_mm"], abs=1e-4)
     assert all(panel["y_mm"] for panel in shown["panels"])
+
+
+def test_the_picture_does_not_wait_for_what_is_computed(tmp_path):
+    made = worklist(tmp_path, page_chain())
+    (entry,) = made.entries
+    entry.session.correct(Gain(5.0), "A. Reader")
+    with entry.lock:  # as while a correction is computed
+        assert entry.pictures.scan is page_stages().page.pixels
+        assert entry.pictures is entry.pictures
 
 
 def test_a_saved_reading_can_be_compared_and_no_more(tmp_path):
