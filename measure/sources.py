@@ -17,11 +17,12 @@ from typing import Any
 import numpy as np
 
 from digitize.errors import NoTrace, UnreadableFile
-from digitize.tracing import FS_HZ, LEADS, Known, PageSource, Panel, Tracing
+from digitize.tracing import FS_HZ, LEADS, Check, Known, PageSource, Panel, Tracing
 from measure.resampling import resampled
 
 _MV_PER_UNIT = {"mv": 1.0, "uv": 1e-3, "µv": 1e-3, "μv": 1e-3, "v": 1e3, "nv": 1e-6}
 _SLOWEST_HZ = 100.0  # below this a QRS has too few samples to be measured
+_FINEST_HZ = 150.0  # what a diagnostic recording holds (AHA/ACC/HRS 2007 part I, from memory)
 _USUAL_NAMES = {lead.lower(): lead for lead in LEADS}
 
 
@@ -102,7 +103,20 @@ def tracing_from_samples(
         gain_mm_mv=Known(10.0, "assumed"),
         layout=Known("digital", "given"),
         timing=Known("simultaneous", "given"),
+        checks=(_check_rate(fs_hz),),
     )
+
+
+def _check_rate(fs_hz: float) -> Check:
+    """Whether the samples can hold what a diagnostic recording holds."""
+    enough = fs_hz >= 2 * _FINEST_HZ
+    message = f"Recorded at {fs_hz:g} samples per second."
+    if not enough:
+        message += (
+            f" Nothing above {fs_hz / 2:g} Hz is in it: a narrow notch or small q may be missing, "
+            f"and the ends of a QRS are surer at {2 * _FINEST_HZ:g} or more."
+        )
+    return Check("sampling_rate", enough, message, fs_hz, 2 * _FINEST_HZ)
 
 
 def _panel(name: str, row: int, mv: np.ndarray, fs_hz: float) -> Panel:

@@ -139,3 +139,11 @@ def test_padding_of_a_dicom_waveform_is_a_gap(tmp_path: Path) -> None:
     assert np.isnan(read_back.lead("V1").mv[:890]).all()
     np.testing.assert_allclose(read_back.lead("V1").mv[910:1990], mv[910:1990, 1], atol=0.002)
     np.testing.assert_allclose(read_back.lead("II").mv[10:1990], mv[10:1990, 0], atol=0.002)
+
+
+@pytest.mark.parametrize(("fs_hz", "enough"), [(100.0, False), (299.0, False), (300.0, True)])
+def test_a_low_rate_is_a_caution(fs_hz: float, enough: bool) -> None:
+    """150 Hz, AHA/ACC/HRS 2007 part I (from memory): twice as many samples hold it."""
+    (check,) = tracing_from_samples(sine(fs_hz)[:, None], ["II"], fs_hz).checks
+    assert check.passed is enough
+    assert ("a narrow notch" in check.message) is not enough
