@@ -3,13 +3,14 @@
 A page's row is committed after its files are in place, so a row stands for files that are there.
 Tables: `source` (where a content was met), `work` (one content under one set of options, done when
 all its pages have a row), `page` (one page each: what was read, or why not), `chart` (what a person
-says of a content: whose, of which day; page 0 stands for all its pages). `user_version` is the
-version of this schema; a later one is refused, an earlier one is brought up step by step.
+says of a content: whose, of which day; page 0 stands for all its pages), `refused` (files without a
+content, such as a damaged zip file, at the last run that met them). `user_version` is the version
+of this schema; a later one is refused, an earlier one is brought up step by step.
 """
 
 import sqlite3
 from collections import Counter
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import closing, contextmanager
 from dataclasses import asdict, astuple, dataclass, fields
 from pathlib import Path
@@ -50,6 +51,10 @@ _STEPS = (
     CREATE INDEX chart_patient ON chart (patient, date);
     ALTER TABLE page ADD COLUMN header TEXT;
     ALTER TABLE page ADD COLUMN header_fields TEXT;
+    """,
+    """
+    CREATE TABLE refused (path BLOB NOT NULL, reason TEXT NOT NULL);
+    CREATE INDEX refused_path ON refused (path);
     """,
 )
 
@@ -193,6 +198,14 @@ class Catalogue:
                 "INSERT INTO chart VALUES (?, ?, ?, ?, ?, ?)",
                 [(sha256, page, *astuple(chart)) for page, chart in charts.items()],
             )
+
+    def set_refused(self, path: bytes, reasons: Sequence[str]) -> None:
+        """Put why a file, or what is in it, cannot be opened in place of what was noted before."""
+        with self.db:
+            self.db.execute("BEGIN")
+            self.db.execute("DELETE FROM refused WHERE path = ?", (path,))
+            rows = [(path, reason) for reason in reasons]
+            self.db.executemany("INSERT INTO refused VALUES (?, ?)", rows)
 
     def finish(self, sha256: str, options: str) -> None:
         """Note that a content has all its rows."""

@@ -2,6 +2,7 @@
 
 import hashlib
 import json
+import os
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict, dataclass, field
 from pathlib import Path
@@ -66,9 +67,11 @@ def make_plan(
     plan = Plan(options)
     said: dict[str, list[Mapping[int, Chart]]] = {}
     for path in find_files(folders):
+        refused: list[str] = []
         for found in identify(path, catalogue):
             if isinstance(found, InputError):
                 plan.unreadable.append(found)
+                refused.append(str(found))
                 continue
             charted = {} if charts is None else charts.of(found)
             if found.sha256 in said:
@@ -77,6 +80,7 @@ def make_plan(
                 said[found.sha256] = []
                 _add(plan, found, catalogue, again_failed=again_failed)
             said[found.sha256] += [charted] if charted else []
+        catalogue.set_refused(os.fsencode(path.resolve()), refused)
     if charts is not None:
         plan.doubts += charts.doubts()
         for sha256, all_said in said.items():

@@ -7,6 +7,7 @@ import sys
 import time
 import zipfile
 from collections import Counter
+from contextlib import closing
 from pathlib import Path
 
 import numpy as np
@@ -183,6 +184,22 @@ def test_cut_zip_files_are_refused(scans, store, tmp_path, share, capsys):
     (scans / "cut.zip").write_bytes(content[: int(len(content) * share)])
     assert run(scans, store) == 1
     assert "cut.zip: the zip file is damaged" in capsys.readouterr().err
+
+
+def test_what_cannot_be_opened_at_all_is_noted_until_it_can_be(scans, store, tmp_path):
+    scans.mkdir()
+    (scans / "box.zip").write_bytes(b"no zip file")
+    assert run(scans, store) == 1
+    assert refused(store) == ["box.zip: the zip file is damaged or locked with a password"]
+    with zipfile.ZipFile(scans / "box.zip", "w") as archive:
+        archive.writestr("a.png", made.save(tmp_path / "x.png", made.READ).read_bytes())
+    assert run(scans, store) == 0
+    assert refused(store) == []
+
+
+def refused(store):
+    with closing(sqlite3.connect(store / "catalogue.sqlite")) as db:
+        return [reason for (reason,) in db.execute("SELECT reason FROM refused")]
 
 
 # ---- the store -------------------------------------------------------------------------------
