@@ -5,7 +5,7 @@
 Each variant is a file that `tests.digitize.archive.hostile` damages, read by a process of its own
 within limits of time and address space, with the real readers of files and a stand-in for what
 follows. A run that breaks a promise (a content without a row, a failure without a reason, a
-traceback, a file outside the store, a row that comes later than its limit) ends with exit code 1.
+traceback, a file outside the store) ends with exit code 1.
 """
 
 import argparse
