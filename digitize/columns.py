@@ -17,7 +17,7 @@ FAINT_MM = 5.0  # gap in a faint trace where most rows go on behind it
 CUT_MM = 2.0  # ink this near to the edge of the picture is cut off there
 CUT_STEP_MM = 1.5  # names tell a column's place to about so much, breaks do the rest
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
-TICK_OFF_MM = 1.0  # a break so near to a tick is the same edge
+GAP_MM = 3.0  # rows that all stop for longer stand to both sides of a calibration mark
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
 
@@ -143,10 +143,8 @@ def column_spans(
     if count == 1:
         return (extent,), 0.0
     x, broken, inked = breaks.x_mm, breaks.broken.mean(axis=0), breaks.inked.mean(axis=0)
-    width = (extent.right_mm - extent.left_mm) / count
     edges, shares = [], []
-    for k in range(1, count):
-        expected = extent.left_mm + k * width
+    for expected in _evenly(breaks, extent, count):
         near = np.abs(x - expected) < SEARCH_MM
         if not near.any():
             edges.append((expected, expected))
@@ -157,7 +155,7 @@ def column_spans(
         pull = np.where(near, broken - 0.03 * away_mm - 0.04 * away_mm**2, -np.inf)
         at = int(np.argmax(pull))
         ticked, tick_mm = _ticked(ticks, expected, len(breaks.broken))
-        if ticked > 0.8 and (pull[at] < 0.5 or abs(tick_mm - x[at]) > TICK_OFF_MM):
+        if ticked > 0.8 and pull[at] < 0.5:
             shares.append(ticked)
             edges.append((tick_mm, tick_mm))
             continue
@@ -175,6 +173,29 @@ def column_spans(
     rights = [*(edge[0] for edge in edges), extent.right_mm]
     spans = tuple(Span(a, b) for a, b in zip(lefts, rights, strict=True))
     return _even(spans, extent, shares), float(np.mean(shares))
+
+
+def _evenly(breaks: Breaks, extent: Span, count: int) -> list[float]:
+    """Edges between so many columns of the same length, gaps of all rows left out."""
+    x, bare = breaks.x_mm, breaks.inked.mean(axis=0) < 0.34
+    turns = np.flatnonzero(np.diff(np.pad(bare.astype(np.int8), 1)))
+    gaps = [
+        (float(x[a]), float(x[b - 1]) + STEP_MM)
+        for a, b in zip(turns[::2], turns[1::2], strict=True)
+        if x[a] > extent.left_mm and x[b - 1] < extent.right_mm and x[b - 1] - x[a] > GAP_MM
+    ]
+    width = extent.right_mm - extent.left_mm - sum(b - a for a, b in gaps)
+    places = []
+    for k in range(1, count):
+        place = extent.left_mm + k * width / count
+        for left, right in gaps:
+            if abs(place - left) < SEARCH_MM / 2:
+                place = (left + right) / 2
+                break
+            if place > left:
+                place += right - left
+        places.append(place)
+    return places
 
 
 def possible_extents(extent: Span, room: Span) -> list[Span]:
