@@ -58,7 +58,7 @@ def trace_extent(rows: Rows) -> Span:
     for number, row in enumerate(rows.rows):
         inked[number, column[_near(rows, row)]] = True
     near = sp.ndimage.maximum_filter1d(inked, 2 * round(0.3 * FAINT_MM / STEP_MM) + 1, axis=1)
-    shared = (near.mean(axis=0) > 0.4) & (inked.mean(axis=0) > 0.25)
+    shared = (near.mean(axis=0) > 0.6) & (inked.mean(axis=0) > 0.25)
     shared_mm = np.flatnonzero(shared) * STEP_MM + first
     for x in shared_mm[shared_mm > right]:
         if x - right < FAINT_MM:
