@@ -28,6 +28,10 @@ _OWN_ROWS = 0.6  # of a row's distance to each side
 _ROW_MM = 25.0  # distance of rows where there is one only; common practice
 _HALF_PEN_MM = 0.25  # ink about a path that is surely its own
 _SWEEPS = 2
+_DOT_MM = 0.6
+_DITHERED = 0.3  # so many dots on a square millimetre are dither or the rest of a grid, not dirt
+_COHERENT_MM = 1.2
+_DIRECTIONS = 12
 EDGE = 0.5  # density at the edge of a full stroke
 
 
@@ -59,6 +63,8 @@ def find_routes(ink: Ink, layout: Layout) -> Routes:
     """Find the shortest path of each panel's trace, in the order of `layout.panels`."""
     panels = layout.panels
     clear = without_printing(ink, layout.words + layout.marks)
+    if _dots_per_mm2(clear, ink.raster.px_per_mm) > _DITHERED:
+        clear = coherent(clear, ink.raster.px_per_mm)
     field = to_field(clear, ink.raster)
     anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
     field = replace(field, pen_mm=_thickness_mm(field, anchors))
@@ -121,6 +127,31 @@ def without_printing(ink: Ink, boxes: tuple[Box, ...]) -> np.ndarray:
         leads_out = np.isin(labels, border[border > 0])
         part *= np.where(leads_out, np.float32(0.5), np.float32(0))
     return clear
+
+
+def _dots_per_mm2(density: np.ndarray, px_per_mm: float) -> float:
+    """Pieces of ink too small for anything but a dot, on a square millimetre."""
+    _, _, stats, _ = cv2.connectedComponentsWithStats((density > EDGE).astype(np.uint8))
+    size = np.maximum(stats[1:, cv2.CC_STAT_WIDTH], stats[1:, cv2.CC_STAT_HEIGHT])
+    return float(np.sum(size < _DOT_MM * px_per_mm) * px_per_mm**2 / density.size)
+
+
+def coherent(density: np.ndarray, px_per_mm: float) -> np.ndarray:
+    """Density of strokes through dither and dropped lines.
+
+    The mean along a short line, in that direction in which it is largest: strokes go on, dots do
+    not. Across a stroke nothing is blurred.
+    """
+    size = 2 * round(_COHERENT_MM * px_per_mm / 2) + 1
+    strongest = np.zeros_like(density)
+    for angle in np.arange(_DIRECTIONS) * np.pi / _DIRECTIONS:
+        line = np.zeros((size, size), np.uint8)
+        reach = size // 2 * np.array([np.cos(angle), np.sin(angle)])
+        ends = [np.rint(size // 2 + sign * reach).astype(int).tolist() for sign in (-1, 1)]
+        cv2.line(line, ends[0], ends[1], 1)
+        kernel = line.astype(np.float32) / line.sum()
+        np.maximum(strongest, cv2.filter2D(density, -1, kernel), out=strongest)
+    return strongest
 
 
 def _search(
