@@ -19,7 +19,7 @@ def test_a_stroke_broken_by_dither_goes_on_and_dots_do_not(lean):
     inner = stroke.copy()
     inner[:26], inner[134:] = False, False
     assert np.median(seen[inner]) > 0.5
-    assert np.mean(seen[inner] > 0.3) > 0.98
+    assert np.mean(seen[inner] > 0.3) > 0.95
     assert np.mean(seen[:, 200:] > 0.4) < 0.01  # coarse field: ink from 0.42 on
     # nothing is blurred across: ink three pixels beside a clean stroke stays away
     clean = coherent(stroke.astype(np.float32), px_per_mm=8.0)
