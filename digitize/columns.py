@@ -150,6 +150,11 @@ def column_spans(
             edges.append((expected, expected))
             shares.append(0.0)
             continue
+        gap = _bare_about(inked, int(np.argmin(np.abs(x - expected))))
+        if gap is not None and x[gap[1]] - x[gap[0]] > GAP_MM:
+            shares.append(1.0)
+            edges.append((float(x[gap[0]]), float(x[gap[1]])))
+            continue
         away_mm = np.abs(x - expected)
         # simultaneous steep complexes break all rows as well, wherever they happen to stand
         pull = np.where(near, broken - 0.03 * away_mm - 0.04 * away_mm**2, -np.inf)
@@ -163,16 +168,22 @@ def column_spans(
         if pull[at] < 0.5:
             edges.append((expected, expected))
             continue
-        first = last = at
-        while first > 0 and inked[first - 1] < 0.34:
-            first -= 1
-        while last < len(x) - 1 and inked[last] < 0.34:
-            last += 1
+        first, last = _bare_about(inked, at) or (at, at)
         edges.append((float(x[first]), float(x[last])))
     lefts = [extent.left_mm, *(edge[1] for edge in edges)]
     rights = [*(edge[0] for edge in edges), extent.right_mm]
     spans = tuple(Span(a, b) for a, b in zip(lefts, rights, strict=True))
     return _even(spans, extent, shares), float(np.mean(shares))
+
+
+def _bare_about(inked: np.ndarray, at: int) -> tuple[int, int] | None:
+    """First column of the gap about `at`, and the first after it; None where rows have ink."""
+    first = last = at
+    while first > 0 and inked[first - 1] < 0.34:
+        first -= 1
+    while last < len(inked) - 1 and inked[last] < 0.34:
+        last += 1
+    return (first, last) if last > first else None
 
 
 def _evenly(breaks: Breaks, extent: Span, count: int) -> list[float]:

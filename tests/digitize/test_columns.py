@@ -1,11 +1,13 @@
 """Columns: where drawn panels begin and end, with every sort of separator."""
 
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 import pytest
 
 from digitize.columns import (
+    Breaks,
     Span,
     column_spans,
     marks_of_row,
@@ -75,6 +77,34 @@ def test_breaks_speak_for_the_right_number_of_columns():
     assert max(shares, key=lambda count: shares[count]) in (2, 4)  # every second edge of 4 is one
     assert shares[4] == pytest.approx(1.0)
     assert max(shares[3], shares[5]) < 0.5
+
+
+def breaks_at(places_mm: list[float], bare_mm: tuple[float, float] | None = None) -> Breaks:
+    """Three rows of 250 mm that all break at some places, and have no ink in between two."""
+    x = np.arange(0.0, 250.0, STEP_MM)
+    broken, inked = np.zeros((3, len(x)), bool), np.ones((3, len(x)), bool)
+    broken[:, np.searchsorted(x, places_mm)] = True
+    if bare_mm is not None:
+        inked[:, (x >= bare_mm[0]) & (x < bare_mm[1])] = False
+        broken[:, np.searchsorted(x, bare_mm)] = True
+    return Breaks(x, broken, inked)
+
+
+def test_complexes_of_simultaneous_leads_are_no_edges():
+    """Their steep flanks break all rows at one place, here one that repeats with the columns."""
+    spans, shared = column_spans(breaks_at([59.0, 121.5, 184.0]), Span(0.0, 250.0), 4)
+    assert [span.left_mm for span in spans] == pytest.approx([0.0, 62.5, 125.0, 187.5], abs=0.3)
+    assert shared == 0.0
+
+
+def test_a_calibration_mark_within_the_rows_is_no_part_of_a_column():
+    wide = (250.0 - 12.0) / 4
+    edges = [wide, 2 * wide + 6, 3 * wide + 12]
+    breaks = breaks_at([edges[0], edges[2]], (2 * wide, 2 * wide + 12))
+    spans, shared = column_spans(breaks, Span(0.0, 250.0), 4)
+    assert shared == pytest.approx(1.0)
+    middles = [(a.right_mm + b.left_mm) / 2 for a, b in pairwise(spans)]
+    assert middles == pytest.approx(edges, abs=0.5)
 
 
 def test_one_column_is_the_whole_extent():

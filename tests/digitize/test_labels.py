@@ -91,6 +91,16 @@ def test_names_in_the_first_column_may_stand_aside_for_a_calibration_mark():
     assert len(fit_labels(words, SLOTS, PITCH_MM).names) == 12
 
 
+def test_names_of_the_first_column_may_stand_left_of_their_traces_and_the_others_above():
+    words = words_at((1.0, -8.0), leave_out=("I", "II", "III"))
+    beside = [word(n, 12.0, 37.5 + PITCH_MM * r) for r, n in enumerate(("I", "II", "III"))]
+    fit = fit_labels(words + beside, SLOTS, PITCH_MM)
+    read = {SLOTS[k].name: fit.names[SLOTS[k].row, SLOTS[k].column][0] for k in range(len(SLOTS))}
+    assert read == {slot.name: slot.name for slot in SLOTS}
+    assert fit.offset_mm == pytest.approx((-8.0, -1.2))
+    assert fit.inner_offset_mm == pytest.approx((1.0, -6.7))
+
+
 def test_an_unread_name_leaves_its_place_empty():
     fit = fit_labels(words_at((1.0, -9.0), leave_out=("V3",)), SLOTS, PITCH_MM)
     assert (2, 2) not in fit.names
