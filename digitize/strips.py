@@ -15,7 +15,6 @@ import numpy as np
 from digitize.tracing import FS_HZ, Known, Panel
 
 SAME_DB, CLEAR_DB = 8.0, 3.0  # agreement of a repeated lead, and its lead over the next best
-CONTRADICTS_DB = 6.0  # more that is asked for to overrule a name that was read
 LAG_S = 0.02
 BEAT_S = 0.03  # width of a beat's activity
 APART = 0.25  # difference of correlation that settles the timing
@@ -24,8 +23,8 @@ APART = 0.25  # difference of correlation that settles the timing
 def name_strips(panels: Sequence[Panel]) -> tuple[Panel, ...]:
     """Return the panels with each strip named after the short panel that it repeats.
 
-    A name that was read is overruled only by clear agreement with another lead, and no name while
-    the lead that it names is on the page and too little of it was read to be compared.
+    A name that was read or given stays. Another is overruled by clear agreement with another lead,
+    but not while the lead that it names is on the page and too little of it was read to compare.
     """
     short = [panel for panel in panels if not panel.strip]
     return tuple(_named(panel, short) if panel.strip and short else panel for panel in panels)
@@ -33,8 +32,8 @@ def name_strips(panels: Sequence[Panel]) -> tuple[Panel, ...]:
 
 def _named(strip: Panel, short: Sequence[Panel]) -> Panel:
     """One strip under the name of the lead it repeats, where that is beyond doubt."""
-    if strip.lead_source == "given":
-        return strip
+    if strip.lead_source in ("given", "printed"):
+        return strip  # a self-check tells where the traces contradict it
     agreement = sorted(((_agreement_db(strip, s), s.lead) for s in short), reverse=True)
     best, lead = agreement[0]
     second = next((db for db, other in agreement[1:] if other != lead), -np.inf)
@@ -42,8 +41,7 @@ def _named(strip: Panel, short: Sequence[Panel]) -> Panel:
     if own == -np.inf:
         return strip  # hardly anything of its own lead was read: another may look like it
     own = -np.inf if own is None else own
-    needed = SAME_DB + (CONTRADICTS_DB if strip.lead_source == "printed" else 0.0)
-    if lead == strip.lead or best < needed or best - max(second, own) < CLEAR_DB:
+    if lead == strip.lead or best < SAME_DB or best - max(second, own) < CLEAR_DB:
         return strip
     gain = next(s.gain_mm_mv for s in short if s.lead == lead)
     return replace(

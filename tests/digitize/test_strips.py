@@ -30,9 +30,10 @@ def test_an_unread_strip_is_named_after_the_lead_it_repeats(lead):
     assert any("repeats that lead" in note for note in strip.notes)
 
 
-def test_a_given_name_stays_whatever_the_trace_says():
-    strip = name_strips(with_strip("V1", lead_source="given"))[-1]
-    assert (strip.lead, strip.lead_source, strip.notes) == ("II", "given", ())
+@pytest.mark.parametrize("source", ["given", "printed"])
+def test_a_name_given_or_read_stays_whatever_the_trace_says(source):
+    strip = name_strips(with_strip("V1", lead_source=source))[-1]
+    assert (strip.lead, strip.lead_source, strip.notes) == ("II", source, ())
 
 
 def test_a_strip_that_repeats_nothing_keeps_its_name():
