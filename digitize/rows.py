@@ -202,7 +202,7 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
     first = np.floor(x[0])
     inked = np.minimum(np.bincount((x - first).astype(int)) * STEP_MM, 1.0)
     # Half of a stretch is enough: a faint trace is broken everywhere.
-    solid = np.flatnonzero(sp.ndimage.uniform_filter1d(inked, SOLID_MM) > 0.5)
+    solid = np.flatnonzero(sp.ndimage.uniform_filter1d(inked, SOLID_MM, mode="constant") > 0.5)
     if len(solid) == 0:
         return None
     low, high = first + solid[0], first + solid[-1] + 1

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from digitize.ink import Ink
-from digitize.rows import find_rows
+from digitize.rows import Runs, find_rows, row_extent
 from tests.digitize.drawn_ink import CHART, perfect_sheet, rows_of
 from tests.drawn.heart import HeartSpec
 from tests.drawn.pen import draw_stroke
@@ -151,3 +151,11 @@ def test_the_shaded_edge_of_a_sheet_on_a_desk_is_no_row():
     density[line : line + 8] = 0.9  # a millimetre of shade along the whole edge
     found = find_rows(replace(ink, density=density, ruled_mm=ruled), ())
     assert len(found.rows) == 4
+
+
+def test_a_short_piece_at_the_very_edge_of_the_picture_is_no_start_of_a_row():
+    x_mm = np.concatenate([np.arange(2.25, 4.0, 0.25), np.arange(22.25, 142.5, 0.25)])
+    runs = Runs(x_mm, np.full(len(x_mm), 49.8), np.full(len(x_mm), 50.2))
+    row = row_extent(runs, 50.0, 25.0)
+    assert row is not None
+    assert (row.left_mm, row.right_mm) == pytest.approx((22.25, 142.25))
