@@ -27,13 +27,13 @@ def find_turn(ink: Ink, printing: Printing) -> int:
     ink, printing : Ink, Printing
         The sheet as it lies; it is read again turned only where its names cannot be read.
     """
-    if _names(printing.words) >= ENOUGH or any(map(_clear, printing.lines)):
+    if _legible(printing) >= ENOUGH:
         return 0
     sideways = _row_share(_turned(_ruled_part(ink), 90)) > _row_share(_ruled_part(ink))
-    read = {0: _names(printing.words)}
+    read = {0: _legible(printing)}
     # The likelier turns first; where no names are read there, the others may show them.
     for turns in ((90, 270), (180,)) if sideways else ((180,), (90, 270)):
-        read |= {turn: _names(read_printing(_turned(ink, turn)).words) for turn in turns}
+        read |= {turn: _legible(read_printing(_turned(ink, turn))) for turn in turns}
         if max(read.values()) >= ENOUGH:
             break
     best = max(read, key=lambda turn: read[turn])
@@ -66,6 +66,11 @@ def _row_share(ink: Ink) -> float:
     wide_mm = ink.density.shape[1] / ink.raster.px_per_mm
     inked = [coverage_mm(rows.runs, row.y_mm) for row in rows.rows]
     return float(np.mean(inked)) / wide_mm if inked else 0.0
+
+
+def _legible(printing: Printing) -> int:
+    """How many lead names are clearly read; a line that is counts as enough of them."""
+    return _names(printing.words) + ENOUGH * any(map(_clear, printing.lines))
 
 
 def _clear(line: Word) -> bool:
