@@ -9,7 +9,7 @@ import scipy as sp
 
 from digitize.ink import Ink
 from digitize.marks import Mark
-from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent
+from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent, runs_of_row
 from digitize.sheet import Box
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
@@ -56,7 +56,7 @@ def trace_extent(rows: Rows) -> Span:
     column = np.round((rows.runs.x_mm - first) / STEP_MM).astype(int)
     inked = np.zeros((len(rows.rows), column.max() + 1), bool)
     for number, row in enumerate(rows.rows):
-        inked[number, column[_near(rows, row)]] = True
+        inked[number, column[runs_of_row(rows.runs, row.y_mm, rows.pitch_mm)]] = True
     near = sp.ndimage.maximum_filter1d(inked, 2 * round(0.3 * FAINT_MM / STEP_MM) + 1, axis=1)
     shared = (near.mean(axis=0) > 0.6) & (inked.mean(axis=0) > 0.25)
     shared_mm = np.flatnonzero(shared) * STEP_MM + first
@@ -67,12 +67,6 @@ def trace_extent(rows: Rows) -> Span:
         if left - x < FAINT_MM:
             left = float(x)
     return Span(left, right)
-
-
-def _near(rows: Rows, row: Row) -> np.ndarray:
-    """Which runs of ink stand at the height of a row."""
-    reach = min(0.5 * rows.pitch_mm, 12.0)
-    return (rows.runs.top_mm < row.y_mm + reach) & (rows.runs.bottom_mm > row.y_mm - reach)
 
 
 def marks_of_row(row: Row, marks: Sequence[Mark], pitch_mm: float) -> list[Mark]:

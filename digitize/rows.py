@@ -194,9 +194,7 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
 
     Specks do not count; None where there is no solid stretch at all.
     """
-    reach = min(0.5 * pitch_mm, 12.0)
-    near = (runs.top_mm < y_mm + reach) & (runs.bottom_mm > y_mm - reach)
-    x = np.unique(runs.x_mm[near])
+    x = np.unique(runs.x_mm[runs_of_row(runs, y_mm, pitch_mm)])
     if len(x) < 20:
         return None
     first = np.floor(x[0])
@@ -219,6 +217,12 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
         if part[0] < left and left - part[-1] < QRS_MM and _is_piece(part):
             left = part[0]
     return Row(y_mm, float(left), float(right))
+
+
+def runs_of_row(runs: Runs, y_mm: float, pitch_mm: float) -> np.ndarray:
+    """Which runs of ink stand at the height of a row."""
+    reach = min(0.5 * pitch_mm, 12.0)
+    return (runs.top_mm < y_mm + reach) & (runs.bottom_mm > y_mm - reach)
 
 
 def _is_piece(part: np.ndarray) -> bool:

@@ -150,12 +150,7 @@ def _join(letters: list[Box], reach: float) -> list[Box]:
             overlap = min(word.bottom_mm, letter.bottom_mm) - max(word.top_mm, letter.top_mm)
             gap = letter.left_mm - word.right_mm
             if overlap > 0.55 * short and gap < reach * tall and short > 0.3 * tall:
-                boxes[k] = Box(
-                    min(word.left_mm, letter.left_mm),
-                    min(word.top_mm, letter.top_mm),
-                    max(word.right_mm, letter.right_mm),
-                    max(word.bottom_mm, letter.bottom_mm),
-                )
+                boxes[k] = _around([word, letter])
                 break
         else:
             boxes.append(letter)
