@@ -207,22 +207,21 @@ def archive(
         )
     except ValueError as error:
         raise typer.BadParameter(str(error)) from None
-    from digitize.archive.engines import cluster as workers_of
-    from digitize.archive.engines import this_machine
+    from digitize.archive.alone import Limits
+    from digitize.archive.engines import engine_for
     from digitize.archive.reading import read_for_store
     from digitize.archive.run import run_archive
-    from digitize.archive.worker import Limits
 
     limits = Limits(page_seconds, page_memory_mb)
-    engine = this_machine(processes) if cluster is None else workers_of(cluster)
     kept = _kept(manifest, name_pattern, header_fields, keep_header=keep_header)
     failed = run_archive(
         folders,
         store,
         options,
         limits,
-        engine,
+        engine_for(cluster, processes),
         read=partial(read_for_store, header=kept.header),
+        preload=("digitize.archive.warm", "digitize.cli"),
         kept=kept,
         again_failed=again == "failed",
     )

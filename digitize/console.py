@@ -9,6 +9,8 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import Protocol
 
+from digitize.errors import InputError
+
 
 class Bar(Protocol):
     """The part of a progress bar that is used here."""
@@ -25,6 +27,7 @@ class Console:
 
     def __init__(self, bar: Bar | None = None) -> None:
         self._bar = bar
+        self.failed = 0  # files and pages that could not be used
         self._file = ""
         self._laps: list[tuple[str, float]] = []  # stage, when it began
 
@@ -56,6 +59,11 @@ class Console:
         ]
         total_s = ends[-1] - self._laps[0][1] if self._laps else 0.0
         return f"seconds: {', '.join(parts)}; all {total_s:.2f}"
+
+    def fail(self, error: InputError) -> None:
+        """Say what could not be used, and count it."""
+        self.failed += 1
+        self.line(str(error))
 
     def line(self, text: str) -> None:
         """A line for the person, on stderr."""

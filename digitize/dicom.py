@@ -11,7 +11,7 @@ from typing import BinaryIO
 
 import numpy as np
 
-from digitize.errors import UnreadableFile
+from digitize.errors import UnreadableFile, needs_extra
 from digitize.pictures import Loader, Picture, check_size, credible_dpi, plain_pixels
 
 # What pydicom is known to raise on damaged files (found by cutting and flipping bytes).
@@ -40,9 +40,7 @@ def open_dicom(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
     try:
         import pydicom
     except ImportError:
-        raise UnreadableFile(
-            "DICOM files need one more package: install millivellum[dicom], or save it as PNG"
-        ) from None
+        raise needs_extra("a DICOM file", "dicom", "save it as PNG") from None
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")  # on odd values of attributes that are not used here

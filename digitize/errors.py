@@ -78,6 +78,12 @@ def at(error: Error, file_name: str, page: int | None = None) -> Error:
     return error
 
 
+def needs_extra(what: str, extra: str, instead: str = "") -> UnreadableFile:
+    """The error where a package is not installed: "writing EDF", the extra, another way."""
+    way = f", or {instead}" if instead else ""
+    return UnreadableFile(f"{what} needs one more package: install millivellum[{extra}]{way}")
+
+
 def shown(path: str | Path) -> str:
     """A path that is safe to print on one line: control and undecodable characters escaped."""
     text = str(path).encode("utf-8", "backslashreplace").decode("utf-8")

@@ -26,7 +26,7 @@ from PIL import (  # every format of FORMATS that Pillow does not load by itself
 )
 
 from digitize.drawing import Drawing
-from digitize.errors import UnreadableFile
+from digitize.errors import UnreadableFile, needs_extra
 
 FORMATS = ("PNG", "JPEG", "TIFF", "BMP", "GIF", "WEBP")
 CREDIBLE_DPI = (50.0, 2400.0)
@@ -108,9 +108,7 @@ def open_heic(file: BinaryIO, *, max_megapixels: float) -> Iterator[Loader]:
     try:
         import pillow_heif
     except ImportError:
-        raise UnreadableFile(
-            "HEIC photos need one more package: install millivellum[heic], or save it as JPEG"
-        ) from None
+        raise needs_extra("a HEIC photo", "heic", "save it as JPEG") from None
     try:
         heif = pillow_heif.open_heif(file, convert_hdr_to_8bit=True)
     except (RuntimeError, *_DAMAGE):  # RuntimeError: the decoder's own safety limits

@@ -25,16 +25,9 @@ def redact_files(
     The picture is made anew from pixels, so nothing of the file's metadata comes along but the
     resolution. A page on which printing can still be read is refused.
     """
-    failed = 0
-
-    def fail(error: InputError) -> None:
-        nonlocal failed
-        failed += 1
-        console.line(str(error))
-
     for file in files:
         try:
-            for stages in read_stages(file, options, on_error=fail):
+            for stages in read_stages(file, options, on_error=console.fail):
                 source = stages.page.source
                 place = (file.parent if folder is None else folder) / output_stem(source)
                 target = place.with_name(place.name + ENDING)
@@ -43,12 +36,12 @@ def redact_files(
                     _look_again(page, options)
                     write_files({target: _png(page)}, replace=replace)
                 except InputError as error:
-                    fail(at(error, file.name, source.page))
+                    console.fail(at(error, file.name, source.page))
                 else:
                     console.result(f"{shown(target)}: look at it before you pass it on")
         except InputError as error:
-            fail(at(error, file.name))
-    return failed
+            console.fail(at(error, file.name))
+    return console.failed
 
 
 def _look_again(page: Page, options: Options) -> None:

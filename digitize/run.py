@@ -51,13 +51,8 @@ def read_files(
     int
         How many files and pages could not be used.
     """
-    failed = done = 0
+    done = 0
     written: set[Path] = set()
-
-    def fail(error: InputError) -> None:
-        nonlocal failed
-        failed += 1
-        console.line(str(error))
 
     for file in files:
         console.begin(shown(file.name))
@@ -66,7 +61,7 @@ def read_files(
             console.end()
             continue
         try:
-            for stages in read_stages(file, options, on_error=fail, on_stage=console.stage):
+            for stages in read_stages(file, options, on_error=console.fail, on_stage=console.stage):
                 console.stage("files")
                 try:
                     stem = _write(
@@ -77,18 +72,18 @@ def read_files(
                         explain=explain,
                     )
                 except InputError as error:
-                    fail(at(error, file.name, stages.page.source.page))
+                    console.fail(at(error, file.name, stages.page.source.page))
                     continue
                 done += 1
                 console.result(_summary(stages, stem))
                 if timings:
                     console.line(f"{shown(stem.name)}, {console.timings()}")
         except InputError as error:
-            fail(at(error, file.name))
+            console.fail(at(error, file.name))
         console.end()
     if done:
         console.result(CAUTION)
-    return failed
+    return console.failed
 
 
 def _write(

@@ -4,19 +4,21 @@ Workers return records, the parent alone writes: a reading's row is committed af
 place.
 """
 
-import multiprocessing
 import sqlite3
 import sys
-from collections.abc import Iterator, Mapping
-from concurrent.futures import ProcessPoolExecutor, as_completed
-from concurrent.futures.process import BrokenProcessPool
+from collections.abc import Callable, Iterator
+from contextlib import AbstractContextManager
+from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 from digitize import CAUTION
+from digitize.archive.alone import Limits, run_alone
 from digitize.archive.catalogue import opened
+from digitize.archive.engines import Engine, WorkerLost, each_done
 from digitize.archive.store import CATALOGUE, locked, put
 from digitize.console import console
-from digitize.errors import InputError, UnreadableFile, shown
+from digitize.errors import InputError, UnreadableFile, at, shown
 from digitize.tracing_files import read_tracing
 from measure.catalogue import Key, Measured, keep, open_tables
 from measure.reading import Person, read
@@ -24,41 +26,77 @@ from measure.reading_files import to_json
 
 ENDING = ".reading.json"
 # What arithmetic on an unforeseen tracing can raise: LinAlgError is a ValueError.
-_FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError)
+FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError)
+_PRELOAD = ("measure.warm", "measure.cli")
 
 
-def measure_archive(store: Path, *, processes: int, again: bool = False) -> int:
+@dataclass(frozen=True)
+class Task:
+    """One page to measure; everything in it can be sent to another machine."""
+
+    key: Key
+    stem: str  # of its files below the store
+    path: Path  # of its tracing
+    person: Person
+    limits: Limits
+
+
+def measure_archive(
+    store: Path, limits: Limits, engine: AbstractContextManager[Engine], *, again: bool = False
+) -> int:
     """Measure every page of a store that has a tracing, and return how many could not be.
 
     Parameters
     ----------
     store : Path
         As `digitize archive` fills it. Started again, this continues.
-    processes : int
-        Pages measured at the same time.
+    limits : Limits
+        What one page may take.
+    engine : context manager of Engine
+        Who does the work.
     again : bool
         Measure anew what was measured before.
     """
-    failed = 0
     try:
         with locked(store), opened(_existing(store)) as catalogue:
             open_tables(catalogue.db)
-            todo = dict(_todo(catalogue.db, again=again))
-            with console(len(todo)) as shown_on:
+            todo = _todo(store, catalogue.db, limits, again=again)
+            with console(len(todo)) as shown_on, engine as at_work:
                 shown_on.line(f"{len(todo)} pages to measure")
-                for key, found in _measure_all(store, todo, processes):
+                for task, done in each_done(at_work, measure_alone, todo):
+                    found = Measured(str(done)) if isinstance(done, WorkerLost) else done
                     if found.content:
-                        put(store, todo[key][0], {ENDING: found.content})
-                    keep(catalogue.db, key, found)
+                        put(store, task.stem, {ENDING: found.content})
+                    keep(catalogue.db, task.key, found)
                     if found.reason:
-                        failed += 1
-                        shown_on.line(f"{key[0][:12]}, page {key[2]}: {found.reason}")
+                        sha256, _, page = task.key
+                        shown_on.fail(at(InputError(found.reason), sha256[:12], page))
                     shown_on.end()
     except InputError as error:
         print(error, file=sys.stderr)
         return 1
+    failed = shown_on.failed
     print(f"{len(todo) - failed} pages measured, {failed} could not be.\n{CAUTION}")
     return failed
+
+
+def measure_alone(task: Task, stopped: Callable[[], bool] = lambda: False) -> Measured:
+    """Measure one page in a process of its own and wait for what becomes of it.
+
+    Parameters
+    ----------
+    task : Task
+        The page and its limits.
+    stopped : callable
+        Asked now and then; once it is true, the process is ended and what is returned means
+        nothing.
+    """
+    ended = run_alone(partial(_steps, task), task.limits, _PRELOAD, stopped)
+    return ended.steps[0] if ended.steps else Measured(ended.lost)
+
+
+def _steps(task: Task) -> Iterator[Measured]:
+    yield measure_page(task.path, task.person)
 
 
 def measure_page(path: Path, person: Person) -> Measured:
@@ -67,7 +105,7 @@ def measure_page(path: Path, person: Person) -> Measured:
         reading = read(read_tracing(path), person)
     except InputError as error:
         return Measured(str(error).removeprefix(f"{error.place}: "))
-    except _FAULTS as fault:
+    except FAULTS as fault:
         return Measured(f"the program failed on this page ({type(fault).__name__})")
     known = {name: q for name, q in reading.intervals.items() if q.known}
     return Measured(
@@ -84,37 +122,16 @@ def _existing(store: Path) -> Path:
     return store / CATALOGUE
 
 
-def _todo(db: sqlite3.Connection, *, again: bool) -> Iterator[tuple[Key, tuple[str, Person]]]:
+def _todo(store: Path, db: sqlite3.Connection, limits: Limits, *, again: bool) -> list[Task]:
     """Pages with a tracing, where it is, whose it is; those without a reading unless `again`."""
     sql = """
         SELECT p.sha256, p.options, p.page, p.stem, c.sex, c.age_years FROM page p
         LEFT JOIN reading r USING (sha256, options, page)
         LEFT JOIN chart c ON c.sha256 = p.sha256 AND c.page IN (0, p.page)
-        WHERE p.stem IS NOT NULL AND (? OR r.version IS NULL) ORDER BY 1, 2, 3
+        WHERE p.stem IS NOT NULL AND (? OR r.version IS NULL) ORDER BY 1, 2, 3, c.page
     """
+    tasks = {}  # what is said of a page alone comes after what is said of its whole file
     for sha256, options, page, stem, sex, age_years in db.execute(sql, (again,)):
-        yield (sha256, options, page), (stem, Person(sex, age_years))
-
-
-def _measure_all(
-    store: Path, todo: Mapping[Key, tuple[str, Person]], processes: int
-) -> Iterator[tuple[Key, Measured]]:
-    """Each page with what was found, as it comes."""
-    context = multiprocessing.get_context("forkserver")
-    context.set_forkserver_preload(["measure.archive"])
-    with ProcessPoolExecutor(processes, mp_context=context) as pool:
-        work = {
-            pool.submit(measure_page, _tracing(store, stem), person): key
-            for key, (stem, person) in todo.items()
-        }
-        try:
-            for future in as_completed(work):
-                yield work[future], future.result()
-        except BrokenProcessPool:
-            raise UnreadableFile(
-                "a process was ended from outside: start it again, it continues"
-            ) from None
-
-
-def _tracing(store: Path, stem: str) -> Path:
-    return store / f"{stem}.json"
+        key, path = (sha256, options, page), (store / f"{stem}.json").resolve()
+        tasks[key] = Task(key, stem, path, Person(sex, age_years), limits)
+    return list(tasks.values())

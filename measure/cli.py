@@ -216,6 +216,16 @@ def archive(
     processes: Annotated[
         int, typer.Option(min=1, help="Pages measured at the same time; else one per core.")
     ] = os.cpu_count() or 1,
+    cluster: Annotated[
+        str | None,
+        typer.Option(help="Address of a dask scheduler whose workers measure, tcp://HOST:PORT."),
+    ] = None,
+    page_seconds: Annotated[
+        float, typer.Option(min=1, help="Give a page up after so long.")
+    ] = 60.0,
+    page_memory_mb: Annotated[
+        int, typer.Option(min=1024, help="Address space for one process.")
+    ] = 4096,
     again: Annotated[bool, typer.Option("--again", help="Measure anew what was measured.")] = False,
 ) -> None:
     """Measure every page of a store: NAME.reading.json, and rows to ask with `measure find`.
@@ -223,9 +233,13 @@ def archive(
     Started again, it continues. Where no manifest says sex and age, thresholds that depend on them
     may stay undecided.
     """
+    from digitize.archive.alone import Limits
+    from digitize.archive.engines import engine_for
     from measure.archive import measure_archive
 
-    raise typer.Exit(1 if measure_archive(store, processes=processes, again=again) else 0)
+    limits = Limits(page_seconds, page_memory_mb)
+    failed = measure_archive(store, limits, engine_for(cluster, processes), again=again)
+    raise typer.Exit(1 if failed else 0)
 
 
 @app.command()

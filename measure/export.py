@@ -49,29 +49,22 @@ def export_files(
     replace : bool
         Whether earlier files may be replaced.
     """
-    failed = 0
-
-    def fail(error: InputError) -> None:
-        nonlocal failed
-        failed += 1
-        console.line(str(error))
-
     for file in files:
         try:
-            for given in open_ecgs(file, Options(), on_error=fail):
+            for given in open_ecgs(file, Options(), on_error=console.fail):
                 place = file.parent if folder is None else folder
                 try:
                     contents = exported(given, read(given.tracing, person), form)
                     paths = {place / name: content for name, content in contents.items()}
                     write_files(paths, replace=replace)
                 except InputError as error:
-                    fail(at(error, file.name, given.tracing.source.page))
+                    console.fail(at(error, file.name, given.tracing.source.page))
                 else:
                     console.result(" ".join(shown(path) for path in paths))
         except InputError as error:
-            fail(at(error, file.name))
+            console.fail(at(error, file.name))
     console.result(CAUTION)
-    return failed
+    return console.failed
 
 
 def exported(given: Given, reading: Reading, form: str) -> dict[str, bytes]:

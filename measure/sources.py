@@ -16,7 +16,7 @@ from typing import Any
 
 import numpy as np
 
-from digitize.errors import NoTrace, UnreadableFile
+from digitize.errors import NoTrace, UnreadableFile, needs_extra
 from digitize.tracing import FS_HZ, LEADS, Check, Known, PageSource, Panel, Tracing
 from measure.resampling import resampled
 
@@ -284,6 +284,4 @@ def _library(name: str, feature: str) -> ModuleType:
     try:
         return importlib.import_module(name)
     except ImportError:
-        raise UnreadableFile(
-            f"Reading {feature} needs the package {name}: pip install {name}."
-        ) from None
+        raise needs_extra(f"reading {feature}", "digital") from None

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Sequence
 from typing import IO, Any
 
 from digitize import CAUTION
-from digitize.errors import UnreadableFile
+from digitize.errors import needs_extra
 from measure.find import NUMBERS, WHOLE_NUMBERS
 
 _ROWS_AT_ONCE = 50_000
@@ -37,9 +37,7 @@ def write_parquet(file: IO[bytes], names: Sequence[str], rows: Iterable[Sequence
         import pyarrow as pa
         import pyarrow.parquet
     except ImportError:
-        raise UnreadableFile(
-            "writing Parquet needs one more package: install millivellum[parquet], or give --to csv"
-        ) from None
+        raise needs_extra("writing Parquet", "parquet", "give --to csv") from None
     kinds = [
         pa.int64() if n in WHOLE_NUMBERS else pa.float64() if n in NUMBERS else pa.string()
         for n in names

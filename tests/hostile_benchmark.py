@@ -18,9 +18,9 @@ import time
 from collections import Counter
 from pathlib import Path
 
+from digitize.archive.alone import Limits
 from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
-from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize.archive import hostile
 from tests.digitize.archive import stand_in as made

@@ -6,20 +6,23 @@ the same time. The parent alone writes: a page's files first, then its row.
 
 import sys
 from collections import deque
+from collections.abc import Callable
 from concurrent.futures import FIRST_COMPLETED, Future, wait
 from contextlib import AbstractContextManager
 from dataclasses import dataclass, field, replace
+from functools import partial
 from pathlib import Path
 
 from digitize import CAUTION
+from digitize.archive.alone import Limits
 from digitize.archive.catalogue import FAILED, Catalogue, PageRow, opened
 from digitize.archive.charts import Charts
 from digitize.archive.contact import STATUS_WORDS, contact_sheets, sheet_name
-from digitize.archive.engines import Engine
+from digitize.archive.engines import Engine, WorkerLost
 from digitize.archive.plan import Plan, make_plan, options_key
 from digitize.archive.sources import Source, remove, unpack
 from digitize.archive.store import CATALOGUE, locked, put, stem_of, temporary
-from digitize.archive.worker import Limits, Outcome, PageDone, Reader, Task
+from digitize.archive.worker import PRELOAD, Outcome, PageDone, Reader, Task, perform
 from digitize.console import Console, console
 from digitize.errors import CannotWrite, InputError, at, shown
 from digitize.options import Options
@@ -48,6 +51,7 @@ def run_archive(
     engine: AbstractContextManager[Engine],
     *,
     read: Reader,
+    preload: tuple[str, ...] = PRELOAD,
     kept: Kept = NOTHING_KEPT,
     again_failed: bool = False,
 ) -> int:
@@ -65,6 +69,8 @@ def run_archive(
         Who does the work.
     read : callable
         Reads one page; must be a function of a module.
+    preload : tuple of str
+        Modules that are loaded before pages are forked.
     kept : Kept
         What a person says of the sources, and whether the printing of the header is kept.
     again_failed : bool
@@ -77,9 +83,9 @@ def run_archive(
             with console(len(plan.todo)) as shown_on:
                 for text in (plan, *plan.doubts, *plan.unreadable):
                     shown_on.line(str(text))
+                task_of = partial(Task, options=options, limits=limits, read=read, preload=preload)
                 with engine as at_work:
-                    run = _Run(store, catalogue, plan, options, limits, shown_on, read, at_work)
-                    run.work()
+                    _Run(store, catalogue, plan, shown_on, at_work, task_of).work()
             counts = catalogue.counts()
             for name, sheet in contact_sheets(catalogue.rows(), counts):
                 write_files({store / name: sheet}, replace=True)
@@ -88,7 +94,7 @@ def run_archive(
         return 1
     told = ", ".join(f"{counts[status]} {word}" for status, word in STATUS_WORDS.items())
     print(f"Pages in the store: {told}. Look at {shown(store / sheet_name(1))}.\n{CAUTION}")
-    return run.failed + len(plan.unreadable)
+    return shown_on.failed + len(plan.unreadable)
 
 
 @dataclass(eq=False)
@@ -108,12 +114,9 @@ class _Run:
     store: Path
     catalogue: Catalogue
     plan: Plan
-    options: Options
-    limits: Limits
     console: Console
-    read: Reader
     engine: Engine
-    failed: int = 0
+    task_of: Callable[[Path, str, int], Task]
     _ready: deque[tuple[_File, int]] = field(default_factory=deque)
     _under_way: dict[Future[Outcome], tuple[_File, Task]] = field(default_factory=dict)
 
@@ -143,13 +146,16 @@ class _Run:
 
     def _begin(self, file: _File, page: int) -> None:
         name = file.source.sha256 + Path(file.source.name).suffix.lower()
-        task = Task(file.path, name, page, self.options, self.limits, self.read)
-        self._under_way[self.engine.submit(task)] = file, task
+        task = self.task_of(file.path, name, page)
+        self._under_way[self.engine.submit(perform, task)] = file, task
 
     def _take(self, future: Future[Outcome]) -> None:
         """What became of a page; the first of a file tells how many others there are."""
         file, task = self._under_way.pop(future)
-        outcome = self.engine.outcome(task, future)
+        try:
+            outcome = self.engine.outcome(future)
+        except WorkerLost as lost:
+            outcome = Outcome(None, PageDone(PageRow(task.page, FAILED, str(lost)), {}))
         done = outcome.done
         if file.left is None:
             file.left = set(range(1, (outcome.pages or 0) + 1)) - file.done - {task.page}
@@ -172,9 +178,7 @@ class _Run:
         self.catalogue.add_page(sha256, self.plan.options, row)
         file.done.add(row.page)
         if row.status == FAILED:
-            self.failed += 1
-            error = at(InputError(row.reason), file.source.name, row.page or None)
-            self.console.line(str(error))
+            self.console.fail(at(InputError(row.reason), file.source.name, row.page or None))
 
     def _finish(self, file: _File) -> None:
         if not file.done:

@@ -1,40 +1,26 @@
-"""A process of its own for each page, within limits of time and memory.
+"""One page of a file, opened and read in a process of its own.
 
-The process writes nothing: how many pages its file has and what became of its own page come back
-over a pipe, as plain records. What ends the process (a crash of a decoder, a page that takes too
-long or too much memory) costs that page. It ends itself when whoever waits for it is gone.
+How many pages the file has and what became of the page come back as plain records.
 """
 
 import dataclasses
-import gc
-import multiprocessing
-import os
 import resource
-import sys
-import threading
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
-from multiprocessing.connection import Connection
-from multiprocessing.process import BaseProcess
+from functools import partial
 from pathlib import Path
+from typing import Any
 
+from digitize.archive.alone import MIB, Limits, run_alone
 from digitize.archive.catalogue import FAILED, PageRow
 from digitize.errors import InputError
 from digitize.options import Options
 from digitize.pages import Page, count_pages, open_pages
 
 Reader = Callable[[Page, Options], tuple[PageRow, Mapping[str, bytes]]]
-MIB = 2**20
-_LOOK_EVERY_S = 0.5
-
-
-@dataclass(frozen=True)
-class Limits:
-    """What one page may take."""
-
-    seconds: float = 120.0
-    memory_mb: int = 6144  # of address space, of which libraries take a share
+# Loaded before pages are forked: this, and the command, which each of them would import again.
+PRELOAD = ("digitize.archive.worker", "digitize.cli")
 
 
 @dataclass(frozen=True)
@@ -47,6 +33,7 @@ class Task:
     options: Options
     limits: Limits
     read: Reader
+    preload: tuple[str, ...] = PRELOAD
 
 
 @dataclass(frozen=True)
@@ -78,77 +65,26 @@ def perform(task: Task, stopped: Callable[[], bool] = lambda: False) -> Outcome:
     stopped : callable
         Asked now and then; once it is true, the process is ended and the outcome means nothing.
     """
-    process, pipe = _start(task)
-    try:
-        return _listen(task, pipe, stopped)
-    finally:
-        process.kill()
-        process.join()
-        pipe.close()
+    ended = run_alone(partial(_steps, task), task.limits, task.preload, stopped)
+    match ended.steps:
+        case (pages, done):
+            return Outcome(pages, done)
+        case (pages,):
+            return Outcome(pages, PageDone(PageRow(task.page, FAILED, ended.lost), {}))
+    reason = f"{ended.lost}, while it was opened"
+    return Outcome(None, PageDone(PageRow(0, FAILED, reason), {}))
 
 
-def _listen(task: Task, pipe: Connection, stopped: Callable[[], bool]) -> Outcome:
-    """What the process says, until it has ended or must end."""
-    pages: int | None = None
-    since = time.monotonic()
-    while True:
-        if not pipe.poll(_LOOK_EVERY_S):
-            if time.monotonic() - since > task.limits.seconds:
-                return _lost(task, pages, f"it took more than {task.limits.seconds:g} s")
-            if stopped():
-                return Outcome(pages, None)
-            continue
-        try:
-            message: Message = pipe.recv()
-        except (EOFError, OSError):
-            return _lost(task, pages, "the program failed on it, or it took too much memory")
-        since = time.monotonic()
-        if isinstance(message, Outcome):
-            return message
-        pages = message
-
-
-def _lost(task: Task, pages: int | None, reason: str) -> Outcome:
-    """The process ended before its time: while it opened the file, or at its page."""
-    page = task.page
-    if pages is None:
-        page, reason = 0, f"{reason}, while it was opened"
-    return Outcome(pages, PageDone(PageRow(page, FAILED, reason), {}))
-
-
-# None: libraries are loaded; the number of pages: the file is open; the end
-Message = int | Outcome | None
-
-
-def _start(task: Task) -> tuple[BaseProcess, Connection]:
-    """A process at work on a task, and the pipe on which its messages come."""
-    context = multiprocessing.get_context("forkserver")
-    # Loaded once, in the process from which all others are forked: the image libraries, and the
-    # command, which each of them would import again.
-    context.set_forkserver_preload(["digitize.archive.reading", "digitize.cli"])
-    ours, theirs = context.Pipe()
-    process = context.Process(target=_work, args=(task, theirs), daemon=True)
-    process.start()
-    theirs.close()
-    return process, ours
-
-
-def _work(task: Task, pipe: Connection) -> None:
-    """The life of the process."""
-    gc.freeze()  # what was loaded before the fork stays: looking it through would copy it
-    _be_silent()
-    threading.Thread(target=_end_with_parent, args=(pipe,), daemon=True).start()
-    pipe.send(None)
-    limit = task.limits.memory_mb * MIB
-    resource.setrlimit(resource.RLIMIT_AS, (limit, limit))
-    resource.setrlimit(resource.RLIMIT_CORE, (0, 0))  # a core file would hold the page
+def _steps(task: Task) -> Iterator[Any]:
+    """The number of pages, None where the file cannot be opened, and what became of the page."""
     try:
         pages = count_pages(task.path)
     except InputError as error:
-        pipe.send(Outcome(None, _failed(0, error)))
+        yield None
+        yield _failed(0, error)
         return
-    pipe.send(pages)
-    pipe.send(Outcome(pages, _page_done(task)))
+    yield pages
+    yield _page_done(task)
 
 
 def _page_done(task: Task) -> PageDone | None:
@@ -184,20 +120,3 @@ def _failed(page: int, error: InputError) -> PageDone:
     """The error's words without the name of the file, which may name a patient."""
     reason = str(error).removeprefix(f"{error.place}: ")
     return PageDone(PageRow(page, FAILED, reason), {})
-
-
-def _be_silent() -> None:
-    """Send away what native libraries print: it may quote the page."""
-    nowhere = os.open(os.devnull, os.O_RDWR)
-    for stream in (sys.stdout, sys.stderr):
-        stream.flush()
-    for number in (1, 2):
-        os.dup2(nowhere, number)
-
-
-def _end_with_parent(pipe: Connection) -> None:
-    """Wait for the other end of the pipe to close, which it does when its process ends."""
-    try:
-        pipe.recv()
-    except (EOFError, OSError):
-        os._exit(1)

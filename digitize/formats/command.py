@@ -31,7 +31,6 @@ def export_files(
     replace : bool
         Whether earlier files may be replaced.
     """
-    failed = 0
     for name in names:
         json_file = name.with_name(_stem(name) + ".json")
         place = name.parent if folder is None else folder
@@ -44,13 +43,12 @@ def export_files(
             paths = {place / file: content for file, content in contents.items()}
             write_files(paths, replace=replace)
         except InputError as error:
-            failed += 1
-            console.line(str(at(error, name.name)))
+            console.fail(at(error, name.name))
         else:
             console.result(" ".join(shown(path) for path in paths))
-    if failed < len(names):
+    if console.failed < len(names):
         console.result(CAUTION)
-    return failed
+    return console.failed
 
 
 def _scan(tracing: Tracing, folder: Path, stem: str) -> dict[str, bytes]:

@@ -15,7 +15,7 @@ import uuid
 from typing import TYPE_CHECKING
 
 from digitize import program_version
-from digitize.errors import UnreadableFile
+from digitize.errors import needs_extra
 from digitize.tracing import PageSource
 
 if TYPE_CHECKING:
@@ -47,9 +47,7 @@ def new_object(source: PageSource, sop_class: str, modality: str, content: str) 
         from pydicom.dataset import Dataset
         from pydicom.uid import UID
     except ImportError:
-        raise UnreadableFile(
-            "writing DICOM needs one more package: install millivellum[dicom]"
-        ) from None
+        raise needs_extra("writing DICOM", "dicom") from None
     page = f"{source.sha256}/{source.page}"
     dataset = Dataset()
     dataset.SpecificCharacterSet = "ISO_IR 192"

@@ -11,7 +11,7 @@ standard texts of EDF+ for the labels of ECG leads.
 
 import numpy as np
 
-from digitize.errors import CannotExport, UnreadableFile
+from digitize.errors import CannotExport, needs_extra
 from digitize.formats.leads import LARGEST_STEPS, NO_SAMPLE, lead_table
 from digitize.tracing import Tracing
 
@@ -38,9 +38,7 @@ def files(tracing: Tracing, stem: str) -> dict[str, bytes]:
     try:
         import edfio
     except ImportError:
-        raise UnreadableFile(
-            "writing EDF needs one more package: install millivellum[digital]"
-        ) from None
+        raise needs_extra("writing EDF", "digital") from None
     signals = [
         edfio.EdfSignal.from_digital(
             np.ascontiguousarray(steps),

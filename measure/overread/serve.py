@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from importlib.util import find_spec
 from pathlib import Path
 
-from digitize.errors import InputError, UnreadableFile, shown
+from digitize.errors import InputError, UnreadableFile, needs_extra, shown
 from digitize.options import Options
 from measure.overread.items import Item, file_items
 from measure.overread.stored import stored_items
@@ -49,15 +49,12 @@ def serve(
     Raises
     ------
     CannotServe
-        A package is missing, or the port is taken.
+        The port is taken.
     UnreadableFile
-        A folder or store holds no ECG.
+        A package is missing, or a folder or store holds no ECG.
     """
-    absent = [name for name in _NEEDED if find_spec(name) is None]
-    if absent:
-        raise CannotServe(
-            f"the page needs {' and '.join(absent)}: pip install millivellum[overread]"
-        )
+    if any(find_spec(name) is None for name in _NEEDED):
+        raise needs_extra("the over-read page", "overread")
     items = find_items(files, folder)
     import uvicorn
 

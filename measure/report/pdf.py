@@ -11,7 +11,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from digitize import program_version
-from digitize.errors import UnreadableFile
+from digitize.errors import needs_extra
 from measure.questions import Answers, Measured, answer, evidence_by_clause, refusal, shown_in_full
 from measure.reading import Reading
 from measure.report.beats import beats_caption, draw_beats
@@ -53,9 +53,7 @@ def report_pdf(reading: Reading, *, overlay_png: bytes | None = None) -> bytes:
     try:
         from fpdf import FPDF
     except ImportError:
-        raise UnreadableFile(
-            "writing PDF needs one more package: install millivellum[pdf]"
-        ) from None
+        raise needs_extra("writing PDF", "pdf") from None
     pdf = FPDF(format="A4")
     pdf.set_creation_date(datetime.datetime(2000, 1, 1, tzinfo=datetime.UTC))  # same bytes always
     pdf.set_title("ECG reading, no diagnosis")

@@ -6,10 +6,14 @@ from contextlib import closing
 from dataclasses import replace
 from pathlib import Path
 
+import dask
 import numpy as np
 import pytest
+from distributed import LocalCluster
 
+from digitize.archive.alone import Limits
 from digitize.archive.catalogue import Chart, PageRow, opened
+from digitize.archive.engines import cluster, this_machine
 from digitize.archive.reading import row_of
 from digitize.archive.store import CATALOGUE, put, stem_of
 from digitize.errors import UnreadableFile
@@ -23,6 +27,7 @@ from tests.digitize.made_tracing import panel, tracing
 from tests.drawn.heart import HeartSpec, record_model
 
 OPTIONS = "0" * 16
+LIMITS = Limits(60.0, 4096)
 
 
 def whole():
@@ -49,6 +54,10 @@ def store(tmp_path):
     return tmp_path
 
 
+def measured(store, again=False, limits=LIMITS):
+    return measure_archive(store, limits, this_machine(1), again=again)
+
+
 def table(store, sql):
     with closing(sqlite3.connect(store / CATALOGUE)) as db:
         return db.execute(sql).fetchall()
@@ -64,7 +73,7 @@ def row_of_reading(store, sha256):
 
 
 def test_rows_are_those_of_the_reading(store, capsys):
-    assert measure_archive(store, processes=1) == 1
+    assert measured(store) == 1
     assert "1 pages measured, 1 could not be" in capsys.readouterr().out
     stem = stem_of("1" * 64, OPTIONS, 1)
     wanted = read(read_tracing(store / f"{stem}.json"))
@@ -80,25 +89,56 @@ def test_rows_are_those_of_the_reading(store, capsys):
 
 
 def test_page_without_a_beat_says_so_and_started_again_there_is_nothing_to_do(store, capsys):
-    measure_archive(store, processes=1)
+    measured(store)
     assert len(table(store, "SELECT reason FROM reading WHERE reason != ''")) == 1
     capsys.readouterr()
-    assert measure_archive(store, processes=1) == 0
+    assert measured(store) == 0
     assert "0 pages to measure" in capsys.readouterr().err
-    measure_archive(store, processes=1, again=True)
+    measured(store, again=True)
     assert "2 pages to measure" in capsys.readouterr().err
+
+
+def test_page_beyond_its_limit_costs_itself_and_can_be_taken_up_again(store):
+    assert measured(store, limits=Limits(60.0, 1)) == 2
+    reasons = table(store, "SELECT reason FROM reading")
+    assert all("memory" in reason or "Memory" in reason for (reason,) in reasons), reasons
+    assert not list(store.rglob("*.reading.json"))
+    assert measured(store, again=True) == 1
+    assert len(list(store.rglob("*.reading.json"))) == 1
+
+
+def test_what_is_said_of_one_page_comes_before_what_is_said_of_its_file(store):
+    with opened(store / CATALOGUE) as catalogue:
+        charts = {0: Chart(sex="male", age_years=50.0), 1: Chart(sex="female", age_years=71.0)}
+        catalogue.set_charts("1" * 64, charts)
+    measured(store)
+    document = json.loads((store / f"{stem_of('1' * 64, OPTIONS, 1)}.reading.json").read_bytes())
+    assert document["person"] == {"sex": "female", "age_years": 71.0}
+
+
+def test_workers_of_a_cluster_measure_the_same(store):
+    measured(store)
+    here = table(store, "SELECT * FROM reading")
+    with (
+        dask.config.set({"distributed.worker.daemon": False}),
+        LocalCluster(
+            n_workers=2, threads_per_worker=1, dashboard_address=":0", memory_limit=0
+        ) as workers,
+    ):
+        assert measure_archive(store, LIMITS, cluster(workers.scheduler_address), again=True) == 1
+    assert table(store, "SELECT * FROM reading") == here
 
 
 def test_sex_and_age_of_the_manifest_count(store):
     with opened(store / CATALOGUE) as catalogue:
         catalogue.set_charts("1" * 64, {0: Chart("K1", None, "female", 71.0)})
-    measure_archive(store, processes=1)
+    measured(store)
     document = json.loads((store / f"{stem_of('1' * 64, OPTIONS, 1)}.reading.json").read_bytes())
     assert document["person"] == {"sex": "female", "age_years": 71.0}
 
 
 def test_every_table_of_the_catalogue_is_described(store):
-    measure_archive(store, processes=1)
+    measured(store)
     described = (Path(__file__).parents[2] / "DEVELOPERS.md").read_text("utf-8")
     section = described.split("**A store**")[1].split("\n## ")[0]
     for (name,) in table(store, "SELECT name FROM sqlite_master WHERE type = 'table'"):
@@ -111,7 +151,7 @@ def test_damaged_tracing_is_a_reason(tmp_path):
 
 
 def test_no_store(tmp_path, capsys):
-    assert measure_archive(tmp_path / "none", processes=1) == 1
+    assert measured(tmp_path / "none") == 1
     assert "is no store" in capsys.readouterr().err
 
 
@@ -140,7 +180,7 @@ def test_readings_of_an_earlier_version_are_brought_up(tmp_path):
     old = pytest.raises(UnreadableFile, match="run measure archive once")
     with old, find(tmp_path, Question()):
         pass
-    assert measure_archive(tmp_path, processes=1) == 0
+    assert measured(tmp_path) == 0
     row = row_of_reading(tmp_path, "a")
     assert (row["qrs_ms"], row["qrs_ms_se"], row["lbbb_strict"]) == (164, 3, "met")
     assert (row["pr_ms"], row["version"]) == (None, "0.1")
@@ -152,6 +192,6 @@ def test_readings_of_a_later_version_are_left_alone(tmp_path, capsys):
     with opened(tmp_path / CATALOGUE) as catalogue:
         catalogue.db.executescript(VERSION_1)
         catalogue.db.execute("UPDATE measure_version SET version = 9")
-    assert measure_archive(tmp_path, processes=1) == 1
+    assert measured(tmp_path) == 1
     assert "later version" in capsys.readouterr().err
     assert len(table(tmp_path, "SELECT * FROM measured")) == 2

@@ -7,13 +7,13 @@ from contextlib import closing
 import pytest
 from typer.testing import CliRunner
 
+from digitize.archive.alone import Limits
 from digitize.archive.catalogue import Chart, opened
 from digitize.archive.charts import Charts, name_pattern, read_manifest
 from digitize.archive.engines import this_machine
 from digitize.archive.plan import options_key
 from digitize.archive.run import Kept, run_archive
 from digitize.archive.sources import Source
-from digitize.archive.worker import Limits
 from digitize.cli import app
 from digitize.errors import UnreadableFile
 from digitize.options import Options

@@ -11,9 +11,10 @@ import dask
 import pytest
 from distributed import Client, LocalCluster
 
+from digitize.archive.alone import Limits
 from digitize.archive.engines import cluster, this_machine
 from digitize.archive.run import run_archive
-from digitize.archive.worker import Limits, Task, perform
+from digitize.archive.worker import Task, perform
 from digitize.errors import UnreadableFile
 from digitize.options import Options
 from tests.digitize.archive import stand_in as made
@@ -56,7 +57,7 @@ def test_leaving_a_run_ends_its_pages_at_once(tmp_path):
     path = made.save(tmp_path / "x.tiff", made.HANG)
     began = time.monotonic()
     with this_machine(1) as engine:
-        engine.submit(task(path, 1, seconds=600.0))
+        engine.submit(perform, task(path, 1, seconds=600.0))
     assert time.monotonic() - began < 60
 
 

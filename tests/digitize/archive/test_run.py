@@ -13,10 +13,10 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from digitize.archive.alone import Limits
 from digitize.archive.contact import sheet_name
 from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
-from digitize.archive.worker import Limits
 from digitize.options import Options
 from tests.digitize.archive import stand_in as made
 
@@ -246,7 +246,7 @@ import sys
 from pathlib import Path
 from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
-from digitize.archive.worker import Limits
+from digitize.archive.alone import Limits
 from digitize.options import Options
 from tests.digitize.archive.stand_in import read
 if __name__ == "__main__":
