@@ -84,9 +84,10 @@ def _all(
     for across, down in (*faxes, *turned, *scanners) if bilevel else scanners:
         sheet = _sheet(width_px / across, height_px / down)
         if sheet is not None:
-            yield Resolution(
-                across, down, (f"the page is {sheet} at {_dpi(across, down)}",), sheet=True
-            )
+            # paper is cut better than it is fed: T.4 allows lines 1 % nearer or wider (from memory)
+            name, wide_mm, high_mm = sheet
+            reason = f"the page is {name} at {_dpi(across, down)}"
+            yield Resolution(width_px / wide_mm, height_px / high_mm, (reason,), sheet=True)
     if bilevel and abs(width_px - FAX_LINE_PX) <= 2:
         for across, down in faxes:
             yield Resolution(across, down, ("a fax line of 1728 pels",), fax_line=True)
@@ -100,12 +101,13 @@ def _all(
         )
 
 
-def _sheet(width_mm: float, height_mm: float) -> str | None:
-    """Name of the sheet of that size, either way up."""
-    sides = max(width_mm, height_mm), min(width_mm, height_mm)
-    for name, sheet in SHEETS_MM.items():
-        if all(abs(a / b - 1) < SHEET_TOLERANCE for a, b in zip(sides, sheet, strict=True)):
-            return name
+def _sheet(width_mm: float, height_mm: float) -> tuple[str, float, float] | None:
+    """Name, width and height of the sheet that has about that size, either way up."""
+    for name, (long_mm, short_mm) in SHEETS_MM.items():
+        sheet = (long_mm, short_mm) if width_mm > height_mm else (short_mm, long_mm)
+        off = abs(width_mm / sheet[0] - 1), abs(height_mm / sheet[1] - 1)
+        if max(off) < SHEET_TOLERANCE:
+            return name, *sheet
     return None
 
 
