@@ -26,6 +26,7 @@ from measure.overread.export import KINDS, Taken, export, export_comparison
 from measure.overread.guard import Guard
 from measure.overread.session import Session
 from measure.overread.view import overview
+from measure.overread.wording import on_page
 from measure.overread.worklist import Entry, Worklist
 
 _TYPES = {
@@ -229,7 +230,7 @@ def _changed(entry: Entry, do: Do, wish: Mapping[str, Any]) -> Response:
         try:
             do(entry.session, wish)
         except (Refused, InputError) as error:
-            return _no(str(error), 422)
+            return _no(on_page(str(error)), 422)
         return JSONResponse({**overview(entry.session), "pen": True})
 
 

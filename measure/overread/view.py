@@ -14,6 +14,7 @@ from measure.criteria.finding import Clause, Finding
 from measure.overread.calipers import measure_between
 from measure.overread.corrections import Measured, counted, in_force
 from measure.overread.session import Session
+from measure.overread.wording import FIELDS, on_page
 from measure.plain import plain
 from measure.questions import FAMILIES, answer
 from measure.reading import Reading
@@ -151,7 +152,8 @@ def _doubts(tracing: Tracing) -> list[dict[str, Any]]:
     open_ = [check for check in tracing.checks if check.passed is not True]
     return [
         {
-            "message": check.message,
+            "message": on_page(check.message),
+            "field": FIELDS.get(check.name),
             "failed": check.passed is False,
             "panels": [k for k, p in enumerate(tracing.panels) if p.lead in check.leads],
         }

@@ -124,9 +124,10 @@ function doubt(number) {
   const { doubts } = state.ecg;
   if (!doubts.length) return say("No self-check failed.");
   state.doubt = number % doubts.length;
-  const { message, panels } = doubts[state.doubt];
+  const { message, panels, field } = doubts[state.doubt];
   if (panels.length && paper.view === "flat") paper.seek(panels[0]);
   redraw();
+  byId(field)?.scrollIntoView({ block: "nearest" });
   return say(`Doubt ${state.doubt + 1} of ${doubts.length}: ${message}`);
 }
 
