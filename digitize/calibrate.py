@@ -42,7 +42,7 @@ def _to_panel(place: PanelPlace, stroke: Stroke) -> Panel:
     count = max(round((box.right_mm - box.left_mm) / place.speed_mm_s * FS_HZ), 0)
     time_s = (first + np.arange(count)) / FS_HZ
     x_mm = box.left_mm + (time_s - place.start_s) * place.speed_mm_s
-    y_mm, sigma_mm = _read_off(stroke, x_mm)
+    y_mm, sigma_mm = read_off(stroke, x_mm)
     lead, notes = place.lead, stroke.notes
     if _strayed(y_mm, place):
         y_mm, sigma_mm = np.full_like(y_mm, np.nan), np.full_like(sigma_mm, np.nan)
@@ -73,7 +73,7 @@ def _strayed(y_mm: np.ndarray, place: PanelPlace) -> bool:
     return len(read) > 0 and not place.box.top_mm <= np.median(read) <= place.box.bottom_mm
 
 
-def _read_off(stroke: Stroke, x_mm: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+def read_off(stroke: Stroke, x_mm: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Height of a stroke at places along it, and its standard error; NaN off its ends."""
     nodes = stroke.x_mm
     if len(nodes) < 2 or len(x_mm) == 0:

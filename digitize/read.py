@@ -22,19 +22,30 @@ from digitize.layout import Layout, find_layout
 from digitize.marks import Mark, find_marks
 from digitize.options import Options
 from digitize.pages import Page, open_pages
+from digitize.recut import recut
 from digitize.retrace import retrace
-from digitize.rows import find_rows
+from digitize.rows import Rows, find_rows
 from digitize.rules import lettering
 from digitize.ruling import find_ruling
 from digitize.sheet import Box, Sheet, flatten
 from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
+from digitize.unseen import seen_marks, seen_printing
 from digitize.upright import find_turn, turn_page
 from digitize.words import Printing, read_printing
 
 # What arithmetic on an unforeseen page can raise: LinAlgError is a ValueError.
 FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
+
+
+@dataclass(frozen=True, eq=False)
+class Apart:
+    """What stands in the ink apart from traces, and where the rows of trace run."""
+
+    marks: tuple[Mark, ...]
+    printing: Printing
+    rows: Rows
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,7 +56,7 @@ class Stages:
     grid: Grid
     sheet: Sheet
     ink: Ink
-    printing: Printing
+    apart: Apart
     layout: Layout
     strokes: tuple[Stroke, ...]
     tracing: Tracing
@@ -83,57 +94,62 @@ def read_page(
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
         return read_turned(page, turn_deg, options, on_stage)
-    printed = _Printed(ink, marks, letters, printing)
-    return _laid_out(page, grid, sheet, printed, options, on_stage)
+    on_stage("layout")
+    rows = find_rows(ink, printing.letters)
+    layout = find_layout(letters, printing, rows, marks, options)
+    on_stage("trace")
+    layout, strokes = _traced(page, grid, ink, layout)
+    on_stage("checks")
+    stages = _completed(
+        page, grid, sheet, ink, Apart(marks, printing, rows), layout, strokes, options
+    )
+    on_stage("")
+    return stages
 
 
-@dataclass(frozen=True, eq=False)
-class _Printed:
-    """The ink with what stands on it apart from traces: marks, and printing in its `letters`."""
+def read_ink(stages: Stages, ink: Ink, options: Options) -> Stages:
+    """Return an upright page read once more, from this ink on; see `read_page`.
 
-    ink: Ink
-    marks: tuple[Mark, ...]
-    letters: Ink
-    printing: Printing
-
-
-def read_ink(stages: Stages, ink: Ink, printing: Printing, options: Options) -> Stages:
-    """Return an upright page read once more, from this ink and printing on; see `read_page`.
+    What stands where the ink is hidden is no longer seen. The lines of rows that were followed
+    before are kept, unless ink was hidden beside them.
 
     Raises
     ------
     NoTrace
         There is no ECG in this ink.
     """
-    marks = tuple(find_marks(ink))
-    printed = _Printed(ink, marks, lettering(ink, marks), printing)
-    return _laid_out(stages.page, stages.grid, stages.sheet, printed, options, lambda name: None)
+    page, grid, apart = stages.page, stages.grid, stages.apart
+    marks = seen_marks(apart.marks, ink)
+    printing = seen_printing(apart.printing, ink)
+    rows = apart.rows if ink is stages.ink else find_rows(ink, printing.letters)
+    layout = find_layout(lettering(ink, marks), printing, rows, marks, options)
+    strokes = None
+    if page.drawing is None:
+        strokes = recut(stages.layout, stages.strokes, stages.ink, layout, ink)
+    if strokes is None:
+        layout, strokes = _traced(page, grid, ink, layout)
+    found = Apart(marks, printing, rows)
+    return _completed(page, grid, stages.sheet, ink, found, layout, strokes, options)
 
 
-def _laid_out(
+def _completed(
     page: Page,
     grid: Grid,
     sheet: Sheet,
-    printed: _Printed,
+    ink: Ink,
+    apart: Apart,
+    layout: Layout,
+    strokes: tuple[Stroke, ...],
     options: Options,
-    on_stage: Callable[[str], None],
 ) -> Stages:
-    """The stages from the layout on."""
-    ink, printing = printed.ink, printed.printing
-    on_stage("layout")
-    rows = find_rows(ink, printing.letters)
-    layout = find_layout(printed.letters, printing, rows, printed.marks, options)
-    on_stage("trace")
-    layout, strokes = _traced(page, grid, ink, layout)
-    on_stage("checks")
+    """The stages with the tracing that they lead to."""
     panels = name_strips(to_panels(layout, strokes))
     panels, timing = settle_timing(panels, layout.timing)
     layout = dataclasses.replace(layout, timing=timing)
     tracing = to_tracing(page, grid, layout, strokes, panels, options)
     require_ecg(tracing)
     tracing = dataclasses.replace(tracing, checks=find_checks(tracing))
-    on_stage("")
-    return Stages(page, grid, sheet, ink, printing, layout, strokes, tracing)
+    return Stages(page, grid, sheet, ink, apart, layout, strokes, tracing)
 
 
 def read_part(stages: Stages, ink: Ink, changed: Box) -> Stages:

@@ -12,7 +12,7 @@ import numpy as np
 
 from digitize.ink import Ink, solid_ink
 from digitize.marks import Mark
-from digitize.sheet import Box
+from digitize.sheet import Box, Raster
 
 LONG_RULE_MM = 28.0  # a straight upright line this long is a frame or separator, no QRS
 FLAT_RULE_MM = 70.0  # a straight level line this long is a frame
@@ -42,20 +42,30 @@ def straight_rules(mask: np.ndarray, ink: Ink) -> tuple[np.ndarray, tuple[Box, .
     scale = ink.raster.px_per_mm
     tall = np.ones((round(LONG_RULE_MM * scale), 1), np.uint8)
     wide = np.ones((1, round(FLAT_RULE_MM * scale)), np.uint8)
-    upright = cv2.morphologyEx(mask, cv2.MORPH_OPEN, tall)
-    level = cv2.morphologyEx(mask, cv2.MORPH_OPEN, wide)
+    upright, level = _opened(mask, tall), _opened(mask, wide)
     grow = np.ones((3, 3), np.uint8)
-    _, _, stats, _ = cv2.connectedComponentsWithStats(cv2.dilate(upright, grow))
-    boxes = tuple(
+    boxes = _boxes(cv2.dilate(upright, grow), ink.raster) if upright.any() else ()
+    return cv2.dilate(np.maximum(upright, level), grow) > 0, boxes
+
+
+def _boxes(mask: np.ndarray, raster: Raster) -> tuple[Box, ...]:
+    """One rectangle for each piece of a mask."""
+    _, _, stats, _ = cv2.connectedComponentsWithStats(mask)
+    return tuple(
         Box(
-            ink.raster.x_mm(left),
-            ink.raster.y_mm(top),
-            ink.raster.x_mm(left + width),
-            ink.raster.y_mm(top + height),
+            raster.x_mm(left),
+            raster.y_mm(top),
+            raster.x_mm(left + width),
+            raster.y_mm(top + height),
         )
         for left, top, width, height, _ in stats[1:]
     )
-    return cv2.dilate(np.maximum(upright, level), grow) > 0, boxes
+
+
+def _opened(mask: np.ndarray, kernel: np.ndarray) -> np.ndarray:
+    """What of a mask the kernel fits into; on most pages nothing, which is known half-way."""
+    left = cv2.erode(mask, kernel)
+    return cv2.dilate(left, kernel) if left.any() else left
 
 
 def lettering(ink: Ink, marks: Sequence[Mark]) -> Ink:

@@ -1,10 +1,12 @@
 """Parts of a page that a person says are no ECG: as if the paper could not be seen there."""
 
+from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from digitize.ink import Ink
+from digitize.marks import Mark, mark_box
 from digitize.sheet import Box
 from digitize.words import Printing
 
@@ -35,6 +37,11 @@ def seen_printing(printing: Printing, ink: Ink) -> Printing:
         lines=tuple(line for line in printing.lines if _seen(line.box, ink)),
         letters=tuple(box for box in printing.letters if _seen(box, ink)),
     )
+
+
+def seen_marks(marks: Sequence[Mark], ink: Ink) -> tuple[Mark, ...]:
+    """Return the calibration marks without those that stand where the ink is hidden."""
+    return tuple(mark for mark in marks if _seen(mark_box(mark), ink))
 
 
 def _hidden(ink: Ink, where: tuple[slice, slice] | np.ndarray) -> Ink:

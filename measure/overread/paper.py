@@ -14,6 +14,7 @@ from digitize.checks import find_checks
 from digitize.layout import Layout, PanelPlace
 from digitize.options import Options
 from digitize.read import Stages, to_tracing
+from digitize.recut import joined
 from digitize.refit import refit
 from digitize.strips import name_strips, settle_timing
 from digitize.trace import Stroke
@@ -33,7 +34,6 @@ from measure.overread.corrections import (
     Swap,
 )
 
-_JOINED_MM = 0.15  # nodes of one line stand 0.05 mm apart: more than this between two is a gap
 _STRUCK = "a stretch was struck out by a person"
 
 
@@ -150,24 +150,8 @@ def _cut_again(before: Layout, after: Layout, strokes: tuple[Stroke, ...]) -> tu
             cut.append(strokes[k])
             continue
         beside = [s for s, p in zip(strokes, before.panels, strict=True) if p.row == old.row]
-        cut.append(_joined(strokes[k], beside))
+        cut.append(joined(strokes[k], beside))
     return tuple(cut)
-
-
-def _joined(own: Stroke, strokes: Sequence[Stroke]) -> Stroke:
-    """All strokes of one row as one, with a missing node in each gap between them."""
-    parts: list[np.ndarray] = []
-    last_mm = -np.inf
-    for stroke in sorted(strokes, key=lambda s: s.x_mm[0]):
-        nodes = np.stack([stroke.x_mm, stroke.y_mm, stroke.sigma_mm])
-        nodes = nodes[:, nodes[0] > last_mm + 1e-9]
-        if parts and nodes.shape[1] and nodes[0, 0] - last_mm > _JOINED_MM:
-            parts.append(np.array([[(last_mm + nodes[0, 0]) / 2], [np.nan], [np.nan]]))
-        if nodes.shape[1]:
-            parts.append(nodes)
-            last_mm = float(nodes[0, -1])
-    x_mm, y_mm, sigma_mm = np.concatenate(parts, axis=1)
-    return replace(own, x_mm=x_mm, y_mm=y_mm, sigma_mm=sigma_mm)
 
 
 def _struck(strokes: tuple[Stroke, ...], correction: StrikeOut) -> Stroke:

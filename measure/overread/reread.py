@@ -11,7 +11,7 @@ from digitize.ink import Ink
 from digitize.options import Options
 from digitize.read import Stages, read_ink, read_part, read_turned
 from digitize.sheet import Box
-from digitize.unseen import hide, hide_around, seen_printing
+from digitize.unseen import hide, hide_around
 from measure.overread.corrections import ARRANGING, Arrangement, Correction, Crop, Ignore, Turn
 
 
@@ -58,8 +58,7 @@ def _arranged(stages: Stages, corrections: Sequence[Correction]) -> Stages:
         elif isinstance(correction, Arrangement):
             names = correction.lead_order
             options = replace(options, layout=correction.layout, lead_order=names)
-    again = read_ink(stages, ink, seen_printing(stages.printing, ink), options)
-    return _placed(again, stages, stages.tracing.geometry["turn_deg"])
+    return _placed(read_ink(stages, ink, options), stages, stages.tracing.geometry["turn_deg"])
 
 
 def _masked(ink: Ink, correction: Crop | Ignore) -> Ink:

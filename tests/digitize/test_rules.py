@@ -2,6 +2,7 @@
 
 from dataclasses import replace
 
+import cv2
 import numpy as np
 
 from digitize.ink import solid_ink
@@ -58,3 +59,19 @@ def test_separators_through_all_rows_are_rules_and_a_qrs_is_none():
     rules, uprights = straight_rules(solid_ink(ink), ink)
     assert uprights == ()
     assert not rules.any()
+
+
+def test_rules_are_an_opening_of_the_mask():
+    """Held against the library's own opening, with a frame on the page and without one."""
+    ink = perfect_sheet(CHART).ink
+    plain = solid_ink(ink)
+    framed = plain.copy()
+    framed[40:44, 100:900], framed[40:800, 100:103] = 1, 1
+    scale = ink.raster.px_per_mm
+    kernels = [np.ones((round(28 * scale), 1)), np.ones((1, round(70 * scale)))]
+    for mask, pieces in ((plain, 0), (framed, 1)):
+        opened = [cv2.morphologyEx(mask, cv2.MORPH_OPEN, k.astype(np.uint8)) for k in kernels]
+        wanted = cv2.dilate(np.maximum(*opened), np.ones((3, 3), np.uint8)) > 0
+        rules, uprights = straight_rules(mask, ink)
+        np.testing.assert_array_equal(rules, wanted)
+        assert len(uprights) == pieces

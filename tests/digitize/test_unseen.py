@@ -3,8 +3,9 @@
 import numpy as np
 
 from digitize.ink import Ink
+from digitize.marks import Mark
 from digitize.sheet import Box, Raster
-from digitize.unseen import hide, hide_around, seen_printing
+from digitize.unseen import hide, hide_around, seen_marks, seen_printing
 from digitize.words import Printing, Word
 
 # 4 pixels per mm, the centre of pixel (0, 0) an eighth of a millimetre from the corner
@@ -46,3 +47,8 @@ def test_printing_on_unseen_paper_is_not_read():
     printing = Printing(words, words, (inside, outside))
     seen = seen_printing(printing, hide(INK, Box(5.0, 2.0, 10.0, 4.0)))
     assert seen == Printing(words[1:], words[1:], (outside,))
+
+
+def test_marks_on_hidden_paper_are_no_longer_seen():
+    left, right = Mark(1.0, 3.0, 2.0, 6.0), Mark(15.0, 17.0, 2.0, 6.0)
+    assert seen_marks((left, right), hide_around(INK, Box(0.0, 0.0, 10.0, 10.0))) == (left,)
