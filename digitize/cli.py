@@ -5,7 +5,6 @@ Results go to stdout and files, everything else to stderr. Exit codes: 0 every p
 input could not be used, 2 the command was not understood.
 """
 
-import os
 import sys
 from functools import partial
 from pathlib import Path
@@ -14,6 +13,13 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from digitize import CAUTION, program_version
+from digitize.archive.arguments import (
+    ONE_PER_CORE,
+    Cluster,
+    PageMemory,
+    PageSeconds,
+    Processes,
+)
 from digitize.console import console
 from digitize.errors import InputError
 from digitize.formats import FORMATS
@@ -21,6 +27,10 @@ from digitize.options import Options, names_from, scale_from
 
 if TYPE_CHECKING:
     from digitize.archive.run import Kept
+
+Speed = Annotated[float | None, typer.Option(help="Paper speed in mm/s.")]
+Gain = Annotated[float | None, typer.Option(help="Gain in mm/mV.")]
+MaxMegapixels = Annotated[float, typer.Option(help="Refuse larger pages.")]
 
 app = typer.Typer(
     add_completion=False,
@@ -56,8 +66,8 @@ def page(
         Path | None,
         typer.Option("-o", "--output", help="Folder for the results; else beside each file."),
     ] = None,
-    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
-    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    speed: Speed = None,
+    gain: Gain = None,
     layout: Annotated[
         str | None, typer.Option(help="Rows x columns + rhythm strips, such as 3x4+1.")
     ] = None,
@@ -74,9 +84,7 @@ def page(
         str | None,
         typer.Option(help="Scale of a page without grid, such as 11.8, or 8.04,3.85 for a fax."),
     ] = None,
-    max_megapixels: Annotated[
-        float, typer.Option(help="Refuse larger pages.")
-    ] = Options.max_megapixels,
+    max_megapixels: MaxMegapixels = Options.max_megapixels,
     replace: Annotated[bool, typer.Option("--replace", help="Write over earlier results.")] = False,
     timings: Annotated[
         bool, typer.Option("--timings", help="Print how long each stage took (stderr).")
@@ -159,13 +167,8 @@ def archive(
     again: Annotated[
         str | None, typer.Option(help="failed: take up again what failed before.")
     ] = None,
-    processes: Annotated[
-        int, typer.Option(min=1, help="Pages read at the same time; else one per core.")
-    ] = os.cpu_count() or 1,
-    cluster: Annotated[
-        str | None,
-        typer.Option(help="Address of a dask scheduler whose workers read, tcp://HOST:PORT."),
-    ] = None,
+    processes: Processes = ONE_PER_CORE,
+    cluster: Cluster = None,
     manifest: Annotated[
         Path | None,
         typer.Option(help="CSV of whose the files are: file, patient, date (page, sex, age)."),
@@ -181,18 +184,12 @@ def archive(
         Path | None,
         typer.Option(help="File of regular expressions whose named groups are fields of it."),
     ] = None,
-    page_seconds: Annotated[
-        float, typer.Option(min=1, help="Give a page up after so long.")
-    ] = 120.0,
-    page_memory_mb: Annotated[
-        int, typer.Option(min=1024, help="Address space for one process.")
-    ] = 6144,
-    speed: Annotated[float | None, typer.Option(help="Paper speed in mm/s.")] = None,
-    gain: Annotated[float | None, typer.Option(help="Gain in mm/mV.")] = None,
+    page_seconds: PageSeconds = 120.0,
+    page_memory_mb: PageMemory = 6144,
+    speed: Speed = None,
+    gain: Gain = None,
     layout: Annotated[str | None, typer.Option(help="Layout of all pages, such as 3x4+1.")] = None,
-    max_megapixels: Annotated[
-        float, typer.Option(help="Refuse larger pages.")
-    ] = Options.max_megapixels,
+    max_megapixels: MaxMegapixels = Options.max_megapixels,
 ) -> None:
     """Read every page under the folders into a store; started again, it continues.
 

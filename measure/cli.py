@@ -6,7 +6,6 @@ understood.
 """
 
 import datetime
-import os
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -14,6 +13,13 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from digitize import CAUTION, program_version
+from digitize.archive.arguments import (
+    ONE_PER_CORE,
+    Cluster,
+    PageMemory,
+    PageSeconds,
+    Processes,
+)
 from digitize.errors import InputError
 from digitize.options import Options, names_from, scale_from
 
@@ -213,19 +219,10 @@ def export(
 @app.command()
 def archive(
     store: Annotated[Path, typer.Argument(help="A store that digitize archive has filled.")],
-    processes: Annotated[
-        int, typer.Option(min=1, help="Pages measured at the same time; else one per core.")
-    ] = os.cpu_count() or 1,
-    cluster: Annotated[
-        str | None,
-        typer.Option(help="Address of a dask scheduler whose workers measure, tcp://HOST:PORT."),
-    ] = None,
-    page_seconds: Annotated[
-        float, typer.Option(min=1, help="Give a page up after so long.")
-    ] = 60.0,
-    page_memory_mb: Annotated[
-        int, typer.Option(min=1024, help="Address space for one process.")
-    ] = 4096,
+    processes: Processes = ONE_PER_CORE,
+    cluster: Cluster = None,
+    page_seconds: PageSeconds = 60.0,
+    page_memory_mb: PageMemory = 4096,
     again: Annotated[bool, typer.Option("--again", help="Measure anew what was measured.")] = False,
 ) -> None:
     """Measure every page of a store: NAME.reading.json, and rows to ask with `measure find`.

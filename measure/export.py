@@ -90,10 +90,10 @@ def exported(given: Given, reading: Reading, form: str) -> dict[str, bytes]:
 
 
 def measurements_of(reading: Reading) -> Measurements:
-    """What the formats take of a reading: intervals and axes, and every finding."""
+    """What the formats take of a reading: intervals and axes, every finding, every caution."""
     numbers = tuple(_number(key, quantity) for key, quantity in reading.intervals.items())
     findings = tuple(Judged(f.definition, f.source, f.result) for f in reading.findings)
-    return Measurements(numbers, findings)
+    return Measurements(numbers, findings, reading.cautions)
 
 
 def _number(key: str, quantity: Quantity) -> Number:

@@ -46,7 +46,7 @@ def files(tracing: Tracing, stem: str, measurements: Measurements = NOTHING) -> 
     root = Xml.Element("AnnotatedECG", {"xmlns": V3})
     _add(root, "id", root=_id(f"document {identity}"))
     _add(root, "code", code=_ROUTINE_ECG, codeSystem=_CPT)
-    _add(root, "text").text = DERIVED
+    _add(root, "text").text = " ".join((DERIVED, *measurements.remarks))
     _add(root, "effectiveTime", nullFlavor="UNK")
     event = _add(_add(root, "componentOf"), "timepointEvent")
     assignment = _add(_add(event, "componentOf"), "subjectAssignment")

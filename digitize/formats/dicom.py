@@ -109,7 +109,8 @@ def _channel(number: int, name: str, table: LeadTable) -> "Dataset":
 
 def _annotations(measurements: Measurements) -> Iterator["Dataset"]:
     """Each number, then what belongs to it in words, then the findings."""
-    yield _text(DERIVED, REMARKS)
+    for remark in (DERIVED, *measurements.remarks):
+        yield _text(remark, REMARKS)
     for number in measurements.numbers:
         if number.value is None:
             words = f"{number.concept.words} not measured: {number.reason or 'reason unknown'}"

@@ -53,7 +53,7 @@ def files(tracing: Tracing, stem: str, measurements: Measurements = NOTHING) -> 
         ],
         "code": _concept(_ELECTRIC_POTENTIAL, "MDC_ECG_ELEC_POTL", "Electrocardiogram"),
         "method": {"text": "Derived from a scanned document"},
-        "note": [{"text": DERIVED}, {"text": _raster(table)}],
+        "note": [{"text": text} for text in (DERIVED, *measurements.remarks, _raster(table))],
         "component": [
             *(_component(table, column) for column in range(len(table.names))),
             *(_measured(number) for number in measurements.numbers),

@@ -74,10 +74,14 @@ class Judged:
 
 @dataclass(frozen=True)
 class Measurements:
-    """All that was measured on one tracing, in the order of the reading."""
+    """All that was measured on one tracing, in the order of the reading.
+
+    `remarks` are whole sentences that go with it: what to beware of, whether anyone signed it.
+    """
 
     numbers: tuple[Number, ...] = ()
     findings: tuple[Judged, ...] = ()
+    remarks: tuple[str, ...] = ()
 
 
 NOTHING = Measurements()

@@ -11,13 +11,22 @@ from digitize.formats import export as formatted
 from digitize.tracing_files import output_stem, to_csv
 from digitize.tracing_files import to_json as tracing_to_json
 from measure.compare import compare, comparison_json, side
+from measure.export import FORMS, REPORTS, exported
+from measure.inputs import Given
 from measure.overread.session import Session
 from measure.reading import Reading
 from measure.reading_files import to_json
 from measure.report import comparison_page, report
 
-_MEDIA_TYPES = {".html": "text/html", ".json": "application/json", ".csv": "text/csv",
-                ".png": "image/png", ".zip": "application/zip"}  # fmt: skip
+_MEDIA_TYPES = {
+    ".html": "text/html",
+    ".json": "application/json",
+    ".csv": "text/csv",
+    ".png": "image/png",
+    ".zip": "application/zip",
+    ".pdf": "application/pdf",
+}
+UNSIGNED = ".unsigned"  # in the name of a file
 ANY_TYPE = "application/octet-stream"
 _LONG_AGO = (1980, 1, 1, 0, 0, 0)  # the first date that a zip file knows: the same bytes every time
 
@@ -46,10 +55,13 @@ def _overlay(session: Session, reading: Reading) -> bytes:
     return draw_overlay(stages.page, reading.tracing)
 
 
+def _overlay_if_any(session: Session, reading: Reading) -> bytes | None:
+    return None if session.stages() is None else _overlay(session, reading)
+
+
 def _report(session: Session, reading: Reading) -> bytes:
     """The report with the overlay of the page, where there is one."""
-    overlay = None if session.stages() is None else _overlay(session, reading)
-    return report(reading, overlay_png=overlay).encode()
+    return report(reading, overlay_png=_overlay_if_any(session, reading)).encode()
 
 
 _OWN: Mapping[str, tuple[str, Make]] = {
@@ -59,11 +71,15 @@ _OWN: Mapping[str, tuple[str, Make]] = {
     "samples": (".csv", lambda s, r: to_csv(r.tracing).encode()),
     "overlay": (".overlay.png", _overlay),
 }
-KINDS = (*_OWN, *(form for form in FORMATS if form != "csv"))
+SCAN = "dicom-scan"
+_LEADS_ALONE = tuple(form for form in FORMATS if form not in (*FORMS, "csv"))
+KINDS = (*_OWN, *_LEADS_ALONE, *FORMS, SCAN)
 
 
 def export(session: Session, kind: str) -> Taken:
     """Return a file of this kind, as the record is now; several files come as one zip file.
+
+    As long as nobody has signed the record, the name of the file says so too.
 
     Raises
     ------
@@ -73,16 +89,31 @@ def export(session: Session, kind: str) -> Taken:
         The format has no way to hold it.
     """
     reading = session.reading()
-    stem = _safe(output_stem(reading.tracing.source))
+    stem = _safe(output_stem(reading.tracing.source)) + ("" if session.signed else UNSIGNED)
     if kind in _OWN:
         ending, make = _OWN[kind]
         return Taken(stem + ending, make(session, reading))
     if kind not in KINDS:
         raise KeyError(kind)
-    files = formatted(reading.tracing, stem, kind)
+    files = _in_form(session, reading, kind, stem)
     if len(files) == 1:
         return Taken(*files.popitem())
     return Taken(f"{stem}.{kind}.zip", _zipped(files))
+
+
+def _in_form(session: Session, reading: Reading, form: str, stem: str) -> dict[str, bytes]:
+    """The files of an open format, with measurements where it has a place for them."""
+    if form in _LEADS_ALONE:
+        return formatted(reading.tracing, stem, form)
+    if form == SCAN:
+        stages = session.stages()
+        if stages is None:
+            raise KeyError(form)
+        from digitize.formats import dicom_scan
+
+        return dicom_scan.files(stages.page, stem)
+    overlay = _overlay_if_any(session, reading) if form in REPORTS else None
+    return exported(Given(reading.tracing, stem, {}, overlay), reading, form)
 
 
 def export_comparison(

@@ -7,7 +7,9 @@ import { showScale } from "./panel.js";
 const SIGNS = { met: "■", undecided: "◪", "not met": "□" };
 const FILES = { report: "Report (HTML)", reading: "Reading (JSON)", tracing: "Tracing (JSON)",
   samples: "Samples (CSV)", overlay: "Overlay (PNG)", wfdb: "WFDB (zip)", edf: "EDF+",
-  dicom: "DICOM waveform", fhir: "FHIR observation", aecg: "aECG (HL7)" };
+  dicom: "DICOM waveform", fhir: "FHIR observation", aecg: "aECG (HL7)", pdf: "Report (PDF)",
+  "dicom-pdf": "Report (PDF in DICOM)", "dicom-scan": "The scan itself (DICOM)" };
+const OF_PAGES = ["overlay", "dicom-scan"];
 
 export function showSide(number, ecg, on) {
   byId("notice").textContent = ecg.notice;
@@ -21,7 +23,7 @@ export function showSide(number, ecg, on) {
   byId("signatures").replaceChildren(...ecg.signatures.map((s) =>
     html("li", {}, `${s.name}, ${s.when}${s.comment ? `: ${s.comment}` : ""}`)));
   byId("exports").replaceChildren(...Object.entries(FILES)
-    .filter(([kind]) => kind !== "overlay" || ecg.paper?.scan)
+    .filter(([kind]) => !OF_PAGES.includes(kind) || ecg.paper?.scan)
     .map(([kind, label]) => html("li", {}, html("a", { href: file(number, kind),
       onclick: (event) => {
         event.preventDefault();

@@ -77,11 +77,18 @@ def test_the_next_ecg_is_a_key_away(page):
 
 def test_everything_that_the_command_line_writes_can_be_taken_away(page):
     kinds = [a.get_attribute("href").split("/")[-1] for a in page.locator("#exports a").all()]
-    assert {"report", "reading", "tracing", "samples", "overlay", *FORMATS} - {"csv"} == set(kinds)
+    assert set(kinds) == {
+        *("report", "reading", "tracing", "samples", "overlay"),
+        *(set(FORMATS) - {"csv"}),
+        *("pdf", "dicom-pdf", "dicom-scan"),
+    }
     with page.expect_download() as download:
         page.click("#exports a[href$='wfdb']")
     with zipfile.ZipFile(download.value.path()) as archive:
         assert any(name.endswith(".hea") for name in archive.namelist())
+    with page.expect_download() as download:
+        page.click("#exports a[href$='dicom-scan']")
+    assert download.value.suggested_filename.endswith(".unsigned.scan.dcm")
 
 
 def test_a_clause_shows_its_evidence_on_beat_and_paper(page):

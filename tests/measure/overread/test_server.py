@@ -6,6 +6,7 @@ from importlib.resources import files
 
 import pytest
 
+from measure.overread.export import KINDS
 from tests.measure.overread.made import digital_chain, serving, worklist
 
 guards = pytest.importorskip("measure.overread.guard", reason="the extra `overread` is missing")
@@ -160,15 +161,34 @@ def test_a_closed_tab_gives_the_pen_back(client):
 
 
 def test_every_output_says_that_it_is_unsigned_until_it_is_signed(client):
+    """In its name, and inside where the format has a place for words."""
     client.get("/ecgs/0", params={"tab": "one"})
-    for kind in ("reading", "report"):
-        assert "Not signed" in client.get(f"/ecgs/0/export/{kind}").text
+    in_words = ("reading", "report", "dicom", "fhir", "aecg")
+    for kind in KINDS:
+        answer = client.get(f"/ecgs/0/export/{kind}")
+        if kind in ("overlay", "dicom-scan"):  # an ECG without a page has none
+            assert answer.status_code == 404
+            continue
+        assert answer.status_code == 200, answer.text
+        assert 'filename="model.unsigned.' in answer.headers["content-disposition"]
+        if kind in in_words:
+            assert b"Not signed" in answer.content, kind
     assert change(client, "sign", name="A. Reader", comment="").status_code == 200
+    for kind in in_words:
+        assert b"Signed by A. Reader" in client.get(f"/ecgs/0/export/{kind}").content, kind
     answer = client.get("/ecgs/0/export/reading")
     assert answer.headers["content-disposition"] == 'attachment; filename="model.reading.json"'
     document = json.loads(answer.text)
     assert document["cautions"][0].startswith("Signed by A. Reader")
     assert "no diagnosis" in document["notice"]
+
+
+def test_formats_that_can_hold_measurements_have_them(client):
+    client.get("/ecgs/0", params={"tab": "one"})
+    assert b"QRS duration" in client.get("/ecgs/0/export/fhir").content
+    assert b"MDC_ECG_TIME_PD_QRS_GL" in client.get("/ecgs/0/export/aecg").content
+    pdf = client.get("/ecgs/0/export/pdf")
+    assert (pdf.headers["content-type"], pdf.content[:5]) == ("application/pdf", b"%PDF-")
 
 
 def test_the_journal_lies_beside_the_ecg_alone(client, tmp_path):
