@@ -33,6 +33,7 @@ class DominantBeat:
     fiducial points of the averaged beats, (k,), and `single_mv` the aligned beats themselves,
     (len(leads), k, n), NaN where a beat is cut, hidden or left out. `column_se_ms` is the error of
     bringing columns together that share no lead, 0 where a strip or simultaneous leads do it.
+    `sample_ms` is the interval of the samples of a digital recording, 0 for a page.
     """
 
     leads: tuple[str, ...]
@@ -45,6 +46,7 @@ class DominantBeat:
     at_s: tuple[float, ...] = ()
     single_mv: np.ndarray | None = None
     column_se_ms: float = 0.0
+    sample_ms: float = 0.0
 
     def lead(self, name: str) -> np.ndarray:
         """Average of one lead in mV, (n,); KeyError where the lead is not there."""
@@ -84,7 +86,14 @@ def average_beats(tracing: Tracing, beats: Beats) -> DominantBeat:
         at_s=tuple(float(t) for t in at_s),
         single_mv=cut,
         column_se_ms=column_se_ms,
+        sample_ms=_sample_ms(tracing),
     )
+
+
+def _sample_ms(tracing: Tracing) -> float:
+    """Interval of the samples as recorded: where a wave ends between two of them is not known."""
+    rates = [c.value for c in tracing.checks if c.name == "sampling_rate" and c.value is not None]
+    return 1000 / min(rates) if rates else 0.0
 
 
 def _usable_ms(beats: Beats) -> tuple[np.ndarray, np.ndarray]:

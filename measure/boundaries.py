@@ -17,6 +17,7 @@ from measure.edges import Edge, p_edges, qrs_edges, t_end
 from measure.p_wave import is_p_wave
 from measure.quantity import Quantity, missing
 
+_SHORTEST_WAVE_MS = 6.0  # CSE working party (from memory)
 _LONGEST_PR_MS = 330
 _BEFORE_QRS_MS = 150  # a T wave must be over this long before the next QRS
 _LATEST_T_PEAK_MS = 480  # after the QRS onset, at 60/min; shortens as the cube root of RR
@@ -83,12 +84,14 @@ def _edges_of(
     """Boundaries of some leads together; those of one lead stay within the overall ones."""
     if not rows:
         return _no_edges("no whole beat is visible")
-    leads = leads_of(beat.time_ms, beat.mv, rows)
+    single_mv = beat.single_mv if len(rows) > 1 else None  # the scatter of one lead is unsure
+    leads = leads_of(beat.time_ms, beat.mv, rows, single_mv)
     names = tuple(beat.leads[k] for k in rows)
     count = max(beat.beats[k] for k in rows)
 
     def quantity(edge: Edge) -> Quantity:
-        se_ms = math.hypot(edge.se_ms, beat.column_se_ms if len(rows) > 1 else 0.0)
+        columns_ms = beat.column_se_ms if len(rows) > 1 else 0.0
+        se_ms = math.hypot(edge.se_ms, columns_ms, beat.sample_ms / math.sqrt(12))
         return Quantity(edge.at_ms, se_ms, "ms", names, count)
 
     if overall is not None and not overall.qrs_on_ms.known:
@@ -96,8 +99,9 @@ def _edges_of(
     within_ms = (overall.qrs_on_ms.value, overall.qrs_off_ms.value) if overall else None
     onset, offset = qrs_edges(leads, spike_ms, within_ms)
     if overall is not None:
-        onset = _within(onset, overall.qrs_on_ms.value, overall.qrs_off_ms.value)
-        offset = _within(offset, onset.at_ms, overall.qrs_off_ms.value)
+        low_ms, high_ms = overall.qrs_on_ms.value, overall.qrs_off_ms.value
+        onset = _within(onset, low_ms, high_ms, low_ms)
+        offset = _within(offset, onset.at_ms, high_ms, high_ms)
     rr_ms = _usual_rr_ms(beats)
     t_off = _t_off(leads, onset, offset, rr_ms)
     p = _p_wave(beat, leads, rows, beats, onset, t_off)
@@ -111,8 +115,14 @@ def _edges_of(
     )
 
 
-def _within(edge: Edge, low_ms: float, high_ms: float) -> Edge:
-    return Edge(min(max(edge.at_ms, low_ms), high_ms), edge.se_ms)
+def _within(edge: Edge, low_ms: float, high_ms: float, end_ms: float) -> Edge:
+    """The edge of one lead within the QRS of all leads, whose own edge is `end_ms`.
+
+    A lead that shows nothing yet may only look across the movement: between the two edges it is
+    unsure. And what lasts less than 6 ms does not count as a wave, there or not.
+    """
+    at_ms = min(max(edge.at_ms, low_ms), high_ms)
+    return Edge(at_ms, math.hypot(edge.se_ms, _SHORTEST_WAVE_MS / 2, (at_ms - end_ms) / 2))
 
 
 def _t_off(leads: Leads, qrs_on: Edge, qrs_off: Edge, rr_ms: float | None) -> Edge | None:

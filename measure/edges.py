@@ -7,6 +7,7 @@ not from any collection of ECGs.
 """
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -21,6 +22,8 @@ _P_SLOPE_MV_S = 0.35
 # root mean square is about two thirds of its largest, half of it for the smaller P.
 _QRS_DISTANCE_MV = 0.010
 _P_DISTANCE_MV = 0.0066
+_LIMITS = (0.5, 0.7, 1.0, 1.4, 2.0)  # of slope and distance: twice as keen an eye, or half
+_SLOPING_SE_MS = 3.0
 _QRS_PARABOLA_MS = 15
 _P_PARABOLA_MS = 31
 _QRS_GAP_MS = 12
@@ -51,81 +54,114 @@ class Edge:
     se_ms: float
 
 
+@dataclass(frozen=True, eq=False)
+class _Motion:
+    """Movement around a QRS: root mean square slopes in mV/s, (n,), and places in them.
+
+    `moving` is about rest, `about` about the slope that follows, as where an ST segment rises.
+    The QRS moves most at `middle` and lies between `first` and `last`.
+    """
+
+    moving: np.ndarray
+    about: np.ndarray
+    middle: int
+    first: int
+    last: int
+
+
 def qrs_edges(
     leads: Leads, spike_ms: float | None = None, within_ms: tuple[float, float] | None = None
 ) -> tuple[Edge, Edge]:
     """Return onset and offset of the QRS around 0 ms; the onset is never before a pacing spike.
 
+    Readers differ in what they still call movement: each end is looked for with several limits,
+    and how far these disagree is its error. A steep end has none of it, a slow one much.
+
     `within_ms` are the ends of the QRS over all leads, where these are parts of them: there all
     movement between belongs to the QRS, also that which a calm stretch parts from the rest.
     """
-    slopes = leads.slopes(_QRS_PARABOLA_MS)
-    moving = leads.size(slopes)
-    middle = leads.index(-60) + int(np.argmax(moving[leads.index(-60) : leads.index(60)]))
-    first = leads.index(-170) if spike_ms is None else leads.index(spike_ms + 2)
-    first = min(first, middle - 1)
+    motion = _motion(leads, spike_ms)
+    within = None
     if within_ms is not None:
         on, off = (leads.index(ms) for ms in within_ms)
-        if on < middle < off:
-            return (
-                _left_at(leads, _first_moving(moving, first, on, middle)),
-                _qrs_offset(leads, slopes, moving, middle, off),
-            )
-    return _qrs_onset(leads, moving, middle, first), _qrs_offset(leads, slopes, moving, middle)
+        within = (on, off) if on < motion.middle < off else None
+    onsets, offsets, doubts = [], [], []
+    for limit in _LIMITS:
+        offset, doubt_ms = _qrs_offset(leads, motion, limit, within)
+        onsets.append(float(leads.time_ms[_qrs_onset(leads, motion, limit, within)]))
+        offsets.append(float(leads.time_ms[offset]))
+        doubts.append(doubt_ms)
+    return _agreed(onsets), _agreed(offsets, float(np.median(doubts)))
 
 
-def _first_moving(moving: np.ndarray, calm_from: int, start: int, stop: int) -> int:
-    least = _least(moving[calm_from : stop + 1], _QRS_SLOPE_MV_S)
-    return start + int(np.argmax(moving[start : stop + 1] > least))
+def _agreed(at_ms: Sequence[float], doubt_ms: float = 0.0) -> Edge:
+    """Mean of the middle three; all together lie within two standard errors either way."""
+    ordered = sorted(at_ms)
+    spread_ms = (ordered[-1] - ordered[0]) / 4
+    return Edge(float(np.mean(ordered[1:-1])), math.hypot(_LEAST_SE_MS, spread_ms, doubt_ms))
 
 
-def _qrs_onset(leads: Leads, moving: np.ndarray, middle: int, first: int) -> Edge:
-    least = _least(moving[first : middle + 1], _QRS_SLOPE_MV_S)
-    steep = moving > max(least, _CORE * moving[middle])
-    core = reach(steep, middle, first, _CORE_GAP_MS)
-    furthest = max(first, core - _LEAD_IN_MS)
-    start = reach(moving > least, core, furthest, _QRS_GAP_MS)
-    if start <= furthest + 1 and core > furthest:
-        # No quiet stretch: the P wave runs into the QRS, which begins at the calmest place.
-        start = furthest + int(np.argmin(moving[furthest:core]))
-    return _left_at(leads, start)
-
-
-def _left_at(leads: Leads, start: int) -> Edge:
-    """Where the leads come away from the level they have up to `start`."""
-    away = leads.distance(leads.level(start - _LEVEL_MS, start + 1))
-    at = [leave(away, start, f * _QRS_DISTANCE_MV, 1, 40) for f in (1.0, 0.5, 2.0)]
-    return _edge(leads, *at)
-
-
-def _qrs_offset(
-    leads: Leads, slopes: np.ndarray, moving: np.ndarray, middle: int, latest: int | None = None
-) -> Edge:
-    """Where the movement ends; where the ST segment itself slopes, movement about that slope.
-
-    Up to `latest`, if given, pauses do not end it.
-    """
-    last = min(middle + 240, len(moving) - 30)
+def _motion(leads: Leads, spike_ms: float | None) -> _Motion:
+    slopes, noise = leads.slopes(_QRS_PARABOLA_MS), leads.slope_noise(_QRS_PARABOLA_MS)
+    moving = leads.size(slopes, noise)
+    middle = leads.index(-60) + int(np.argmax(moving[leads.index(-60) : leads.index(60)]))
+    first = leads.index(-170) if spike_ms is None else leads.index(spike_ms + 2)
     width = _ST_MS[1] - _ST_MS[0]
     following = np.roll(
         sp.ndimage.uniform_filter1d(slopes, width, axis=1), -sum(_ST_MS) // 2, axis=1
     )
-    about = leads.size(slopes - following)
+    return _Motion(
+        moving=moving,
+        about=leads.size(slopes - following, noise),
+        middle=middle,
+        first=min(first, middle - 1),
+        last=min(middle + 240, len(moving) - 30),
+    )
+
+
+def _qrs_onset(leads: Leads, motion: _Motion, limit: float, within: tuple[int, int] | None) -> int:
+    """Place of the onset with `limit` times the usual limits of slope and distance."""
+    moving, middle, first = motion.moving, motion.middle, motion.first
+    least = _least(moving[first : middle + 1], limit * _QRS_SLOPE_MV_S)
+    if within is not None:
+        start = within[0] + int(np.argmax(moving[within[0] : middle + 1] > least))
+    else:
+        steep = moving > max(least, _CORE * moving[middle])
+        core = reach(steep, middle, first, _CORE_GAP_MS)
+        furthest = max(first, core - _LEAD_IN_MS)
+        start = reach(moving > least, core, furthest, _QRS_GAP_MS)
+        if start <= furthest + 1 and core > furthest:
+            # No quiet stretch: the P wave runs into the QRS, which begins at the calmest place.
+            start = furthest + int(np.argmin(moving[furthest:core]))
+    before = start - _LEVEL_MS, start + 1
+    away = leads.distance(leads.level(*before), leads.distance_noise(*before))
+    return leave(away, start, limit * _QRS_DISTANCE_MV, 1, 40)
+
+
+def _qrs_offset(
+    leads: Leads, motion: _Motion, limit: float, within: tuple[int, int] | None
+) -> tuple[int, float]:
+    """Place where the movement ends, and the doubt in ms that a sloping ST segment leaves.
+
+    Where the ST segment itself slopes, it is movement about that slope. Within a QRS of all
+    leads, pauses do not end it.
+    """
+    middle, last = motion.middle, motion.last
+    latest = None if within is None else within[1]
     plain, corrected = (
-        _last_moving(m > _least(m[middle:last], _QRS_SLOPE_MV_S), middle, last, latest)
-        for m in (moving, about)
+        _last_moving(m > _least(m[middle:last], limit * _QRS_SLOPE_MV_S), middle, last, latest)
+        for m in (motion.moving, motion.about)
     )
-    end = plain if plain - corrected <= _DISAGREE_MS else corrected
-    places = np.arange(len(moving)) - end
-    line = np.polynomial.polynomial.polyfit(
-        places[end : end + 2 * _LEVEL_MS], leads.mv[:, end : end + 2 * _LEVEL_MS].T, 1
+    sloping = plain - corrected > _DISAGREE_MS
+    end = corrected if sloping else plain
+    after = slice(end, end + 2 * _LEVEL_MS)
+    places = np.arange(len(motion.moving)) - end
+    line = np.polynomial.polynomial.polyfit(places[after], leads.mv[:, after].T, 1)
+    away = leads.distance(
+        line[0][:, None] + line[1][:, None] * places, leads.distance_noise(end, after.stop)
     )
-    away = leads.distance(line[0][:, None] + line[1][:, None] * places)
-    at = [leave(away, end, f * _QRS_DISTANCE_MV, -1, 40) for f in (1.0, 0.5, 2.0)]
-    edge = _edge(leads, *at)
-    return Edge(
-        edge.at_ms, math.hypot(edge.se_ms, abs(plain - corrected) / 4 if end == plain else 3)
-    )
+    doubt_ms = _SLOPING_SE_MS if sloping else abs(plain - corrected) / 4
+    return leave(away, end, limit * _QRS_DISTANCE_MV, -1, 40), doubt_ms
 
 
 def _last_moving(moving: np.ndarray, middle: int, last: int, latest: int | None) -> int:

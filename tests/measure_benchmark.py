@@ -2,15 +2,18 @@
 
 Prints the differences from the cardiologists' marks of LUDB (half of its records were looked at
 while the methods were made, the other half only reported), the same through perfect pages, beats
-found and missed, and models with exact truth. `--compare` adds the delineators of `neurokit2`.
+found and missed, and models with exact truth. `--paper` draws the records on 3x4+1 pages, reads
+them back and measures those; `--compare` prints the delineators of `neurokit2`, which need the
+extra "compare".
 Standard deviations are in ms: all differences / without the 4 % largest, as the standard judges.
 """
 
+import argparse
 import csv
-import sys
+import math
 import time
 import warnings
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Mapping, Sequence
 
 import numpy as np
 
@@ -18,9 +21,11 @@ from digitize.tracing import LEADS, Tracing
 from measure.beats import find_beats
 from measure.reading import Reading, read
 from tests.drawn.heart import HeartSpec
+from tests.drawn.records import read_ludb
 from tests.measure.model import as_page, digital, recording
 from tests.measure.open_data import folder, ludb_tracing, ptbxl_tracing
 from tests.measure.test_beats import ludb_missed_and_invented
+from tests.paper import WAYS, page_spec, read_back
 
 KEYS = ("p", "pr", "qrs", "qt")
 RECORDS = range(1, 200, 2)
@@ -50,36 +55,75 @@ def differences(reading: Reading, row: dict[str, str]) -> dict[str, float]:
     }
 
 
-def ludb(form: str, change: Callable[[Tracing], Tracing]) -> dict[int, dict[str, float]]:
-    """Print the table of one form of the records and return the differences."""
+def ludb(
+    form: str,
+    tracing_of: Callable[[int], Tracing | None],
+    records: Sequence[int] = RECORDS,
+    original: Mapping[int, Reading] | None = None,
+) -> dict[int, Reading]:
+    """Print the table of one form of the records and return their readings.
+
+    A page that was refused gives no reading; with the readings of the `original` recordings the
+    differences from them are printed too, and the records where they are largest.
+    """
     rows = reference()
+    tracings = {record: tracing_of(record) for record in records}
     started = time.process_time()
-    readings = {record: read(change(ludb_tracing(record))) for record in RECORDS}
-    seconds = (time.process_time() - started) / len(readings)
+    readings = {r: read(tracing) for r, tracing in tracings.items() if tracing is not None}
+    seconds = (time.process_time() - started) / max(len(readings), 1)
     off = {record: differences(reading, rows[record]) for record, reading in readings.items()}
     print(f"\nLUDB, {form} ({seconds:.2f} s per reading): mean, SD all / 4 % dropped")
+    print(f"  {len(records)} records, refused: {sorted(set(records) - set(readings))}")
     for half, rest in (("looked at", 1), ("only reported", 3), ("all", None)):
-        chosen = [r for r in RECORDS if rest is None or r % 4 == rest]
+        chosen = [r for r in readings if rest is None or r % 4 == rest]
         for key in KEYS:
             print(f"  {half:14s} {key:4s} {spread(off[r][key] for r in chosen)}")
         unpaced = [r for r in chosen if not rows[r]["pacing"]]
         print(f"  {half:14s} qrs, unpaced {spread(off[r]['qrs'] for r in unpaced)}")
-    seen = {r: readings[r].intervals["pr_ms"].known for r in RECORDS}
-    refused = [r for r in RECORDS if rows[r]["pr_ms"] and not seen[r]]
-    invented = [r for r in RECORDS if rows[r]["p_absent"] == "1" and seen[r]]
-    absent = sum(rows[r]["p_absent"] == "1" for r in RECORDS)
-    print(f"  P refused: {refused}; P reported where none is marked: {invented} of {absent}")
-    return off
+    seen = {r: readings[r].intervals["pr_ms"].known for r in readings}
+    marked = [r for r in readings if rows[r]["pr_ms"]]
+    absent = [r for r in readings if rows[r]["p_absent"] == "1"]
+    print(f"  P refused: {[r for r in marked if not seen[r]]} of {len(marked)}")
+    print(f"  P reported where none is marked: {[r for r in absent if seen[r]]} of {len(absent)}")
+    if original is not None:
+        against_original(readings, original)
+    return readings
 
 
-def paper_against_original() -> None:
-    """The same records read from perfect pages, against the original recordings."""
-    original = ludb("original 10 s", lambda tracing: tracing)
-    page = ludb("perfect 3x4+1 page", as_page)
-    ludb("perfect 3x4 page without a strip", lambda tracing: as_page(tracing, strip=None))
-    print("\nPage minus original")
+def against_original(readings: Mapping[int, Reading], original: Mapping[int, Reading]) -> None:
+    """The same records in two forms: differences, and the records where they are largest."""
+    print("  minus original, share within the joint 95 % interval, largest (record: ms)")
     for key in KEYS:
-        print(f"  {key:4s} {spread(page[r][key] - original[r][key] for r in RECORDS)}")
+        one = {r: readings[r].intervals[f"{key}_ms"] for r in readings}
+        other = {r: original[r].intervals[f"{key}_ms"] for r in readings}
+        change = {r: one[r].value - other[r].value for r in readings if one[r].known}
+        change = {r: ms for r, ms in change.items() if np.isfinite(ms)}
+        within = [abs(ms) <= 1.96 * math.hypot(one[r].se, other[r].se) for r, ms in change.items()]
+        worst = sorted(change, key=lambda r: -abs(change[r]))[:6]
+        listed = ", ".join(f"{r}: {change[r]:.0f}" for r in worst)
+        print(f"  {key:4s} {spread(change.values())}  {np.mean(within):.0%}  {listed}")
+
+
+def on_paper(way: str, records: Sequence[int]) -> None:
+    """The records drawn on 3x4+1 pages, captured and read back, against their originals."""
+    original = {record: read(ludb_tracing(record)) for record in records}
+    ludb(
+        f"3x4+1 page, {way}",
+        lambda record: read_back(read_ludb(record), page_spec(way, record)),
+        records,
+        original,
+    )
+
+
+def perfect_pages() -> None:
+    """The same records read from perfect pages, against the original recordings."""
+    original = ludb("original 10 s", ludb_tracing)
+    ludb("perfect 3x4+1 page", lambda r: as_page(ludb_tracing(r)), original=original)
+    ludb("perfect 3x4 page without a strip", _without_strip, original=original)
+
+
+def _without_strip(record: int) -> Tracing:
+    return as_page(ludb_tracing(record), strip=None)
 
 
 def beats() -> None:
@@ -123,44 +167,70 @@ def models() -> None:
 
 
 def compare() -> None:
-    """The delineators of a general library on lead II and V5, median over beats."""
+    """The delineators of a general library, on lead II and as the median over all leads."""
+    rows = reference()
+    for method in ("dwt", "prominence"):
+        for leads in (("II",), LEADS):
+            off: dict[str, list[float]] = {key: [] for key in KEYS}
+            for record in RECORDS:
+                for key, ms in delineated(ludb_tracing(record), method, leads).items():
+                    off[key].append(ms - float(rows[record][f"{key}_ms"] or "nan"))
+            print(f"\nneurokit2, {method}, {len(leads)} leads: mean, SD all / 4 % dropped")
+            for key, values in off.items():
+                print(f"  {key:4s} {spread(values)}")
+
+
+def delineated(tracing: Tracing, method: str, leads: Sequence[str]) -> dict[str, float]:
+    """Intervals in ms by `neurokit2`, each the median over the beats of lead II."""
     import neurokit2
 
-    rows = reference()
-    for method in ("dwt", "peak"):
-        off: dict[str, list[float]] = {"pr": [], "qrs": [], "qt": []}
-        for record in RECORDS:
-            lead = ludb_tracing(record).lead("II").mv
-            cleaned = neurokit2.ecg_clean(lead, 500)
-            _, peaks = neurokit2.ecg_peaks(cleaned, 500)
-            _, waves = neurokit2.ecg_delineate(cleaned, peaks, 500, method=method)
-            marks = {name: np.array(at, float) for name, at in waves.items()}
-            onset, offset = marks.get("ECG_R_Onsets"), marks.get("ECG_R_Offsets")
-            if onset is None or offset is None:
-                continue
-            p_on, t_off = marks["ECG_P_Onsets"], marks["ECG_T_Offsets"]
-            for key, span in (
-                ("pr", onset - p_on),
-                ("qrs", offset - onset),
-                ("qt", t_off - onset),
-            ):
-                marked = float(rows[record][f"{key}_ms"] or "nan")
-                off[key].append(2 * float(np.nanmedian(span)) - marked)
-        print(f"\nneurokit2, {method}, lead II: mean, SD all / 4 % dropped")
-        for key, values in off.items():
-            print(f"  {key:4s} {spread(values)}")
+    cleaned = {lead: neurokit2.ecg_clean(tracing.lead(lead).mv, 500) for lead in leads}
+    _, peaks = neurokit2.ecg_peaks(cleaned["II"], 500)
+    marks: dict[str, list[np.ndarray]] = {}
+    for lead in leads:
+        try:
+            _, waves = neurokit2.ecg_delineate(cleaned[lead], peaks, 500, method=method)
+        except (ValueError, IndexError, ZeroDivisionError):
+            continue  # nothing that it can tell apart in this lead
+        for name, at in waves.items():
+            if len(at) == len(peaks["ECG_R_Peaks"]):
+                marks.setdefault(name, []).append(2.0 * np.array(at, float))
+    spans = {
+        "p": ("ECG_P_Onsets", "ECG_P_Offsets"),
+        "pr": ("ECG_P_Onsets", "ECG_R_Onsets"),
+        "qrs": ("ECG_R_Onsets", "ECG_R_Offsets"),
+        "qt": ("ECG_R_Onsets", "ECG_T_Offsets"),
+    }
+    return {
+        key: float(np.nanmedian(_middle(marks, last) - _middle(marks, first)))
+        for key, (first, last) in spans.items()
+    }
+
+
+def _middle(marks: Mapping[str, list[np.ndarray]], mark: str) -> np.ndarray:
+    """One kind of mark at each beat: the median over the leads, a lead gone astray is forgiven."""
+    rows = marks.get(mark, [])
+    return np.nanmedian(np.stack(rows), axis=0) if rows else np.array([np.nan])
 
 
 def main() -> None:
-    """Print every table."""
+    """Print the tables that were asked for."""
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--paper", choices=WAYS, help="only LUDB through drawn pages, read back")
+    parser.add_argument("--every", type=int, default=1, help="with --paper: every so many records")
+    parser.add_argument("--compare", action="store_true", help="only the delineators of neurokit2")
+    given = parser.parse_args()
     print(f"Leads: {', '.join(LEADS)}. Differences are measured minus reference, in ms.")
-    models()
-    paper_against_original()
-    beats()
-    if "--compare" in sys.argv:
+    if given.paper:
+        on_paper(given.paper, RECORDS[:: given.every])
+    elif given.compare:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
             compare()
+    else:
+        models()
+        perfect_pages()
+        beats()
 
 
 if __name__ == "__main__":
