@@ -6,7 +6,7 @@ away from its baseline by more than a deflection must have to count.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 
 import numpy as np
@@ -34,6 +34,18 @@ class Leads:
     def index(self, at_ms: float) -> int:
         """Number of the raster place at a time, kept inside the raster."""
         return int(np.clip(np.searchsorted(self.time_ms, at_ms), 0, len(self.time_ms) - 1))
+
+    def between(self, from_ms: float, to_ms: float) -> "Leads":
+        """These leads between two times only."""
+        part = slice(self.index(from_ms), self.index(to_ms) + 1)
+        single_mv = None if self.single_mv is None else self.single_mv[:, :, part]
+        return replace(
+            self,
+            time_ms=self.time_ms[part],
+            mv=self.mv[:, part],
+            seen=self.seen[:, part],
+            single_mv=single_mv,
+        )
 
     def slopes(self, width_ms: int) -> np.ndarray:
         """Slope of each lead in mV/s from a parabola over `width_ms`, (leads, n)."""

@@ -24,6 +24,7 @@ _QRS_DISTANCE_MV = 0.010
 _P_DISTANCE_MV = 0.0066
 _LIMITS = (0.5, 0.7, 1.0, 1.4, 2.0)  # of slope and distance: twice as keen an eye, or half
 _SLOPING_SE_MS = 3.0
+_AROUND_QRS_MS = (-200.0, 360.0)  # of it and what it is compared with
 _QRS_PARABOLA_MS = 15
 _P_PARABOLA_MS = 31
 _QRS_GAP_MS = 12
@@ -54,16 +55,33 @@ class Edge:
     se_ms: float
 
 
+@dataclass(frozen=True)
+class _Calm:
+    """Movement over a calm stretch: its level and its scatter in mV/s."""
+
+    level: float
+    scatter: float
+
+    def least(self, slope_mv_s: float) -> float:
+        """Movement that is not noise: over the level by a slope, or by its own scatter."""
+        return self.level + max(
+            slope_mv_s, min(_NOISE_FACTOR * self.scatter, _MOST_NOISE * slope_mv_s)
+        )
+
+
 @dataclass(frozen=True, eq=False)
 class _Motion:
     """Movement around a QRS: root mean square slopes in mV/s, (n,), and places in them.
 
     `moving` is about rest, `about` about the slope that follows, as where an ST segment rises.
-    The QRS moves most at `middle` and lies between `first` and `last`.
+    The QRS moves most at `middle` and lies between `first` and `last`. Of each the calm level and
+    its scatter: before the QRS, and of both after it.
     """
 
     moving: np.ndarray
     about: np.ndarray
+    calm_before: _Calm
+    calm_after: tuple[_Calm, _Calm]
     middle: int
     first: int
     last: int
@@ -80,6 +98,7 @@ def qrs_edges(
     `within_ms` are the ends of the QRS over all leads, where these are parts of them: there all
     movement between belongs to the QRS, also that which a calm stretch parts from the rest.
     """
+    leads = leads.between(*_AROUND_QRS_MS)
     motion = _motion(leads, spike_ms)
     within = None
     if within_ms is not None:
@@ -110,19 +129,23 @@ def _motion(leads: Leads, spike_ms: float | None) -> _Motion:
     following = np.roll(
         sp.ndimage.uniform_filter1d(slopes, width, axis=1), -sum(_ST_MS) // 2, axis=1
     )
+    about = leads.size(slopes - following, noise)
+    first, last = min(first, middle - 1), min(middle + 240, len(moving) - 30)
     return _Motion(
         moving=moving,
-        about=leads.size(slopes - following, noise),
+        about=about,
+        calm_before=_calm(moving[first : middle + 1]),
+        calm_after=(_calm(moving[middle:last]), _calm(about[middle:last])),
         middle=middle,
-        first=min(first, middle - 1),
-        last=min(middle + 240, len(moving) - 30),
+        first=first,
+        last=last,
     )
 
 
 def _qrs_onset(leads: Leads, motion: _Motion, limit: float, within: tuple[int, int] | None) -> int:
     """Place of the onset with `limit` times the usual limits of slope and distance."""
     moving, middle, first = motion.moving, motion.middle, motion.first
-    least = _least(moving[first : middle + 1], limit * _QRS_SLOPE_MV_S)
+    least = motion.calm_before.least(limit * _QRS_SLOPE_MV_S)
     if within is not None:
         start = within[0] + int(np.argmax(moving[within[0] : middle + 1] > least))
     else:
@@ -149,8 +172,8 @@ def _qrs_offset(
     middle, last = motion.middle, motion.last
     latest = None if within is None else within[1]
     plain, corrected = (
-        _last_moving(m > _least(m[middle:last], limit * _QRS_SLOPE_MV_S), middle, last, latest)
-        for m in (motion.moving, motion.about)
+        _last_moving(m > calm.least(limit * _QRS_SLOPE_MV_S), middle, last, latest)
+        for m, calm in zip((motion.moving, motion.about), motion.calm_after, strict=True)
     )
     sloping = plain - corrected > _DISAGREE_MS
     end = corrected if sloping else plain
@@ -212,7 +235,7 @@ def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, E
     away = leads.distance(leads.level(stop - _LEVEL_MS, stop - 1))
     away = sp.ndimage.uniform_filter1d(away, _LEVEL_MS + 3)
     top = first + 10 + int(np.argmax(moving[first + 10 : stop - 20]))
-    least = _least(moving[first : top + 1], _P_SLOPE_MV_S)
+    least = _calm(moving[first : top + 1]).least(_P_SLOPE_MV_S)
     # The flat top of a broad P wave does not move, but it stands high.
     calm = first + int(np.argmin(sp.ndimage.uniform_filter1d(moving, _CALM_MS)[first : top + 1]))
     hump = np.minimum(away, leads.distance(leads.level(calm - _LEVEL_MS, calm + _LEVEL_MS)))
@@ -237,13 +260,12 @@ def p_edges(leads: Leads, qrs_on_ms: float, earliest_ms: float) -> tuple[Edge, E
     return onset, Edge(end_ms, math.hypot(_LEAST_SE_MS, (low - half) / 4))
 
 
-def _least(moving: np.ndarray, slope_mv_s: float) -> float:
-    """Movement that is not noise: over the calmest stretch by a slope, or by its own scatter."""
+def _calm(moving: np.ndarray) -> _Calm:
+    """The calmest stretch."""
     level = sp.ndimage.uniform_filter1d(moving, _CALM_MS, mode="nearest")
     k = int(np.argmin(level))
     calm = moving[max(k - _CALM_MS // 2, 0) : k + _CALM_MS // 2]
-    noise = min(_NOISE_FACTOR * float(calm.std()), _MOST_NOISE * slope_mv_s)
-    return float(level[k]) + max(slope_mv_s, noise)
+    return _Calm(float(level[k]), float(calm.std()))
 
 
 def _edge(leads: Leads, at: int, early: int, late: int) -> Edge:

@@ -166,13 +166,13 @@ def models() -> None:
             print(f"  {key:4s} {spread(error[key])}  {np.mean(covered[key]):.0%}")
 
 
-def compare() -> None:
+def compare(records: Sequence[int]) -> None:
     """The delineators of a general library, on lead II and as the median over all leads."""
     rows = reference()
     for method in ("dwt", "prominence"):
         for leads in (("II",), LEADS):
             off: dict[str, list[float]] = {key: [] for key in KEYS}
-            for record in RECORDS:
+            for record in records:
                 for key, ms in delineated(ludb_tracing(record), method, leads).items():
                     off[key].append(ms - float(rows[record][f"{key}_ms"] or "nan"))
             print(f"\nneurokit2, {method}, {len(leads)} leads: mean, SD all / 4 % dropped")
@@ -217,7 +217,7 @@ def main() -> None:
     """Print the tables that were asked for."""
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--paper", choices=WAYS, help="only LUDB through drawn pages, read back")
-    parser.add_argument("--every", type=int, default=1, help="with --paper: every so many records")
+    parser.add_argument("--every", type=int, default=1, help="of these: one record in so many")
     parser.add_argument("--compare", action="store_true", help="only the delineators of neurokit2")
     given = parser.parse_args()
     print(f"Leads: {', '.join(LEADS)}. Differences are measured minus reference, in ms.")
@@ -226,7 +226,7 @@ def main() -> None:
     elif given.compare:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
-            compare()
+            compare(RECORDS[:: given.every])
     else:
         models()
         perfect_pages()
