@@ -26,6 +26,8 @@ MIN_CELLS = 30
 MIN_COHERENCE = 0.35
 MIN_SEEN = 0.08  # a lattice seen on less of the page is chance
 GOOD_RESIDUAL_MM = 0.025  # no other picture of the page need be tried
+FLAT_MM = 0.2  # scatter of the phase of a cell: a slip is a whole millimetre
+MOSTLY_FLAT = 0.6  # of the cells, or it is another error
 MAX_RESIDUAL_MM = 0.12  # phase that scatters more follows no ruling
 OUT_OF_SQUARE = 0.12  # natural log: perspective stretches a page no more than this
 MAX_PX_PER_MM = 60.0
@@ -101,6 +103,8 @@ def _ruled_grid(page: Page, contrast: np.ndarray, factor: int) -> Grid | None:
     if np.mean(seen) < MIN_SEEN or np.count_nonzero(seen) < MIN_CELLS:
         return None
     x_px, y_px = _cell_centres(weight.shape, factor)
+    if page.bilevel:
+        seen = _flat_part(seen, (x_px, y_px), (across.mm, down.mm))
     page_map, residual_mm = fit_page_map(
         x_px[seen], y_px[seen], across.mm[seen], down.mm[seen], weight[seen], page.pixels.shape[:2]
     )
@@ -179,6 +183,24 @@ def _largest_part(seen: np.ndarray) -> np.ndarray:
     if count <= 1:
         return seen
     return labels == 1 + np.argmax(np.bincount(labels.ravel())[1:])
+
+
+def _flat_part(
+    seen: np.ndarray, px: tuple[np.ndarray, np.ndarray], mm: tuple[np.ndarray, np.ndarray]
+) -> np.ndarray:
+    """The cells that lie on one plane, as those of a scanned page do, unless they are too few.
+
+    Where little is left of a ruling, its phase slips by whole cycles from cell to cell.
+    """
+    places_px, places_mm = (np.stack([v[seen] for v in pair], axis=1) for pair in (px, mm))
+    _, flat = cv2.estimateAffine2D(
+        places_px, places_mm, method=cv2.RANSAC, ransacReprojThreshold=FLAT_MM
+    )
+    if flat is None or np.mean(flat) < MOSTLY_FLAT:
+        return seen
+    part = seen.copy()
+    part[seen] = flat.ravel() > 0
+    return part
 
 
 def _without_grid(page: Page, options: Options) -> Grid:

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from digitize.errors import NoGrid
-from digitize.grid import Grid, find_grid
+from digitize.grid import Grid, _flat_part, find_grid
 from digitize.options import Options
 from digitize.pages import Page
 from digitize.tracing import PageSource
@@ -125,3 +125,15 @@ def test_a_given_scale_stands_in_for_the_grid_and_is_called_given():
     assert grid.px_per_mm == pytest.approx((8.04, 3.85))
     x_mm, y_mm = grid.page_map.to_mm(np.array([80.4]), np.array([38.5]))
     np.testing.assert_allclose((x_mm, y_mm), 10.0, atol=1e-6)
+
+
+def test_cells_whose_phase_slipped_are_left_out_of_a_flat_page():
+    y_px, x_px = np.mgrid[:20, :30] * 16.0
+    x_mm, y_mm = x_px / 8 + 0.01 * y_px, y_px / 4
+    x_mm[:, 22:] += np.arange(1, 9)  # a millimetre lost from cell to cell
+    seen = np.ones(x_px.shape, bool)
+    flat = _flat_part(seen, (x_px, y_px), (x_mm, y_mm))
+    assert flat[:, :22].all()
+    assert not flat[:, 23:].any()
+    bent = _flat_part(seen, (x_px, y_px), (x_mm + (x_px / 60) ** 2, y_mm))
+    assert bent.all()  # no plane holds most of them: what they follow is told by the scatter
