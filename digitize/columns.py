@@ -9,7 +9,7 @@ import scipy as sp
 
 from digitize.ink import Ink
 from digitize.marks import Mark
-from digitize.rows import STEP_MM, Row, Rows, Runs, row_extent, runs_of_row
+from digitize.rows import FADED_GAPS, STEP_MM, Row, Rows, Runs, row_extent, runs_of_row
 from digitize.sheet import Box
 
 SEARCH_MM = 4.0  # a column edge lies this near to an even division of the row
@@ -286,9 +286,25 @@ def row_breaks(rows: Rows) -> Breaks:
         spans: list[list[tuple[float, float]]] = [[] for _ in range(steps)]
         for c, a, b in zip(column[near], runs.top_mm[near], runs.bottom_mm[near], strict=True):
             spans[c].append((a, b))
+        spans = _unfaded(spans)
         inked[number] = [bool(span) for span in spans]
         broken[number, 1:] = [not _touch(a, b) for a, b in pairwise(spans)]
     return Breaks(first + np.arange(steps) * STEP_MM, broken, inked)
+
+
+def _unfaded(spans: list[list[tuple[float, float]]]) -> list[list[tuple[float, float]]]:
+    """Runs of a row by column; of a faint one that is broken everywhere, with its gaps bridged.
+
+    Such gaps say nothing of where leads begin and end.
+    """
+    cols = [c for c, span in enumerate(spans) if span]
+    gaps = [(a, b) for a, b in pairwise(cols) if b - a > 1]
+    if len(gaps) <= FADED_GAPS:
+        return spans
+    whole = list(spans)
+    for a, b in gaps:
+        whole[a + 1 : b] = [spans[a]] * (b - a - 1)
+    return whole
 
 
 def _touch(before: list[tuple[float, float]], after: list[tuple[float, float]]) -> bool:

@@ -1,11 +1,12 @@
 """One trace's line over the page's pixels: where it begins, what its fit sees, what it draws."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import scipy as sp
 
+from digitize.dropout import between_rows
 from digitize.fit import ROUNDS, STEP_MM, Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
 from digitize.pen import Pen, draw_line, envelope
@@ -21,10 +22,14 @@ _NEAR_MM = 0.4  # ink so far from the start must be explained
 
 @dataclass(frozen=True, eq=False)
 class Course:
-    """Nodes of a line in columns `x` and rows `y` of the ink's raster; NaN where it has no ink."""
+    """Nodes of a line in columns `x` and rows `y` of the ink's raster; NaN where it has no ink.
+
+    Where it faded between two rows of the page's pixels, `faded` holds its height, elsewhere NaN.
+    """
 
     x: np.ndarray
     y: np.ndarray
+    faded: np.ndarray | None = None
 
     @property
     def inked(self) -> bool:
@@ -54,7 +59,8 @@ def begin(way: Way, left_mm: float, right_mm: float, pen: Pen, ink: Ink) -> Cour
     gap = max(round(BRIDGE_MM * ink.raster.px_per_mm), 1)
     bare = sp.ndimage.binary_opening(~inked, np.ones(gap))
     y[np.interp(x, cols, bare.astype(float)) > 0.5] = np.nan
-    return Course(x, y)
+    faded = np.interp(x, cols, between_rows(way, ink), left=np.nan, right=np.nan)
+    return Course(x, np.where(np.isnan(faded), y, faded), faded)
 
 
 def cut_out(
@@ -110,7 +116,10 @@ def fit(cut: Cut, course: Course, pen: Pen, rounds: int = ROUNDS) -> Line:
 
 def placed(line: Line, cut: Cut, course: Course) -> Course:
     """A fitted line on the page, with the gaps that its course had."""
-    return Course(course.x, np.where(np.isnan(course.y), np.nan, line.y_px + cut.row0))
+    y = np.where(np.isnan(course.y), np.nan, line.y_px + cut.row0)
+    if course.faded is not None:
+        y = np.where(np.isnan(course.faded), y, course.faded)
+    return replace(course, y=y)
 
 
 def lay(image: np.ndarray, course: Course, pen: Pen, row0: int = 0, col0: int = 0) -> None:

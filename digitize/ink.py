@@ -28,7 +28,8 @@ class Ink:
 
     `density` is float32, (rows, cols): the share of each pixel that ink covers, 0 on bare or ruled
     paper, about 1 in the middle of a full stroke, noise may be negative. `hidden` is True where
-    the paper cannot be seen. `noise` is the standard deviation of `density` on bare paper.
+    the paper cannot be seen. `noise` is the standard deviation of `density` on bare paper. Of a
+    `bilevel` page each pixel was black or white.
     """
 
     density: np.ndarray
@@ -37,6 +38,7 @@ class Ink:
     noise: float
     ruled_mm: tuple[float, float, float, float]
     source_px_per_mm: tuple[float, float]
+    bilevel: bool = False
 
 
 def find_ink(sheet: Sheet) -> Ink:
@@ -64,6 +66,7 @@ def find_ink(sheet: Sheet) -> Ink:
         noise=max(noise / full, 0.004),
         ruled_mm=sheet.ruled_mm,
         source_px_per_mm=sheet.source_px_per_mm,
+        bilevel=sheet.bilevel,
     )
 
 

@@ -21,6 +21,8 @@ BIN_MM = 0.25
 LEAST_PITCH_MM = 6.0
 THICKEST_PEN_MM = 1.3
 GAP_MM = 0.6  # specks of paper within a line are shorter
+FADED_GAPS = 12  # in a row: a trace that breaks off so often does not do so between leads alone
+FADED_MM = 5.0  # and for so long at most
 QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
 OUTSIDE_MM = 2.0  # the zero line of a trace lies on the ruling, or this near
 DROPPED_ROW = 3.0  # log odds against a row found that is none
@@ -197,6 +199,7 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
     x = np.unique(runs.x_mm[runs_of_row(runs, y_mm, pitch_mm)])
     if len(x) < 20:
         return None
+    x = _bridged(x)
     first = np.floor(x[0])
     inked = np.minimum(np.bincount((x - first).astype(int)) * STEP_MM, 1.0)
     # Half of a stretch is enough: a faint trace is broken everywhere.
@@ -217,6 +220,16 @@ def row_extent(runs: Runs, y_mm: float, pitch_mm: float) -> Row | None:
         if part[0] < left and left - part[-1] < QRS_MM and _is_piece(part):
             left = part[0]
     return Row(y_mm, float(left), float(right))
+
+
+def _bridged(x_mm: np.ndarray) -> np.ndarray:
+    """Places of ink along a row; of a faint one that is broken everywhere, with its gaps."""
+    gaps = np.diff(x_mm)
+    if np.count_nonzero(gaps > GAP_MM) <= FADED_GAPS:
+        return x_mm
+    short = np.flatnonzero((gaps > GAP_MM) & (gaps < FADED_MM))
+    between = (np.arange(x_mm[k] + STEP_MM, x_mm[k + 1] - STEP_MM / 2, STEP_MM) for k in short)
+    return np.sort(np.concatenate([x_mm, *between]))
 
 
 def runs_of_row(runs: Runs, y_mm: float, pitch_mm: float) -> np.ndarray:

@@ -63,7 +63,8 @@ class Sheet:
 
     `pixels` is uint8, (rows, cols) or (rows, cols, 3); `inside` is a bool mask, False where the
     raster lies outside the photographed or scanned page. `ruled_mm` is where grid lines were seen
-    (left, top, right, bottom); `source_px_per_mm` says how fine the page itself was.
+    (left, top, right, bottom); `source_px_per_mm` says how fine the page itself was, across and
+    down, and `bilevel` whether it had black and white alone.
     """
 
     pixels: np.ndarray
@@ -71,6 +72,7 @@ class Sheet:
     raster: Raster
     ruled_mm: tuple[float, float, float, float]
     source_px_per_mm: tuple[float, float]
+    bilevel: bool = False
 
 
 def flatten(page: Page, grid: Grid) -> Sheet:
@@ -105,7 +107,7 @@ def flatten(page: Page, grid: Grid) -> Sheet:
     map_x = (map_x + 0.5) / factor - 0.5
     map_y = (map_y + 0.5) / factor - 0.5
     flat = cv2.remap(pixels, map_x, map_y, cv2.INTER_CUBIC, borderMode=cv2.BORDER_REPLICATE)
-    return Sheet(flat, inside, raster, grid.ruled_mm, native)
+    return Sheet(flat, inside, raster, grid.ruled_mm, native, page.bilevel)
 
 
 def _frame(grid: Grid) -> tuple[float, float, float, float]:

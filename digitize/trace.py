@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from digitize.course import BRIDGE_MM, Course, begin, cut_out, fit, lay, placed, tremble
+from digitize.dropout import row_error_px
 from digitize.fit import Line
 from digitize.ink import Ink
 from digitize.layout import Layout
@@ -141,6 +142,8 @@ def _stroke(
     if line is None:
         return Stroke(x_mm, y_mm, y_mm.copy(), nib[0], 1.0, ("no ink in this panel",), *nib[1:])
     sigma_px = np.hypot(line.sigma_px, tremble(ways[k], course, pen))
+    if course.faded is not None:
+        sigma_px = np.where(np.isnan(course.faded), sigma_px, row_error_px(ink))
     sigma_mm = np.where(missing, np.nan, sigma_px / px)
     notes = (f"no ink on the path for more than {BRIDGE_MM} mm",) if missing.any() else ()
     unexplained = _unexplained(k, ways, courses, pen, ink)

@@ -4,6 +4,7 @@ Two lines that cross and two that touch and turn back leave the same ink. No red
 apart, but a pen does not change its direction just where another trace passes.
 """
 
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -64,7 +65,7 @@ def _exchanged(
     over = np.zeros(len(x), bool)
     for state, (start, stop) in zip(crossed, pairwise([0, *meetings, len(x)]), strict=True):
         over[start:stop] = state
-    return _with(one, x, y[1], over), _with(two, x, y[0], over)
+    return _with(one, two, x, over), _with(two, one, x, over)
 
 
 def _meetings(apart: np.ndarray, width_px: float) -> list[int]:
@@ -72,7 +73,8 @@ def _meetings(apart: np.ndarray, width_px: float) -> list[int]:
     distance = np.where(np.isfinite(apart), np.abs(apart), np.inf)
     inner = distance[1:-1]
     nearest = (inner <= distance[:-2]) & (inner < distance[2:]) & (inner < width_px)
-    crossing = np.flatnonzero(np.diff(np.sign(np.nan_to_num(apart, nan=1.0))) != 0)
+    # a line that begins or ends beside another, however far away, does not cross it
+    crossing = np.flatnonzero(apart[:-1] * apart[1:] < 0)
     found = np.union1d(np.flatnonzero(nearest) + 1, crossing)
     merged: list[int] = []
     for node in found:
@@ -114,7 +116,11 @@ def _turns(y: tuple[np.ndarray, np.ndarray], node: int) -> tuple[float, float]:
     return _BETTER * stay, go
 
 
-def _with(course: Course, x: np.ndarray, y: np.ndarray, over: np.ndarray) -> Course:
+def _with(course: Course, other: Course, x: np.ndarray, over: np.ndarray) -> Course:
     """A line that takes another's heights where `over` is True."""
     taken = np.interp(course.x, x, over.astype(float), left=0, right=0) > 0.5
-    return Course(course.x, np.where(taken, np.interp(course.x, x, y), course.y))
+    y = np.where(taken, np.interp(course.x, other.x, other.y), course.y)
+    if course.faded is None or other.faded is None:
+        return replace(course, y=y)
+    faded = np.where(taken, np.interp(course.x, other.x, other.faded), course.faded)
+    return replace(course, y=y, faded=faded)

@@ -32,6 +32,7 @@ _DOT_MM = 0.6
 _DITHERED = 0.3  # so many dots on a square millimetre are dither or the rest of a grid, not dirt
 _COHERENT_MM = 1.2
 _DIRECTIONS = 12
+_THINNEST_MM = 0.3  # of a recorder's usual pens; common practice
 EDGE = 0.5  # density at the edge of a full stroke
 
 
@@ -65,7 +66,8 @@ def find_routes(ink: Ink, layout: Layout) -> Routes:
     clear = without_printing(ink, layout.words + layout.marks)
     if _dots_per_mm2(clear, ink.raster.px_per_mm) > _DITHERED:
         clear = coherent(clear, ink.raster.px_per_mm)
-    field = to_field(clear, ink.raster)
+    whole = as_thick_as_a_pen(clear, ink.raster.px_per_mm) if ink.bilevel else clear
+    field = to_field(whole, ink.raster)
     anchors = find_anchors(field.bare < INKED, panels, field.y_mm, field.x_mm)
     field = replace(field, pen_mm=_thickness_mm(field, anchors))
     row_mm = _row_distance_mm(panels)
@@ -152,6 +154,24 @@ def coherent(density: np.ndarray, px_per_mm: float) -> np.ndarray:
         kernel = line.astype(np.float32) / line.sum()
         np.maximum(strongest, cv2.filter2D(density, -1, kernel), out=strongest)
     return strongest
+
+
+def as_thick_as_a_pen(density: np.ndarray, px_per_mm: float) -> np.ndarray:
+    """Density with strokes that are thinner than any pen as thick as one.
+
+    A black and white page loses the edges of a stroke first, then the places where it is thin or
+    where two rows of pixels share it: as thick as it was, it is whole again.
+    """
+    inked = (density > EDGE).astype(np.int8)
+    edges = sum(np.count_nonzero(np.diff(inked, axis=axis)) for axis in (0, 1))
+    if not edges:
+        return density
+    # twice area over perimeter; a line of any direction crosses pi/4 as many edges as it is long
+    thick_mm = 2 * inked.sum() / (np.pi / 4 * edges) / px_per_mm
+    missing_px = int(np.ceil((_THINNEST_MM - thick_mm) * px_per_mm))
+    if missing_px < 1:
+        return density
+    return cv2.dilate(density, np.ones((missing_px + 1, missing_px + 1), np.uint8))
 
 
 def _search(

@@ -113,6 +113,7 @@ def _ink(sheet: Sheet, drawn: DrawnPage) -> Ink:
         noise=max(noise, 0.004),
         ruled_mm=sheet.ruled_mm,
         source_px_per_mm=sheet.source_px_per_mm,
+        bilevel=sheet.bilevel,
     )
 
 

@@ -16,7 +16,7 @@ from digitize.columns import (
     without_marks,
 )
 from digitize.marks import Mark, find_marks
-from digitize.rows import Row, Rows
+from digitize.rows import Row, Rows, Runs
 from tests.digitize.drawn_ink import CHART, perfect_sheet, rows_of
 from tests.drawn.spec import PageSpec
 
@@ -127,3 +127,12 @@ def test_a_mark_belongs_to_the_row_on_which_its_foot_stands():
     marks = (Mark(5.0, 10.0, 14.0, 24.0), Mark(5.0, 10.0, 40.5, 50.5), Mark(5.0, 10.0, 31.0, 41.0))
     assert marks_of_row(Row(24.1, 0.0, 100.0), marks, 26.0) == [marks[0]]
     assert marks_of_row(Row(50.0, 0.0, 100.0), marks, 26.0) == [marks[1]]
+
+
+def test_gaps_of_a_line_that_fades_everywhere_are_no_edges():
+    x_mm = np.arange(0, 100, 0.25)
+    x_mm = x_mm[x_mm % 5 < 1.25]
+    runs = Runs(x_mm, np.full(len(x_mm), 19.9), np.full(len(x_mm), 20.1))
+    breaks = row_breaks(Rows((Row(20.0, 0.0, 96.0),), 30.0, runs, ()))
+    assert breaks.inked.all()
+    assert not breaks.broken.any()

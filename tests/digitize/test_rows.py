@@ -159,3 +159,16 @@ def test_a_short_piece_at_the_very_edge_of_the_picture_is_no_start_of_a_row():
     row = row_extent(runs, 50.0, 25.0)
     assert row is not None
     assert (row.left_mm, row.right_mm) == pytest.approx((22.25, 142.25))
+
+
+def test_a_row_whose_line_fades_everywhere_reaches_over_its_gaps():
+    x_mm = np.arange(0, 100, 0.25)
+    x_mm = x_mm[x_mm % 5 < 1.25]
+    runs = Runs(x_mm, np.full(len(x_mm), 19.9), np.full(len(x_mm), 20.1))
+    row = row_extent(runs, 20.0, 30.0)
+    assert (row.left_mm, row.right_mm) == pytest.approx((0.0, 96.0), abs=0.3)
+    few = x_mm < 20  # three gaps are gaps between leads, not a line that fades
+    assert (
+        row_extent(Runs(*(a[few] for a in (runs.x_mm, runs.top_mm, runs.bottom_mm))), 20.0, 30.0)
+        is None
+    )

@@ -59,3 +59,25 @@ def test_a_gap_is_not_filled_from_the_other_line():
     courses = _courses(upper, np.maximum(falling, rising))
     after, _ = uncross(courses, [np.array([190.0]), np.array([190.0])], WIDTH)
     assert sum(np.isnan(line.y).sum() for line in after) == np.isnan(upper).sum()
+
+
+def test_gaps_of_lines_far_apart_are_no_meetings():
+    upper = np.full(len(X), 20.0)
+    upper[np.arange(len(X)) % 40 < 12] = np.nan
+    lower = 90 + 3 * np.sin(X / 5)
+    after, changed = uncross(_courses(upper, lower), [NOWHERE, NOWHERE], WIDTH)
+    assert not changed
+    assert np.nanmax(after[0].y) == 20.0
+
+
+def test_a_line_that_takes_another_s_way_takes_what_faded_there_too():
+    deep = 50 + 60 * np.exp(-0.5 * ((X - 100) / 10) ** 2)
+    level = np.full(len(X), 80.0)
+    faded = np.where(X < 120, np.nan, 1.0), np.where((X > 95) & (X < 105), deep, np.nan)
+    lines = np.minimum(deep, level), np.maximum(deep, level)
+    courses = [Course(X, y, f) for y, f in zip(lines, faded, strict=True)]
+    (upper, lower), _ = uncross(courses, [np.array([10.0, 190.0])] * 2, WIDTH)
+    assert (
+        np.isfinite(upper.faded).sum() == np.isfinite(faded[0]).sum() + np.isfinite(faded[1]).sum()
+    )
+    assert np.isnan(lower.faded).all()

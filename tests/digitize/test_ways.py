@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from digitize.ways import coherent
+from digitize.ways import as_thick_as_a_pen, coherent
 
 
 @pytest.mark.parametrize("lean", [0, 1, 3])
@@ -25,3 +25,19 @@ def test_a_stroke_broken_by_dither_goes_on_and_dots_do_not(lean):
     clean = coherent(stroke.astype(np.float32), px_per_mm=8.0)
     assert clean[80, 100 + 60 * lean // 4] == pytest.approx(1, abs=0.35)
     assert clean[80, 100 + 60 * lean // 4 + 20] == 0
+
+
+def test_a_stroke_thinner_than_any_pen_is_whole_again():
+    density = np.zeros((60, 400), np.float32)
+    density[30, ::3] = density[30, 1::3] = 1.0  # 0.125 mm, and every third pixel lost
+    thick = as_thick_as_a_pen(density, 8.0)
+    inked = thick[:, 5:395] > 0.5
+    assert inked.any(axis=0).all()
+    assert inked.sum(axis=0).max() * 0.125 <= 0.45
+
+
+def test_a_pen_s_stroke_and_bare_paper_stay_as_they_are():
+    density = np.zeros((60, 400), np.float32)
+    assert as_thick_as_a_pen(density, 8.0) is density
+    density[29:32] = 1.0  # 0.375 mm
+    assert as_thick_as_a_pen(density, 8.0) is density
