@@ -1,5 +1,6 @@
 """Speed and gain: as printed, as the calibration marks show, as given; else assumed."""
 
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
@@ -14,6 +15,7 @@ from digitize.words import GAINS_MM_MV, SPEEDS_MM_S, Printing, printed_gains, pr
 
 USUAL_SPEED_MM_S, USUAL_GAIN_MM_MV = 25.0, 10.0  # common practice
 MOST_S = 14.0  # usual recordings are 10 s; of longer rows the speed is not taken from marks alone
+SIDE_BY_SIDE_MM = 12.0  # marks at the two ends of a row stand far apart
 NEAR = 0.06  # a mark this near to a usual size has that size
 
 
@@ -131,14 +133,35 @@ def _row_gains(
     gains = {}
     for row in rows.rows:
         own = sorted(marks_of_row(row, marks, rows.pitch_mm), key=lambda m: m.left_mm)
-        known = [_usual(np.array([m.height_mm]), GAINS_MM_MV) for m in own]
-        heights = [k[0] for k in known if k is not None]
+        heights = _heights(own, marks)
         if heights:
             limb, chest = heights[0], heights[-1]
             if len(heights) == 1 and len(printed) == 2 and heights[0] in printed:
                 limb, chest = printed[0], printed[1]
             gains[row.y_mm] = (limb, chest)
     return gains
+
+
+def _heights(own: Sequence[Mark], marks: Sequence[Mark]) -> list[float]:
+    """Usual heights of a row's marks, from left to right.
+
+    A recorder draws one mark at an end of a row. Of two side by side that differ, one is something
+    else, such as black ruling; the height that more marks of the page have is believed.
+    """
+    usual = {m: _usual(np.array([m.height_mm]), GAINS_MM_MV) for m in marks}
+    votes = Counter(known[0] for known in usual.values() if known is not None)
+    heights: list[float] = []
+    last_mm = -np.inf
+    for mark in own:
+        known = usual[mark]
+        if known is None:
+            continue
+        if mark.left_mm - last_mm > SIDE_BY_SIDE_MM:
+            heights.append(known[0])
+        elif votes[known[0]] > votes[heights[-1]]:
+            heights[-1] = known[0]
+        last_mm = mark.right_mm
+    return heights
 
 
 def _between_rows(

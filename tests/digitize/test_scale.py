@@ -118,3 +118,12 @@ def test_a_strip_of_a_chest_lead_with_a_mark_of_its_own_tells_the_chest_leads_ga
 def test_digits_that_ran_together_are_no_speed():
     scale = find_scale(printing("1025 mm/s"), ROWS, (), Options())
     assert scale.speed_mm_s.source == "assumed"
+
+
+def test_of_two_marks_side_by_side_the_one_like_the_others_counts():
+    black_ruling = mark(40.0, height_mm=20.0, left_mm=16.0)
+    scale = find_scale(printing("10 mm/mV"), ROWS, (*MARKS, black_ruling), Options())
+    assert scale.gain_of(40.0, "II") == scale.gain_of(40.0, "V2") == 10.0
+    at_the_end = mark(40.0, height_mm=5.0, left_mm=262.0)  # chest leads with a mark of their own
+    scale = find_scale(printing(), ROWS, (*MARKS, at_the_end), Options())
+    assert (scale.gain_of(40.0, "II"), scale.gain_of(40.0, "V2")) == (10.0, 5.0)
