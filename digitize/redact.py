@@ -2,8 +2,8 @@
 
 What may stay is listed, rather than what must go: the panels, the pen's own path, calibration
 marks, lead names, a line that holds the run ("25 mm/s 10 mm/mV") and nothing else. All else takes
-the colour of the paper, whether or not anything was recognised there. Within the panels, pieces of
-ink that have the size of letters and lie off the traces are covered.
+the colour of the paper, whether or not anything was recognised there. Within the panels the grid
+stays; letters are covered, and other ink that cannot be a stretch of a trace.
 """
 
 import re
@@ -17,6 +17,8 @@ from digitize.geometry import page_map_of
 from digitize.pagemap import PageMap
 from digitize.pages import Page
 from digitize.read import Stages
+from digitize.sheet import Box
+from digitize.stray import stray_ink
 from digitize.tracing import Panel
 from digitize.words import SPELLINGS, read_printing
 
@@ -37,10 +39,18 @@ def cover(stages: Stages) -> Page:
     """
     page, tracing = stages.page, stages.tracing
     page_map = page_map_of(tracing.geometry)
-    boxes, kept, letters = (np.zeros(page.pixels.shape[:2], np.uint8) for _ in range(3))
+    boxes, kept, letters, strays = (np.zeros(page.pixels.shape[:2], np.uint8) for _ in range(4))
+    lines = []
     for panel, fact in zip(tracing.panels, tracing.geometry["panels"], strict=True):
         _fill(boxes, page_map, panel.box_mm, 0.0)
-        _follow(kept, page_map, panel, fact)
+        lines += _lines(panel, fact)
+    for line in lines:
+        width_px = max(round(2 * _BESIDE_TRACE_MM * max(page_map.scale_px_per_mm())), 3)
+        cv2.polylines(kept, [_on_page(line, page_map)], False, 255, width_px)
+    panels = [Box(*panel.box_mm) for panel in tracing.panels]
+    outlines = stray_ink(stages.ink, panels, lines, _BESIDE_TRACE_MM)
+    if outlines:
+        cv2.fillPoly(strays, [_on_page(outline, page_map) for outline in outlines], 255)
     for mark in tracing.geometry["marks_mm"]:
         _fill(kept, page_map, tuple(mark), _AROUND_MARK_MM)
     printing = read_printing(stages.ink)
@@ -49,7 +59,7 @@ def cover(stages: Stages) -> Page:
     for word in (*printing.words, *printing.lines):
         if names_lead(word.text, tracing.leads) or states_run(word.text):
             _fill(kept, page_map, astuple(word.box), _AROUND_LETTER_MM)
-    stays = (kept > 0) | ((boxes > 0) & (letters == 0))
+    stays = (kept > 0) | ((boxes > 0) & (letters == 0) & (strays == 0))
     pixels = page.pixels.copy()
     pixels[~stays] = _paper(page.pixels, boxes > 0)
     return replace(page, pixels=pixels, drawing=None)
@@ -103,20 +113,20 @@ def _fill(mask: np.ndarray, page_map: PageMap, box_mm: tuple[float, ...], around
         [np.full(_STEPS, top), top + there * (bottom - top), np.full(_STEPS, bottom),
          bottom - there * (bottom - top)]
     )  # fmt: skip
-    x_px, y_px = page_map.to_px(x_mm, y_mm)
-    points = np.rint(np.stack([x_px, y_px], axis=1)).astype(np.int32)
-    cv2.fillPoly(mask, [points], 255)
+    cv2.fillPoly(mask, [_on_page(np.stack([x_mm, y_mm], axis=1), page_map)], 255)
 
 
-def _follow(mask: np.ndarray, page_map: PageMap, panel: Panel, fact: dict) -> None:
-    """Set what lies beside the path of a trace, each stretch without a gap for itself."""
+def _lines(panel: Panel, fact: dict) -> list[np.ndarray]:
+    """The path of a trace, (n, 2) x and y in mm: each stretch without a gap for itself."""
     sign = -1.0 if fact["upside_down"] else 1.0
     x_mm = panel.box_mm[0] + (panel.time_s - panel.start_s) * panel.speed_mm_s
     y_mm = fact["baseline_mm"] - sign * panel.mv * panel.gain_mm_mv
     known = np.flatnonzero(np.isfinite(y_mm))
-    width_px = max(round(2 * _BESIDE_TRACE_MM * max(page_map.scale_px_per_mm())), 3)
-    for part in np.split(known, np.flatnonzero(np.diff(known) > 1) + 1):
-        if len(part):
-            x_px, y_px = page_map.to_px(x_mm[part], y_mm[part])
-            points = np.rint(np.stack([x_px, y_px], axis=1)).astype(np.int32)
-            cv2.polylines(mask, [points], False, 255, width_px)
+    parts = np.split(known, np.flatnonzero(np.diff(known) > 1) + 1)
+    return [np.stack([x_mm[part], y_mm[part]], axis=1) for part in parts if len(part)]
+
+
+def _on_page(points_mm: np.ndarray, page_map: PageMap) -> np.ndarray:
+    """Places of the paper in whole pixels of the page, (n, 2) int32."""
+    points = np.stack(page_map.to_px(points_mm[:, 0], points_mm[:, 1]), axis=1)
+    return np.rint(points).astype(np.int32)

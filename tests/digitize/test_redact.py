@@ -9,10 +9,11 @@ from typer.testing import CliRunner
 
 from digitize.cli import app
 from digitize.geometry import to_geometry
+from digitize.ink import Ink
 from digitize.pages import Page
 from digitize.read import Stages
 from digitize.redact import cover, leftover, names_lead, states_run
-from digitize.sheet import Box
+from digitize.sheet import Box, Raster
 from digitize.tracing import LEADS
 from digitize.words import Printing, Word
 from tests.digitize.made_tracing import SOURCE, grid, layout_of, tracing
@@ -50,7 +51,16 @@ def page(monkeypatch):
     layout, strokes = layout_of(made)
     made = replace(made, geometry=to_geometry(grid(PX_PER_MM), layout, strokes))
     page = Page(pixels, SOURCE)
-    return Stages(page, grid(PX_PER_MM), None, None, None, layout, strokes, made)
+    return Stages(page, grid(PX_PER_MM), None, ink_of(pixels), None, layout, strokes, made)
+
+
+def ink_of(pixels):
+    """The ink of a page whose pixels are a raster of whole millimetres."""
+    shape, scale = pixels.shape, (PX_PER_MM, PX_PER_MM)
+    density = (pixels == INK).astype(np.float32)
+    ruled_mm = (0.0, 0.0, shape[1] / PX_PER_MM, shape[0] / PX_PER_MM)
+    raster = Raster(0.0, 0.0, PX_PER_MM)
+    return Ink(density, np.zeros(shape, bool), raster, 0.01, ruled_mm, scale)
 
 
 def test_header_and_notes_are_covered_names_and_run_stay(page):
@@ -67,6 +77,15 @@ def test_what_the_recogniser_did_not_see_outside_the_panels_is_covered_too(page)
     unseen = Box(200, 12, 220, 16)
     page.page.pixels[at(unseen)] = INK
     assert (cover(page).pixels[at(unseen)] == PAPER).all()
+
+
+def test_writing_within_a_panel_that_is_no_letter_is_covered_too(page):
+    """A flourish of 20 mm near the upper edge of the panel, beyond the R waves."""
+    y_mm = page.tracing.geometry["panels"][0]["baseline_mm"] - 17
+    flourish = Box(30, y_mm, 50, y_mm + 1.5)
+    page.page.pixels[at(flourish)] = INK
+    written = replace(page, ink=ink_of(page.page.pixels))
+    assert (cover(written).pixels[at(flourish)] == PAPER).all()
 
 
 def test_a_trace_that_leaves_its_panel_stays(page):
