@@ -11,6 +11,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from digitize.ink import Ink
+from digitize.rules import without_crossings
 from digitize.sheet import Box
 from digitize.words import NAMES, Word, read_boxes
 
@@ -21,6 +22,7 @@ SAME_Y = 0.1  # of the distance between rows: traces wander about their zero lin
 WEIGHT: Mapping[str, float] = {"I": 0.35, "II": 0.6, "III": 0.8}
 # Evidence against two places for the names, on one level and on two.
 APART_LEVEL, APART = 1.0, 2.0
+FAR = 1.5  # evidence against names that stand nearer to the neighbouring row
 DOUBT = -5.0  # a crop that no name explains better than this says nothing
 
 
@@ -95,7 +97,8 @@ def _fit_aligned(
             x = word.box.right_mm if right else word.box.left_mm
             dx = x - slot.x_mm
             dy = (word.box.top_mm + word.box.bottom_mm) / 2 - slot.y_mm
-            if -REACH_LEFT_MM < dx < REACH_RIGHT_MM and abs(dy) < 0.85 * pitch_mm:
+            near = -REACH_LEFT_MM < dx < REACH_RIGHT_MM and abs(dy) < 0.85 * pitch_mm
+            if near and not _mere_stroke(names, slot):
                 pairs.append(_Pair(slot, word, dx, dy, _gain(slot, names)))
     if not pairs:
         return LabelFit(0.0, {}, None, right, ())
@@ -108,6 +111,11 @@ def _fit_aligned(
     first = _usual_place([pair for pair in chosen if pair.slot.column == 0])
     inner = _usual_place([pair for pair in chosen if pair.slot.column > 0])
     return LabelFit(score, read, first, right, boxes, inner, places)
+
+
+def _mere_stroke(names: Mapping[str, float], slot: Slot) -> bool:
+    """Whether a reading is an upright stroke or some where letters are expected: a separator."""
+    return slot.name is not None and slot.name not in WEIGHT and _likeliest(names)[0] in WEIGHT
 
 
 def _usual_place(pairs: Sequence[_Pair]) -> tuple[float, float] | None:
@@ -124,6 +132,7 @@ def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair],
     dy = np.array([pair.dy_mm for pair in pairs])
     gain = np.array([pair.gain for pair in pairs])
     first = np.array([pair.slot.column == 0 for pair in pairs])
+    far = FAR * (np.abs(dy) > pitch_mm / 2)
     same_y_mm = max(SAME_Y * pitch_mm, 1.8)
 
     def best_at(group: np.ndarray) -> tuple[float, np.ndarray, int]:
@@ -131,7 +140,7 @@ def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair],
         best = 0.0, np.zeros(len(pairs), bool), -1
         for k in np.nonzero(group & (gain > 0.5))[0]:
             near = group & (np.abs(dx - dx[k]) < SAME_X_MM) & (np.abs(dy - dy[k]) < same_y_mm)
-            score = _one_each(_those(pairs, near))[0]
+            score = _one_each(_those(pairs, near))[0] - far[k]
             if score > best[0]:
                 best = score, near, int(k)
         return best
@@ -142,6 +151,7 @@ def _shared_place(pairs: Sequence[_Pair], pitch_mm: float) -> tuple[list[_Pair],
         # A calibration mark may push the names of the first column aside from the others', or
         # those of the first column stand left of their traces and the others above.
         price = APART_LEVEL if abs(dy[a] - dy[b]) < same_y_mm else APART
+        price += max(far[a], far[b])
         both, chosen = _one_each(_those(pairs, left | inner))
         if both - price > score:
             return chosen, both - price
@@ -196,8 +206,9 @@ def look_again(ink: Ink, fit: LabelFit, slots: Sequence[Slot], aside_mm: float =
     ]
     score, names = fit.score, dict(fit.names)
     looked = {(s.row, s.column): box for s, box in zip(missing, boxes, strict=True)}
-    for slot, word in zip(missing, read_boxes(ink, boxes), strict=True):
-        post = posterior(word)
+    plain, uncrossed = (read_boxes(of, boxes) for of in (ink, without_crossings(ink, boxes)))
+    for slot, *words in zip(missing, plain, uncrossed, strict=True):
+        post = max(map(posterior, words), key=lambda p: max(p.values(), default=0.0))
         if not post:
             continue
         score += min(max(_gain(slot, post), -1.0), 2.0)

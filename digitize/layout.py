@@ -137,15 +137,17 @@ def find_layout(
     options = options or Options()
     if not rows.rows:
         raise NoTrace("no ECG trace found on this page; give the page that holds the tracing")
-    marks = [m for row in rows.rows for m in marks_of_row(row, marks, rows.pitch_mm)]
-    rows = _at_zero_line(rows, marks)
+    marks_by_row = [marks_of_row(row, marks, rows.pitch_mm) for row in rows.rows]
+    marks = [mark for own in marks_by_row for mark in own]
+    rows = _at_zero_line(rows, marks_by_row)
     scale = find_scale(printing, rows, marks, options)
     with_marks = trace_extent(rows)
     rows = without_marks(rows, marks)
     extent = trace_extent(rows)
     aside_mm = extent.left_mm - with_marks.left_mm
     room = beyond_cuts(extent, ink)
-    hypotheses = _weigh(printing, rows, extent, room, scale, options)
+    marked = [bool(own) for own in marks_by_row]
+    hypotheses = _weigh(printing, rows, marked, extent, room, scale, options)
     if not hypotheses:
         raise NoTrace(
             f"{len(rows.rows)} rows of trace fit no usual layout; "
@@ -172,24 +174,29 @@ def find_layout(
     )
 
 
-def _at_zero_line(rows: Rows, marks: Sequence[Mark]) -> Rows:
+def _at_zero_line(rows: Rows, marks_by_row: Sequence[Sequence[Mark]]) -> Rows:
     """The rows at their calibration marks' zero line, where they have one: traces wander."""
-    feet = [[m.foot_mm for m in marks_of_row(row, marks, rows.pitch_mm)] for row in rows.rows]
     moved = (
-        replace(row, y_mm=float(np.median(own))) if own else row
-        for row, own in zip(rows.rows, feet, strict=True)
+        replace(row, y_mm=float(np.median([mark.foot_mm for mark in own]))) if own else row
+        for row, own in zip(rows.rows, marks_by_row, strict=True)
     )
     return replace(rows, rows=tuple(moved))
 
 
 def _weigh(
-    printing: Printing, rows: Rows, extent: Span, room: Span, scale: Scale, options: Options
+    printing: Printing,
+    rows: Rows,
+    marked: Sequence[bool],
+    extent: Span,
+    room: Span,
+    scale: Scale,
+    options: Options,
 ) -> list[_Hypothesis]:
     """All arrangements with the page's number of rows, the likeliest first."""
     found = []
     breaks = row_breaks(rows)
     ticks = [box for box in (*printing.letters, *rows.uprights) if _upright(box)]
-    for first, part, doubt in row_choices(rows):
+    for first, part, doubt in row_choices(rows, marked):
         for template in TEMPLATES:
             strips = len(part.rows) - template.rows
             if not 0 <= strips <= MOST_STRIPS or (strips and template.name == "1x1"):

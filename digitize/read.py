@@ -33,7 +33,7 @@ from digitize.trace import Stroke, trace_panels
 from digitize.tracing import Panel, Tracing
 from digitize.unseen import seen_marks, seen_printing
 from digitize.upright import find_turn, turn_page
-from digitize.words import Printing, read_printing
+from digitize.words import Printing, apart_from_traces, read_printing
 
 # What arithmetic on an unforeseen page can raise: LinAlgError is a ValueError.
 FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError, cv2.error)
@@ -90,7 +90,7 @@ def read_page(
     on_stage("printing")
     marks = tuple(find_marks(ink))
     letters = lettering(ink, marks)
-    printing = _printing(page, grid, letters)
+    printing = apart_from_traces(_printing(page, grid, letters), ink)
     turn_deg = find_turn(ink, printing) if options.turn_deg is None else options.turn_deg
     if turn_deg:
         return read_turned(page, turn_deg, options, on_stage)

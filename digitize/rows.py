@@ -5,6 +5,7 @@ run counts as one, whatever its length, so the profile of runs over height peaks
 spend their time: at their baselines.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
@@ -26,6 +27,7 @@ FADED_MM = 5.0  # and for so long at most
 QRS_MM, PIECE_MM = 3.0, 1.0  # a trace is away from its row for no longer; a piece of it is longer
 OUTSIDE_MM = 2.0  # the zero line of a trace lies on the ruling, or this near
 DROPPED_ROW = 3.0  # log odds against a row found that is none
+MARKED_ROW = 3.0  # the same if it begins with a calibration mark: what else has one?
 SOLID_MM = 7  # ink along half of this length is trace or mark, no speck
 SPECK_MM = 1.0  # ink smaller than this in both directions is halftone or dirt
 
@@ -243,23 +245,27 @@ def _is_piece(part: np.ndarray) -> bool:
     return bool(part[-1] - part[0] > PIECE_MM)
 
 
-def row_choices(rows: Rows) -> list[tuple[int, Rows, float]]:
-    """The rows found, and without an outermost one that may be no trace: first, rows, cost."""
+def row_choices(rows: Rows, marked: Sequence[bool]) -> list[tuple[int, Rows, float]]:
+    """The rows found, and without an outermost one that may be no trace: first, rows, cost.
+
+    `marked` says of each row whether a calibration mark stands in it.
+    """
     count = len(rows.rows)
     left = float(np.median([row.left_mm for row in rows.rows]))
     right = float(np.median([row.right_mm for row in rows.rows]))
 
-    def cost(row: Row) -> float:
+    def cost(row: Row, has_mark: bool) -> float:
         both = min(right, row.right_mm) - max(left, row.left_mm)
         either = max(right, row.right_mm) - min(left, row.left_mm)
-        return DROPPED_ROW if both > 0.93 * either else 0.3 * DROPPED_ROW
+        alike = DROPPED_ROW if both > 0.93 * either else 0.3 * DROPPED_ROW
+        return alike + MARKED_ROW * has_mark
 
+    costs = [cost(row, has) for row, has in zip(rows.rows, marked, strict=True)]
     choices = []
     for top in (0, 1):
         for bottom in (0, 1):
             kept = rows.rows[top : count - bottom]
-            dropped = (*rows.rows[:top], *rows.rows[count - bottom :])
             if kept:
-                doubt = sum(cost(row) for row in dropped)
+                doubt = sum((*costs[:top], *costs[count - bottom :]))
                 choices.append((top, replace(rows, rows=kept), doubt))
     return choices

@@ -20,6 +20,7 @@ LETTER_MM = 4.0  # what is no higher may be a letter with two upright strokes
 STROKE_MM = 0.6  # half a pen and its blur: ink of a mark's stroke lies this near to its middle
 TOUCHING = 0.4  # density beside a stroke of what touches it
 FAINTEST = 0.1  # density of ink that belongs to a stroke
+THROUGH = 1.25  # an upright stroke this much higher than a word is no part of it
 
 
 def straight_rules(mask: np.ndarray, ink: Ink) -> tuple[np.ndarray, tuple[Box, ...]]:
@@ -76,6 +77,27 @@ def lettering(ink: Ink, marks: Sequence[Mark]) -> Ink:
         if mark.height_mm > LETTER_MM:
             _take_off(density, mark, ink)
     return replace(ink, density=density)
+
+
+def without_crossings(ink: Ink, boxes: Sequence[Box]) -> Ink:
+    """Return the ink without the upright strokes of a trace that cross the words in some boxes."""
+    density, solid, scale = ink.density.copy(), solid_ink(ink), ink.raster.px_per_mm
+    for box in boxes:
+        high_mm = box.bottom_mm - box.top_mm
+        rows = _within(
+            ink.raster.row(box.top_mm - high_mm), ink.raster.row(box.bottom_mm + high_mm)
+        )
+        cols = _within(
+            ink.raster.col(box.left_mm - high_mm), ink.raster.col(box.right_mm + high_mm)
+        )
+        tall = np.ones((max(round(THROUGH * high_mm * scale), 3), 1), np.uint8)
+        stroke = cv2.morphologyEx(solid[rows, cols], cv2.MORPH_OPEN, tall)
+        density[rows, cols][cv2.dilate(stroke, np.ones((3, 3), np.uint8)) > 0] = 0
+    return replace(ink, density=density)
+
+
+def _within(low: float, high: float) -> slice:
+    return slice(max(round(low), 0), max(round(high), 0) + 1)
 
 
 def _take_off(density: np.ndarray, mark: Mark, ink: Ink) -> None:

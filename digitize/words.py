@@ -6,7 +6,7 @@ read once. A word is kept as soft evidence: how likely it is each of the lead na
 
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import cv2
 import numpy as np
@@ -30,6 +30,8 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
     "V3R": ("V3R", "V3r"),
     "V4R": ("V4R", "V4r"),
 }
+SPELT = {text for name in NAMES for text in SPELLINGS[name] if len(text) > 1}
+CLEAR = 0.8  # mean letter probability of a name that is surely one
 LETTER_MM = (0.7, 6.5)  # height of a letter
 WIDEST_LETTER_MM = 9.0
 TICK_WIDE = 0.25  # width of an upright stroke over its height
@@ -81,6 +83,23 @@ def read_printing(ink: Ink) -> Printing:
         lines=tuple(read_boxes(ink, lines)),
         letters=tuple(letters),
     )
+
+
+def apart_from_traces(printing: Printing, ink: Ink) -> Printing:
+    """Return printing that was read without straight rules, with the letters that are surely such.
+
+    Parameters
+    ----------
+    printing : Printing
+        Tall complexes that run into one another look like a rule, and without it the trace between
+        them falls into pieces as small as letters.
+    ink : Ink
+        With the rules: what is a piece of its own here, or reads as a name, is a letter.
+    """
+    whole = set(_pieces(ink)[0])
+    names = [word.box for word in printing.words if word.score > CLEAR and word.text in SPELT]
+    letters = (x for x in printing.letters if x in whole or any(_inside(x, n) for n in names))
+    return replace(printing, letters=tuple(letters))
 
 
 def read_boxes(ink: Ink, boxes: list[Box]) -> list[Word]:

@@ -107,6 +107,21 @@ def test_an_unread_name_leaves_its_place_empty():
     assert len(fit.names) == 11
 
 
+def test_ticks_between_columns_that_read_as_i_say_nothing_of_the_names_there():
+    ticks = [word("I", s.x_mm - 0.5, s.y_mm - 9.0, doubt=0.3) for s in SLOTS if s.column > 0]
+    left = [w for w in words_at((1.0, -9.0)) if w.box.left_mm < 40]
+    fit = fit_labels([*left, *ticks], SLOTS, PITCH_MM)
+    assert fit.score == pytest.approx(fit_labels(left, SLOTS, PITCH_MM).score)
+    assert set(fit.names) == {(0, 0), (1, 0), (2, 0)}
+
+
+def test_names_belong_to_the_nearer_row():
+    near = fit_labels(words_at((1.0, 7.0)), SLOTS, PITCH_MM)
+    far = fit_labels(words_at((1.0, -22.0)), SLOTS, PITCH_MM)
+    assert len(near.names) == len(far.names) == 12
+    assert near.score > far.score + 1
+
+
 def test_no_word_no_evidence():
     assert fit_labels([], SLOTS, PITCH_MM) == LabelFit(0.0, {}, None, False, ())
 
@@ -120,6 +135,22 @@ def test_a_missed_name_is_looked_for_where_the_others_say_it_stands():
     again = look_again(sheet.ink, replace(fit, names=kept), slots)
     assert again.names[0, 1][0] == "aVR"
     assert again.names[2, 3][0] == "V6"
+
+
+def test_a_name_that_a_tall_complex_crosses_is_read_without_it():
+    sheet = perfect_sheet(CHART)
+    panels = [p for p in sheet.composition.panels if not p.strip]
+    slots = tuple(Slot(p.row, p.column, p.x_mm[0], p.baseline_mm, p.lead) for p in panels)
+    fit = fit_labels(read_words(CHART).words, slots, CHART.layout.pitch_mm)
+    box, ink = fit.places[2, 3], sheet.ink
+    density, r = ink.density.copy(), ink.raster
+    middle = int(r.col(box.left_mm + 0.25 * (box.right_mm - box.left_mm)))
+    high = slice(int(r.row(box.top_mm - 8)), int(r.row(box.bottom_mm + 8)))
+    density[high, middle - 2 : middle + 2] = 1.0
+    kept = {key: name for key, name in fit.names.items() if key != (2, 3)}
+    again = look_again(replace(ink, density=density), replace(fit, names=kept), slots)
+    assert again.names[2, 3][0] == "V6"
+    assert again.names[2, 3][1] > 0.9
 
 
 def test_where_no_two_names_agree_there_is_no_place_to_look():

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from digitize.ink import Ink
-from digitize.rows import Runs, find_rows, row_extent
+from digitize.rows import MARKED_ROW, Runs, find_rows, row_choices, row_extent
 from tests.digitize.drawn_ink import CHART, perfect_sheet, rows_of
 from tests.drawn.heart import HeartSpec
 from tests.drawn.pen import draw_stroke
@@ -172,3 +172,16 @@ def test_a_row_whose_line_fades_everywhere_reaches_over_its_gaps():
         row_extent(Runs(*(a[few] for a in (runs.x_mm, runs.top_mm, runs.bottom_mm))), 20.0, 30.0)
         is None
     )
+
+
+def test_a_row_that_begins_with_a_calibration_mark_is_hardly_left_out():
+    rows = rows_of(CHART)
+    count = len(rows.rows)
+    plain = {
+        (first, len(part.rows)): cost for first, part, cost in row_choices(rows, [False] * count)
+    }
+    marked = {
+        (first, len(part.rows)): cost for first, part, cost in row_choices(rows, [True] * count)
+    }
+    assert plain[0, count] == marked[0, count] == 0
+    assert marked[1, count - 1] == plain[1, count - 1] + MARKED_ROW

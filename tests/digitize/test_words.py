@@ -8,7 +8,14 @@ import pytest
 
 from digitize.ink import Ink
 from digitize.sheet import Box, Raster
-from digitize.words import Printing, Word, printed_gains, printed_speeds, read_printing
+from digitize.words import (
+    Printing,
+    Word,
+    apart_from_traces,
+    printed_gains,
+    printed_speeds,
+    read_printing,
+)
 from tests.digitize.drawn_ink import CHART, perfect_sheet, read_words
 
 # ---- the printed run, from lines as they are read -----------------------------------------------
@@ -99,6 +106,15 @@ def test_letters_of_a_page_are_no_part_of_its_traces():
         for x_mm, y_mm in zip(at, np.interp(at, panel.x_mm, panel.y_mm), strict=True):
             spot = Box(x_mm, y_mm, x_mm + 0.1, y_mm + 0.1)
             assert not any(overlap(letter, spot) for letter in printing.letters)
+
+
+def test_pieces_of_a_trace_that_lost_its_tall_complexes_are_no_letters():
+    sheet, printing = perfect_sheet(CHART), read_words(CHART)
+    trace = max(sheet.composition.panels, key=lambda panel: float(panel.x_mm[-1]))
+    left_mm, y_mm = float(trace.x_mm[20]), float(trace.y_mm[20])
+    piece = Box(left_mm, y_mm - 1, left_mm + 4, y_mm + 1)
+    found = apart_from_traces(replace(printing, letters=(*printing.letters, piece)), sheet.ink)
+    assert found.letters == printing.letters
 
 
 def test_print_whose_letters_blur_has_joined_is_read_as_one_line():
