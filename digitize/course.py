@@ -9,14 +9,12 @@ import scipy as sp
 from digitize.dropout import between_rows
 from digitize.fit import ROUNDS, STEP_MM, Line, View, fit_line, start_from_edges
 from digitize.ink import Ink
-from digitize.pen import Pen, draw_line, envelope
+from digitize.pen import Pen, draw_line
+from digitize.tremor import tremor
 from digitize.ways import Way
 
 BRIDGE_MM = 0.4  # a longer gap in the ink stays a gap: 16 ms at 25 mm/s
 _BESIDE_MM = 0.4  # ink of the last samples beyond the end of a panel: half a pen and its blur
-_STRETCH_MM = 6.0
-_TOUCHES = 0.3  # of an edge's weight, below which a node does not hold it
-_HIDDEN_POWER = 2.5  # two independent shakings, and some for nodes that are hidden in part
 _NEAR_MM = 0.4  # ink so far from the start must be explained
 
 
@@ -25,11 +23,13 @@ class Course:
     """Nodes of a line in columns `x` and rows `y` of the ink's raster; NaN where it has no ink.
 
     Where it faded between two rows of the page's pixels, `faded` holds its height, elsewhere NaN.
+    `tremor` (rows) is how far its stroke stands out for what trembles under the nib.
     """
 
     x: np.ndarray
     y: np.ndarray
     faded: np.ndarray | None = None
+    tremor: np.ndarray | float = 0.0
 
     @property
     def inked(self) -> bool:
@@ -55,12 +55,13 @@ def begin(way: Way, left_mm: float, right_mm: float, pen: Pen, ink: Ink) -> Cour
     if inked.sum() < 0.05 * len(inked):
         return Course(x, np.full(count, np.nan))
     top, bottom = (np.interp(x, cols[inked], side[inked]) for side in way.edges)
-    y = start_from_edges(top, bottom, x[1] - x[0], pen.width_px / 2)
+    shaken = tremor(way, x, pen, ink.raster.px_per_mm)
+    y = start_from_edges(top + shaken, bottom - shaken, x[1] - x[0], pen.width_px / 2)
     gap = max(round(BRIDGE_MM * ink.raster.px_per_mm), 1)
     bare = sp.ndimage.binary_opening(~inked, np.ones(gap))
     y[np.interp(x, cols, bare.astype(float)) > 0.5] = np.nan
     faded = np.interp(x, cols, between_rows(way, ink), left=np.nan, right=np.nan)
-    return Course(x, np.where(np.isnan(faded), y, faded), faded)
+    return Course(x, np.where(np.isnan(faded), y, faded), faded, shaken)
 
 
 def cut_out(
@@ -72,7 +73,7 @@ def cut_out(
     inked = np.isfinite(way.edges[0])
     cols = np.arange(len(inked))
     top, bottom = (np.interp(cols, cols[inked], side[inked]) for side in way.edges)
-    line = np.interp(way.col0 + cols, courses[k].x, _filled(courses[k].y))
+    line = np.interp(way.col0 + cols, courses[k].x, filled(courses[k].y))
     top, bottom = np.minimum(top, line), np.maximum(bottom, line)
     margin = near + 2 * pen.width_px
     row0 = max(int(top.min() - margin), 0)
@@ -101,8 +102,8 @@ def cut_out(
     return Cut(row0, col0, View(image.astype(np.float32), other, rows.astype(np.int64), noise))
 
 
-def _filled(y: np.ndarray) -> np.ndarray:
-    """Heights with the gaps bridged."""
+def filled(y: np.ndarray) -> np.ndarray:
+    """Heights of a line with its gaps bridged."""
     inked = np.isfinite(y)
     nodes = np.arange(len(y))
     return np.interp(nodes, nodes[inked], y[inked])
@@ -110,8 +111,9 @@ def _filled(y: np.ndarray) -> np.ndarray:
 
 def fit(cut: Cut, course: Course, pen: Pen, rounds: int = ROUNDS) -> Line:
     """Fit a line from where its course begins."""
-    y = _filled(course.y) - cut.row0
-    return fit_line(cut.view, y, course.x[0] - cut.col0, course.x[1] - course.x[0], pen, rounds)
+    y = filled(course.y) - cut.row0
+    x0, step = course.x[0] - cut.col0, course.x[1] - course.x[0]
+    return fit_line(cut.view, y, x0, step, pen, rounds, course.tremor)
 
 
 def placed(line: Line, cut: Cut, course: Course) -> Course:
@@ -127,6 +129,7 @@ def lay(image: np.ndarray, course: Course, pen: Pen, row0: int = 0, col0: int = 
     reach = pen.width_px + 4 * pen.blur_x_px
     near = (course.x > col0 - reach) & (course.x < col0 + image.shape[1] + reach)
     y = np.where(near, course.y, np.nan)
+    shaken = np.broadcast_to(course.tremor, y.shape)
     for part in np.ma.clump_unmasked(np.ma.masked_invalid(y)):
         if part.stop - part.start < 2:
             continue
@@ -134,36 +137,5 @@ def lay(image: np.ndarray, course: Course, pen: Pen, row0: int = 0, col0: int = 
         low = min(max(int(x[0] - col0 - reach), 0), image.shape[1])
         high = min(max(int(x[-1] - col0 + reach) + 2, 0), image.shape[1])
         if low < high:
-            draw_line(image[:, low:high], y[part] - row0, x[0] - col0 - low, x[1] - x[0], pen)
-
-
-def tremble(way: Way, course: Course, pen: Pen) -> np.ndarray:
-    """Standard deviation, in rows, of what trembles under the nib at each node.
-
-    Where a trace shakes faster than the nib is wide, only the envelope of the shaking is printed.
-    Ink thicker than the line draws it tells its range: about ten nodes lie under a nib, and the
-    range of ten normal deviates is three standard deviations. Where the line itself shakes to
-    fill the ink, it does so with the right strength, but nodes that touch neither edge of the ink
-    could as well stand elsewhere: they are wrong by the power of two independent shakings.
-    """
-    step = course.x[1] - course.x[0]
-    y = _filled(course.y)
-    under = 2 * max(round(pen.width_px / step / 2), 1) + 1
-    shaking = np.abs(y - sp.ndimage.uniform_filter1d(y, under, mode="nearest"))
-    # the median over a stretch longer than two QRS complexes is not moved by one
-    stretch = 2 * round(_STRETCH_MM / STEP_MM / 2) + 1
-    usual = 1.4826 * sp.ndimage.median_filter(shaking, stretch, mode="nearest")
-    edge, node, share = envelope(y, step, pen.width_px / 2, 0)
-    touching = np.zeros(len(y))
-    for side in range(2):
-        np.add.at(touching, node[side], 1 - share[side])
-        np.add.at(touching, node[side] + 1, share[side])
-    hidden = sp.ndimage.uniform_filter1d((touching < _TOUCHES).astype(float), 2 * under - 1)
-    misplaced = _HIDDEN_POWER**0.5 * np.sqrt(hidden) * usual
-    cols = way.col0 + np.arange(way.edges.shape[1])
-    seen = np.isfinite(way.edges[0]) & ~way.shared
-    if not seen.any():
-        return misplaced
-    thick = np.interp(course.x, cols[seen], (way.edges[1] - way.edges[0])[seen])
-    excess = sp.ndimage.median_filter(thick - (edge[1] - edge[0]), 2 * under + 1, mode="nearest")
-    return np.hypot(misplaced, np.maximum(excess, 0) / 3)
+            place = x[0] - col0 - low, x[1] - x[0]
+            draw_line(image[:, low:high], y[part] - row0, *place, pen, shaken[part])

@@ -52,11 +52,12 @@ class View:
 
 @dataclass(frozen=True, eq=False)
 class Line:
-    """A fitted line: node heights and their standard errors, and cost by column."""
+    """A fitted line: node heights and their standard errors, cost by column, tremor of nodes."""
 
     y_px: np.ndarray
     sigma_px: np.ndarray
     cost: np.ndarray
+    tremor_px: np.ndarray
 
 
 def fit_line(
@@ -66,6 +67,7 @@ def fit_line(
     step_px: float,
     pen: Pen,
     rounds: int = ROUNDS,
+    tremor_px: np.ndarray | float = 0.0,
 ) -> Line:
     """Fit the heights of a line's nodes to the ink.
 
@@ -79,18 +81,21 @@ def fit_line(
     pen : Pen
     rounds : int, optional
         Estimates of the prior's strength; one is enough to compare, not to measure.
+    tremor_px : (n,) float array or float, optional
+        How far the edges of the stroke stand out for what trembles under the nib.
 
     Returns
     -------
     Line
     """
     y = start_px.astype(float)
+    tremor = np.ascontiguousarray(np.broadcast_to(tremor_px, y.shape), float)
     reach_px = 0.5 * pen.width_px + 3.5 * pen.blur_x_px + step_px
     band = math.ceil(2 * reach_px / step_px) + 3
     x = x0_px + step_px * np.arange(len(y))
     at_col = np.clip(np.rint(x), 0, view.image.shape[1] - 1).astype(np.int64)
     window = 2 * round(reach_px) + 1
-    place = (x0_px, step_px, pen.nib, view.image, view.other, view.rows, view.noise)
+    place = (tremor, x0_px, step_px, pen.nib, view.image, view.other, view.rows, view.noise)
 
     def local(cost: np.ndarray, line: np.ndarray, strength: np.ndarray) -> np.ndarray:
         """Cost in the neighbourhood of each node."""
@@ -136,7 +141,7 @@ def fit_line(
             cols = columns(active)
             matrix, gradient, again = normal_equations(y, *place, band, cols)
             cost = np.where(cols, again, cost)
-    return Line(y, np.sqrt(inverse[0]), cost)
+    return Line(y, np.sqrt(inverse[0]), cost, tremor)
 
 
 def start_from_edges(top: np.ndarray, bottom: np.ndarray, step: float, radius: float) -> np.ndarray:

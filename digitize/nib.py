@@ -188,7 +188,7 @@ def refine_pen(pen: Pen, strokes: list[tuple[View, Line, float, float]]) -> tupl
 
 def _drawn(view: View, line: Line, x0: float, step: float, pen: Pen) -> np.ndarray:
     image = pen.gain * view.other
-    draw_line(image, line.y_px, x0, step, pen)
+    draw_line(image, line.y_px, x0, step, pen, line.tremor_px)
     return image
 
 

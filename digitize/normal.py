@@ -5,18 +5,21 @@ import math
 import numba
 import numpy as np
 
-from digitize.pen import envelope, reach_of, strips, weight_of
+from digitize.pen import envelope, reach_of, strips, weight_of, widen
 
 _OUTLIER = 4.0  # standard deviations from which on a pixel loses weight
 _FAST = {"contract", "reassoc", "nsz", "arcp"}
 
 
 @numba.njit(cache=True)
-def _lines(y: np.ndarray, x0: float, step: float, nib: tuple, rows: int) -> tuple:
+def _lines(
+    y: np.ndarray, tremor: np.ndarray, x0: float, step: float, nib: tuple, rows: int
+) -> tuple:
     """Edges of the stroke and its strips of ink, round ends included."""
     width, _, blur_y, _ = nib
     pad = math.ceil(0.5 * width / step)
     edge, node, share = envelope(y, step, 0.5 * width, pad)
+    widen(edge, tremor, pad)
     first, start, value = strips(edge, blur_y, rows)
     return x0 - pad * step, node, share, first, start, value
 
@@ -45,6 +48,7 @@ def _column(
 @numba.njit(cache=True, fastmath=_FAST, error_model="numpy")
 def normal_equations(
     y: np.ndarray,
+    tremor: np.ndarray,
     x0: float,
     step: float,
     nib: tuple,
@@ -61,6 +65,8 @@ def normal_equations(
     ----------
     y : (n,) float array
         Heights of the nodes, the first at `x0`, each `step` after the last.
+    tremor : (n,) float array
+        How far the edges of the stroke stand out for what trembles under the nib.
     nib : tuple
         Width, blur across, blur down, gain of the pen.
     image, other : (rows, cols) float32 arrays
@@ -85,7 +91,7 @@ def normal_equations(
     """
     rows, cols = image.shape
     gain = nib[3]
-    x0, node, share, first, start, value = _lines(y, x0, step, nib, rows)
+    x0, node, share, first, start, value = _lines(y, tremor, x0, step, nib, rows)
     matrix = np.zeros((y.size, band + 1))
     gradient = np.zeros(y.size)
     cost = np.zeros(cols)
@@ -142,6 +148,7 @@ def normal_equations(
 @numba.njit(cache=True, fastmath=_FAST, error_model="numpy")
 def column_costs(
     y: np.ndarray,
+    tremor: np.ndarray,
     x0: float,
     step: float,
     nib: tuple,
@@ -154,7 +161,7 @@ def column_costs(
     """Cost of each column alone; parameters as for `normal_equations`."""
     rows, cols = image.shape
     gain = nib[3]
-    x0, _, _, first, start, value = _lines(y, x0, step, nib, rows)
+    x0, _, _, first, start, value = _lines(y, tremor, x0, step, nib, rows)
     cost = np.zeros(cols)
     g = np.zeros(first.size)
     for col in range(cols):

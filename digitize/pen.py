@@ -94,6 +94,20 @@ def envelope(y: np.ndarray, step: float, radius: float, pad: int) -> tuple:
     return edge, node, share
 
 
+@numba.njit(cache=True)
+def widen(edge: np.ndarray, tremor: np.ndarray, pad: int) -> None:
+    """Move the edges of a stroke apart by the tremor of the node above them, in place.
+
+    Where a line shakes faster than the nib is wide, only the range of the shaking is printed: the
+    stroke is thicker up and down, and on a steep flank hardly so across.
+    """
+    for i in range(edge.shape[1]):
+        if edge[1, i] > edge[0, i]:
+            at = tremor[min(max(i - pad, 0), tremor.size - 1)]
+            edge[0, i] -= at
+            edge[1, i] += at
+
+
 @numba.njit(cache=True, inline="always")
 def _phi(z: float) -> float:
     return 0.5 * (1 + math.erf(z * _SQRT_HALF))
@@ -185,12 +199,15 @@ def weight_of(col: int, j: int, x0: float, step: float, blur: float) -> float:
 
 
 @numba.njit(cache=True)
-def _draw(y: np.ndarray, x0: float, step: float, nib: tuple, image: np.ndarray) -> None:
+def _draw(
+    y: np.ndarray, tremor: np.ndarray, x0: float, step: float, nib: tuple, image: np.ndarray
+) -> None:
     """Add the ink of one polyline to `image` where the image has less: strokes never add up."""
     width, blur_x, blur_y, gain = nib
     rows, cols = image.shape
     pad = math.ceil(0.5 * width / step)
     edge, _, _ = envelope(y, step, 0.5 * width, pad)
+    widen(edge, tremor, pad)
     first, start, value = strips(edge, blur_y, rows)
     n, x0 = edge.shape[1] - 1, x0 - pad * step
     column = np.zeros(rows)
@@ -210,7 +227,14 @@ def _draw(y: np.ndarray, x0: float, step: float, nib: tuple, image: np.ndarray) 
             column[row] = 0
 
 
-def draw_line(image: np.ndarray, y_px: np.ndarray, x0_px: float, step_px: float, pen: Pen) -> None:
+def draw_line(
+    image: np.ndarray,
+    y_px: np.ndarray,
+    x0_px: float,
+    step_px: float,
+    pen: Pen,
+    tremor_px: np.ndarray | float = 0.0,
+) -> None:
     """Lay the ink of one unbroken line into `image`, in place.
 
     Parameters
@@ -219,6 +243,9 @@ def draw_line(image: np.ndarray, y_px: np.ndarray, x0_px: float, step_px: float,
         Density so far; ink over ink stays ink: 1 - (1 - a)(1 - b).
     y_px : (n,) float array
         Heights of the nodes, the first at `x0_px`, each `step_px` after the last.
+    tremor_px : (n,) float array or float, optional
+        How far each edge of the stroke stands out for what trembles under the nib.
     """
     line = np.ascontiguousarray(y_px, float)
-    _draw(line, x0_px, step_px, pen.nib, image)
+    tremor = np.ascontiguousarray(np.broadcast_to(tremor_px, line.shape), float)
+    _draw(line, tremor, x0_px, step_px, pen.nib, image)

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from digitize.course import BRIDGE_MM, Course, begin, cut_out, fit, lay, placed, tremble
+from digitize.course import BRIDGE_MM, Course, begin, cut_out, filled, fit, lay, placed
 from digitize.dropout import row_error_px
 from digitize.fit import Line
 from digitize.ink import Ink
@@ -19,6 +19,7 @@ from digitize.nib import find_pen, refine_pen
 from digitize.pen import Pen
 from digitize.settle import settle
 from digitize.sheet import Raster
+from digitize.tremor import unsure_of_tremor
 from digitize.uncross import uncross
 from digitize.ways import Routes, Way, find_routes, to_ways
 
@@ -44,6 +45,7 @@ class Stroke:
     notes: tuple[str, ...] = ()
     blur_mm: tuple[float, float] = (0.0, 0.0)  # of the ink, standard deviation across and down
     ink_gain: float = 1.0  # density in the middle of a full stroke
+    tremor_mm: np.ndarray | float = 0.0  # how far each edge stands out for tremor
 
 
 def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
@@ -111,7 +113,10 @@ def redraw(strokes: tuple[Stroke, ...], raster: Raster, shape: tuple[int, int]) 
     for stroke in strokes:
         blur_x_mm, blur_y_mm = stroke.blur_mm
         pen = Pen(stroke.pen_mm * px, blur_x_mm * px, blur_y_mm * px, stroke.ink_gain)
-        lay(image, Course(raster.col(stroke.x_mm), raster.row(stroke.y_mm)), pen)
+        course = Course(
+            raster.col(stroke.x_mm), raster.row(stroke.y_mm), tremor=stroke.tremor_mm * px
+        )
+        lay(image, course, pen)
     return image
 
 
@@ -141,13 +146,14 @@ def _stroke(
     x_mm, y_mm = raster.x_mm(course.x), raster.y_mm(course.y)
     if line is None:
         return Stroke(x_mm, y_mm, y_mm.copy(), nib[0], 1.0, ("no ink in this panel",), *nib[1:])
-    sigma_px = np.hypot(line.sigma_px, tremble(ways[k], course, pen))
+    unsure_px = unsure_of_tremor(ways[k], course.x, filled(course.y), pen, px)
+    sigma_px = np.hypot(line.sigma_px, unsure_px)
     if course.faded is not None:
         sigma_px = np.where(np.isnan(course.faded), sigma_px, row_error_px(ink))
     sigma_mm = np.where(missing, np.nan, sigma_px / px)
     notes = (f"no ink on the path for more than {BRIDGE_MM} mm",) if missing.any() else ()
     unexplained = _unexplained(k, ways, courses, pen, ink)
-    return Stroke(x_mm, y_mm, sigma_mm, nib[0], unexplained, notes, *nib[1:])
+    return Stroke(x_mm, y_mm, sigma_mm, nib[0], unexplained, notes, *nib[1:], course.tremor / px)
 
 
 def _unexplained(k: int, ways: tuple[Way, ...], courses: list[Course], pen: Pen, ink: Ink) -> float:
