@@ -18,6 +18,7 @@ CUT_MM = 2.0  # ink this near to the edge of the picture is cut off there
 CUT_STEP_MM = 1.5  # names tell a column's place to about so much, breaks do the rest
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
 GAP_MM = 3.0  # rows that all stop for longer stand to both sides of a calibration mark
+ISLAND_MM, BESIDE_MM = 4.0, 1.5  # ink with so much bare paper to both sides is print, no trace
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
 
@@ -136,7 +137,7 @@ def column_spans(
     """
     if count == 1:
         return (extent,), 0.0
-    x, broken, inked = breaks.x_mm, breaks.broken.mean(axis=0), breaks.inked.mean(axis=0)
+    x, broken, bare = breaks.x_mm, breaks.broken.mean(axis=0), _bare(breaks)
     edges, shares = [], []
     for expected in _evenly(breaks, extent, count):
         near = np.abs(x - expected) < SEARCH_MM
@@ -144,7 +145,7 @@ def column_spans(
             edges.append((expected, expected))
             shares.append(0.0)
             continue
-        gap = _bare_about(inked, int(np.argmin(np.abs(x - expected))))
+        gap = _bare_about(bare, int(np.argmin(np.abs(x - expected))))
         if gap is not None and x[gap[1]] - x[gap[0]] > GAP_MM:
             shares.append(1.0)
             edges.append((float(x[gap[0]]), float(x[gap[1]])))
@@ -162,7 +163,7 @@ def column_spans(
         if pull[at] < 0.5:
             edges.append((expected, expected))
             continue
-        first, last = _bare_about(inked, at) or (at, at)
+        first, last = _bare_about(bare, at) or (at, at)
         edges.append((float(x[first]), float(x[last])))
     lefts = [extent.left_mm, *(edge[1] for edge in edges)]
     rights = [*(edge[0] for edge in edges), extent.right_mm]
@@ -170,19 +171,31 @@ def column_spans(
     return _even(spans, extent, shares), float(np.mean(shares))
 
 
-def _bare_about(inked: np.ndarray, at: int) -> tuple[int, int] | None:
+def _bare(breaks: Breaks) -> np.ndarray:
+    """Where hardly a row has ink, a name or tick that stands between columns left out."""
+    bare = breaks.inked.mean(axis=0) < 0.34
+    turns = np.flatnonzero(np.diff(np.pad(bare.astype(np.int8), 1)))
+    gaps = list(zip(turns[::2], turns[1::2], strict=True))
+    for (a, b), (c, d) in pairwise(gaps):
+        beside = min(b - a, d - c) * STEP_MM
+        if (c - b) * STEP_MM < ISLAND_MM and beside > BESIDE_MM:
+            bare[b:c] = True
+    return bare
+
+
+def _bare_about(bare: np.ndarray, at: int) -> tuple[int, int] | None:
     """First column of the gap about `at`, and the first after it; None where rows have ink."""
     first = last = at
-    while first > 0 and inked[first - 1] < 0.34:
+    while first > 0 and bare[first - 1]:
         first -= 1
-    while last < len(inked) - 1 and inked[last] < 0.34:
+    while last < len(bare) - 1 and bare[last]:
         last += 1
     return (first, last) if last > first else None
 
 
 def _evenly(breaks: Breaks, extent: Span, count: int) -> list[float]:
     """Edges between so many columns of the same length, gaps of all rows left out."""
-    x, bare = breaks.x_mm, breaks.inked.mean(axis=0) < 0.34
+    x, bare = breaks.x_mm, _bare(breaks)
     turns = np.flatnonzero(np.diff(np.pad(bare.astype(np.int8), 1)))
     gaps = [
         (float(x[a]), float(x[b - 1]) + STEP_MM)

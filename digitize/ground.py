@@ -70,11 +70,13 @@ def _ruled(cells: np.ndarray) -> np.ndarray:
     rows, cols, size, _ = cells.shape
     inner = cells[rows // 4 : rows - rows // 4, cols // 4 : cols - cols // 4]
     pattern = _mean_cell(inner.reshape(-1, size, size))
-    pattern = pattern - np.median(pattern)
+    top = float(pattern.max() - np.median(pattern))
+    pattern = pattern - pattern.mean()
     power = float(np.sum(pattern * pattern))
     if power < 1e-3:
         return np.ones((rows, cols), bool)
-    capped = np.minimum(cells, float(pattern.max())) - np.median(cells[..., ::7, ::7])
+    capped = np.minimum(cells, top)
+    capped -= capped.mean(axis=(2, 3), keepdims=True)  # else bare paper is like any pattern
     match = np.einsum("rcij,ij->rc", capped, pattern, optimize=True)
     own = np.einsum("rcij,rcij->rc", capped, capped, optimize=True)
     return match > 0.3 * np.sqrt(own * power)

@@ -15,6 +15,7 @@ from digitize.ways import EDGE, Way
 _STRETCH_MM = 6.0  # longer than two QRS complexes: the median over it is not moved by one
 _SMOOTH_MM = 0.15  # standard deviation of what a slope is taken over: about half a nib
 _LEVEL = 1.0  # slope up to which thickness down tells of tremor
+_SURE_MM = 0.02  # edges of ink are no surer than this
 _FEWEST = 20  # level columns
 _TOUCHES = 0.3  # of an edge's weight, below which a node does not hold it
 _HIDDEN_POWER = 2.5  # two independent shakings, and some for nodes that are hidden in part
@@ -45,7 +46,8 @@ def tremor(way: Way, x: np.ndarray, pen: Pen, px_per_mm: float) -> np.ndarray:
     own = _seen_width(pen) * np.sqrt(1 + slope[use] ** 2)
     stretch = 2 * round(_STRETCH_MM * px_per_mm / 2) + 1
     excess = sp.ndimage.median_filter((bottom - top)[use] - own, stretch, mode="nearest")
-    return np.maximum(np.interp(x, way.col0 + use, excess) / 2, 0)
+    half = np.interp(x, way.col0 + use, excess) / 2
+    return np.maximum(half - _SURE_MM * px_per_mm, 0)
 
 
 def _seen_width(pen: Pen) -> float:

@@ -94,11 +94,16 @@ def apart_from_traces(printing: Printing, ink: Ink) -> Printing:
         Tall complexes that run into one another look like a rule, and without it the trace between
         them falls into pieces as small as letters.
     ink : Ink
-        With the rules: what is a piece of its own here, or reads as a name, is a letter.
+        With the rules: what is a piece of its own here is a letter, and so is what stands in a word
+        with such, or in one that reads as a name.
     """
     whole = set(_pieces(ink)[0])
-    names = [word.box for word in printing.words if word.score > CLEAR and word.text in SPELT]
-    letters = (x for x in printing.letters if x in whole or any(_inside(x, n) for n in names))
+    words = [
+        word.box
+        for word in printing.words
+        if (word.score > CLEAR and word.text in SPELT) or any(_inside(x, word.box) for x in whole)
+    ]
+    letters = (x for x in printing.letters if x in whole or any(_inside(x, w) for w in words))
     return replace(printing, letters=tuple(letters))
 
 
