@@ -18,6 +18,7 @@ CUT_MM = 2.0  # ink this near to the edge of the picture is cut off there
 CUT_STEP_MM = 1.5  # names tell a column's place to about so much, breaks do the rest
 TICKS_APART_MM = 0.5  # ticks of one edge stand upright above one another
 GAP_MM = 3.0  # rows that all stop for longer stand to both sides of a calibration mark
+BARE = 0.6  # share of the gaps between columns that is bare, from which they are believed
 ISLAND_MM, BESIDE_MM = 4.0, 1.5  # ink with so much bare paper to both sides is print, no trace
 TAIL_MM = 6.0  # zero line drawn beside a mark is no longer than this
 TOUCH_MM = 0.25  # runs on neighbouring columns that come this near belong together
@@ -194,26 +195,28 @@ def _bare_about(bare: np.ndarray, at: int) -> tuple[int, int] | None:
 
 
 def _evenly(breaks: Breaks, extent: Span, count: int) -> list[float]:
-    """Edges between so many columns of the same length, gaps of all rows left out."""
+    """Middles of the gaps between so many columns that all are as long, and as far apart."""
     x, bare = breaks.x_mm, _bare(breaks)
     turns = np.flatnonzero(np.diff(np.pad(bare.astype(np.int8), 1)))
     gaps = [
-        (float(x[a]), float(x[b - 1]) + STEP_MM)
+        float(x[b - 1] - x[a]) + STEP_MM
         for a, b in zip(turns[::2], turns[1::2], strict=True)
         if x[a] > extent.left_mm and x[b - 1] < extent.right_mm and x[b - 1] - x[a] > GAP_MM
     ]
-    width = extent.right_mm - extent.left_mm - sum(b - a for a, b in gaps)
-    places = []
-    for k in range(1, count):
-        place = extent.left_mm + k * width / count
-        for left, right in gaps:
-            if abs(place - left) < SEARCH_MM / 2:
-                place = (left + right) / 2
-                break
-            if place > left:
-                place += right - left
-        places.append(place)
-    return places
+
+    def starts(gap_mm: float) -> np.ndarray:
+        """Where the second column and those after it begin."""
+        pitch_mm = (extent.right_mm - extent.left_mm + gap_mm) / count
+        return extent.left_mm + pitch_mm * np.arange(1, count)
+
+    def bare_share(gap_mm: float) -> float:
+        """Share of the gaps that is bare."""
+        inside = [(x > start - gap_mm) & (x < start) for start in starts(gap_mm)]
+        return float(np.mean([bare[part].mean() for part in inside]))
+
+    likeliest = max(gaps, key=bare_share, default=0.0)
+    gap_mm = likeliest if gaps and bare_share(likeliest) > BARE else 0.0
+    return [float(start) - gap_mm / 2 for start in starts(gap_mm)]
 
 
 def possible_extents(extent: Span, room: Span) -> list[Span]:

@@ -34,6 +34,8 @@ SPELT = {text for name in NAMES for text in SPELLINGS[name] if len(text) > 1}
 CLEAR = 0.8  # mean letter probability of a name that is surely one
 LETTER_MM = (0.7, 6.5)  # height of a letter
 WIDEST_LETTER_MM = 9.0
+LINE_MM, LINE_WIDE, LINE_FILL = 4.0, 1.2, 0.25  # so long, flat and thin is a piece of a trace
+LINE_FLAT, LINE_PEN_MM = 2.5, 0.55  # and so is what is still flatter, and as thin as a pen
 TICK_WIDE = 0.25  # width of an upright stroke over its height
 MERGED_MM = (1.3, 60.0)  # height and width of letters run together
 MERGED_FILL = (0.3, 0.85)  # share of their box that they cover: traces less, bars more
@@ -135,14 +137,18 @@ def _pieces(ink: Ink) -> tuple[list[Box], list[Box]]:
     scale = ink.raster.px_per_mm
     left, top, width, height, area = (stats[1:, k] / scale for k in range(5))
     area = area / scale
+    fill = area / (width * height)
+    thin = (width > LINE_WIDE * height) & (fill < LINE_FILL)
+    flat = (width > LINE_FLAT * height) & (area < LINE_PEN_MM * width)
+    line = (width > LINE_MM) & (thin | flat)
     fits = (
-        (height > LETTER_MM[0])
+        ~line
+        & (height > LETTER_MM[0])
         & (height < LETTER_MM[1])
         & (width < WIDEST_LETTER_MM)
         & (width < 7 * height)
         & (area > 0.08 * height)
     )
-    fill = area / (width * height)
     merged = (
         ~fits
         & (height > MERGED_MM[0])
