@@ -69,17 +69,31 @@ def test_the_envelope_of_a_straight_line_lies_half_a_width_away_at_right_angles(
     assert edge[1, 10:50] == pytest.approx(middle[10:50] + offset)
 
 
+def test_tremor_thickens_a_level_stroke_up_and_down_and_a_flank_hardly_across():
+    level, steep = np.full(60, 20.0), np.linspace(2.0, 38.0, 12)
+    pen, images = Pen(WIDTH, 0.7, 0.7), []
+    for line, tremor in ((level, 0.0), (level, 1.0), (steep, 0.0), (steep, 1.0)):
+        image = np.zeros(SHAPE, np.float32)
+        draw_line(image, line, 15.0, STEP, pen, tremor)
+        images.append(image)
+    down = [image[:, 22].sum() for image in images[:2]]
+    across = [image[20].sum() for image in images[2:]]
+    assert down[1] - down[0] == pytest.approx(2.0, abs=0.02)
+    assert 0 < across[1] - across[0] < 0.5
+
+
 def test_the_gradient_is_the_derivative_of_the_cost():
     y, pen = _line(2), Pen(WIDTH, 0.8, 0.9)
     image = np.zeros(SHAPE, np.float32)
     draw_line(image, y + 0.3, 10.0, STEP, pen)
     other = np.zeros_like(image)
+    tremor = np.full(len(y), 0.4)
     rows = np.stack([np.zeros(SHAPE[1], int), np.full(SHAPE[1], SHAPE[0])])
     everywhere = np.ones(SHAPE[1], bool)
 
     def system(line: np.ndarray) -> tuple:
-        nib = pen.nib
-        return normal_equations(line, 10.0, STEP, nib, image, other, rows, 0.05, 40, everywhere)
+        place, seen = (10.0, STEP, pen.nib), (image, other, rows, 0.05)
+        return normal_equations(line, tremor, *place, *seen, 40, everywhere)
 
     _, gradient, _ = system(y)
     for node in (5, 20, 38, 41, 60):
