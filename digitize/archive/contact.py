@@ -23,7 +23,7 @@ _HEAD = """<!doctype html>
  content="default-src 'none'; style-src 'unsafe-inline'; img-src 'self' file:">
 <title>Contact sheet</title><style>
 body{font:15px/1.4 system-ui,sans-serif;margin:16px;color:#141414;background:#fff}
-main{display:grid;grid-template-columns:repeat(auto-fill,minmax(min(420px,100%),1fr));gap:14px}
+main{display:grid;grid-template-columns:repeat(auto-fill,minmax(min(390px,100%),1fr));gap:14px}
 figure{margin:0;border:1px solid #bbb;border-left-width:6px;padding:8px}
 figure.look{border-left-color:#d55e00}figure.failed{border-left-color:#141414}
 figure.good{border-left-color:#00825f}
@@ -100,8 +100,9 @@ def _figure(row: Mapping[str, Any]) -> str:
         stem = escape(row["stem"], quote=True)
         picture = f'<a href="{stem}.overlay.png"><img loading="lazy" src="{stem}.thumb.jpg"'
         said = f'{picture} alt="overlay of {escape(name)}"></a>{said}'
+        leads = "1 lead" if row["leads"] == 1 else f"{row['leads']} leads"
         said += (
-            f"<br>{row['leads']} leads, {escape(str(row['layout']))}, {row['speed_mm_s']:g} mm/s "
+            f"<br>{leads}, {escape(str(row['layout']))}, {row['speed_mm_s']:g} mm/s "
             f"({row['speed_source']}), {row['gain_mm_mv']:g} mm/mV ({row['gain_source']})"
         )
         command = f"<br><code>measure overread {stem}.json</code>"
