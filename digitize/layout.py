@@ -77,6 +77,7 @@ class Layout:
     panels: tuple[PanelPlace, ...]
     marks: tuple[Box, ...]  # calibration marks: not part of any trace
     words: tuple[Box, ...]  # printing on or near the traces: not part of any trace
+    names: tuple[Box, ...] = ()  # lead names that touch a trace
     notes: tuple[str, ...] = ()
     considered: tuple[tuple[str, float], ...] = ()  # layouts with top row, log odds; best first
 
@@ -169,9 +170,18 @@ def find_layout(
         panels=panels,
         marks=tuple(mark_box(m, 1.0) for m in marks),
         words=printing.letters,
+        names=_touching(best.labels, printing),
         notes=(*scale.notes, *cut_notes(extent, room), *_notes(best, margin, panels, hypotheses)),
         considered=tuple((h.described, round(h.score, 2)) for h in hypotheses),
     )
+
+
+def _touching(labels: LabelFit, printing: Printing) -> tuple[Box, ...]:
+    """Places of names that are no words of their own, where the others are sure: traces touch."""
+    if labels.score < 2 * SURE:
+        return ()
+    apart = {word.box for word in printing.words}
+    return tuple(box for box in labels.places.values() if box not in apart)
 
 
 def _at_zero_line(rows: Rows, marks_by_row: Sequence[Sequence[Mark]]) -> Rows:

@@ -16,6 +16,7 @@ from digitize.fit import Line
 from digitize.ink import Ink
 from digitize.layout import Layout
 from digitize.nib import find_pen, refine_pen
+from digitize.overprint import hide_names
 from digitize.pen import Pen
 from digitize.settle import settle
 from digitize.sheet import Raster
@@ -63,6 +64,7 @@ def trace_panels(ink: Ink, layout: Layout) -> tuple[Stroke, ...]:
     tuple of Stroke
         One per panel, in the order of `layout.panels`.
     """
+    ink = hide_names(ink, layout.names)
     places = [(panel.box.left_mm, panel.box.right_mm) for panel in layout.panels]
     routes = find_routes(ink, layout)
     ways = to_ways(routes, routes.paths, places, ink.raster)
