@@ -14,6 +14,7 @@ import math
 import time
 import warnings
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from types import ModuleType
 
 import numpy as np
 
@@ -30,6 +31,8 @@ from tests.paper import WAYS, page_spec, read_back
 KEYS = ("p", "pr", "qrs", "qt")
 RECORDS = range(1, 200, 2)
 DROPPED = 0.04
+_EDGE_S = 0.3  # a beat this near to the end of the recording may be cut
+_SAME_BEAT_S = 0.15  # a wide QRS has its peaks in different leads this far apart
 
 
 def spread(values: Iterable[float]) -> str:
@@ -180,6 +183,39 @@ def compare(records: Sequence[int]) -> None:
                 print(f"  {key:4s} {spread(values)}")
 
 
+def compare_beats(every: int) -> None:
+    """Beats of PTB-XL, which carries no marks, against the R peaks of the library.
+
+    A beat that it finds in two of three leads and we do not counts as missed, one of ours that it
+    finds in none of them as invented; both are listed, to be looked at.
+    """
+    import neurokit2
+
+    lines = (folder("PTBXL_DIR") / "labels.csv").read_text().splitlines()[1::every]
+    total, missed, invented = 0, [], []
+    for record in (line.split(",")[0] for line in lines):
+        tracing = ptbxl_tracing(record)
+        ours = find_beats(tracing).time_s
+        ours = ours[(ours > _EDGE_S) & (ours < 10 - _EDGE_S)]
+        seen = [_r_peaks(neurokit2, tracing.lead(lead).mv) for lead in ("II", "V2", "V5")]
+        near = np.array([[np.abs(s - t).min(initial=9) < _SAME_BEAT_S for s in seen] for t in ours])
+        total += len(ours)
+        invented += [(record, t) for t, n in zip(ours, near, strict=True) if not n.any()]
+        for t in seen[0]:
+            others = sum(np.abs(s - t).min(initial=9) < _SAME_BEAT_S for s in seen[1:])
+            if others and np.abs(ours - t).min(initial=9) > _SAME_BEAT_S and 0.5 < t < 9.5:
+                missed.append((record, t))
+    print(f"\nPTB-XL, every {every}: {total} beats of ours against neurokit2")
+    for what, found in (("missed", missed), ("invented", invented)):
+        print(f"  {what} {len(found)}: " + ", ".join(f"{r} {t:.2f}" for r, t in found))
+
+
+def _r_peaks(library: ModuleType, mv: np.ndarray) -> np.ndarray:
+    """Times of R peaks in seconds."""
+    _, found = library.ecg_peaks(library.ecg_clean(mv, 500), 500)
+    return np.array(found["ECG_R_Peaks"], float) / 500
+
+
 def delineated(tracing: Tracing, method: str, leads: Sequence[str]) -> dict[str, float]:
     """Intervals in ms by `neurokit2`, each the median over the beats of lead II."""
     import neurokit2
@@ -226,6 +262,7 @@ def main() -> None:
     elif given.compare:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
+            compare_beats(given.every)
             compare(RECORDS[:: given.every])
     else:
         models()

@@ -161,7 +161,7 @@ def _bedside(case: Case, precondition: Clause) -> Finding:
         return every(
             [
                 shape.upright(waves),
-                shape.notched_or_slurred(waves, from_ms=qrs_ms / 3, to_ms=qrs_ms),
+                shape.notched_or_slurred_r(waves, from_ms=qrs_ms / 3, to_ms=qrs_ms),
             ]
         )
 
@@ -184,7 +184,7 @@ def _bedside(case: Case, precondition: Clause) -> Finding:
 
 def _broad_notched_r(case: Case, waves: LeadWaves) -> Look:
     """Broad and notched or slurred; upright as a whole, but V5 and V6 may be RS."""
-    bent = shape.notched_or_slurred(waves, from_ms=0.0, to_ms=case.intervals["qrs_ms"].value)
+    bent = shape.notched_or_slurred_r(waves, from_ms=0.0, to_ms=case.intervals["qrs_ms"].value)
     looks = [shape.broad(case, waves), bent]
     if waves.lead not in ("V5", "V6"):
         looks.append(shape.upright(waves))

@@ -6,6 +6,7 @@ error of that is neither there nor absent.
 """
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -121,7 +122,22 @@ def notched_or_slurred(
 ) -> Look:
     """A notch or slur whose `at` ("onset_ms" or "peak_ms") lies within a stretch of the QRS."""
     wanted = f"within {from_ms:.0f} to {to_ms:.0f} ms"
-    inside = [n for n in bends(waves) if from_ms < getattr(n, at) < to_ms]
+    return _surest([n for n in bends(waves) if from_ms < getattr(n, at) < to_ms], waves, wanted, at)
+
+
+def notched_or_slurred_r(waves: LeadWaves, *, from_ms: float, to_ms: float) -> Look:
+    """The same on an R wave: a slur of the S, as in right block, is no second R."""
+    wanted = f"on the R within {from_ms:.0f} to {to_ms:.0f} ms"
+    on_r = [
+        n
+        for n in waves.notches
+        if any(r.onset_ms <= n.peak_ms <= r.offset_ms for r in upward(waves))
+    ]
+    inside = [n for n in (*on_r, *_crossing(waves)) if from_ms < n.peak_ms < to_ms]
+    return _surest(inside, waves, wanted, "peak_ms")
+
+
+def _surest(inside: Sequence[Notch], waves: LeadWaves, wanted: str, at: str) -> Look:
     if not inside:
         return described("not met", waves, f"a notch or slur {wanted}")
     best = max(inside, key=lambda n: n.prominence_se)
@@ -135,7 +151,7 @@ def notched_or_slurred(
 
 def broad_notched_or_slurred(case: Case, waves: LeadWaves) -> Look:
     """European wording: an upright R that is broad, notched or slurred."""
-    late = notched_or_slurred(waves, from_ms=0.0, to_ms=case.intervals["qrs_ms"].value)
+    late = notched_or_slurred_r(waves, from_ms=0.0, to_ms=case.intervals["qrs_ms"].value)
     return every([upright(waves), some([broad(case, waves), late])])
 
 
@@ -168,19 +184,17 @@ def upward(waves: LeadWaves) -> tuple[Deflection, ...]:
 
 def bends(waves: LeadWaves) -> tuple[Notch, ...]:
     """Notches and slurs, and an S so deep between R and R' that it crosses the baseline."""
+    return (*waves.notches, *_crossing(waves))
+
+
+def _crossing(waves: LeadWaves) -> tuple[Notch, ...]:
     peaks = upward(waves)
     between = waves.find("S")
     if len(peaks) < 2 or between is None or not peaks[0].peak_ms < between.peak_ms:
-        return waves.notches
+        return ()
     depth = min(peaks[0].amplitude_mv, peaks[1].amplitude_mv) - between.amplitude_mv
-    crossing = Notch(
-        "notch",
-        peaks[0].peak_ms,
-        between.peak_ms,
-        depth,
-        depth / between.se_mv if between.se_mv > 0 else math.inf,
-    )
-    return (*waves.notches, crossing)
+    prominence_se = depth / between.se_mv if between.se_mv > 0 else math.inf
+    return (Notch("notch", peaks[0].peak_ms, between.peak_ms, depth, prominence_se),)
 
 
 def described(result: Result, waves: LeadWaves, wanted: str) -> Look:

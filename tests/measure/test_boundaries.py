@@ -8,11 +8,11 @@ import numpy as np
 import pydicom.data
 import pytest
 
-from digitize.tracing import Tracing
+from digitize.tracing import LEADS, Tracing
 from measure.average import average_beats
 from measure.beats import find_beats
 from measure.boundaries import Boundaries, find_boundaries
-from measure.sources import read_digital
+from measure.sources import read_digital, tracing_from_samples
 from tests.drawn.heart import HeartSpec
 from tests.measure.model import as_page, digital, recording
 from tests.measure.open_data import folder, ludb_tracing
@@ -91,6 +91,18 @@ def test_each_lead_lies_within_the_overall_boundaries() -> None:
         assert edges.qrs_on_ms.value >= found.overall.qrs_on_ms.value
         assert edges.qrs_off_ms.value <= found.overall.qrs_off_ms.value
         assert edges.qrs_on_ms.leads != found.overall.qrs_on_ms.leads
+
+
+def test_fewer_samples_make_every_boundary_less_sure() -> None:
+    spec = HeartSpec(seed=3)
+    mv = recording(spec).mv.T
+    sure, unsure = (
+        boundaries_of(tracing_from_samples(mv[:: round(500 / fs_hz)], LEADS, fs_hz)).overall
+        for fs_hz in (500.0, 250.0)
+    )
+    # Where between two samples a wave ends is not known: even chances over 4 or 2 ms.
+    more_ms = np.sqrt((4**2 - 2**2) / 12)
+    assert unsure.t_off_ms.se == pytest.approx(np.hypot(sure.t_off_ms.se, more_ms), abs=0.3)
 
 
 def test_a_lead_that_is_not_seen_has_a_reason() -> None:

@@ -39,6 +39,18 @@ def test_normal_conduction_and_right_block_meet_none(key):
     assert made.findings(made.rbbb_leads(), qrs_ms=ms(140))[key].result == "not met"
 
 
+@pytest.mark.parametrize("key", ["lbbb_bedside", "lbbb_aha"])
+def test_a_slur_of_the_s_is_no_second_r(key):
+    text = "late positive force" if key == "lbbb_bedside" else "broad notched"
+    for at_ms, result in ((40, "met"), (110, "not met")):
+        leads = lbbb_leads()
+        r_then_s = (wave("R", 1.5, 0, 90, peak_ms=30), wave("S", -0.5, 90, 150))
+        for name in ("I", "aVL", "V5", "V6"):
+            bent = (notch(at_ms, at_ms + 15, kind="slur"),)
+            leads[name] = lead(name, "Rs", *r_then_s, notches=bent)
+        assert made.clause(made.findings(leads)[key], text).result == result
+
+
 @pytest.mark.parametrize("key", ["lbbb_aha", "lbbb_european_2013", "lbbb_european_2021"])
 @pytest.mark.parametrize(("qrs_ms", "result"), [(119, "not met"), (120, "met"), (121, "met")])
 def test_qrs_at_least_120_ms(key, qrs_ms, result):
