@@ -9,6 +9,7 @@ import numpy as np
 from measure.average import DominantBeat
 from measure.boundaries import Boundaries
 from measure.criteria.decide import OVERALL, Limit, Look, every, look_at, unseen
+from measure.levelled import about_level
 from measure.quantity import Quantity
 from measure.rhythm import Rhythm
 from measure.waves import LeadWaves
@@ -54,10 +55,13 @@ class Case:
         return every([self.interval(key, low, what=what), self.interval(key, high, what=what)])
 
     def samples(self, lead: str) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-        """Time after the overall QRS onset in ms, mV and its standard error, of one lead."""
-        row = self.beat.leads.index(lead)
-        time_ms = self.beat.time_ms - self.boundaries.overall.qrs_on_ms.value
-        return time_ms, self.beat.mv[row], self.beat.se_mv[row]
+        """Time after the overall QRS onset in ms, mV about the level there and its standard error.
+
+        That of one lead; what raises whole beats raises their level too and is no part of it.
+        """
+        onset_ms = self.boundaries.overall.qrs_on_ms.value
+        about = about_level(self.beat, self.beat.leads.index(lead), onset_ms)
+        return about.time_ms - onset_ms, about.mv, about.se_mv
 
     def edge_se_ms(self, lead: str) -> float:
         """Standard error of where the QRS of one lead begins or ends, in ms."""
