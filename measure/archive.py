@@ -27,7 +27,7 @@ from measure.reading_files import to_json
 ENDING = ".reading.json"
 # What arithmetic on an unforeseen tracing can raise: LinAlgError is a ValueError.
 FAULTS = (ArithmeticError, LookupError, TypeError, ValueError, MemoryError)
-_PRELOAD = ("measure.warm", "measure.cli")
+_PRELOAD = ("measure.archive", "measure.warm", "measure.cli")
 
 
 @dataclass(frozen=True)

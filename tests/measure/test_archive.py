@@ -100,8 +100,7 @@ def test_page_without_a_beat_says_so_and_started_again_there_is_nothing_to_do(st
 
 def test_page_beyond_its_limit_costs_itself_and_can_be_taken_up_again(store):
     assert measured(store, limits=Limits(60.0, 1)) == 2
-    reasons = table(store, "SELECT reason FROM reading")
-    assert all("memory" in reason or "Memory" in reason for (reason,) in reasons), reasons
+    assert "emory" in row_of_reading(store, "1" * 64)["reason"]
     assert not list(store.rglob("*.reading.json"))
     assert measured(store, again=True) == 1
     assert len(list(store.rglob("*.reading.json"))) == 1
