@@ -12,6 +12,7 @@ from itertools import pairwise
 import cv2
 import numpy as np
 import scipy as sp
+import skimage as ski
 
 from digitize.ink import Ink, solid_ink
 from digitize.rules import straight_rules
@@ -128,7 +129,7 @@ def _row_heights(runs: Runs, ruled_mm: tuple[float, float, float, float]) -> lis
     profile, _ = np.histogram(middle, bins, weights=1 / (1 + length / 1.0))
     profile = sp.ndimage.gaussian_filter1d(profile.astype(float), 1.2 / BIN_MM)
     wide = sp.ndimage.gaussian_filter1d(profile, 2.0 / BIN_MM)
-    peaks, _ = sp.signal.find_peaks(wide, distance=LEAST_PITCH_MM / BIN_MM)
+    peaks = _peaks(wide, LEAST_PITCH_MM / BIN_MM)
     strong = peaks[wide[peaks] > 0.1 * wide.max(initial=0.0)]
     y = bins[strong] + BIN_MM / 2
     share = np.array([coverage_mm(runs, height) for height in y])
@@ -147,6 +148,16 @@ def coverage_mm(runs: Runs, y_mm: float) -> float:
     """Length in mm over which a run of ink lies within 3 mm of a height."""
     near = (runs.top_mm < y_mm + 3) & (runs.bottom_mm > y_mm - 3)
     return float(len(np.unique(runs.x_mm[near]))) * STEP_MM
+
+
+def _peaks(profile: np.ndarray, distance: float) -> np.ndarray:
+    """Places of the peaks of a profile, of two that are too near the higher one."""
+    kept: list[int] = []
+    # the highest come first
+    for place in ski.feature.peak_local_max(profile, exclude_border=False)[:, 0]:
+        if all(abs(place - other) >= distance for other in kept):
+            kept.append(int(place))
+    return np.sort(np.array(kept, int))
 
 
 def _thin(runs: Runs, y_mm: float) -> bool:
