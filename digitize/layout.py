@@ -41,6 +41,7 @@ STRIP_LEAD = "II"  # common practice, where a strip's name cannot be read
 SURE = 3.0  # log odds to the runner-up below which the layout is called doubtful
 UNREAD_STRIP = 1.0  # log odds against a strip without a name where other names were read
 READ = 0.6  # probability from which a name counts as read
+IN_LINE_MM = 1.0  # the calibration marks of all rows begin at one place
 SAME = 0.9  # likeness to another name on the page from which that counts for more
 
 
@@ -139,6 +140,7 @@ def find_layout(
     if not rows.rows:
         raise NoTrace("no ECG trace found on this page; give the page that holds the tracing")
     marks_by_row = [marks_of_row(row, marks, rows.pitch_mm) for row in rows.rows]
+    lonely = _without_row(marks, marks_by_row)
     marks = [mark for own in marks_by_row for mark in own]
     rows = _at_zero_line(rows, marks_by_row)
     scale = find_scale(printing, rows, marks, options)
@@ -163,7 +165,7 @@ def find_layout(
     alike = names_by_likeness(ink, best.labels, best.slots)
     panels = _panels(best, scale, options, alike)
     return Layout(
-        name=_known_name(best, margin, options),
+        name=_known_name(best, margin, bool(lonely), options),
         speed_mm_s=scale.speed_mm_s,
         gain_mm_mv=scale.gain_mm_mv,
         timing=_timing(options),
@@ -171,7 +173,12 @@ def find_layout(
         marks=tuple(mark_box(m, 1.0) for m in marks),
         words=printing.letters,
         names=_touching(best.labels, printing),
-        notes=(*scale.notes, *cut_notes(extent, room), *_notes(best, margin, panels, hypotheses)),
+        notes=(
+            *scale.notes,
+            *cut_notes(extent, room),
+            *lonely,
+            *_notes(best, margin, panels, hypotheses),
+        ),
         considered=tuple((h.described, round(h.score, 2)) for h in hypotheses),
     )
 
@@ -329,10 +336,22 @@ def _lead(
     return slot.name, "found" if best.labels.score > 2 * SURE else "assumed", 0.7
 
 
-def _known_name(best: _Hypothesis, margin: float, options: Options) -> Known:
+def _without_row(marks: Sequence[Mark], marks_by_row: Sequence[Sequence[Mark]]) -> tuple[str, ...]:
+    """What is said of a calibration mark that stands in line with the others, but in no row."""
+    own = [mark for found in marks_by_row for mark in found]
+    for mark in marks:
+        beside = [other for other in own if abs(other.left_mm - mark.left_mm) < IN_LINE_MM]
+        if mark not in own and len(beside) > 1:
+            return ("a calibration mark stands where no trace was found: a row may be missing",)
+    return ()
+
+
+def _known_name(best: _Hypothesis, margin: float, doubted: bool, options: Options) -> Known:
     if options.layout is not None:
         return Known(best.name, "given")
     read = best.labels.score > SURE
+    if doubted:
+        return Known(best.name, "assumed")
     return Known(best.name, "found" if read or margin > SURE else "assumed")
 
 

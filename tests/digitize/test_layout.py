@@ -207,3 +207,13 @@ def test_no_row_no_layout():
 def test_a_layout_that_cannot_be_is_refused_with_advice():
     with pytest.raises(NoTrace, match=r"4 rows of trace.*--layout"):
         layout_of(CHART, Options(layout="12x1"))
+
+
+def test_a_calibration_mark_without_a_row_is_told():
+    ink, printing = perfect_sheet(CHART).ink, read_words(CHART)
+    rows, marks = rows_of(CHART), find_marks(perfect_sheet(CHART).ink)
+    assert find_layout(ink, printing, rows, marks).name.source == "found"
+    fewer = replace(rows, rows=rows.rows[:-1])  # the strip was not seen
+    found = find_layout(ink, printing, fewer, marks)
+    assert found.name.source == "assumed"
+    assert "a calibration mark stands where no trace was found: a row may be missing" in found.notes
