@@ -58,7 +58,7 @@ def draw_overlay(page: Page, tracing: Tracing) -> bytes:
     image = Image.fromarray(picture)
     _draw_words(image, page_map, tracing, scale)
     buffer = io.BytesIO()
-    _with_footer(image, tracing).save(buffer, "PNG", compress_level=4)
+    _with_footer(image, tracing).save(buffer, "PNG", compress_level=2)
     return buffer.getvalue()
 
 
