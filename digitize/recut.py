@@ -46,15 +46,16 @@ def joined(own: Stroke, strokes: Sequence[Stroke]) -> Stroke:
     parts: list[np.ndarray] = []
     last_mm = -np.inf
     for stroke in sorted(strokes, key=lambda s: s.x_mm[0]):
-        nodes = np.stack([stroke.x_mm, stroke.y_mm, stroke.sigma_mm])
+        tremor_mm = np.broadcast_to(stroke.tremor_mm, stroke.x_mm.shape)
+        nodes = np.stack([stroke.x_mm, stroke.y_mm, stroke.sigma_mm, tremor_mm])
         nodes = nodes[:, nodes[0] > last_mm + 1e-9]
         if parts and nodes.shape[1] and nodes[0, 0] - last_mm > _JOINED_MM:
-            parts.append(np.array([[(last_mm + nodes[0, 0]) / 2], [np.nan], [np.nan]]))
+            parts.append(np.array([[(last_mm + nodes[0, 0]) / 2], [np.nan], [np.nan], [0.0]]))
         if nodes.shape[1]:
             parts.append(nodes)
             last_mm = float(nodes[0, -1])
-    x_mm, y_mm, sigma_mm = np.concatenate(parts, axis=1)
-    return replace(own, x_mm=x_mm, y_mm=y_mm, sigma_mm=sigma_mm)
+    x_mm, y_mm, sigma_mm, tremor_mm = np.concatenate(parts, axis=1)
+    return replace(own, x_mm=x_mm, y_mm=y_mm, sigma_mm=sigma_mm, tremor_mm=tremor_mm)
 
 
 def _lost_ink(panel: PanelPlace, seen: Ink, ink: Ink) -> bool:
@@ -93,4 +94,5 @@ def _cut(panel: PanelPlace, before: Layout, strokes: Sequence[Stroke]) -> Stroke
     x_mm = box.left_mm + STEP_MM * np.arange(int((box.right_mm - box.left_mm) / STEP_MM + 1e-6) + 1)
     y_mm, sigma_mm = read_off(line, x_mm)
     notes = tuple(dict.fromkeys(note for stroke in beside for note in stroke.notes))
-    return replace(line, x_mm=x_mm, y_mm=y_mm, sigma_mm=sigma_mm, notes=notes)
+    tremor_mm = np.interp(x_mm, line.x_mm, line.tremor_mm)
+    return replace(line, x_mm=x_mm, y_mm=y_mm, sigma_mm=sigma_mm, notes=notes, tremor_mm=tremor_mm)

@@ -7,9 +7,9 @@ import pytest
 
 from digitize.ink import Ink
 from digitize.layout import Layout, PanelPlace
-from digitize.recut import recut
+from digitize.recut import joined, recut
 from digitize.sheet import Box, Raster
-from digitize.trace import Stroke
+from digitize.trace import Stroke, redraw
 from digitize.tracing import Known
 
 WIDE_MM = 50.0  # of each panel; rows stand 30 mm apart
@@ -113,3 +113,13 @@ def test_lines_beside_ink_that_is_gone_are_traced_anew():
     assert recut(BEFORE, STROKES, seen, lower, left) is not None
     seen, left = hidden(inked=False)
     assert recut(BEFORE, STROKES, seen, upper, left) is not None
+
+
+def test_a_line_cut_out_of_others_keeps_their_tremor_and_can_be_redrawn():
+    shaken = tuple(
+        replace(s, tremor_mm=np.full(len(s.x_mm), 0.1 * (k + 1))) for k, s in enumerate(STROKES[:2])
+    )
+    whole = joined(shaken[0], shaken)
+    assert whole.tremor_mm[[10, -10]] == pytest.approx([0.1, 0.2])
+    image = redraw((replace(whole, blur_mm=(0.1, 0.1)),), INK.raster, INK.density.shape)
+    assert image[:, 50:200].sum(axis=0).min() > 1
