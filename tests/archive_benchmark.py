@@ -12,9 +12,8 @@ import io
 import os
 import resource
 import tempfile
-import threading
 import time
-from collections.abc import Iterator
+from functools import partial
 from pathlib import Path
 
 from digitize.archive.alone import Limits
@@ -22,6 +21,7 @@ from digitize.archive.engines import this_machine
 from digitize.archive.run import run_archive
 from digitize.options import Options
 from tests.digitize.archive import stand_in as made
+from tests.watching import looking
 
 MIB = 2**20
 
@@ -43,7 +43,10 @@ def measure_pages(folder: Path, files: int) -> None:
             made.save(scans / f"{number % 50}" / f"{number}.png", made.READ, number=number)
         store, memory = folder / f"store{processes}", []
         before, began = _cpu_s(), time.monotonic()
-        with contextlib.redirect_stdout(io.StringIO()), _watched(memory):
+        with (
+            contextlib.redirect_stdout(io.StringIO()),
+            looking(partial(_note_own, memory), 0.2),
+        ):
             run_archive(
                 [scans], store, Options(), Limits(20.0, 4096), this_machine(processes),
                 read=made.read,
@@ -57,23 +60,10 @@ def measure_pages(folder: Path, files: int) -> None:
         )
 
 
-@contextlib.contextmanager
-def _watched(memory: list[float]) -> Iterator[None]:
-    """Memory of this process, again and again, while something runs."""
-    ended = threading.Event()
-
-    def watch() -> None:
-        while not ended.wait(0.2):
-            pages = int(Path("/proc/self/statm").read_text().split()[1])
-            memory.append(pages * os.sysconf("SC_PAGE_SIZE") / MIB)
-
-    thread = threading.Thread(target=watch)
-    thread.start()
-    try:
-        yield
-    finally:
-        ended.set()
-        thread.join()
+def _note_own(memory: list[float]) -> None:
+    """Add the memory of this process."""
+    pages = int(Path("/proc/self/statm").read_text().split()[1])
+    memory.append(pages * os.sysconf("SC_PAGE_SIZE") / MIB)
 
 
 def _cpu_s() -> float:

@@ -15,7 +15,6 @@ import os
 import sqlite3
 import sys
 import tempfile
-import threading
 import time
 from collections.abc import Iterator
 from functools import partial
@@ -37,6 +36,7 @@ from tests.drawn.heart import record_model
 from tests.drawn.page import draw_page
 from tests.drawn.spec import CaptureSpec, LayoutSpec, PageSpec, PaperSpec
 from tests.drawn.variety import vary_heart
+from tests.watching import looking
 
 MIB = 2**20
 DIFFERENT = 25  # strips that are drawn; each file of one differs from the others in one pixel
@@ -127,24 +127,20 @@ def told(store: Path) -> str:
 @contextlib.contextmanager
 def watched(store: Path) -> Iterator[None]:
     """Memory of this process and of the fork server, printed as pages are done."""
-    ended = threading.Event()
+    printed = -1
 
-    def watch() -> None:
-        printed = -1
-        while not ended.wait(2.0):
-            done = count(store)
-            if done // EVERY > printed:
-                printed = done // EVERY
-                say(f"{done} pages: {memory()}")
-        say(f"{count(store)} pages: {memory()}")
+    def look() -> None:
+        nonlocal printed
+        done = count(store)
+        if done // EVERY > printed:
+            printed = done // EVERY
+            say(f"{done} pages: {memory()}")
 
-    thread = threading.Thread(target=watch)
-    thread.start()
     try:
-        yield
+        with looking(look, 2.0):
+            yield
     finally:
-        ended.set()
-        thread.join()
+        say(f"{count(store)} pages: {memory()}")
 
 
 def say(text: str) -> None:
